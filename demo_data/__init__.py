@@ -1,0 +1,1 @@
+"""The demo tables, how they were made, and what they are (see README.md)."""

@@ -1,0 +1,1 @@
+"""Judging a classifier from a small labelled table by resampling. Knows no screen."""

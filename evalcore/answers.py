@@ -1,0 +1,193 @@
+"""What the rounds' models answered: held-out scores kept, everything else reduced per round."""
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from evalcore.figures import CountedBy
+from evalcore.measures import Floats, confusion, hand_till, predicted_class
+from evalcore.rounds import Rounds
+from evalcore.table import Table
+
+
+@dataclass(frozen=True, eq=False)
+class Reduced:
+    """Answers of some rounds for cases of their own bags, reduced.
+
+    Attributes
+    ----------
+    confusion : ndarray, shape (R, K, K)
+        Weighted by how often each case is in the bag; rows are true classes.
+    auc : ndarray, shape (R,)
+        Hand and Till's for more than two classes; nan where undefined.
+    """
+
+    confusion: Floats
+    auc: Floats
+
+
+@dataclass(frozen=True, eq=False)
+class Answers:
+    """What one candidate answered under one scheme.
+
+    Attributes
+    ----------
+    scores : ndarray, shape (T, K)
+        Held-out scores in the order of `Rounds.pairs` over cases.
+    in_bag : dict of CountedBy to Reduced
+        Answers for the bags themselves, by unit and by case.
+    """
+
+    scores: Floats
+    in_bag: dict[CountedBy, Reduced]
+
+
+@dataclass(frozen=True, eq=False)
+class HeldOut:
+    """Held-out answers counted one way, by unit or by case.
+
+    Attributes
+    ----------
+    labels : ndarray of int, shape (N,)
+        Class of each unit or case.
+    rounds : Rounds
+        Over the same N.
+    scores : ndarray, shape (T, K)
+        In the order of `rounds.pairs`.
+    """
+
+    labels: NDArray[np.intp]
+    rounds: Rounds
+    scores: Floats
+
+    @cached_property
+    def predicted(self) -> NDArray[np.intp]:
+        """Answered class of each pair, shape (T,)."""
+        return predicted_class(self.scores)
+
+    @cached_property
+    def true(self) -> NDArray[np.intp]:
+        """True class of each pair, shape (T,)."""
+        return self.labels[self.rounds.pairs[1]]
+
+    @cached_property
+    def correct(self) -> NDArray[np.bool_]:
+        """Whether each answer is right, shape (T,)."""
+        return self.predicted == self.true
+
+    @cached_property
+    def confusion(self) -> Floats:
+        """Confusion counts of each round, shape (R, K, K)."""
+        return confusion(
+            self.true,
+            self.predicted,
+            n_classes=self.scores.shape[1],
+            groups=self.rounds.pairs[0],
+            n_groups=self.rounds.n_rounds,
+        )
+
+    @cached_property
+    def auc(self) -> Floats:
+        """AUC within each round, shape (R,)."""
+        return hand_till(
+            self.true, self.scores, groups=self.rounds.pairs[0], n_groups=self.rounds.n_rounds
+        )
+
+
+def held_out(table: Table, rounds: Rounds, scores: Floats, *, counted_by: CountedBy) -> HeldOut:
+    """Held-out answers by case as they are, or one per unit: the mean of its cases' scores.
+
+    Parameters
+    ----------
+    table : Table
+    rounds : Rounds
+        Over the table's cases.
+    scores : ndarray, shape (T, K)
+        In the order of `rounds.pairs`.
+    counted_by : {"unit", "case"}
+    """
+    if counted_by == "case" or not table.has_units:
+        return HeldOut(table.labels, rounds, scores)
+    by_unit = rounds.of_units(table.units)
+    round_at, case_at = rounds.pairs
+    place = round_at * table.n_units + table.units[case_at]
+    wanted = by_unit.pairs[0] * table.n_units + by_unit.pairs[1]
+    size = rounds.n_rounds * table.n_units
+    times = np.bincount(place, minlength=size)[wanted]
+    means = [
+        np.bincount(place, column, minlength=size)[wanted] / times for column in scores.T
+    ]
+    return HeldOut(table.unit_labels, by_unit, np.column_stack(means))
+
+
+def unit_means(table: Table, scores: Floats) -> Floats:
+    """Mean score of each unit's cases, from scores of all cases, shape (..., n, K)."""
+    sums = np.zeros((*scores.shape[:-2], table.n_units, scores.shape[-1]))
+    np.add.at(sums, (..., table.units, slice(None)), scores)
+    return sums / np.bincount(table.units)[:, None]
+
+
+def reduce(
+    labels: NDArray[np.intp], scores: Floats, weights: NDArray[np.uint8]
+) -> Reduced:
+    """Reduce answers for all cases to confusion counts and AUC under weights.
+
+    Parameters
+    ----------
+    labels : ndarray of int, shape (N,)
+    scores : ndarray, shape (R, N, K)
+    weights : ndarray, shape (R, N)
+        Bag counts; cases of weight 0 are left out.
+    """
+    n_rounds, _, n_classes = scores.shape
+    round_at, case_at = np.nonzero(weights)
+    weight = weights[round_at, case_at]
+    true, chosen = labels[case_at], scores[round_at, case_at]
+    return Reduced(
+        confusion(
+            true,
+            predicted_class(chosen),
+            n_classes=n_classes,
+            groups=round_at,
+            n_groups=n_rounds,
+            weights=weight,
+        ),
+        hand_till(true, chosen, groups=round_at, n_groups=n_rounds, weights=weight),
+    )
+
+
+def answers_of(table: Table, rounds: Rounds, scores: Floats) -> Answers:
+    """Keep the held-out scores of some rounds and reduce the rest.
+
+    Parameters
+    ----------
+    table : Table
+    rounds : Rounds
+    scores : ndarray, shape (R, n, K)
+        What each round's model answers for every case.
+    """
+    in_bag: dict[CountedBy, Reduced] = {"case": reduce(table.labels, scores, rounds.train)}
+    if table.has_units:
+        in_bag["unit"] = reduce(
+            table.unit_labels, unit_means(table, scores), rounds.of_units(table.units).train
+        )
+    else:
+        in_bag["unit"] = in_bag["case"]
+    return Answers(scores[rounds.pairs], in_bag)
+
+
+def joined(parts: list[Answers]) -> Answers:
+    """Answers of consecutive rounds put together again."""
+    ways: tuple[CountedBy, CountedBy] = ("unit", "case")
+    return Answers(
+        np.concatenate([part.scores for part in parts]),
+        {
+            way: Reduced(
+                np.concatenate([part.in_bag[way].confusion for part in parts]),
+                np.concatenate([part.in_bag[way].auc for part in parts]),
+            )
+            for way in ways
+        },
+    )

@@ -1,0 +1,194 @@
+"""Rounds carried out: candidates x rounds in chunks, each chunk finished on its own.
+
+A chunk is fully determined by table and plan, so digits do not depend on the number of processes,
+on the order or on an interruption.
+"""
+
+import time
+import warnings
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from evalcore.answers import Answers, answers_of
+from evalcore.candidates import CANDIDATES, estimator
+from evalcore.measures import Floats
+from evalcore.plan import APPENDING, Choice, Plan, generator
+from evalcore.rounds import Counts, Rounds
+from evalcore.schemes import Settings
+from evalcore.table import Table
+
+CHUNK = 10  # rounds finished together; depends on nothing, so that a resume meets the same bounds
+WHOLE = ""  # the scheme name of the fits on all cases
+
+
+@dataclass(frozen=True)
+class Task:
+    """Some rounds of one scheme; the fits on all cases have the scheme name `WHOLE`."""
+
+    scheme: str
+    start: int
+    stop: int
+
+    @property
+    def name(self) -> str:
+        """Unique among a plan's tasks."""
+        return f"{self.scheme or 'whole'}-{self.start:05d}"
+
+
+@dataclass(frozen=True, eq=False)
+class Finished:
+    """A task with what each candidate answered.
+
+    Attributes
+    ----------
+    task : Task
+    answers : dict of str to Answers
+        By candidate name; a candidate that failed is missing.
+    failures : dict of str to str
+        By candidate name, why it could not be fitted.
+    seconds : float
+        Time taken.
+    """
+
+    task: Task
+    answers: dict[str, Answers]
+    failures: dict[str, str]
+    seconds: float
+
+
+def tasks(rounds: dict[str, Rounds]) -> list[Task]:
+    """All tasks of drawn rounds: the fits on all cases first, then scheme by scheme."""
+    todo = [Task(WHOLE, 0, 1)]
+    for name, drawn in rounds.items():
+        todo += [
+            Task(name, start, min(start + CHUNK, drawn.n_rounds))
+            for start in range(0, drawn.n_rounds, CHUNK)
+        ]
+    return todo
+
+
+def whole_rounds(n_cases: int) -> Rounds:
+    """The one round in which every case is trained on once and none is held out."""
+    ones = np.ones((1, n_cases), dtype=np.uint8)
+    return Rounds(ones, np.zeros_like(ones), np.zeros(1, dtype=np.intp))
+
+
+def run(
+    table: Table,
+    plan: Plan,
+    rounds: dict[str, Rounds],
+    *,
+    todo: Sequence[Task],
+    jobs: int = 1,
+) -> Iterator[Finished]:
+    """Carry out tasks and yield each as it is finished, in order.
+
+    Parameters
+    ----------
+    table : Table
+    plan : Plan
+    rounds : dict of str to Rounds
+        As drawn by `plan.draw`, or as stored in a record.
+    todo : sequence of Task
+    jobs : int
+        Processes; 1 stays in this one.
+    """
+    if jobs == 1:
+        for task in todo:
+            yield carry_out(table, plan, rounds, task)
+        return
+    from joblib import Parallel, delayed
+
+    yield from Parallel(n_jobs=jobs, return_as="generator")(
+        delayed(carry_out)(table, plan, _only(rounds, task), task) for task in todo
+    )
+
+
+def _only(rounds: dict[str, Rounds], task: Task) -> dict[str, Rounds]:
+    return {task.scheme: rounds[task.scheme]} if task.scheme else {}
+
+
+def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -> Finished:
+    """Fit every candidate in the rounds of one task and reduce its answers."""
+    from threadpoolctl import threadpool_limits
+
+    began = time.perf_counter()
+    part = (
+        rounds[task.scheme].part(slice(task.start, task.stop))
+        if task.scheme
+        else whole_rounds(table.n_cases)
+    )
+    answers, failures = {}, {}
+    # one thread inside: more would fight over the cores and could change the last digits
+    with threadpool_limits(1):
+        for name, choice in zip(plan.candidate_names, plan.candidates, strict=True):
+            states = _random_states(plan, choice, task)
+            try:
+                scores = plain_scores(choice, table, part.train, random_states=states)
+            except Exception as error:  # a candidate that cannot be fitted must not end the rest
+                warnings.warn(f"{name} failed in {task.name}: {error!r}", stacklevel=2)
+                failures[name] = f"{type(error).__name__}: {error}"
+            else:
+                answers[name] = answers_of(table, part, scores)
+    return Finished(task, answers, failures, time.perf_counter() - began)
+
+
+def _random_states(plan: Plan, choice: Choice, task: Task) -> list[int]:
+    """A random state for each round of a task, that no other candidate or scheme can move."""
+    scheme = plan.scheme(task.scheme).written(without=APPENDING) if task.scheme else "whole"
+    return [
+        int(generator(plan.seed, choice.written(), scheme, str(r)).integers(2**31))
+        for r in range(task.start, task.stop)
+    ]
+
+
+def plain_scores(
+    choice: Choice, table: Table, counts: Counts, *, random_states: Sequence[int]
+) -> Floats:
+    """Fit one candidate on each bag with the public classes, and answer for every case.
+
+    Parameters
+    ----------
+    choice : Choice
+    table : Table
+    counts : ndarray, shape (R, n)
+        How often each case is in each bag.
+    random_states : sequence of int, length R
+
+    Returns
+    -------
+    ndarray, shape (R, n, K)
+        Probabilities, or decision values where the candidate has no probabilities. A class the
+        bag lacks has probability 0, or a decision value below all others.
+    """
+    scores = np.zeros((len(counts), table.n_cases, table.n_classes))
+    for r, (bag, state) in enumerate(zip(counts, random_states, strict=True)):
+        scores[r] = _round_scores(choice, table, np.repeat(np.arange(table.n_cases), bag), state)
+    return scores
+
+
+def _round_scores(choice: Choice, table: Table, rows: "np.ndarray", state: int) -> Floats:
+    labels = table.labels[rows]
+    present = np.unique(labels)
+    scores = np.zeros((table.n_cases, table.n_classes))
+    if len(present) == 1:
+        # nothing to tell apart: always the one class that was seen
+        scores[:, present[0]] = 1.0
+        return scores
+    settings: Settings = choice.values()
+    model = estimator(CANDIDATES[choice.key], settings, table, state)
+    with warnings.catch_warnings():
+        # collinear one-hot columns and the like are expected in small bags
+        warnings.simplefilter("ignore")
+        model.fit(table.features[rows], labels)
+        if hasattr(model, "predict_proba"):
+            scores[:, present] = model.predict_proba(table.features)
+            return scores
+        values = model.decision_function(table.features)
+    if values.ndim == 1:
+        values = np.column_stack([-values, values])
+    scores[:] = values.min() - 1
+    scores[:, present] = values
+    return scores

@@ -1,0 +1,190 @@
+"""How much a share right varies because the model itself varies from table to table.
+
+All are own constructions: the covariance of centred correctness between cases that the same model
+answered, by the method of moments (evidence: the coverage study). They are nan where no case is
+held out more than once: one set of rounds then says nothing about the model's variance.
+"""
+
+import math
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from evalcore.measures import Floats
+from evalcore.rounds import Rounds
+
+
+def model_variance(
+    correct: ArrayLike,
+    rounds: Rounds,
+    *,
+    chosen: NDArray[np.bool_] | None = None,
+    units: NDArray[np.intp] | None = None,
+) -> float:
+    """tau2: how much the share right varies because the model varies from round to round.
+
+    Own construction: the covariance between the correctness of two cases answered by the same
+    model. With q = correct - that case's mean over rounds, tau2 = max(0, sum over rounds of
+    [(sum q)^2 - sum q^2] / sum of m(m - 1)) x k / (k - 1), m the held-out cases of a round and k
+    the mean number of rounds in which a case is held out.
+
+    Parameters
+    ----------
+    correct : array_like, shape (T,)
+        Right (1) or wrong (0), or differences of two candidates, in the order of `rounds.pairs`.
+    rounds : Rounds
+    chosen : ndarray of bool, shape (n,), optional
+        Only these cases (e.g. one class).
+    units : ndarray of int, shape (n,), optional
+        If given, only pairs of cases from different units count.
+
+    Returns
+    -------
+    float
+        nan where no case is held out twice: then nothing is known of it.
+    """
+    round_at, case_at = rounds.pairs
+    value = np.asarray(correct, dtype=np.float64)
+    if chosen is not None:
+        kept = chosen[case_at]
+        round_at, case_at, value = round_at[kept], case_at[kept], value[kept]
+    times = np.bincount(case_at, minlength=rounds.n_cases)
+    k = times[times > 0].mean() if value.size else 0.0
+    if k <= 1:
+        return math.nan
+    means = np.bincount(case_at, value, minlength=rounds.n_cases) / np.maximum(times, 1)
+    q = value - means[case_at]
+    group = case_at if units is None else units[case_at]
+    n_groups = int(group.max()) + 1
+    cell = round_at * n_groups + group
+    per_round = np.bincount(round_at, q)
+    sizes = np.bincount(round_at).astype(np.float64)
+    # a sparse bincount: rounds x units is mostly empty for leave-one-out
+    _, place = np.unique(cell, return_inverse=True)
+    within = np.bincount(place, q)
+    within_sizes = np.bincount(place).astype(np.float64)
+    pairs = (sizes**2).sum() - (within_sizes**2).sum()
+    if pairs <= 0:
+        return math.nan
+    covariance = ((per_round**2).sum() - (within**2).sum()) / pairs
+    return max(0.0, float(covariance)) * k / (k - 1)
+
+
+def balanced_model_variance(
+    labels: NDArray[np.intp], rounds: Rounds, correct: ArrayLike, *, n_classes: int
+) -> float:
+    """tau_b2: the model's variance of balanced accuracy (own construction).
+
+    With q as in `model_variance` and m the held-out cases of a class in a round: the mean over
+    rounds of [(mean over classes of qbar)^2 - sum over classes of sum(q^2)/m^2 / K^2] x
+    k / (k - 1), not below 0. Rounds that lack a class are skipped.
+
+    Returns
+    -------
+    float
+        nan where no case is held out twice.
+    """
+    round_at, case_at = rounds.pairs
+    value = np.asarray(correct, dtype=np.float64)
+    times = rounds.times_tested
+    k = times[times > 0].mean() if value.size else 0.0
+    if k <= 1:
+        return math.nan
+    means = np.bincount(case_at, value, minlength=rounds.n_cases) / np.maximum(times, 1)
+    q = value - means[case_at]
+    cell = round_at * n_classes + labels[case_at]
+    shape = (rounds.n_rounds, n_classes)
+    size = shape[0] * shape[1]
+    m = np.bincount(cell, minlength=size).reshape(shape)
+    complete = (m > 0).all(axis=1)
+    if not complete.any():
+        return math.nan
+    m = m[complete]
+    sums = np.bincount(cell, q, minlength=size).reshape(shape)[complete]
+    squares = np.bincount(cell, q * q, minlength=size).reshape(shape)[complete]
+    per_round = (sums / m).mean(axis=1) ** 2 - (squares / m**2).sum(axis=1) / n_classes**2
+    return max(0.0, float(per_round.mean())) * k / (k - 1)
+
+
+def auc_model_variance(
+    positive: NDArray[np.bool_], rounds: Rounds, scores: ArrayLike, *, block: int = 2_000_000
+) -> float:
+    """tau_A2: the model's variance of the AUC within rounds (own construction).
+
+    With g the win (1, ties 0.5) of positive i over negative j in a round minus its mean over the
+    rounds in which both are held out: the sum over rounds of (sum g)^2 - sum of squared row sums -
+    sum of squared column sums + sum g^2, over the sum of n1(n1 - 1) n0(n0 - 1), x k / (k - 1), k
+    the mean number of rounds that hold out both of a pair; not below 0.
+
+    Parameters
+    ----------
+    positive : ndarray of bool, shape (n,)
+    rounds : Rounds
+    scores : array_like, shape (T,)
+        In the order of `rounds.pairs`, higher for positives.
+    block : int
+        Pairs kept in memory at once; it changes nothing but the memory used.
+
+    Returns
+    -------
+    float
+        nan where it cannot be estimated.
+    """
+    dense = np.full(rounds.test.shape, np.nan)
+    dense[rounds.pairs] = np.asarray(scores, dtype=np.float64)
+    ups, downs = np.flatnonzero(positive), np.flatnonzero(~positive)
+    if not len(ups) or not len(downs):
+        return math.nan
+    shape = (rounds.n_rounds, len(downs))
+    total, rows, columns, squares = np.zeros(shape[0]), 0.0, np.zeros(shape), 0.0
+    shared = held_out = 0.0
+    for start in range(0, len(ups), max(1, block // len(downs))):
+        part = ups[start : start + max(1, block // len(downs))]
+        times, mean = _mean_wins(dense[:, part], dense[:, downs])
+        shared, held_out = shared + times.sum(), held_out + (times > 0).sum()
+        for r in range(rounds.n_rounds):
+            g = np.nan_to_num(_wins(dense[r, part], dense[r, downs]) - mean)
+            total[r] += g.sum()
+            rows += float((g.sum(axis=1) ** 2).sum())
+            columns[r] += g.sum(axis=0)
+            squares += float((g**2).sum())
+    n1, n0 = rounds.test[:, ups].sum(axis=1, dtype=float), rounds.test[:, downs].sum(1, dtype=float)
+    pairs = float((n1 * (n1 - 1) * n0 * (n0 - 1)).sum())
+    k = shared / held_out if held_out else 0.0
+    if k <= 1 or pairs <= 0:
+        return math.nan
+    covariance = ((total**2).sum() - rows - (columns**2).sum() + squares) / pairs
+    return max(0.0, float(covariance)) * k / (k - 1)
+
+
+def _wins(ups: Floats, downs: Floats) -> Floats:
+    """1, 0.5 or 0 for each positive against each negative; nan where one is not held out."""
+    difference = ups[:, None] - downs[None, :]
+    return np.asarray((np.sign(difference) + 1) / 2, dtype=np.float64)
+
+
+def _mean_wins(ups: Floats, downs: Floats) -> tuple[Floats, Floats]:
+    """How often both of a pair are held out, and the mean win over those rounds."""
+    times = np.zeros((ups.shape[1], downs.shape[1]))
+    sums = np.zeros_like(times)
+    for up, down in zip(ups, downs, strict=True):
+        wins = _wins(up, down)
+        known = ~np.isnan(wins)
+        times += known
+        sums += np.where(known, wins, 0.0)
+    return times, np.divide(sums, times, out=np.full_like(sums, np.nan), where=times > 0)
+
+
+def cluster_variance(shares: Floats, units: NDArray[np.intp]) -> float:
+    """Variance of a mean over rows that come in units.
+
+    Parameters
+    ----------
+    shares : ndarray, shape (n,)
+        Mean held-out correctness of each row.
+    units : ndarray of int, shape (n,)
+    """
+    p = float(shares.mean())
+    sums = np.bincount(units, shares - p)
+    groups = len(np.unique(units))
+    return float((sums**2).sum() / len(shares) ** 2 * groups / (groups - 1))

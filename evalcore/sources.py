@@ -1,0 +1,95 @@
+"""Every formula and threshold cites one of these keys; what is our own construction says so."""
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class Source:
+    """Where a formula or threshold comes from.
+
+    Attributes
+    ----------
+    citation : str
+        As it would stand in a list of references.
+    doi : str
+        Empty where there is none.
+    own : bool
+        True for this project's own construction, which no paper vouches for.
+    """
+
+    citation: str
+    doi: str = ""
+    own: bool = False
+
+
+SOURCES: dict[str, Source] = {
+    "wilson1927": Source(
+        "Wilson 1927, Probable inference, the law of succession, and statistical inference, "
+        "J. Am. Stat. Assoc. 22:209-212",
+        "10.1080/01621459.1927.10502953",
+    ),
+    "clopper_pearson1934": Source(
+        "Clopper & Pearson 1934, The use of confidence or fiducial limits, Biometrika 26:404-413",
+        "10.1093/biomet/26.4.404",
+    ),
+    "newcombe1998": Source(
+        "Newcombe 1998, Interval estimation for the difference between independent proportions, "
+        "Stat. Med. 17:873-890",
+        "10.1002/(SICI)1097-0258(19980430)17:8<873::AID-SIM779>3.0.CO;2-I",
+    ),
+    "zou_donner2008": Source(
+        "Zou & Donner 2008, Construction of confidence limits about effect measures, "
+        "Stat. Med. 27:1693-1702",
+        "10.1002/sim.3095",
+    ),
+    "hand_till2001": Source(
+        "Hand & Till 2001, A simple generalisation of the area under the ROC curve for multiple "
+        "class classification problems, Mach. Learn. 45:171-186",
+        "10.1023/A:1010920819831",
+    ),
+    "airola2011": Source(
+        "Airola et al. 2011, An experimental comparison of cross-validation techniques for "
+        "estimating the area under the ROC curve, Comput. Stat. Data Anal. 55:1828-1844",
+        "10.1016/j.csda.2010.11.018",
+    ),
+    "efron1983": Source(
+        "Efron 1983, Estimating the error rate of a prediction rule, J. Am. Stat. Assoc. "
+        "78:316-331",
+        "10.1080/01621459.1983.10477973",
+    ),
+    "efron_tibshirani1993": Source(
+        "Efron & Tibshirani 1993, An Introduction to the Bootstrap, chapters 5 and 6",
+    ),
+    "efron_tibshirani1997": Source(
+        "Efron & Tibshirani 1997, Improvements on cross-validation: the .632+ bootstrap method, "
+        "J. Am. Stat. Assoc. 92:548-560",
+        "10.1080/01621459.1997.10474007",
+    ),
+    "kohavi1995": Source(
+        "Kohavi 1995, A study of cross-validation and bootstrap for accuracy estimation and model "
+        "selection, IJCAI 14:1137-1143",
+    ),
+    "beleites2013": Source(
+        "Beleites et al. 2013, Sample size planning for classification models, Anal. Chim. Acta "
+        "760:25-33",
+        "10.1016/j.aca.2012.11.007",
+    ),
+    "kapoor2023": Source(
+        "Kapoor & Narayanan 2023, Leakage and the reproducibility crisis in machine-learning-based "
+        "science, Patterns 4:100804",
+        "10.1016/j.patter.2023.100804",
+    ),
+    "own_model_variance": Source(
+        "own construction: the model's own variability as a method-of-moments covariance between "
+        "cases answered by one model; same idea as Nadeau & Bengio 2003, Mach. Learn. 52:239-281",
+        "10.1023/A:1024068626366",
+        own=True,
+    ),
+    "own_simulation": Source(
+        "own simulation study: repeated tables with known truth; thresholds are judgement supported "
+        "by it",
+        own=True,
+    ),
+    "common_practice": Source("common practice, no source"),
+    "elementary": Source("elementary probability"),
+}
