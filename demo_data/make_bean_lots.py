@@ -20,7 +20,7 @@ MISSING_MOISTURES = 15
 ROWS_ENTERED_TWICE = 6
 LOTS_SUBMITTED_TWICE = 5
 
-# How far lots in the same state differ in wear, where 0 reads like a sound lot and 1 like a worn-out one.
+# How far lots in the same state differ in wear: 0 reads like a sound lot, 1 like a worn-out one.
 WEAR_SPREAD = 0.1
 
 
@@ -55,28 +55,27 @@ FEATURES = (
 class Season(NamedTuple):
     """One harvest year: the lots that came in, how wet it was, and where they were read.
 
-    Some failing lots are sick inside and read like good ones; some good lots were rained on in the
-    field and read like failing ones. These lots, not noise, limit what any same-day screen can do.
+    Some good lots are as worn as failing ones and still germinate. These lots, not noise, limit
+    what any same-day screen can do.
     """
 
     year: int
     lots: int
     failing: int
-    sick_inside: int  # of the failing lots
-    rained_on: int  # of the good lots
+    worn_but_good: int
     wetness: float
     share_on_b: float
 
 
-# The wet year has most of the failing lots, and instrument B was borrowed in that year and kept as a
-# reserve: year, instrument and verdict are entangled, as they are in many archives.
+# The wet year has most of the failing lots, and instrument B stood in for A during that year: year,
+# instrument and verdict are entangled, as they are in many archives.
 SEASONS = (
-    Season(2021, 58, 8, 0, 4, -0.4, 0.00),
-    Season(2022, 62, 22, 0, 6, 1.0, 0.90),
-    Season(2023, 60, 8, 0, 4, 0.2, 0.12),
+    Season(2021, 58, 8, 4, -0.4, 0.00),
+    Season(2022, 62, 22, 6, 1.0, 0.95),
+    Season(2023, 60, 8, 4, 0.2, 0.05),
 )
-NEXT_SEASON = Season(2024, 60, 6, 0, 5, 0.4, 0.30)
-UNLABELLED_SEASON = Season(2025, 25, 2, 0, 2, 0.3, 0.30)
+NEXT_SEASON = Season(2024, 60, 6, 5, 0.4, 0.30)
+UNLABELLED_SEASON = Season(2025, 25, 2, 2, 0.1, 0.30)
 
 LOT_COLUMNS = ("lot", "producer", "harvest_year", "instrument", "operator")
 LATER_COLUMNS = ("days_to_certificate", "present_practice", "verdict")
@@ -101,13 +100,11 @@ class Lot:
 
 
 def draw_states(season: Season, rng: np.random.Generator) -> list[tuple[bool, float]]:
-    """Draw for every lot of a season whether it fails and how worn it reads, in order of submission."""
+    """Draw, in order of submission, whether each lot of a season fails and how worn it reads."""
     order = rng.permutation(season.lots)
     failing = order < season.failing
-    unlike_its_verdict = np.where(
-        failing, order < season.sick_inside, order < season.failing + season.rained_on
-    )
-    wear = (failing != unlike_its_verdict) + WEAR_SPREAD * rng.standard_normal(season.lots)
+    worn = order < season.failing + season.worn_but_good
+    wear = worn + WEAR_SPREAD * rng.standard_normal(season.lots)
     return list(zip(failing.tolist(), wear.tolist(), strict=True))
 
 
@@ -137,11 +134,15 @@ def draw_days_to_certificate(failing: bool, rng: np.random.Generator) -> int:
     Trap: a failing lot is tested a second time, so its certificate is late. The column gives the
     verdict away, but nobody knows it on the day when the screen has to answer.
     """
-    return round(rng.normal(18.0, 2.2) if failing else rng.normal(10.0, 1.8))
+    return round(rng.normal(17.0, 2.4) if failing else rng.normal(10.0, 1.9))
 
 
 def draw_present_practice(failing: bool, rng: np.random.Generator) -> str:
-    """Draw the answer of the present practice, a look at a handful of beans: it misses many failing lots."""
+    """Draw the answer of the present practice.
+
+    It is a look at a handful of beans, right for most good lots and for hardly more than half of
+    the failing ones: the floor that any model has to clear.
+    """
     says_failing = rng.random() < (0.55 if failing else 0.13)
     return "failing" if says_failing else "good"
 
@@ -164,7 +165,7 @@ def draw_lot(
 
 
 def draw_producers(count: int, rng: np.random.Generator) -> np.ndarray:
-    """Draw who sent each lot: every producer at least once where there are enough lots, a few often."""
+    """Draw who sent each lot: each producer once while lots last, some of them often."""
     each_once = np.arange(1, PRODUCERS + 1)[:count]
     shares = 1.0 / np.arange(4, PRODUCERS + 4)
     often = rng.choice(PRODUCERS, size=count - len(each_once), p=shares / shares.sum()) + 1
@@ -212,6 +213,7 @@ def enter_some_rows_twice(rows: list[Row], rng: np.random.Generator) -> list[Row
 
     Only rows of lots submitted once are chosen, so that the two kinds of duplicate stay apart.
     """
+
     def measured(row: Row) -> tuple[str, ...]:
         return tuple(row[name] for name in FEATURE_NAMES)
 
@@ -272,7 +274,7 @@ def make_training_rows() -> list[Row]:
 
 
 def make_next_season_rows() -> list[Row]:
-    """Make the later table with verdicts: another year, with the share of failing lots seen in routine."""
+    """Make the later table with verdicts: another year, failing lots as rare as in routine."""
     rng = np.random.default_rng([RANDOM_SEED, 2])
     return to_rows(draw_lots([NEXT_SEASON], rng), first_number=301)
 

@@ -10,6 +10,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from evalcore.answers import Answers, answers_of
 from evalcore.candidates import CANDIDATES, estimator
@@ -30,11 +31,6 @@ class Task:
     scheme: str
     start: int
     stop: int
-
-    @property
-    def name(self) -> str:
-        """Unique among a plan's tasks."""
-        return f"{self.scheme or 'whole'}-{self.start:05d}"
 
 
 @dataclass(frozen=True, eq=False)
@@ -128,7 +124,8 @@ def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -
             try:
                 scores = plain_scores(choice, table, part.train, random_states=states)
             except Exception as error:  # a candidate that cannot be fitted must not end the rest
-                warnings.warn(f"{name} failed in {task.name}: {error!r}", stacklevel=2)
+                rounds_of = task.scheme or "the whole table"
+                warnings.warn(f"{name} failed in {rounds_of}: {error!r}", stacklevel=2)
                 failures[name] = f"{type(error).__name__}: {error}"
             else:
                 answers[name] = answers_of(table, part, scores)
@@ -169,7 +166,7 @@ def plain_scores(
     return scores
 
 
-def _round_scores(choice: Choice, table: Table, rows: "np.ndarray", state: int) -> Floats:
+def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: int) -> Floats:
     labels = table.labels[rows]
     present = np.unique(labels)
     scores = np.zeros((table.n_cases, table.n_classes))

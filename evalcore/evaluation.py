@@ -6,9 +6,11 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+from numpy.typing import NDArray
 
 from evalcore import estimates, intervals, model_variance
 from evalcore.answers import Answers, HeldOut, Reduced, held_out
+from evalcore.candidates import CANDIDATES
 from evalcore.figures import CountedBy, Estimate, Interval
 from evalcore.measures import MEASURES, Floats
 from evalcore.plan import Plan
@@ -50,7 +52,7 @@ class Judged:
     held: HeldOut
     in_bag: Reduced
     whole: Reduced
-    units: "np.ndarray | None"
+    units: NDArray[np.intp] | None
 
     def held_values(self, measure: str, of_class: int = 0) -> Floats:
         """A measure within each round's held-out cases, shape (R,)."""
@@ -140,6 +142,10 @@ class Evaluation:
     def candidates(self) -> tuple[str, ...]:
         """Candidates that could be fitted, in the order of the plan."""
         return tuple(n for n in self.plan.candidate_names if n not in self.failures)
+
+    def is_baseline(self, candidate: str) -> bool:
+        """Whether a candidate looks at no feature."""
+        return CANDIDATES[self.plan.candidate(candidate).key].baseline
 
     def part(self, candidate: str, scheme: str, counted_by: CountedBy | None = None) -> Judged:
         """One candidate under one scheme, counted as the headline unless said otherwise."""

@@ -253,6 +253,7 @@ def make_table(sheet: Sheet, roles: Roles) -> Table:
         set_aside=set_aside,
         left_out=left_out,
         notices=sheet.notices + notices,
+        repeating=repeating_columns(sheet, roles.label, keep),
     )
 
 
@@ -426,3 +427,30 @@ def noun_from(column: str) -> Noun:
     word = re.sub(r"[_\s]*(id|no|nr|number|name|code)$", "", column.strip(), flags=re.IGNORECASE)
     word = (word or column).replace("_", " ").strip().lower()
     return Noun(word, word[:-1] + "ies" if re.search(r"[^aeiou]y$", word) else word + "s")
+
+
+def repeating_columns(
+    sheet: Sheet, label: str, rows: Sequence[int]
+) -> tuple[tuple[str, int, bool], ...]:
+    """Columns whose entries look like names of units: many, repeated, one class each.
+
+    Returns
+    -------
+    tuple of (column name, number of different entries, whether any is more than a number)
+    """
+    labels = [sheet.column(label)[i] for i in rows]
+    found = []
+    for name in sheet.header:
+        entries = [sheet.column(name)[i] for i in rows]
+        distinct = set(entries)
+        if name == label or not 10 <= len(distinct) <= 2 * len(rows) / 3:
+            continue
+        if any(_NUMBER.match(entry) and not entry.isdigit() for entry in distinct):
+            continue  # a reading, not a name
+        classes: dict[str, set[str]] = {}
+        for entry, of_class in zip(entries, labels, strict=True):
+            classes.setdefault(entry, set()).add(of_class)
+        if all(len(seen) == 1 for seen in classes.values()):
+            spelled = any(not entry.isdigit() for entry in distinct - MISSING)
+            found.append((name, len(distinct), spelled))
+    return tuple(found)

@@ -102,6 +102,10 @@ class Table:
         Columns no candidate sees: those named in `roles` and those that cannot be used.
     notices : tuple of str
         What was decided while reading.
+    repeating : tuple of (str, int, bool)
+        Columns that look like names of units: name, different entries, whether spelled out.
+    features : ndarray of float, shape (n, p)
+        The columns' values side by side.
     """
 
     name: str
@@ -116,6 +120,7 @@ class Table:
     set_aside: tuple[SetAside, ...] = ()
     left_out: tuple[str, ...] = ()
     notices: tuple[str, ...] = ()
+    repeating: tuple[tuple[str, int, bool], ...] = ()
     features: NDArray[np.float64] = field(init=False)
 
     def __post_init__(self) -> None:

@@ -1,0 +1,79 @@
+"""The registry of checks: every doubt the tool knows to raise, grave ones first."""
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+from evalcore import checks_candidates as candidates
+from evalcore import checks_rounds as rounds
+from evalcore import checks_table as of_table
+from evalcore.evaluation import Evaluation
+from evalcore.figures import SEVERITIES, Finding
+from evalcore.plan import Plan
+from evalcore.table import Table
+
+Look = Callable[[Table, Plan, Evaluation | None], Iterator[Finding]]
+
+
+@dataclass(frozen=True)
+class Check:
+    """One check: what it looks for and the function that looks."""
+
+    key: str
+    title: str
+    look: Look
+
+
+CHECKS: dict[str, Check] = {
+    check.key: check
+    for check in (
+        Check("failed", "a candidate could not be fitted", candidates.failed),
+        Check("unfinished", "rounds are missing", rounds.unfinished),
+        Check(
+            "tells_classes_apart_alone",
+            "one feature tells the classes apart alone",
+            of_table.tells_classes_apart_alone,
+        ),
+        Check(
+            "units_not_kept_together",
+            "rows of one unit may be on both sides",
+            of_table.units_not_kept_together,
+        ),
+        Check("copies_left", "the same case under two names", of_table.copies_left),
+        Check(
+            "not_better_than_majority",
+            "no better than the most frequent answer",
+            candidates.not_better_than_majority,
+        ),
+        Check("class_too_small", "too few units of a class", of_table.class_too_small),
+        Check("wide_interval", "the interval leaves much open", candidates.wide_interval),
+        Check("unstable_model", "the model varies from round to round", candidates.unstable_model),
+        Check(
+            "model_variance_unknown",
+            "the model's variance cannot be told",
+            candidates.model_variance_unknown,
+        ),
+        Check("schemes_disagree", "two schemes are apart", candidates.schemes_disagree),
+        Check("misleading_632", ".632 misleads here", candidates.misleading_632),
+        Check("never_held_out", "cases never held out", rounds.never_held_out),
+        Check("too_few_rounds", "a redraw would move the estimate", rounds.too_few_rounds),
+        Check("class_missing", "rounds that lack a class", rounds.class_missing),
+        Check("memorises", "right on all it was trained on", candidates.memorises),
+        Check("missing_values", "gaps in the table", of_table.missing_values),
+        Check("share_of_classes", "the mix of classes is assumed", rounds.share_of_classes),
+        Check("bags_as_expected", "what a bag holds", rounds.bags_as_expected),
+    )
+}
+
+
+def findings(table: Table, plan: Plan, evaluation: Evaluation | None = None) -> tuple[Finding, ...]:
+    """Every doubt, grave ones first and otherwise in the order of the registry.
+
+    Parameters
+    ----------
+    table : Table
+    plan : Plan
+    evaluation : Evaluation, optional
+        Without one, only what the table alone gives rise to.
+    """
+    found = [f for check in CHECKS.values() for f in check.look(table, plan, evaluation)]
+    return tuple(sorted(found, key=lambda f: SEVERITIES.index(f.severity)))

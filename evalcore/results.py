@@ -1,0 +1,87 @@
+"""Figures and findings as tidy CSV text: one row a figure, full precision."""
+
+import csv
+import io
+from collections.abc import Iterable, Sequence
+
+from evalcore.evaluation import Evaluation
+from evalcore.figures import Estimate, Finding
+from evalcore.findings import findings
+from evalcore.record import Record, write
+from evalcore.sources import SOURCES
+
+COLUMNS = (
+    "candidate", "scheme", "estimator", "measure", "class", "counted_by", "value", "low", "high",
+    "level", "interval", "n", "rounds", "undefined_rounds",
+)  # fmt: skip
+FINDING_COLUMNS = (
+    "check", "severity", "subject", "title", "seen", "advice", "value", "threshold", "source",
+)  # fmt: skip
+
+
+def write_results(record: Record) -> None:
+    """Write `results.csv` and `findings.csv` into a record."""
+    evaluation = record.evaluation()
+    if evaluation is None:
+        return
+    write(record.folder / "results.csv", results_csv(evaluation).encode())
+    found = findings(record.table, record.plan, evaluation)
+    write(record.folder / "findings.csv", findings_csv(found).encode())
+
+
+def results_csv(evaluation: Evaluation) -> str:
+    """Every estimate of an evaluation, one a row, in full precision.
+
+    An undefined value is ``nan``; `low`, `high`, `level` and `interval` are empty where no
+    interval is offered.
+    """
+    return _csv(COLUMNS, (_row(estimate) for estimate in evaluation.estimates))
+
+
+def findings_csv(found: Iterable[Finding]) -> str:
+    """Findings, one a row."""
+    return _csv(
+        FINDING_COLUMNS,
+        (
+            (
+                f.check, f.severity, f.subject, f.title, f.seen, f.advice, repr(float(f.value)),
+                repr(float(f.threshold)), SOURCES[f.source].citation,
+            )
+            for f in found
+        ),
+    )  # fmt: skip
+
+
+def _row(e: Estimate) -> tuple[str, ...]:
+    bounds = e.interval
+    ends = (
+        (repr(float(bounds.low)), repr(float(bounds.high)), repr(bounds.level), bounds.method)
+        if bounds
+        else ("", "", "", "")
+    )
+    return (
+        e.candidate, e.scheme, e.estimator, e.measure, e.of_class, e.counted_by,
+        repr(float(e.value)), *ends, str(e.n), str(e.rounds), str(e.undefined_rounds),
+    )  # fmt: skip
+
+
+def _csv(header: Sequence[str], rows: Iterable[Sequence[str]]) -> str:
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(header)
+    writer.writerows([plain(cell) for cell in row] for row in rows)
+    return text.getvalue()
+
+
+def plain(cell: str) -> str:
+    """Text that a spreadsheet would take for a formula, made harmless by an apostrophe.
+
+    >>> plain("=1+1"), plain("-0.5"), plain("good")
+    ("'=1+1", '-0.5', 'good')
+    """
+    if cell[:1] in ("=", "+", "-", "@", "\t", "\r"):
+        try:
+            float(cell)
+        except ValueError:
+            return "'" + cell
+    return cell

@@ -1,0 +1,112 @@
+"""An acceptance limit against what the cases show: shown, not shown yet, shown to fall short."""
+
+import math
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+
+from evalcore.evaluation import Evaluation, Judged, share_interval
+from evalcore.figures import Interval
+from evalcore.intervals import square_and_add
+from evalcore.model_variance import balanced_model_variance
+from evalcore.plan import Limit
+from evalcore.sample_size import lower_bound, upper_bound
+
+Word = Literal["shown", "not shown yet", "shown to fall short"]
+LEAST_UNITS = 10  # below this nothing is called shown: 9 of 10 right may mean 60 % (exact, 95 %)
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """What the cases say about one limit.
+
+    Attributes
+    ----------
+    limit : Limit
+    word : {"shown", "not shown yet", "shown to fall short"}
+    value : float
+        Held-out estimate.
+    at_least, at_most : float
+        One-sided bounds at the limit's confidence: the more cautious of the exact binomial bound
+        on whole units (none for balanced accuracy) and the interval with model variance.
+    n : int
+        Units of the class, or all.
+    """
+
+    limit: Limit
+    word: Word
+    value: float
+    at_least: float
+    at_most: float
+    n: int
+
+
+def verdicts(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
+    """One verdict a limit for a candidate under the headline's scheme and counting."""
+    part = evaluation.part(candidate, evaluation.scheme)
+    return tuple(_verdict(evaluation, part, limit) for limit in evaluation.plan.limits)
+
+
+def overall(given: tuple[Verdict, ...]) -> Word | None:
+    """Shown only if all are, shown to fall short if any is; None without limits."""
+    if not given:
+        return None
+    words = {verdict.word for verdict in given}
+    if "shown to fall short" in words:
+        return "shown to fall short"
+    return "shown" if words == {"shown"} else "not shown yet"
+
+
+def judge(value: float, at_least: float, at_most: float, *, limit: float, n: int) -> Word:
+    """The word for bounds against a limit; fewer than ten units are never called shown."""
+    if not math.isnan(value) and at_most < limit:
+        return "shown to fall short"
+    if at_least >= limit and n >= LEAST_UNITS:
+        return "shown"
+    return "not shown yet"
+
+
+def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
+    level = 2 * limit.confidence - 1
+    table = evaluation.table
+    estimate = evaluation.estimate(
+        limit.measure, part.candidate, of_class=limit.of_class, scheme=part.scheme
+    )
+    if limit.measure == "balanced_accuracy":
+        bounds = _balanced(part, level)
+        at_least, at_most = bounds.low, bounds.high
+        n = int(table.class_counts("unit").min())
+    else:
+        k = table.classes.index(limit.of_class) if limit.of_class else None
+        bounds = share_interval(level, part, k)
+        n = _units_behind(evaluation, part, k)
+        # exact bounds take whole units: rounded down for the lower, up for the upper
+        right = estimate.value * n
+        at_least = min(
+            bounds.low, lower_bound(math.floor(right + 1e-9), n, confidence=limit.confidence)
+        )
+        at_most = max(
+            bounds.high, upper_bound(math.ceil(right - 1e-9), n, confidence=limit.confidence)
+        )
+    word = judge(estimate.value, at_least, at_most, limit=limit.least, n=n)
+    return Verdict(limit, word, estimate.value, at_least, at_most, n)
+
+
+def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) -> int:
+    known = ~np.isnan(part.shares)
+    if of_class is not None:
+        known &= part.held.labels == of_class
+    return len(np.unique(part.units[known])) if part.units is not None else int(known.sum())
+
+
+def _balanced(part: Judged, level: float) -> Interval:
+    n_classes = part.held.scores.shape[1]
+    parts = [share_interval(level, part, k, variance=False) for k in range(n_classes)]
+    shares = [
+        float(np.nanmean(part.shares[part.held.labels == k])) for k in range(n_classes)
+    ]
+    tau2 = balanced_model_variance(
+        part.held.labels, part.held.rounds, part.held.correct, n_classes=n_classes
+    )
+    return square_and_add(shares, parts, tau2)

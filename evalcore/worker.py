@@ -1,0 +1,111 @@
+"""The process that fills one record: ``python -m evalcore.worker FOLDER PARENT``.
+
+It reports through the record alone, ends when it is told to or when its parent is gone, and leaves
+every finished chunk behind.
+"""
+
+import os
+import sys
+import threading
+import time
+import traceback
+from collections.abc import Callable
+from pathlib import Path
+
+from evalcore.engine import run
+from evalcore.errors import EvalError
+from evalcore.record import Record, State, Status
+from evalcore.results import write_results
+
+WORTH_PROCESSES = 20.0  # seconds of work left from which starting processes pays
+BEAT = 0.5  # seconds between looks at the parent and the request to stop
+
+
+def fill(
+    record: Record,
+    *,
+    jobs: int | None = None,
+    tell: Callable[[Status], None] = lambda status: None,
+) -> None:
+    """Carry out what is unfinished, then write the results.
+
+    Parameters
+    ----------
+    record : Record
+    jobs : int, optional
+        Processes; by default one until enough work is left to make more worth starting.
+    tell : callable
+        Called with each new status.
+    """
+    todo, rounds = record.unfinished(), record.rounds
+    done, began = record.done(), time.monotonic()
+    at_first = done
+
+    def say(state: Status) -> None:
+        record.set_status(state)
+        tell(state)
+
+    say(Status("running", done, record.total, process=os.getpid()))
+    while todo:
+        now, todo = (todo, []) if jobs else (todo[:1], todo[1:])
+        seconds = _seconds_left(done - at_first, record.total - done, began)
+        if not jobs and seconds is not None:
+            worth = seconds > WORTH_PROCESSES
+            now, todo = ([*now, *todo], []) if worth else (now, todo)
+            jobs = (os.cpu_count() or 1) if worth else None
+        for finished in run(record.table, record.plan, rounds, todo=now, jobs=jobs or 1):
+            record.add(finished)
+            done += finished.task.stop - finished.task.start
+            seconds = _seconds_left(done - at_first, record.total - done, began)
+            say(Status("running", done, record.total, seconds, process=os.getpid()))
+    write_results(record)
+    say(Status("finished", record.total, record.total))
+
+
+def _seconds_left(done: int, left: int, began: float) -> float | None:
+    """None until enough rounds have finished to say anything."""
+    return None if done < 5 else (time.monotonic() - began) / done * left
+
+
+def _watch(record: Record, parent: int) -> None:
+    """End this process when asked to, or when the parent is gone; show signs of life meanwhile."""
+    while True:
+        time.sleep(BEAT)
+        record.beat()
+        state: State | None = (
+            "cancelled"
+            if record.cancelled()
+            else "interrupted"
+            if parent and os.getppid() != parent
+            else None
+        )
+        if state:
+            record.set_status(Status(state, record.done(), record.total))
+            _stop_processes()
+            os._exit(0)
+
+
+def _stop_processes() -> None:
+    """Stop the processes that carry out rounds, if any were started."""
+    loky = sys.modules.get("joblib.externals.loky.reusable_executor")
+    executor = getattr(loky, "_executor", None)
+    if executor is not None:
+        executor.shutdown(wait=False, kill_workers=True)
+
+
+def main(folder: str, parent: str) -> None:
+    """Fill the record of a folder on behalf of a parent process."""
+    record = Record(Path(folder))
+    threading.Thread(target=_watch, args=(record, int(parent)), daemon=True).start()
+    try:
+        fill(record)
+    except Exception as error:  # the boundary: whatever happens is kept in the log and told
+        traceback.print_exc()
+        message = str(error) if isinstance(error, EvalError) else (
+            "The evaluation stopped on an error that was not foreseen; the record's log has it."
+        )
+        record.set_status(Status("failed", record.done(), record.total, message=message))
+
+
+if __name__ == "__main__":
+    main(*sys.argv[1:3])

@@ -1,0 +1,62 @@
+"""Facts from outside, and small tables to hold the core against them."""
+
+import json
+import pathlib
+import re
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
+from evalcore.intake import make_table, read_sheet
+from evalcore.table import Column, Roles, Table
+
+DATA = pathlib.Path(__file__).parents[1] / "data"
+
+
+def cases(topic: str, kind: str) -> list[Any]:
+    """The check cases of one kind as parameters, each under its id.
+
+    Raises if there are none, so that a misspelt kind does not pass as an empty test.
+    """
+    import pytest
+
+    (path,) = DATA.glob(f"{topic}_*.json")
+    found = [c for c in json.loads(path.read_text(encoding="utf-8"))["cases"] if c["kind"] == kind]
+    if not found:
+        raise LookupError(f"no case of kind {kind!r} in {path.name}")
+    return [pytest.param(case, id=case["id"]) for case in found]
+
+
+def exactly(message: str) -> str:
+    """A pattern for `pytest.raises` that only the whole message matches."""
+    return rf"\A{re.escape(message)}\Z"
+
+
+def table_of(
+    labels: Sequence[int],
+    *,
+    units: Sequence[int] | None = None,
+    features: object = None,
+    classes: Sequence[str] = ("a", "b", "c", "d"),
+) -> Table:
+    """A table from class codes; units numbered in order of first appearance."""
+    n = len(labels)
+    unit = np.arange(n) if units is None else np.asarray(units, dtype=np.intp)
+    x = np.arange(n)[:, None] * 1.37 if features is None else np.asarray(features, dtype=float)
+    return Table(
+        name="made.csv",
+        columns=tuple(Column(f"x{j + 1}", "number", x[:, j].copy()) for j in range(x.shape[1])),
+        labels=np.asarray(labels, dtype=np.intp),
+        classes=tuple(classes[: max(labels) + 1]),
+        units=unit,
+        unit_names=tuple(f"u{g}" for g in range(int(unit.max()) + 1)),
+        roles=Roles("class", "" if units is None else "unit"),
+        lines=np.arange(2, n + 2),
+        rows_read=n,
+    )
+
+
+def table_from(name: str, roles: Roles) -> Table:
+    """A table from a file among the test data."""
+    return make_table(read_sheet((DATA / name).read_bytes(), name), roles)
