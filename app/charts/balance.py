@@ -22,6 +22,7 @@ from evalcore.wording import count, percent, quoted
 MOST_ROWS = 12
 LARGE_CLASS = 400  # above it single tens can no longer be counted
 MOST_CUTS = 40
+FITS_NARROW = 34  # characters of figures that still stand beside a name at 368 px
 BAR = 14
 OPEN_BAR = 6
 
@@ -142,12 +143,13 @@ def _chart(table: Table, shares: tuple[ClassShare, ...], cut: int) -> alt.LayerC
         drawing.written_percent,
     )
     tops = [pitch * at for at in range(len(shares))]
+    short = max(len(_figures(table, share)) for share in shares) > FITS_NARROW
     heads = [
         (
             top + 14,
             shorten(share.name, 60),
             _figures(table, share),
-            _figures(table, share, short=len(_figures(table, share)) > 28),
+            _figures(table, share, short=short),
         )
         for top, share in zip(tops, shares, strict=True)
     ]

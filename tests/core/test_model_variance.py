@@ -207,14 +207,17 @@ class TestAuc:
         k = times[times > 0].mean()
         return max(0.0, total / number) * k / (k - 1)
 
+    def scores(self, rounds: Rounds, seed: int) -> np.ndarray:
+        """Every second model ranks the wrong way round, so that the value is not cut off at 0."""
+        slope = np.where(rounds.pairs[0] % 2, -4, 4)
+        noise = np.random.default_rng(500 + seed).normal(size=len(slope))
+        return slope * self.positive[rounds.pairs[1]] + noise
+
     @pytest.mark.parametrize("seed", range(4))
     def test_over_pairs_of_pairs(self, seed):
-        rounds = some_rounds(seed, n=10, n_rounds=16)
-        rng = np.random.default_rng(500 + seed)
-        # models that rank well or the wrong way round, so that the value is not cut off at 0
-        slope = rng.choice([-3, 3], rounds.n_rounds)[rounds.pairs[0]]
+        rounds = some_rounds(seed, n=10, n_rounds=24)
         # rounded, so that there are ties
-        scores = np.round(slope * self.positive[rounds.pairs[1]] + rng.normal(size=len(slope)), 1)
+        scores = np.round(self.scores(rounds, seed), 1)
         expected = self.brute(rounds, scores)
         assert expected > 0
         assert auc_model_variance(self.positive, rounds, scores) == pytest.approx(
@@ -222,10 +225,8 @@ class TestAuc:
         )
 
     def test_the_block_changes_nothing(self):
-        rounds = some_rounds(7, n=10, n_rounds=12)
-        rng = np.random.default_rng(8)
-        scores = rng.choice([-2, 2], 12)[rounds.pairs[0]] * self.positive[rounds.pairs[1]]
-        scores = scores + rng.normal(size=len(scores))
+        rounds = some_rounds(7, n=10, n_rounds=24)
+        scores = self.scores(rounds, 7)
         whole = auc_model_variance(self.positive, rounds, scores)
         assert whole > 0
         for block in (1, 7, 13):
@@ -233,10 +234,8 @@ class TestAuc:
             assert found == pytest.approx(whole, rel=1e-12)
 
     def test_any_rising_scale_gives_the_same(self):
-        rounds = some_rounds(9, n=10, n_rounds=12)
-        rng = np.random.default_rng(9)
-        scores = rng.choice([-2, 2], 12)[rounds.pairs[0]] * self.positive[rounds.pairs[1]]
-        scores = scores + rng.normal(size=len(scores))
+        rounds = some_rounds(9, n=10, n_rounds=24)
+        scores = self.scores(rounds, 9)
         found = auc_model_variance(self.positive, rounds, scores)
         assert found > 0
         assert auc_model_variance(self.positive, rounds, np.exp(scores)) == found

@@ -1,0 +1,328 @@
+"""Rows of words above a track: a block in the track is an interval, and nothing else is."""
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+import altair as alt
+
+from app.charts import drawing
+from app.charts.style import LIMIT, PAPER, REFERENCE, STRAW, TRACK
+from evalcore.figures import Interval
+
+HEADER = 16  # px of the words above a track
+TRACK_HEIGHT = 20
+BLOCK = 12
+SHAPE_SIZE = 62
+UNDER = 16  # px of the words under a track
+WIDE, SLIM = 640, 352  # px in which words must not collide
+
+
+@dataclass(frozen=True)
+class Bound:
+    """A stroke across one track with words under it."""
+
+    value: float
+    words: str
+    colour: str
+
+
+@dataclass(frozen=True)
+class TrackRow:
+    """One row: name, figures, interval block and mark.
+
+    Attributes
+    ----------
+    name, long, short : str
+        Left, right, and right where it is narrow.
+    value : float
+        nan where undefined: then there is no mark.
+    interval : Interval or None
+    colour, shape : str
+    tip : dict of str to str
+        What the tooltip says, by title.
+    bounds : tuple of Bound
+        At most two, each with its words under the track.
+    """
+
+    name: str
+    long: str
+    short: str
+    value: float
+    interval: Interval | None
+    colour: str
+    shape: str
+    tip: dict[str, str] = field(default_factory=dict)
+    bounds: tuple[Bound, ...] = ()
+
+
+@dataclass(frozen=True)
+class Reference:
+    """A line all rows are held against, named once on top.
+
+    Attributes
+    ----------
+    value : float
+    long, short : str
+        Its words, and those where it is narrow.
+    is_limit : bool
+        Limits are solid with straw below them; others are dashed.
+    """
+
+    value: float
+    long: str
+    short: str
+    is_limit: bool = False
+
+    @property
+    def colour(self) -> str:
+        """Colour of its stroke and words."""
+        return LIMIT if self.is_limit else REFERENCE
+
+
+def track_chart(
+    rows: Sequence[TrackRow],
+    references: Sequence[Reference],
+    *,
+    rule: drawing.Ruler,
+    title: str,
+    short_title: str = "",
+) -> alt.LayerChart:
+    """Rows under each other on one ruler, reference lines named once on top."""
+    sides, lines = placed(references, rule)
+    top = 18 * lines + 8 if references else 0
+    pitch = 50 + (UNDER if any(row.bounds for row in rows) else 0)
+    tops = [top + pitch * at + HEADER + 4 for at in range(len(rows))]
+    bottom = top + pitch * len(rows)
+    height = bottom + drawing.AXIS_ROOM
+    heads = [(y - 6, row.name, row.long, row.short) for y, row in zip(tops, rows, strict=True)]
+    layers = [
+        *_ground(tops, references, rule, height),
+        *_lines(references, rule, tops=tops, height=height, limits=False),
+        *_blocks(rows, rule, tops=tops, height=height),
+        *_lines(references, rule, tops=tops, height=height, limits=True),
+        *_bounds(rows, rule, tops=tops, height=height),
+        *_marks(rows, rule, tops=tops, height=height),
+        *_names(references, sides, rule, height=height, top=top),
+        *drawing.headers(heads, height),
+        *drawing.axis(rule, bottom, height, title=title, short=short_title),
+    ]
+    return drawing.composed(layers, height)
+
+
+def placed(
+    references: Sequence[Reference], rule: drawing.Ruler
+) -> tuple[list[tuple[str, int]], int]:
+    """Side ("left" or "right" aligned) and line of each reference's words, and the lines needed.
+
+    The words of two lines go away from each other; where they would still touch at a width that
+    is met, or leave the chart, they stand on two lines.
+    """
+    order = sorted(range(len(references)), key=lambda at: references[at].value)
+    sides = [""] * len(references)
+    for rank, at in enumerate(order):
+        place = rule.place(references[at].value)
+        outwards = "right" if rank == 0 and len(order) > 1 else "left"
+        if len(order) == 1:
+            outwards = "left" if place < 0.5 else "right"
+        sides[at] = _that_fits(references[at], place, outwards)
+    spans = [
+        [_span(references[at], rule, sides[at], width) for at in order] for width in (WIDE, SLIM)
+    ]
+    collide = any(a[1] + 6 > b[0] for each in spans for a, b in zip(each, each[1:], strict=False))
+    rank_of = {at: rank for rank, at in enumerate(order)}
+    lines = [rank_of[at] if collide else 0 for at in range(len(references))]
+    return list(zip(sides, lines, strict=True)), max(lines, default=0) + 1
+
+
+def _that_fits(reference: Reference, place: float, wanted: str) -> str:
+    """The wanted side unless the words would leave the chart there and not on the other side."""
+    room = {"left": 1 - place, "right": place}
+    other = "left" if wanted == "right" else "right"
+    need = drawing.CHARACTER * len(reference.short) / SLIM
+    return wanted if room[wanted] >= need or room[wanted] >= room[other] else other
+
+
+def _span(
+    reference: Reference, rule: drawing.Ruler, side: str, width: int
+) -> tuple[float, float]:
+    words = reference.long if width == WIDE else reference.short
+    x, length = width * rule.place(reference.value), drawing.CHARACTER * len(words)
+    return (x, x + length) if side == "left" else (x - length, x)
+
+
+def _ground(
+    tops: Sequence[float], references: Sequence[Reference], rule: drawing.Ruler, height: float
+) -> list[alt.Chart]:
+    """The strips, straw below the limit, and white cuts at the ticks."""
+    bands = [{"y": y, "y2": y + TRACK_HEIGHT} for y in tops]
+    strip = (
+        alt.Chart(drawing.data(bands))
+        .mark_rect(color=TRACK)
+        .encode(x=alt.value(0), x2=alt.value("width"), y=drawing.down(height), y2="y2:Q")
+    )
+    layers = [strip]
+    limits = [r.value for r in references if r.is_limit]
+    if limits:
+        straw = [{**band, "x": max(limits)} for band in bands]
+        layers.append(
+            alt.Chart(drawing.data(straw))
+            .mark_rect(color=STRAW)
+            .encode(x=rule.x(), x2=alt.value(0), y=drawing.down(height), y2="y2:Q")
+        )
+    inner = [t for t in rule.ticks if 0.02 < rule.place(t) < 0.98]
+    cuts = [{"x": t, **band} for band in bands for t in inner]
+    layers.append(drawing.upright(cuts, rule, height, color=PAPER, strokeWidth=2))
+    return layers
+
+
+def _lines(
+    references: Sequence[Reference],
+    rule: drawing.Ruler,
+    *,
+    tops: Sequence[float],
+    height: float,
+    limits: bool,
+) -> list[alt.Chart]:
+    """Strokes across the tracks and a stub under the words, never through words."""
+    layers = []
+    for reference in references:
+        if reference.is_limit != limits:
+            continue
+        bands = [{"x": reference.value, "y": y, "y2": y + TRACK_HEIGHT} for y in tops]
+        stub = tops[0] - HEADER - 10
+        bands.append({"x": reference.value, "y": stub, "y2": stub + 6})
+        dash = {} if limits else {"strokeDash": [4, 3]}
+        layers.append(
+            drawing.upright(bands, rule, height, color=reference.colour, strokeWidth=2, **dash)
+        )
+    return layers
+
+
+def _names(
+    references: Sequence[Reference],
+    sides: Sequence[tuple[str, int]],
+    rule: drawing.Ruler,
+    *,
+    height: float,
+    top: float,
+) -> list[alt.Chart]:
+    if not references:
+        return []
+    rows = [
+        {
+            "x": reference.value,
+            "y": top - 14 - 18 * line + 2,
+            "long": reference.long,
+            "short": reference.short,
+            "align": side,
+            "colour": reference.colour,
+        }
+        for reference, (side, line) in zip(references, sides, strict=True)
+    ]
+    return [drawing.words_at(rows, rule, height)]
+
+
+def _blocks(
+    rows: Sequence[TrackRow], rule: drawing.Ruler, *, tops: Sequence[float], height: float
+) -> list[alt.Chart]:
+    inset = (TRACK_HEIGHT - BLOCK) / 2
+    blocks = [
+        {
+            "x": row.interval.low,
+            "x2": row.interval.high,
+            "y": y + inset,
+            "y2": y + inset + BLOCK,
+            "colour": row.colour,
+            **row.tip,
+        }
+        for y, row in zip(tops, rows, strict=True)
+        if row.interval is not None and row.interval.defined
+    ]
+    if not blocks:
+        return []
+    colour = alt.Color("colour:N", scale=None, legend=None)
+    block = (
+        alt.Chart(drawing.data(blocks))
+        .mark_rect(opacity=0.4)
+        .encode(
+            x=rule.x(),
+            x2="x2:Q",
+            y=drawing.down(height),
+            y2="y2:Q",
+            color=colour,
+            tooltip=[alt.Tooltip(f"{key}:N") for key in rows[0].tip],
+        )
+    )
+    ends = [
+        {"x": row[end], "y": row["y"], "y2": row["y2"], "colour": row["colour"]}
+        for row in blocks
+        for end in ("x", "x2")
+    ]
+    strokes = drawing.upright(ends, rule, height, strokeWidth=2).encode(color=colour)
+    return [block, strokes]
+
+
+def _bounds(
+    rows: Sequence[TrackRow], rule: drawing.Ruler, *, tops: Sequence[float], height: float
+) -> list[alt.Chart]:
+    """Strokes with words under the track, pointing away from each other."""
+    strokes, words = [], []
+    for y, row in zip(tops, rows, strict=True):
+        order = sorted(row.bounds, key=lambda bound: bound.value)
+        for rank, bound in enumerate(order):
+            is_limit = bound.colour == LIMIT
+            end = y + TRACK_HEIGHT + (0 if is_limit else 8)
+            strokes.append({"x": bound.value, "y": y, "y2": end, "colour": bound.colour})
+            wanted = "right" if rank == 0 and len(order) > 1 else "left"
+            reference = Reference(bound.value, bound.words, bound.words)
+            side = _that_fits(reference, rule.place(bound.value), wanted)
+            words.append(
+                {
+                    "x": bound.value,
+                    "y": y + TRACK_HEIGHT + 13,
+                    "long": bound.words,
+                    "short": bound.words,
+                    "align": side,
+                    "away": 0 if is_limit else 5,
+                    "colour": bound.colour,
+                }
+            )
+    if not strokes:
+        return []
+    colour = alt.Color("colour:N", scale=None, legend=None)
+    return [
+        drawing.upright(strokes, rule, height, strokeWidth=2).encode(color=colour),
+        drawing.words_at(words, rule, height),
+    ]
+
+
+def _marks(
+    rows: Sequence[TrackRow], rule: drawing.Ruler, *, tops: Sequence[float], height: float
+) -> list[alt.Chart]:
+    marks = [
+        {
+            "x": row.value,
+            "y": y + TRACK_HEIGHT / 2,
+            "colour": row.colour,
+            "shape": row.shape,
+            **row.tip,
+        }
+        for y, row in zip(tops, rows, strict=True)
+        if not math.isnan(row.value)
+    ]
+    if not marks:
+        return []
+    return [
+        alt.Chart(drawing.data(marks))
+        .mark_point(filled=True, opacity=1, size=SHAPE_SIZE, stroke=PAPER, strokeWidth=1.2)
+        .encode(
+            x=rule.x(),
+            y=drawing.down(height),
+            fill=alt.Fill("colour:N", scale=None, legend=None),
+            shape=alt.Shape("shape:N", scale=None, legend=None),
+            tooltip=[alt.Tooltip(f"{key}:N") for key in rows[0].tip],
+        )
+    ]
+
+

@@ -1,0 +1,202 @@
+"""The answer in sentences: what the figures say, in the user's own nouns."""
+
+import re
+from dataclasses import dataclass
+
+from evalcore.evaluation import Evaluation
+from evalcore.figures import Estimate
+from evalcore.measures import MEASURES
+from evalcore.plan import Limit, Plan
+from evalcore.profile import majority
+from evalcore.sample_size import cases_to_show, upper_bound
+from evalcore.schemes import SCHEMES
+from evalcore.table import Table
+from evalcore.verdict import LEAST_UNITS, Verdict, verdicts
+from evalcore.wording import (
+    NBSP,
+    capitalised,
+    count,
+    level,
+    listed,
+    n_equals,
+    percent,
+    quoted,
+    with_interval,
+)
+
+CAUTION = (
+    "Where a wrong answer can hurt someone, these figures support local rules and licensed "
+    "practice and do not replace them."
+)
+
+
+@dataclass(frozen=True)
+class LimitRow:
+    """One acceptance limit as a row: name, figure, verdict, and what stands behind it."""
+
+    name: str
+    figure: str
+    verdict: Verdict
+    detail: str
+
+
+def class_name(name: str) -> str:
+    """A class inside a sentence: as it is if it reads as a word, else in quotes.
+
+    >>> class_name("failing"), class_name("1")
+    ('failing', '‘1’')
+    """
+    return name if re.fullmatch(r"[^\W\d_]+(?:[ \-’][^\W\d_]+)*", name) else quoted(name)
+
+
+def class_rate(table: Table, plan: Plan, name: str, *, trade: bool = True) -> str:
+    """What the share right of one class is called: "failing lots found (sensitivity)".
+
+    In a table of two classes the class of concern is found and the other one passed.
+    """
+    noun = table.noun_for(plan.counted_by(table)).plural
+    passed = table.n_classes == 2 and name != plan.concern_of(table)
+    words = f"{class_name(name)} {noun} {'passed' if passed else 'found'}"
+    return f"{words} ({'specificity' if passed else 'sensitivity'})" if trade else words
+
+
+def measure_name(table: Table, plan: Plan, measure: str, of_class: str = "") -> str:
+    """A measure said plainly, with the trade's name in brackets."""
+    if of_class:
+        return class_rate(table, plan, of_class)
+    known = MEASURES[measure]
+    units = table.noun_for(plan.counted_by(table)).plural
+    return f"{known.plain.format(units=units)} ({known.trade})"
+
+
+def scheme_in_words(plan: Plan, table: Table, scheme: str) -> str:
+    """A scheme as a caption: "stratified 5-fold cross-validation by lot, 20 times"."""
+    choice = plan.scheme(scheme)
+    values = choice.values()
+    kind = "stratified " if values.get("stratified") else ""
+    by = f" by {table.noun.singular}" if table.has_units else ""
+    share = percent(float(values.get("test_share", 0)), 1)
+    return {
+        "cross_validation": f"{kind}{values.get('folds')}-fold cross-validation{by}, "
+        f"{values.get('repeats')} times",
+        "bootstrap": f"{count(int(values.get('rounds', 0)))} {kind}bootstrap rounds{by}",
+        "random_subsampling": f"{count(int(values.get('rounds', 0)))} {kind}random splits{by}, "
+        f"{share} held out",
+        "holdout": f"one {kind}split{by}, {share} held out",
+        "leave_one_out": f"each {table.noun.singular} left out once",
+    }[choice.key]
+
+
+def _figure(estimate: Estimate, *, noun: str = "") -> str:
+    n = f"n{NBSP}={NBSP}{count(estimate.n)}{NBSP}{noun}".rstrip()
+    bounds = estimate.interval
+    if bounds is None or not bounds.defined:
+        return f"{percent(estimate.value, estimate.n)} ({n})"
+    return with_interval(estimate.value, bounds, estimate.n)[:-1] + f", {n})"
+
+
+def answer(evaluation: Evaluation) -> str:
+    """The headline sentence: the share right with its interval and n, each class, the majority.
+
+    Says what it covers: further cases obtained like these, with the same share of classes.
+    """
+    table, plan = evaluation.table, evaluation.plan
+    noun = table.noun_for(evaluation.counted_by).plural
+    about = evaluation.about
+    concern = plan.concern_of(table)
+    mix = (
+        f"share of {class_name(concern)} {noun}" if table.n_classes == 2 else "shares of classes"
+    )
+    whole = evaluation.estimate("accuracy", about)
+    bounds = whole.interval
+    stated = (
+        _figure(whole, noun=noun).replace("(", f"({level(bounds.level)} interval ", 1)
+        if bounds and bounds.defined
+        else _figure(whole, noun=noun)
+    )
+    k, share = majority(table, evaluation.counted_by)
+    return (
+        f"On further {noun} obtained like these, with the same {mix}, {plan.title(about)} is "
+        f"expected to be right in {stated}; {listed(_by_class(evaluation, about))}. Always "
+        f"answering {quoted(table.classes[k])} would be right in {percent(share, whole.n)}."
+    )
+
+
+def _by_class(evaluation: Evaluation, candidate: str) -> list[str]:
+    """Each class with its figure, the class of concern first; of many classes the worst three."""
+    table, plan = evaluation.table, evaluation.plan
+    given = [evaluation.estimate("sensitivity", candidate, of_class=c) for c in table.classes]
+    concern = plan.concern_of(table)
+    if len(given) > 4:
+        given = sorted(given, key=lambda e: e.value)[:3]
+    else:
+        given = sorted(given, key=lambda e: e.of_class != concern)
+    return [f"{class_rate(table, plan, e.of_class, trade=False)} {_figure(e)}" for e in given]
+
+
+def title(evaluation: Evaluation) -> str:
+    """The answer in a few words: the verdicts, or about how many of ten are right."""
+    given = verdicts(evaluation, evaluation.about)
+    table, plan = evaluation.table, evaluation.plan
+    noun = table.noun_for(evaluation.counted_by).plural
+    if given:
+        return " ".join(
+            f"{capitalised(_short(table, plan, v.limit, noun))}: {v.word}." for v in given
+        )
+    value = evaluation.estimate("accuracy", evaluation.about).value
+    of_ten = round(10 * value)
+    if of_ten == 10:
+        return f"Right on nearly all further {noun} like these."
+    return f"Right on about {of_ten} of 10 further {noun} like these."
+
+
+def _short(table: Table, plan: Plan, limit: Limit, noun: str) -> str:
+    if limit.of_class:
+        return f"{class_name(limit.of_class)} {noun}"
+    return f"{MEASURES[limit.measure].trade}"
+
+
+def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
+    """Each acceptance limit with its figure, verdict and what would show it."""
+    table, plan = evaluation.table, evaluation.plan
+    rows = []
+    for verdict in verdicts(evaluation, candidate):
+        limit = verdict.limit
+        estimate = evaluation.estimate(limit.measure, candidate, of_class=limit.of_class)
+        rows.append(
+            LimitRow(
+                capitalised(measure_name(table, plan, limit.measure, limit.of_class)),
+                f"{with_interval(estimate.value, estimate.interval, estimate.n)}, "
+                f"{n_equals(estimate.n)}",
+                verdict,
+                _detail(evaluation, verdict),
+            )
+        )
+    return tuple(rows)
+
+
+def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
+    table, limit, n = evaluation.table, verdict.limit, verdict.n
+    noun = table.noun_for(evaluation.counted_by)
+    least = percent(limit.least, 1)
+    set_on = f", set {limit.set_on}" if limit.set_on else ""
+    given = f"Limit {least}{set_on}"
+    if verdict.word == "shown to fall short":
+        return f"{given}; these {noun.plural} show at most {percent(verdict.at_most, n)}."
+    shows = f"{given}; these {noun.plural} show at least {percent(verdict.at_least, n)}."
+    if verdict.word == "shown":
+        return shows
+    units = f"{class_name(limit.of_class)} {noun.plural}" if limit.of_class else noun.plural
+    if n < LEAST_UNITS:
+        wrong = 1 - upper_bound(0, n, confidence=limit.confidence)
+        return (
+            f"{given}; {n} {units} are too few for a verdict (at least {LEAST_UNITS} are "
+            f"needed): even {n} of {n} right could mean {percent(wrong, n)}."
+        )
+    if limit.measure == "balanced_accuracy":
+        return f"{shows} It may be true; these are too few to show it."
+    misses = round((1 - verdict.value) * n)
+    needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
+    with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)
+    more = f" To show {least} with {misses} misses takes {count(needed)} {units}"
+    return shows + more + (f", with one miss {count(with_one)}." if misses > 1 else ".")
