@@ -1,6 +1,5 @@
 """The answer in sentences: what the figures say, in the user's own nouns."""
 
-import re
 from dataclasses import dataclass
 
 from evalcore.evaluation import Evaluation
@@ -9,12 +8,12 @@ from evalcore.measures import MEASURES
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
 from evalcore.sample_size import cases_to_show, upper_bound
-from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from evalcore.verdict import LEAST_UNITS, Verdict, verdicts
 from evalcore.wording import (
     NBSP,
     capitalised,
+    class_name,
     count,
     level,
     listed,
@@ -38,15 +37,6 @@ class LimitRow:
     figure: str
     verdict: Verdict
     detail: str
-
-
-def class_name(name: str) -> str:
-    """A class inside a sentence: as it is if it reads as a word, else in quotes.
-
-    >>> class_name("failing"), class_name("1")
-    ('failing', '‘1’')
-    """
-    return name if re.fullmatch(r"[^\W\d_]+(?:[ \-’][^\W\d_]+)*", name) else quoted(name)
 
 
 def class_rate(table: Table, plan: Plan, name: str, *, trade: bool = True) -> str:
@@ -104,9 +94,7 @@ def answer(evaluation: Evaluation) -> str:
     noun = table.noun_for(evaluation.counted_by).plural
     about = evaluation.about
     concern = plan.concern_of(table)
-    mix = (
-        f"share of {class_name(concern)} {noun}" if table.n_classes == 2 else "shares of classes"
-    )
+    mix = f"share of {class_name(concern)} {noun}" if table.n_classes == 2 else "shares of classes"
     whole = evaluation.estimate("accuracy", about)
     bounds = whole.interval
     stated = (

@@ -75,7 +75,7 @@ class HeldOut:
     @cached_property
     def correct(self) -> NDArray[np.bool_]:
         """Whether each answer is right, shape (T,)."""
-        return self.predicted == self.true
+        return np.asarray(self.predicted == self.true)
 
     @cached_property
     def confusion(self) -> Floats:
@@ -116,22 +116,18 @@ def held_out(table: Table, rounds: Rounds, scores: Floats, *, counted_by: Counte
     wanted = by_unit.pairs[0] * table.n_units + by_unit.pairs[1]
     size = rounds.n_rounds * table.n_units
     times = np.bincount(place, minlength=size)[wanted]
-    means = [
-        np.bincount(place, column, minlength=size)[wanted] / times for column in scores.T
-    ]
+    means = [np.bincount(place, column, minlength=size)[wanted] / times for column in scores.T]
     return HeldOut(table.unit_labels, by_unit, np.column_stack(means))
 
 
 def unit_means(table: Table, scores: Floats) -> Floats:
     """Mean score of each unit's cases, from scores of all cases, shape (..., n, K)."""
-    sums = np.zeros((*scores.shape[:-2], table.n_units, scores.shape[-1]))
-    np.add.at(sums, (..., table.units, slice(None)), scores)
-    return sums / np.bincount(table.units)[:, None]
+    sums = np.zeros((table.n_units, *scores.shape[:-2], scores.shape[-1]))
+    np.add.at(sums, table.units, np.moveaxis(scores, -2, 0))
+    return np.moveaxis(sums, 0, -2) / np.bincount(table.units)[:, None]
 
 
-def reduce(
-    labels: NDArray[np.intp], scores: Floats, weights: NDArray[np.uint8]
-) -> Reduced:
+def reduce(labels: NDArray[np.intp], scores: Floats, weights: NDArray[np.uint8]) -> Reduced:
     """Reduce answers for all cases to confusion counts and AUC under weights.
 
     Parameters

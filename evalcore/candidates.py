@@ -201,7 +201,12 @@ CANDIDATES: dict[str, Candidate] = {
             cost=(0.01, 2e-5),
         ),
         Candidate(
-            "boosting", "boosted trees", (), _boosting, _no, _called("boosted trees"),
+            "boosting",
+            "boosted trees",
+            (),
+            _boosting,
+            _no,
+            _called("boosted trees"),
             cost=(0.35, 1e-4),
         ),
     )

@@ -12,7 +12,7 @@ from evalcore.plan import Plan
 from evalcore.profile import profile
 from evalcore.sample_size import lower_bound, upper_bound
 from evalcore.table import Column, Table
-from evalcore.wording import capitalised, count, decimal, percent, quoted
+from evalcore.wording import capitalised, class_name, count, decimal, percent, quoted
 
 GRAVE_UNITS, FEW_UNITS, LIMIT_UNITS = 10, 30, 75
 ALONE, ALONE_GRAVE = 0.97, 0.99
@@ -39,11 +39,11 @@ def class_too_small(table: Table, plan: Plan, _: Evaluation | None) -> Iterator[
             "class_too_small",
             severity,  # type: ignore[arg-type]
             name,
-            f"Few {quoted(name)} {noun.plural}: {units}, where {asks} {threshold}",
+            f"Few {class_name(name)} {noun.plural}: {units}, where {asks} {threshold}",
             f"Class {quoted(name)} has {noun.counted(units)}; the threshold is {threshold}. Even "
             f"{right} of {units} right could mean anything from {percent(low, units)} to "
             f"{percent(high, units)}.",
-            f"Judge more {quoted(name)} {noun.plural} before relying on a figure about them.",
+            f"Judge more {class_name(name)} {noun.plural} before relying on a figure about them.",
             units,
             threshold,
             source,
@@ -95,9 +95,7 @@ def separation(table: Table, column: Column) -> float:
     return float(hand_till(labels[used], shares[codes[used]])[0])
 
 
-def _best_ranking(
-    labels: NDArray[np.intp], values: NDArray[np.float64], n_classes: int
-) -> float:
+def _best_ranking(labels: NDArray[np.intp], values: NDArray[np.float64], n_classes: int) -> float:
     """Mean over pairs of classes of the AUC of a number, whichever way round each pair ranks."""
     pairs = [(a, b) for a in range(n_classes) for b in range(a + 1, n_classes)]
     total = 0.0

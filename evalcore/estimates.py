@@ -32,7 +32,8 @@ def mean_correct(correct: ArrayLike, rounds: Rounds) -> Floats:
         rounds.pairs[1], np.asarray(correct, dtype=np.float64), minlength=rounds.n_cases
     )
     times = rounds.times_tested
-    return np.divide(right, times, out=np.full(rounds.n_cases, np.nan), where=times > 0)
+    shares: Floats = np.full(rounds.n_cases, np.nan)
+    return np.divide(right, times, out=shares, where=times > 0)
 
 
 def by_case(correct: ArrayLike, rounds: Rounds) -> float:
@@ -53,7 +54,8 @@ def recalls_by_case(
     known = ~np.isnan(shares)
     right = np.bincount(labels[known], shares[known], minlength=n_classes)
     number = np.bincount(labels[known], minlength=n_classes)
-    return np.divide(right, number, out=np.full(n_classes, np.nan), where=number > 0)
+    recalls: Floats = np.full(n_classes, np.nan)
+    return np.divide(right, number, out=recalls, where=number > 0)
 
 
 def mean_of_rounds(values: ArrayLike) -> tuple[float, int]:

@@ -74,9 +74,7 @@ class Judged:
     @cached_property
     def tau2(self) -> float:
         """Model variance of the share right."""
-        return model_variance.model_variance(
-            self.held.correct, self.held.rounds, units=self.units
-        )
+        return model_variance.model_variance(self.held.correct, self.held.rounds, units=self.units)
 
     def tau2_of(self, of_class: int) -> float:
         """Model variance of the share right within one class."""
@@ -295,9 +293,7 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
     )
 
 
-def _held_out(
-    plan: Plan, part: Judged, measure: str, of_class: int
-) -> tuple[float, Interval]:
+def _held_out(plan: Plan, part: Judged, measure: str, of_class: int) -> tuple[float, Interval]:
     n_classes = part.held.scores.shape[1]
     if measure == "accuracy":
         value = estimates.by_case(part.held.correct, part.held.rounds)
@@ -347,9 +343,7 @@ def _auc_interval(plan: Plan, part: Judged, value: float) -> Interval | None:
     if part.held.scores.shape[1] != 2 or part.units is not None or math.isnan(value):
         return None
     positive = part.held.labels == 1
-    tau2 = model_variance.auc_model_variance(
-        positive, part.held.rounds, part.held.scores[:, 1]
-    )
+    tau2 = model_variance.auc_model_variance(positive, part.held.rounds, part.held.scores[:, 1])
     return intervals.auc_score_type(
         value, int(positive.sum()), int((~positive).sum()), tau2, level=plan.level
     )

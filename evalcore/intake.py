@@ -170,7 +170,9 @@ def _header(record: Sequence[str]) -> tuple[tuple[str, ...], list[str]]:
         while name in names:
             name, again = f"{wanted} ({again})", again + 1
         if name != wanted:
-            notices.append(f"The column name {quoted(wanted)} came twice; one is now {quoted(name)}.")
+            notices.append(
+                f"The column name {quoted(wanted)} came twice; one is now {quoted(name)}."
+            )
         elif not cell.strip():
             notices.append(f"Column {place} has no name; it is called {quoted(name)}.")
         names.append(name)
@@ -298,9 +300,9 @@ def _rows_kept(sheet: Sheet, roles: Roles) -> tuple[list[int], tuple[SetAside, .
     return keep, tuple(set_aside)
 
 
-def copies(sheet: Sheet, roles: Roles, rows: Sequence[int] | None = None) -> tuple[
-    set[int], set[str]
-]:
+def copies(
+    sheet: Sheet, roles: Roles, rows: Sequence[int] | None = None
+) -> tuple[set[int], set[str]]:
     """Rows that repeat an earlier row in every column, and units that repeat an earlier unit.
 
     A unit repeats another if the label and all entries of all its rows agree, in any order, in
@@ -337,9 +339,9 @@ def copies(sheet: Sheet, roles: Roles, rows: Sequence[int] | None = None) -> tup
     }
 
 
-def _columns(sheet: Sheet, roles: Roles, keep: Sequence[int]) -> tuple[
-    tuple[Column, ...], tuple[str, ...], tuple[str, ...]
-]:
+def _columns(
+    sheet: Sheet, roles: Roles, keep: Sequence[int]
+) -> tuple[tuple[Column, ...], tuple[str, ...], tuple[str, ...]]:
     columns, notices = [], []
     left_out = [name for name in sheet.header if name in roles.leave_out]
     for name in sheet.header:

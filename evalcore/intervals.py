@@ -51,7 +51,9 @@ def _wilson_ends(p: float, n: float, z: float) -> tuple[float, float]:
     centre = (p + z * z / (2 * n)) / (1 + z * z / n)
     half = z / (1 + z * z / n) * math.sqrt(p * (1 - p) / n + z * z / (4 * n * n))
     # at p = 0 and p = 1 an end is 0 or 1 exactly, which rounding would miss
-    return (0.0 if p == 0 else max(0.0, centre - half)), (1.0 if p == 1 else min(1.0, centre + half))
+    low = 0.0 if p == 0 else max(0.0, centre - half)
+    high = 1.0 if p == 1 else min(1.0, centre + half)
+    return float(low), float(high)
 
 
 def clopper_pearson(right: float, n: float, *, level: float = 0.95) -> Interval:

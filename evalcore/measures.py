@@ -1,4 +1,4 @@
-"""Measures of right and wrong, each once, from labels, answers and weights, for many rounds at once.
+"""Measures of right and wrong, each once, for many rounds at once.
 
 Two raw materials: confusion counts of shape (..., K, K) with true classes in rows, and scores.
 A value that cannot be computed (no case of a class) is nan.
@@ -53,13 +53,16 @@ def confusion(
     group = np.zeros(len(true), dtype=np.intp) if groups is None else np.asarray(groups)
     cell = (group * n_classes + true) * n_classes + np.asarray(predicted, dtype=np.intp)
     size = n_groups * n_classes * n_classes
-    counts = np.bincount(cell, None if weights is None else np.asarray(weights), minlength=size)
-    return counts.astype(np.float64).reshape(n_groups, n_classes, n_classes)
+    weight = None if weights is None else np.asarray(weights)
+    counts: Floats = np.bincount(cell, weight, minlength=size).astype(np.float64)
+    return counts.reshape(n_groups, n_classes, n_classes)
 
 
-def _share(part: Floats, whole: Floats) -> Floats:
+def _share(part: ArrayLike, whole: ArrayLike) -> Floats:
     """part / whole, nan where the whole is 0."""
-    return np.divide(part, whole, out=np.full(np.shape(part), np.nan), where=whole > 0)
+    below = np.asarray(whole, dtype=np.float64)
+    share: Floats = np.full(np.shape(part), np.nan)
+    return np.divide(part, below, out=share, where=below > 0)
 
 
 def accuracy(counts: Floats) -> Floats:
@@ -107,21 +110,20 @@ def auc(
     >>> auc([0, 0, 1, 1], [0.1, 0.4, 0.35, 0.8]).tolist()
     [0.75]
     """
-    is_positive = np.asarray(positive, dtype=bool)
+    is_positive: NDArray[np.bool_] = np.asarray(positive, dtype=bool)
     score = np.asarray(scores, dtype=np.float64)
     group = np.zeros(len(score), dtype=np.intp) if groups is None else np.asarray(groups)
     weight = np.ones(len(score)) if weights is None else np.asarray(weights, dtype=np.float64)
     order = np.lexsort((score, group))
-    group, score, is_positive, weight = (
-        array[order] for array in (group, score, is_positive, weight)
-    )
+    group, score = group[order], score[order]
+    up, down = weight[order] * is_positive[order], weight[order] * ~is_positive[order]
     # one block per distinct score within a group
     starts = np.ones(len(score), dtype=bool)
     starts[1:] = (group[1:] != group[:-1]) | (score[1:] != score[:-1])
     block = np.cumsum(starts) - 1
     block_group = group[starts]
-    ups = np.bincount(block, weight * is_positive)
-    downs = np.bincount(block, weight * ~is_positive)
+    ups = np.bincount(block, up)
+    downs = np.bincount(block, down)
     positives = np.bincount(block_group, ups, minlength=n_groups)
     negatives = np.bincount(block_group, downs, minlength=n_groups)
     negatives_before_group = np.concatenate([[0.0], np.cumsum(negatives)[:-1]])

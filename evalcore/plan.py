@@ -289,9 +289,7 @@ class Plan:
 
     def fits(self, table: Table) -> int:
         """How many models will be fitted, those on all cases included."""
-        rounds = sum(
-            SCHEMES[c.key].n_rounds(c.values(), table.n_units) for c in self.schemes
-        )
+        rounds = sum(SCHEMES[c.key].n_rounds(c.values(), table.n_units) for c in self.schemes)
         return (rounds + 1) * len(self.candidates)
 
     def seconds(self, table: Table) -> float:
@@ -358,7 +356,5 @@ def recommended_schemes(table: Table) -> tuple[Choice, ...]:
 def recommended_candidates() -> tuple[Choice, ...]:
     """The line-up that is on unless the user says otherwise."""
     return tuple(
-        choose(CANDIDATES, key)
-        for key, candidate in CANDIDATES.items()
-        if candidate.offered_on
+        choose(CANDIDATES, key) for key, candidate in CANDIDATES.items() if candidate.offered_on
     )

@@ -104,10 +104,12 @@ class Record:
         write(folder / "source.csv", data)
         write(folder / "plan.json", plan.to_json().encode())
         rounds = plan.draw(table)
-        arrays = {}
+        arrays: dict[str, Any] = {}
         for at, drawn in enumerate(rounds.values()):
             arrays |= {
-                f"{at}-train": drawn.train, f"{at}-test": drawn.test, f"{at}-repeat": drawn.repeat
+                f"{at}-train": drawn.train,
+                f"{at}-test": drawn.test,
+                f"{at}-repeat": drawn.repeat,
             }
         with _beside(folder / "rounds.npz") as place:
             np.savez_compressed(place, **arrays)
@@ -154,9 +156,7 @@ class Record:
         """The rounds as drawn, by scheme name."""
         with np.load(self.folder / "rounds.npz") as stored:
             return {
-                name: Rounds(
-                    stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"]
-                )
+                name: Rounds(stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"])
                 for at, name in enumerate(self.plan.scheme_names)
             }
 
@@ -200,9 +200,7 @@ class Record:
                     answers[name] = Answers(
                         stored[f"{at}-scores"],
                         {
-                            way: Reduced(
-                                stored[f"{at}-{way}-confusion"], stored[f"{at}-{way}-auc"]
-                            )
+                            way: Reduced(stored[f"{at}-{way}-confusion"], stored[f"{at}-{way}-auc"])
                             for way in _WAYS
                         },
                     )
@@ -245,16 +243,14 @@ class Record:
             self.table,
             self.plan,
             rounds,
-            answers={
-                key: joined(given) for key, given in parts.items() if key[1] not in failures
-            },
+            answers={key: joined(given) for key, given in parts.items() if key[1] not in failures},
             whole=whole,
             planned={name: drawn.n_rounds for name, drawn in self.rounds.items()},
             failures=failures,
         )
 
     def status(self) -> Status:
-        """How far the record has come; a worker that is gone without a word shows as interrupted."""
+        """How far it has come; a worker that is gone without a word shows as interrupted."""
         path = self.folder / "status.json"
         if not path.exists():
             return Status("interrupted", self.done(), self.total)

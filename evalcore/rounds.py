@@ -89,12 +89,12 @@ class Rounds:
     @cached_property
     def times_tested(self) -> NDArray[np.intp]:
         """How often each case is held out and judged, shape (n,)."""
-        return self.test.sum(axis=0, dtype=np.intp)
+        return np.asarray(self.test.sum(axis=0, dtype=np.intp))
 
     @cached_property
     def test_sizes(self) -> NDArray[np.intp]:
         """Held-out cases of each round, shape (R,)."""
-        return self.test.sum(axis=1, dtype=np.intp)
+        return np.asarray(self.test.sum(axis=1, dtype=np.intp))
 
     @property
     def distinct_share(self) -> NDArray[np.float64]:

@@ -151,7 +151,7 @@ def held_out_sizes(sizes: NDArray[np.intp], share: float) -> NDArray[np.intp]:
     held_out = np.floor(wanted).astype(np.intp)
     spare = round(share * int(sizes.sum())) - int(held_out.sum())
     held_out[np.argsort(held_out - wanted, kind="stable")[: max(0, spare)]] += 1
-    return np.clip(held_out, np.minimum(1, sizes - 1), np.maximum(sizes - 1, 0))
+    return np.asarray(np.clip(held_out, np.minimum(1, sizes - 1), np.maximum(sizes - 1, 0)))
 
 
 def _subsample(strata: Strata, settings: Settings, rng: np.random.Generator) -> Rounds:

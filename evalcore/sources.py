@@ -86,8 +86,8 @@ SOURCES: dict[str, Source] = {
         own=True,
     ),
     "own_simulation": Source(
-        "own simulation study: repeated tables with known truth; thresholds are judgement supported "
-        "by it",
+        "own simulation study: repeated tables with known truth; thresholds are judgement "
+        "supported by it",
         own=True,
     ),
     "common_practice": Source("common practice, no source"),

@@ -103,9 +103,7 @@ def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) ->
 def _balanced(part: Judged, level: float) -> Interval:
     n_classes = part.held.scores.shape[1]
     parts = [share_interval(level, part, k, variance=False) for k in range(n_classes)]
-    shares = [
-        float(np.nanmean(part.shares[part.held.labels == k])) for k in range(n_classes)
-    ]
+    shares = [float(np.nanmean(part.shares[part.held.labels == k])) for k in range(n_classes)]
     tau2 = balanced_model_variance(
         part.held.labels, part.held.rounds, part.held.correct, n_classes=n_classes
     )

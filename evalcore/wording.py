@@ -5,6 +5,7 @@ numbers too (the print font has no minus sign).
 """
 
 import math
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -120,6 +121,15 @@ def decimal(value: float, digits: int = 2) -> str:
     return f"{value:.{digits}f}".replace("-", DASH)
 
 
+def reading(value: float) -> str:
+    """A reading as it might stand in the user's file, six digits at most.
+
+    >>> reading(12.5), reading(-3.0)
+    ('12.5', '–3')
+    """
+    return "undefined" if math.isnan(value) else f"{value:g}".replace("-", DASH)
+
+
 def level(value: float) -> str:
     """A confidence level, e.g. "95 %"."""
     return f"{100 * value:g}{NBSP}%"
@@ -160,3 +170,12 @@ def quoted(name: str) -> str:
 def capitalised(sentence: str) -> str:
     """The sentence with its first letter in upper case, the rest untouched."""
     return sentence[:1].upper() + sentence[1:]
+
+
+def class_name(name: str) -> str:
+    """A class inside a sentence: as it is if it reads as a word, else in quotes.
+
+    >>> class_name("failing"), class_name("1")
+    ('failing', '‘1’')
+    """
+    return name if re.fullmatch(r"[^\W\d_]+(?:[ \-’][^\W\d_]+)*", name) else quoted(name)

@@ -101,8 +101,12 @@ def main(folder: str, parent: str) -> None:
         fill(record)
     except Exception as error:  # the boundary: whatever happens is kept in the log and told
         traceback.print_exc()
-        message = str(error) if isinstance(error, EvalError) else (
-            "The evaluation stopped on an error that was not foreseen; the record's log has it."
+        message = (
+            str(error)
+            if isinstance(error, EvalError)
+            else (
+                "The evaluation stopped on an error that was not foreseen; the record's log has it."
+            )
         )
         record.set_status(Status("failed", record.done(), record.total, message=message))
 

@@ -6,10 +6,10 @@ import altair as alt
 
 from app.charts import drawing
 from app.charts.style import (
+    CONCERN,
     INK,
     OTHER_CLASS,
     PAPER,
-    CONCERN,
     Figure,
     Row,
     shorten,
@@ -136,23 +136,14 @@ def _chart(table: Table, shares: tuple[ClassShare, ...], cut: int) -> alt.LayerC
     bottom = pitch * len(shares) + 4
     height = bottom + drawing.AXIS_ROOM
     largest = max(max(s.unit_share, s.case_share) for s in shares)
-    rule = drawing.Ruler(
-        0.0,
-        math.ceil(largest * 4 - 1e-9) / 4,
-        tuple(k / 4 for k in range(math.ceil(largest * 4 - 1e-9) + 1)),
-        drawing.written_percent,
-    )
+    rule = _ruler(largest)
     tops = [pitch * at for at in range(len(shares))]
     short = max(len(_figures(table, share)) for share in shares) > FITS_NARROW
-    heads = [
-        (
-            top + 14,
-            shorten(share.name, 60),
-            _figures(table, share),
-            _figures(table, share, short=short),
-        )
-        for top, share in zip(tops, shares, strict=True)
-    ]
+    heads = []
+    for top, share in zip(tops, shares, strict=True):
+        name, figures = shorten(share.name, 60), _figures(table, share)
+        narrow = _figures(table, share, short=short)
+        heads.append(drawing.Header(top + 14, name, name, figures, narrow))
     bands = [(top + 18, top + pitch) for top in tops]
     units = table.noun_for("unit").plural
     title = f"share of {units} and of {table.noun_for('case').plural}"
@@ -167,6 +158,15 @@ def _chart(table: Table, shares: tuple[ClassShare, ...], cut: int) -> alt.LayerC
         ],
         height,
     )
+
+
+def _ruler(largest: float) -> drawing.Ruler:
+    """From nothing up, in quarters unless all classes are smaller than one."""
+    if largest <= 0.25:
+        return drawing.ruler([0.0, largest])
+    quarters = math.ceil(largest * 4 - 1e-9)
+    ticks = tuple(k / 4 for k in range(quarters + 1))
+    return drawing.Ruler(0.0, ticks[-1], ticks, drawing.written_percent)
 
 
 def _bars(
@@ -209,16 +209,15 @@ def _rects(
     rows: list[dict[str, object]], rule: drawing.Ruler, height: int, *, hollow: bool
 ) -> alt.Chart:
     colour = alt.Color("colour:N", scale=None, legend=None)
-    mark = {"fill": PAPER, "strokeWidth": 1.2} if hollow else {}
-    chart = alt.Chart(drawing.data(rows)).mark_rect(**mark)
-    encoding = {"stroke": colour} if hollow else {"fill": colour}
-    return chart.encode(
+    chart = alt.Chart(drawing.data(rows))
+    chart = chart.mark_rect(fill=PAPER, strokeWidth=1.2) if hollow else chart.mark_rect()
+    shown: alt.Chart = chart.encode(
         x=rule.x(),
-        x2="x2:Q",
+        x2=alt.X2("x2:Q"),
         y=drawing.down(height),
-        y2="y2:Q",
+        y2=alt.Y2("y2:Q"),
+        stroke=colour if hollow else alt.Undefined,
+        fill=alt.Undefined if hollow else colour,
         tooltip=[alt.Tooltip("class:N"), alt.Tooltip("counted:N")],
-        **encoding,
     )
-
-
+    return shown

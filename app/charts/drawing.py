@@ -16,12 +16,16 @@ from evalcore.wording import decimal, percent
 
 NARROW = "width<520"
 INSET = 8  # px kept free on both sides, so that a mark at 100 % is drawn whole
-CHARACTER = 7.4  # px of an average character at 13 px, on the wide side
+CHARACTER = 7.0  # px of an average character at 13 px, on the wide side
 STEPS = (1, 2, 5, 10, 20, 25, 50)
 MOST_TICKS = 6
 LEAST_SPAN = 10  # points: less would blow up differences nobody can act on
 
 Datum = Mapping[str, Any]
+
+# the library leaves these two untyped
+X_VALUE: Any = alt.XValue
+X2_VALUE: Any = alt.X2Value
 
 
 @dataclass(frozen=True)
@@ -48,7 +52,7 @@ class Ruler:
 
     def _scale(self) -> alt.Scale:
         # the scale's range keeps the inset; the tracks themselves go from edge to edge
-        ends = [INSET, alt.expr(f"width - {INSET}")]
+        ends: list[Any] = [INSET, alt.expr(f"width - {INSET}")]
         return alt.Scale(domain=[self.low, self.high], range=ends, nice=False, zero=False)
 
     def place(self, value: float) -> float:
@@ -125,40 +129,40 @@ def line_of_words(
         "fontSize": size,
         "limit": limit,
     }
-    return (
+    drawn: alt.Chart = (
         alt.Chart(data(rows))
         .transform_calculate(shown=f"{NARROW} ? datum.short : datum.long")
         .mark_text(**mark)
         .encode(
-            x=alt.value(0 if side == "left" else "width"), y=down(height), text="shown:N"
+            x=X_VALUE(0 if side == "left" else "width"), y=down(height), text=alt.Text("shown:N")
         )
     )
+    return drawn
 
 
-def headers(
-    rows: Sequence[tuple[float, str, str, str]], height: float, *, colour: str = INK
-) -> list[alt.Chart]:
-    """Lines with a name on the left and figures on the right.
+@dataclass(frozen=True)
+class Header:
+    """A line with a name on the left and figures on the right, each with a narrow form."""
 
-    Parameters
-    ----------
-    rows : sequence of (y, name, long figures, short figures)
-    height : float
-        Of the whole chart.
-    colour : str
-        Of the figures.
+    y: float
+    name: str
+    short_name: str
+    figures: str
+    short_figures: str
 
-    Notes
-    -----
-    A name gets the room its line's figures leave and ends in an ellipsis where that is too little.
+
+def headers(rows: Sequence[Header], height: float, *, colour: str = INK) -> list[alt.Chart]:
+    """Lines of name and figures; `colour` is that of the figures.
+
+    A name gets the room its figures leave and ends in an ellipsis where that is too little.
     """
-    layers = []
-    for narrow in (True, False):
-        room = CHARACTER * max(len(short if narrow else long) for _, _, long, short in rows)
-        layers.append(f"width - {room + 10:.0f}")
-    limit = alt.expr(f"{NARROW} ? {layers[0]} : {layers[1]}")
-    names = [{"y": y, "long": name, "short": name} for y, name, _, _ in rows]
-    figures = [{"y": y, "long": long, "short": short} for y, _, long, short in rows]
+    wide, narrow = (
+        f"width - {CHARACTER * max(map(len, figures)) + 10:.0f}"
+        for figures in ([row.figures for row in rows], [row.short_figures for row in rows])
+    )
+    limit = alt.expr(f"{NARROW} ? {narrow} : {wide}")
+    names = [{"y": row.y, "long": row.name, "short": row.short_name} for row in rows]
+    figures = [{"y": row.y, "long": row.figures, "short": row.short_figures} for row in rows]
     return [
         line_of_words(names, height, side="left", bold=True, limit=limit),
         line_of_words(figures, height, side="right", colour=colour),
@@ -170,7 +174,7 @@ def words_at(
 ) -> alt.Chart:
     """Words beside a position; rows hold `x`, `y`, `long`, `short`, `align` and `colour`."""
     away = "datum.align == 'left' ? {0} : datum.align == 'right' ? -{0} : 0"
-    return (
+    drawn: alt.Chart = (
         alt.Chart(data(rows))
         .transform_calculate(shown=f"{NARROW} ? datum.short : datum.long")
         .mark_text(
@@ -181,21 +185,23 @@ def words_at(
         .encode(
             x=rule.x(),
             y=down(height),
-            text="shown:N",
+            text=alt.Text("shown:N"),
             color=alt.Color("colour:N", scale=None, legend=None),
         )
     )
+    return drawn
 
 
 def upright(
     rows: Sequence[Datum], rule: Ruler, height: float, **mark: Any
 ) -> alt.Chart:
     """Upright rules from `y` to `y2` at `x`."""
-    return (
+    drawn: alt.Chart = (
         alt.Chart(data(rows))
         .mark_rule(**mark)
-        .encode(x=rule.x(), y=down(height), y2="y2:Q")
+        .encode(x=rule.x(), y=down(height), y2=alt.Y2("y2:Q"))
     )
+    return drawn
 
 
 def axis(rule: Ruler, y: float, height: float, *, title: str, short: str = "") -> list[alt.Chart]:
@@ -230,31 +236,32 @@ AXIS_ROOM = 40  # px under the axis line
 
 def _side(place: float) -> str:
     """Alignment of a tick's words: the outermost keep inside the chart."""
-    if place < 0.06:
+    if place < 0.03:
         return "left"
-    return "right" if place > 0.94 else "center"
+    return "right" if place > 0.97 else "center"
 
 
 def level_line(ys: Sequence[float], height: float, *, color: str = HAIRLINE) -> alt.Chart:
     """Lines from edge to edge at the given heights."""
-    return (
+    drawn: alt.Chart = (
         alt.Chart(data([{"y": y} for y in ys]))
         .mark_rule(color=color)
-        .encode(x=alt.value(0), x2=alt.value("width"), y=down(height))
+        .encode(x=X_VALUE(0), x2=X2_VALUE("width"), y=down(height))
     )
+    return drawn
 
 
-def grid(rule: Ruler, bands: Sequence[tuple[float, float]], height: float, **mark: Any) -> alt.Chart:
+def grid(rule: Ruler, bands: Sequence[tuple[float, float]], height: float) -> alt.Chart:
     """Upright rules at the ticks, in bands without words only."""
     rows = [
         {"x": tick, "y": top, "y2": bottom} for top, bottom in bands for tick in rule.ticks
     ]
-    return upright(rows, rule, height, **{"color": HAIRLINE, **mark})
+    return upright(rows, rule, height, color=HAIRLINE)
 
 
 def composed(layers: Sequence[alt.Chart], height: float) -> alt.LayerChart:
     """Layers as one chart that takes the width of its container."""
-    return (
+    drawn: alt.LayerChart = (
         alt.layer(*layers)
         .properties(
             width="container",
@@ -263,3 +270,4 @@ def composed(layers: Sequence[alt.Chart], height: float) -> alt.LayerChart:
         )
         .configure(**config())
     )
+    return drawn

@@ -1,9 +1,13 @@
 """Who is how good, and how sure that is: estimates with their intervals (form b)."""
 
+import math
 from collections.abc import Sequence
 from itertools import combinations
 
+import altair as alt
+
 from app.charts import drawing, saying
+from app.charts.placing import Reference
 from app.charts.style import (
     Figure,
     Row,
@@ -11,16 +15,16 @@ from app.charts.style import (
     caption,
     learned_names,
     scheme_so_far,
+    short_title,
     shorten,
     text_alternative,
 )
-from app.charts.tracks import Reference, TrackRow, track_chart
+from app.charts.tracks import TrackRow, track_chart
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.profile import majority
 from evalcore.wording import (
     capitalised,
-    count,
     decimal,
     level,
     listed,
@@ -43,40 +47,51 @@ def estimates_with_intervals(evaluation: Evaluation, measure: str) -> Figure:
     Figure
         One row a candidate that learns, in the order of the plan. Always answering the majority
         (or guessing) is a line, as is the strictest limit on the measure, if there is one.
+
+    Raises
+    ------
+    KeyError
+        The scheme has no answers yet.
     """
     found = estimates_of(evaluation, measure)
-    reference = reference_line(evaluation, measure)
-    lines = [reference, *_limit(evaluation, measure)]
+    reference, limit = reference_line(evaluation, measure), _limit(evaluation, measure)
     titles = [evaluation.plan.title(e.candidate) for e in found]
-    rows = [_track(evaluation, e) for e in found]
-    ends = [r.interval for r in rows if r.interval is not None and r.interval.defined]
-    rule = drawing.ruler(
-        [
-            *(line.value for line in lines),
-            *(row.value for row in rows),
-            *(end.low for end in ends),
-            *(end.high for end in ends),
-        ],
-        measure=measure,
-    )
     noun = evaluation.table.noun_for(evaluation.counted_by)
     title = title_of(titles, found, reference)
-    block = f"block: {level(evaluation.plan.level)} interval" if ends else ""
-    straw = "; straw: below the limit" if len(lines) > 1 else ""
+    said = [
+        f"{name}: {saying.spoken(e)}, {n_equals(e.n, noun)}"
+        for name, e in zip(titles, found, strict=True)
+    ]
+    lines, scheme = [reference, *limit], scheme_so_far(evaluation, evaluation.scheme)
     return Figure(
         title=title,
-        caption=caption(evaluation, evaluation.scheme, f"{block}{straw}".lstrip("; ")),
-        chart=track_chart(rows, lines, rule=rule, title=saying.axis_title(measure, noun)),
-        alt=text_alternative(
-            title,
-            [
-                f"{name}: {saying.spoken(e)}, {n_equals(e.n, noun)}"
-                for name, e in zip(titles, found, strict=True)
-            ],
-            [line.long for line in lines],
-            scheme_so_far(evaluation, evaluation.scheme),
-        ),
+        caption=caption(evaluation, evaluation.scheme, _how(evaluation, found, limit)),
+        chart=_chart(evaluation, found, lines, measure),
+        alt=text_alternative(title, said, [line.long for line in lines], scheme),
         rows=tuple(_row(evaluation, e) for e in found),
+    )
+
+
+def _how(evaluation: Evaluation, found: Sequence[Estimate], limit: list[Reference]) -> str:
+    parts = []
+    if any(e.interval is not None and e.interval.defined for e in found):
+        parts.append(f"block: {level(evaluation.plan.level)} interval")
+    if limit:
+        parts.append("straw: below the limit")
+    return "; ".join(parts)
+
+
+def _chart(
+    evaluation: Evaluation, found: Sequence[Estimate], lines: list[Reference], measure: str
+) -> alt.LayerChart:
+    ends = [end for e in found if e.interval for end in (e.interval.low, e.interval.high)]
+    needed = [*(line.value for line in lines), *(e.value for e in found), *ends]
+    noun = evaluation.table.noun_for(evaluation.counted_by)
+    return track_chart(
+        [_track(evaluation, e) for e in found],
+        lines,
+        rule=drawing.ruler(needed, measure=measure),
+        title=saying.axis_title(measure, noun),
     )
 
 
@@ -84,11 +99,10 @@ def estimates_of(evaluation: Evaluation, measure: str) -> list[Estimate]:
     """The estimates that are drawn: the headline scheme's, of candidates that have answers."""
     estimator = "mean_of_rounds" if measure == "auc" else "held_out_by_case"
     have = {j.candidate for j in evaluation.judged if j.scheme == evaluation.scheme}
-    return [
-        evaluation.estimate(measure, name, estimator=estimator)
-        for name in learned_names(evaluation)
-        if name in have
-    ]
+    names = [name for name in learned_names(evaluation) if name in have]
+    if not names:
+        raise KeyError(f"The scheme {evaluation.scheme!r} has no answers yet.")
+    return [evaluation.estimate(measure, name, estimator=estimator) for name in names]
 
 
 def reference_line(evaluation: Evaluation, measure: str) -> Reference:
@@ -97,17 +111,17 @@ def reference_line(evaluation: Evaluation, measure: str) -> Reference:
     if measure == "accuracy":
         at, share = majority(table, evaluation.counted_by)
         n = int(table.class_counts(evaluation.counted_by).sum())
-        name, shown = table.classes[at], percent(share, n)
+        name = table.classes[at]
         return Reference(
             share,
-            f"always answering {quoted(shorten(name, 30))} {shown}",
-            f"always {quoted(shorten(name, 14))} {shown}",
+            f"always answering {quoted(shorten(name, 30))}",
+            percent(share, n),
+            short_name=f"always {quoted(shorten(name, 14))}",
         )
     if measure == "auc":
-        return Reference(0.5, f"guessing {decimal(0.5)}", f"guessing {decimal(0.5)}")
+        return Reference(0.5, "guessing", decimal(0.5))
     share = 1 / table.n_classes
-    words = f"guessing {percent(share, 1)}"
-    return Reference(share, words, words)
+    return Reference(share, "guessing", percent(share, 1))
 
 
 def _limit(evaluation: Evaluation, measure: str) -> list[Reference]:
@@ -115,8 +129,7 @@ def _limit(evaluation: Evaluation, measure: str) -> list[Reference]:
     least = [x.least for x in evaluation.plan.limits if x.measure == measure and not x.of_class]
     if not least:
         return []
-    words = f"limit {level(max(least))}"
-    return [Reference(max(least), words, words, is_limit=True)]
+    return [Reference(max(least), "limit", level(max(least)), is_limit=True)]
 
 
 def _track(evaluation: Evaluation, estimate: Estimate) -> TrackRow:
@@ -125,6 +138,7 @@ def _track(evaluation: Evaluation, estimate: Estimate) -> TrackRow:
     figure = saying.figure(estimate)
     return TrackRow(
         name=shorten(evaluation.plan.title(estimate.candidate), 80),
+        short_name=short_title(evaluation.plan, estimate.candidate),
         long=f"{figure}, {n_equals(estimate.n, noun)}",
         short=f"{figure}, {n_equals(estimate.n)}",
         value=estimate.value,
@@ -159,39 +173,36 @@ def title_of(titles: Sequence[str], found: Sequence[Estimate], reference: Refere
     An interval says whether a candidate lies above the line; it never names one candidate as the
     best, which is a question for the comparison.
     """
-    line = _without_figure(reference.long)
-    if not found:
-        return "No figure yet"
+    line = reference.name
+    if all(math.isnan(e.value) for e in found):
+        return "Undefined: no held-out set holds cases of all classes"
     if not all(e.interval is not None and e.interval.defined for e in found):
-        return (
-            "No interval is offered for some of these figures, so they cannot say who is better"
-            if len(found) > 1
-            else f"{capitalised(titles[0])}: {saying.figure(found[0])}, for which no interval is "
-            "offered"
-        )
+        return _without_intervals(titles, found)
     if len(found) == 1:
-        verb = _verdict(found[0], reference.value)
-        return (
-            f"{capitalised(titles[0])} {verb} {line}: {saying.figure(found[0])} against "
-            f"{_figure_of(reference)}"
-        )
+        words = _standing(found[0], reference.value).format(line)
+        figure = f"{saying.figure(found[0])} against {reference.figure}"
+        return f"{capitalised(words)}: {titles[0]}, {figure}"
     return capitalised(f"{_overlap(titles, found)}; {_beating(titles, found, reference)}")
 
 
-def _without_figure(words: str) -> str:
-    return words.rsplit(" ", 1)[0]
+def _without_intervals(titles: Sequence[str], found: Sequence[Estimate]) -> str:
+    if len(found) == 1:
+        figure = saying.figure(found[0])
+        return f"{capitalised(titles[0])}: {figure}, for which no interval is offered"
+    which = "these" if all(e.interval is None for e in found) else "some of these"
+    return f"No interval is offered for {which} figures, so they cannot say who is better"
 
 
-def _figure_of(reference: Reference) -> str:
-    return reference.long.rsplit(" ", 1)[1]
+BETTER, UNSHOWN, WORSE = "better than {}", "not shown to be better than {}", "worse than {}"
 
 
-def _verdict(estimate: Estimate, against: float) -> str:
+def _standing(estimate: Estimate, against: float) -> str:
+    """Where the whole interval lies; a sentence with room for what it is held against."""
     ends = estimate.interval
     assert ends is not None
     if ends.low > against:
-        return "beats"
-    return "does worse than" if ends.high < against else "is not shown to beat"
+        return BETTER
+    return WORSE if ends.high < against else UNSHOWN
 
 
 def _overlap(titles: Sequence[str], found: Sequence[Estimate]) -> str:
@@ -200,39 +211,37 @@ def _overlap(titles: Sequence[str], found: Sequence[Estimate]) -> str:
     if not apart:
         if len(found) == 2:
             return f"{titles[0]} and {titles[1]} overlap"
-        return f"all {count(len(found))} candidates overlap"
+        return f"the {saying.in_words(len(found))} candidates overlap"
     if len(apart) == 1:
         a, b = apart[0]
         rest = "" if len(pairs) == 1 else ", all others do"
         return f"{titles[a]} and {titles[b]} do not overlap{rest}"
     if len(apart) == len(pairs):
         return "no two intervals overlap"
-    return f"{count(len(pairs) - len(apart))} of {count(len(pairs))} pairs of intervals overlap"
+    together = saying.in_words(len(pairs) - len(apart))
+    return f"{together} of {saying.in_words(len(pairs))} pairs of intervals overlap"
 
 
 def _touch(a: Estimate, b: Estimate) -> bool:
-    assert a.interval is not None and b.interval is not None
+    assert a.interval is not None
+    assert b.interval is not None
     return a.interval.low <= b.interval.high and b.interval.low <= a.interval.high
 
 
 def _beating(titles: Sequence[str], found: Sequence[Estimate], reference: Reference) -> str:
-    line = _without_figure(reference.long)
+    line = reference.name
     groups: dict[str, list[str]] = {}
     for title, estimate in zip(titles, found, strict=True):
-        groups.setdefault(_verdict(estimate, reference.value), []).append(title)
+        groups.setdefault(_standing(estimate, reference.value), []).append(title)
     if len(groups) == 1:
-        verb = next(iter(groups))
-        both = "both" if len(found) == 2 else f"all {count(len(found))}"
-        if verb == "is not shown to beat":
+        if UNSHOWN in groups:
             return f"{'neither' if len(found) == 2 else 'none'} is shown to beat {line}"
-        return f"{both} {'beat' if verb == 'beats' else 'do worse than'} {line}"
-    parts = [_group(verb, names) for verb, names in groups.items()]
-    return f"{listed(parts)} {line}"
-
-
-def _group(verb: str, names: list[str]) -> str:
-    plural = {"beats": "beat", "does worse than": "do worse than"}
-    who = listed(names) if len(names) < 3 else f"{count(len(names))} candidates"
-    if len(names) == 1:
-        return f"{who} {verb}"
-    return f"{who} {plural.get(verb, 'are not shown to beat')}"
+        who = "both" if len(found) == 2 else f"all {saying.in_words(len(found))}"
+        return f"{who} {'beat' if BETTER in groups else 'do worse than'} {line}"
+    # a list after a colon, since candidates' names can be singular or plural
+    parts: list[str] = []
+    for standing in (BETTER, UNSHOWN, WORSE):
+        if names := groups.get(standing):
+            who = listed(names) if len(names) < 3 else f"{saying.in_words(len(names))} candidates"
+            parts.append(f"{standing.format('it' if parts else line)}: {who}")
+    return "; ".join(parts)

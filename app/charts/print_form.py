@@ -20,6 +20,8 @@ def svg(figure: Figure, width: int, *, font: str = "Noto Sans", titled: bool = T
     width : int
         Pixels; the heights are the chart's own.
     font : str
+        Must be known to the converter (``vl_convert.register_font_directory``): with a font it
+        cannot find it measures words wrongly and draws the chart too narrow.
     titled : bool
         Whether title and caption are set above the drawing; a page that sets them itself leaves
         them out.
@@ -38,14 +40,15 @@ def printed(
     spec["config"] = config(font)
     if titled:
         spec["title"] = {
-            "text": textwrap.wrap(figure.title, max(20, int(width / 8.6))),
-            "subtitle": textwrap.wrap(figure.caption, max(20, int(width / 6.8))),
+            "text": textwrap.wrap(figure.title, max(20, int(width / 9.2))),
+            "subtitle": textwrap.wrap(figure.caption, max(20, int(width / 7))),
             "fontSize": TITLE_SIZE,
             "fontWeight": 600,
             "subtitleFontSize": SMALL_WORDS,
             "offset": 12,
         }
-    return without_forbidden(spec)
+    cleaned: dict[str, Any] = without_forbidden(spec)
+    return cleaned
 
 
 def without_forbidden(value: Any) -> Any:

@@ -4,7 +4,7 @@ import math
 
 from evalcore.figures import Estimate, Interval
 from evalcore.measures import MEASURES
-from evalcore.wording import DASH, Noun, decimal, interval, percent, points, with_interval
+from evalcore.wording import DASH, Noun, count, decimal, interval, percent, points, with_interval
 
 METHODS = {
     "wilson": "Wilson",
@@ -16,6 +16,18 @@ METHODS = {
     "rows_of_units": "for rows of units, with the model's variance",
     "square_and_add_model_variance": "square-and-add, with the model's variance",
 }
+
+
+NUMBERS = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten")
+
+
+def in_words(number: int) -> str:
+    """A small count as a word, as sentences take it; a larger one in digits.
+
+    >>> in_words(3), in_words(12)
+    ('three', '12')
+    """
+    return NUMBERS[number] if number < len(NUMBERS) else count(number)
 
 
 def value(measure: str, number: float, n: int) -> str:

@@ -126,6 +126,23 @@ def candidate_look(plan: Plan, name: str) -> Look:
     return LOOKS[learned.index(name) % len(LOOKS)]
 
 
+def short_title(plan: Plan, name: str, length: int = 22) -> str:
+    """A candidate's title for a narrow line, keeping what sets it apart from its like.
+
+    Where several settings of one kind were chosen, only those that differ are named, and the
+    kind itself is cut to make room for them.
+    """
+    kind, _, told_all = plan.title(name).partition(" (")
+    if not told_all:
+        return shorten(kind, length)
+    same_kind = [n for n in plan.candidate_names if plan.title(n).startswith(f"{kind} (")]
+    told_by_all = [plan.title(n).partition(" (")[2] for n in same_kind]
+    settings = [set(told.removesuffix(")").split(", ")) for told in told_by_all]
+    apart = [s for s in told_all.removesuffix(")").split(", ") if any(s not in o for o in settings)]
+    told = f" ({', '.join(apart)})"
+    return shorten(kind, max(6, length - len(told))) + told
+
+
 def class_colour(name: str, concern: str) -> str:
     """Brown for the class of concern, grey for every other: rows carry names, not a legend."""
     return CONCERN if name == concern else OTHER_CLASS

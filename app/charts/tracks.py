@@ -7,7 +7,8 @@ from dataclasses import dataclass, field
 import altair as alt
 
 from app.charts import drawing
-from app.charts.style import LIMIT, PAPER, REFERENCE, STRAW, TRACK
+from app.charts.placing import Reference, placed, side_that_fits
+from app.charts.style import LIMIT, PAPER, STRAW, TRACK
 from evalcore.figures import Interval
 
 HEADER = 16  # px of the words above a track
@@ -15,7 +16,6 @@ TRACK_HEIGHT = 20
 BLOCK = 12
 SHAPE_SIZE = 62
 UNDER = 16  # px of the words under a track
-WIDE, SLIM = 640, 352  # px in which words must not collide
 
 
 @dataclass(frozen=True)
@@ -39,6 +39,8 @@ class TrackRow:
         nan where undefined: then there is no mark.
     interval : Interval or None
     colour, shape : str
+    short_name : str
+        The name where it is narrow; empty for the same.
     tip : dict of str to str
         What the tooltip says, by title.
     bounds : tuple of Bound
@@ -52,32 +54,9 @@ class TrackRow:
     interval: Interval | None
     colour: str
     shape: str
+    short_name: str = ""
     tip: dict[str, str] = field(default_factory=dict)
     bounds: tuple[Bound, ...] = ()
-
-
-@dataclass(frozen=True)
-class Reference:
-    """A line all rows are held against, named once on top.
-
-    Attributes
-    ----------
-    value : float
-    long, short : str
-        Its words, and those where it is narrow.
-    is_limit : bool
-        Limits are solid with straw below them; others are dashed.
-    """
-
-    value: float
-    long: str
-    short: str
-    is_limit: bool = False
-
-    @property
-    def colour(self) -> str:
-        """Colour of its stroke and words."""
-        return LIMIT if self.is_limit else REFERENCE
 
 
 def track_chart(
@@ -95,7 +74,10 @@ def track_chart(
     tops = [top + pitch * at + HEADER + 4 for at in range(len(rows))]
     bottom = top + pitch * len(rows)
     height = bottom + drawing.AXIS_ROOM
-    heads = [(y - 6, row.name, row.long, row.short) for y, row in zip(tops, rows, strict=True)]
+    heads = [
+        drawing.Header(y - 6, row.name, row.short_name or row.name, row.long, row.short)
+        for y, row in zip(tops, rows, strict=True)
+    ]
     layers = [
         *_ground(tops, references, rule, height),
         *_lines(references, rule, tops=tops, height=height, limits=False),
@@ -110,47 +92,6 @@ def track_chart(
     return drawing.composed(layers, height)
 
 
-def placed(
-    references: Sequence[Reference], rule: drawing.Ruler
-) -> tuple[list[tuple[str, int]], int]:
-    """Side ("left" or "right" aligned) and line of each reference's words, and the lines needed.
-
-    The words of two lines go away from each other; where they would still touch at a width that
-    is met, or leave the chart, they stand on two lines.
-    """
-    order = sorted(range(len(references)), key=lambda at: references[at].value)
-    sides = [""] * len(references)
-    for rank, at in enumerate(order):
-        place = rule.place(references[at].value)
-        outwards = "right" if rank == 0 and len(order) > 1 else "left"
-        if len(order) == 1:
-            outwards = "left" if place < 0.5 else "right"
-        sides[at] = _that_fits(references[at], place, outwards)
-    spans = [
-        [_span(references[at], rule, sides[at], width) for at in order] for width in (WIDE, SLIM)
-    ]
-    collide = any(a[1] + 6 > b[0] for each in spans for a, b in zip(each, each[1:], strict=False))
-    rank_of = {at: rank for rank, at in enumerate(order)}
-    lines = [rank_of[at] if collide else 0 for at in range(len(references))]
-    return list(zip(sides, lines, strict=True)), max(lines, default=0) + 1
-
-
-def _that_fits(reference: Reference, place: float, wanted: str) -> str:
-    """The wanted side unless the words would leave the chart there and not on the other side."""
-    room = {"left": 1 - place, "right": place}
-    other = "left" if wanted == "right" else "right"
-    need = drawing.CHARACTER * len(reference.short) / SLIM
-    return wanted if room[wanted] >= need or room[wanted] >= room[other] else other
-
-
-def _span(
-    reference: Reference, rule: drawing.Ruler, side: str, width: int
-) -> tuple[float, float]:
-    words = reference.long if width == WIDE else reference.short
-    x, length = width * rule.place(reference.value), drawing.CHARACTER * len(words)
-    return (x, x + length) if side == "left" else (x - length, x)
-
-
 def _ground(
     tops: Sequence[float], references: Sequence[Reference], rule: drawing.Ruler, height: float
 ) -> list[alt.Chart]:
@@ -159,7 +100,12 @@ def _ground(
     strip = (
         alt.Chart(drawing.data(bands))
         .mark_rect(color=TRACK)
-        .encode(x=alt.value(0), x2=alt.value("width"), y=drawing.down(height), y2="y2:Q")
+        .encode(
+            x=drawing.X_VALUE(0),
+            x2=drawing.X2_VALUE("width"),
+            y=drawing.down(height),
+            y2=alt.Y2("y2:Q"),
+        )
     )
     layers = [strip]
     limits = [r.value for r in references if r.is_limit]
@@ -168,7 +114,7 @@ def _ground(
         layers.append(
             alt.Chart(drawing.data(straw))
             .mark_rect(color=STRAW)
-            .encode(x=rule.x(), x2=alt.value(0), y=drawing.down(height), y2="y2:Q")
+            .encode(x=rule.x(), x2=drawing.X2_VALUE(0), y=drawing.down(height), y2=alt.Y2("y2:Q"))
         )
     inner = [t for t in rule.ticks if 0.02 < rule.place(t) < 0.98]
     cuts = [{"x": t, **band} for band in bands for t in inner]
@@ -247,9 +193,9 @@ def _blocks(
         .mark_rect(opacity=0.4)
         .encode(
             x=rule.x(),
-            x2="x2:Q",
+            x2=alt.X2("x2:Q"),
             y=drawing.down(height),
-            y2="y2:Q",
+            y2=alt.Y2("y2:Q"),
             color=colour,
             tooltip=[alt.Tooltip(f"{key}:N") for key in rows[0].tip],
         )
@@ -275,8 +221,7 @@ def _bounds(
             end = y + TRACK_HEIGHT + (0 if is_limit else 8)
             strokes.append({"x": bound.value, "y": y, "y2": end, "colour": bound.colour})
             wanted = "right" if rank == 0 and len(order) > 1 else "left"
-            reference = Reference(bound.value, bound.words, bound.words)
-            side = _that_fits(reference, rule.place(bound.value), wanted)
+            side = side_that_fits(bound.words, rule.place(bound.value), wanted)
             words.append(
                 {
                     "x": bound.value,

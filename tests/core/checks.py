@@ -8,7 +8,11 @@ from typing import Any
 
 import numpy as np
 
+from evalcore.answers import joined
+from evalcore.engine import run, tasks
+from evalcore.evaluation import Evaluation, evaluate
 from evalcore.intake import make_table, read_sheet
+from evalcore.plan import Plan
 from evalcore.table import Column, Roles, Table
 
 DATA = pathlib.Path(__file__).parents[1] / "data"
@@ -60,3 +64,24 @@ def table_of(
 def table_from(name: str, roles: Roles) -> Table:
     """A table from a file among the test data."""
     return make_table(read_sheet((DATA / name).read_bytes(), name), roles)
+
+
+def carried_out(table: Table, plan: Plan, *, jobs: int = 1) -> tuple[Evaluation, Any]:
+    """An evaluation of all rounds of a plan, and its answers by scheme and candidate."""
+    rounds = plan.draw(table)
+    finished = list(run(table, plan, rounds, todo=tasks(rounds), jobs=jobs))
+    answers = {
+        (scheme, name): joined([f.answers[name] for f in finished if f.task.scheme == scheme])
+        for scheme in rounds
+        for name in plan.candidate_names
+    }
+    evaluation = evaluate(
+        table,
+        plan,
+        rounds,
+        answers=answers,
+        whole={name: finished[0].answers[name] for name in plan.candidate_names},
+        planned={scheme: drawn.n_rounds for scheme, drawn in rounds.items()},
+        failures={},
+    )
+    return evaluation, answers

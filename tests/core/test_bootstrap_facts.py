@@ -31,9 +31,7 @@ from .checks import cases
 def drawn(class_sizes: list[int], rounds: int, seed: int = 1) -> Rounds:
     """Bags of the bootstrap scheme; cases of a class stand together."""
     ends = np.cumsum(class_sizes)
-    strata = [
-        np.arange(end - size, end) for size, end in zip(class_sizes, ends, strict=True)
-    ]
+    strata = [np.arange(end - size, end) for size, end in zip(class_sizes, ends, strict=True)]
     return SCHEMES["bootstrap"].draw(strata, {"rounds": rounds}, np.random.default_rng(seed))
 
 

@@ -155,12 +155,8 @@ def test_hand_till_agrees_with_scikit_learn(n_classes):
 def test_a_case_counted_twice_equals_two_cases():
     got = Answered(3)
     twice = np.repeat(np.arange(len(got.true)), got.weights)
-    found = hand_till(
-        got.true, got.scores, groups=got.groups, n_groups=6, weights=got.weights
-    )
-    expected = hand_till(
-        got.true[twice], got.scores[twice], groups=got.groups[twice], n_groups=6
-    )
+    found = hand_till(got.true, got.scores, groups=got.groups, n_groups=6, weights=got.weights)
+    expected = hand_till(got.true[twice], got.scores[twice], groups=got.groups[twice], n_groups=6)
     assert_allclose(found, expected, rtol=1e-12)
 
 

@@ -37,14 +37,20 @@ def test_pairs_run_by_round_and_then_by_case(counts):
     rounds = Rounds.of_bags(counts)
     expected = [(r, i) for r, row in enumerate(counts) for i, times in enumerate(row) if times == 0]
     assert list(zip(*(at.tolist() for at in rounds.pairs), strict=True)) == expected
-    assert rounds.times_tested.tolist() == [sum(i == j for _, j in expected) for i in range(counts.shape[1])]
-    assert rounds.test_sizes.tolist() == [sum(r == s for s, _ in expected) for r in range(len(counts))]
+    assert rounds.times_tested.tolist() == [
+        sum(i == j for _, j in expected) for i in range(counts.shape[1])
+    ]
+    assert rounds.test_sizes.tolist() == [
+        sum(r == s for s, _ in expected) for r in range(len(counts))
+    ]
 
 
 @given(bags(), st.data())
 def test_units_and_cases_are_two_views_of_the_same_rounds(counts, data):
     by_unit = Rounds.of_bags(counts)
-    sizes = data.draw(st.lists(st.integers(1, 3), min_size=counts.shape[1], max_size=counts.shape[1]))
+    sizes = data.draw(
+        st.lists(st.integers(1, 3), min_size=counts.shape[1], max_size=counts.shape[1])
+    )
     units = np.array(data.draw(st.permutations(np.repeat(np.arange(len(sizes)), sizes).tolist())))
     by_case = by_unit.of_cases(units)
     assert by_case.n_cases == sum(sizes)
@@ -83,9 +89,7 @@ def test_refuses_a_case_on_both_sides():
 
 
 def test_refuses_shapes_that_differ():
-    message = (
-        "`train`, `test` and `repeat` must agree in shape; got (1, 3), (1, 2) and (1,)."
-    )
+    message = "`train`, `test` and `repeat` must agree in shape; got (1, 3), (1, 2) and (1,)."
     with pytest.raises(ValueError, match=exactly(message)):
         rounds_of([[1, 1, 0]], [[0, 1]], [0])
 

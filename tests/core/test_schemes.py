@@ -5,9 +5,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from evalcore.candidates import CANDIDATES
 from evalcore.errors import PlanError
 from evalcore.plan import Plan, choose
-from evalcore.candidates import CANDIDATES
 from evalcore.schemes import SCHEMES, Setting, draw, held_out_sizes
 
 from .checks import exactly, table_of
@@ -18,7 +18,9 @@ def tables(draw, least: int = 2, most_units: int = 12):
     """Two or three classes of `least` to `most_units` units each, of one to three cases, mixed."""
     sizes = draw(st.lists(st.integers(least, most_units), min_size=2, max_size=3))
     unit_labels = np.repeat(np.arange(len(sizes)), sizes)
-    per_unit = draw(st.lists(st.integers(1, 3), min_size=len(unit_labels), max_size=len(unit_labels)))
+    per_unit = draw(
+        st.lists(st.integers(1, 3), min_size=len(unit_labels), max_size=len(unit_labels))
+    )
     order = draw(st.permutations(np.repeat(np.arange(len(unit_labels)), per_unit).tolist()))
     # units are numbered in order of first appearance
     number = {unit: at for at, unit in enumerate(dict.fromkeys(order))}
@@ -37,7 +39,9 @@ def some_rounds(table, seed=1):
     smallest = int(table.class_counts("unit").min())
     for stratified in (True, False):
         folds = min(5, smallest)
-        yield rounds_of(table, "cross_validation", seed, folds=folds, repeats=3, stratified=stratified)
+        yield rounds_of(
+            table, "cross_validation", seed, folds=folds, repeats=3, stratified=stratified
+        )
         yield rounds_of(table, "bootstrap", seed, rounds=7, stratified=stratified)
         yield rounds_of(table, "random_subsampling", seed, rounds=7, stratified=stratified)
         yield rounds_of(table, "holdout", seed, test_share=0.4, stratified=stratified)

@@ -1,0 +1,135 @@
+"""The shape of the core: imports run one way, and nothing heavy or loud comes along."""
+
+import ast
+import pathlib
+import re
+import subprocess
+import sys
+
+import pytest
+
+REPOSITORY = pathlib.Path(__file__).parents[2]
+CORE = REPOSITORY / "evalcore"
+TESTS = REPOSITORY / "tests"
+
+# each file may import only files before it; some are still to be written
+ORDER = (
+    "errors",
+    "sources",
+    "figures",
+    "wording",
+    "table",
+    "intake",
+    "profile",
+    "rounds",
+    "schemes",
+    "preparation",
+    "candidates",
+    "measures",
+    "plan",
+    "answers",
+    "closed_form",
+    "trees",
+    "engine",
+    "model_variance",
+    "intervals",
+    "estimates",
+    "bag_facts",
+    "sample_size",
+    "tuning",
+    "evaluation",
+    "comparison",
+    "verdict",
+    "cut_off",
+    "statistic",
+    "rehearsal",
+    "answer",
+    "checks_table",
+    "checks_rounds",
+    "checks_candidates",
+    "findings",
+    "record",
+    "results",
+    "worker",
+    "final_model",
+    "summary",
+)
+FILES = sorted(path.stem for path in CORE.glob("*.py") if path.stem != "__init__")
+
+
+def imported(path: pathlib.Path) -> set[str]:
+    """Full names of all modules a file imports, wherever in the file."""
+    found = set()
+    for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+        if isinstance(node, ast.Import):
+            found |= {alias.name for alias in node.names}
+        elif isinstance(node, ast.ImportFrom):
+            assert node.level == 0, f"{path.name} imports relatively"
+            found.add(node.module)
+            # `from evalcore import estimates` names the module only here
+            found |= {f"{node.module}.{alias.name}" for alias in node.names}
+    return found
+
+
+def calls(path: pathlib.Path) -> set[str]:
+    """Names that are called, as written: `print`, `np.isclose`."""
+    tree = ast.parse(path.read_text(encoding="utf-8"))
+    return {ast.unparse(node.func) for node in ast.walk(tree) if isinstance(node, ast.Call)}
+
+
+def test_every_file_has_its_place():
+    assert set(FILES) <= set(ORDER)
+    assert len(set(ORDER)) == len(ORDER)
+
+
+@pytest.mark.parametrize("name", FILES)
+def test_imports_run_one_way(name):
+    earlier = ORDER[: ORDER.index(name)]
+    ours = {
+        module.split(".")[1]
+        for module in imported(CORE / f"{name}.py")
+        if module.startswith("evalcore.")
+    }
+    assert ours & set(FILES) <= set(earlier)
+
+
+def test_the_package_itself_imports_nothing():
+    assert imported(CORE / "__init__.py") == set()
+
+
+@pytest.mark.parametrize("name", FILES)
+def test_the_core_knows_no_screen(name):
+    roots = {module.split(".")[0] for module in imported(CORE / f"{name}.py")}
+    assert not roots & {"app", "streamlit", "altair", "typst", "vl_convert"}
+
+
+@pytest.mark.parametrize("name", [name for name in FILES if name != "worker"])
+def test_the_core_prints_nothing(name):
+    assert "print" not in calls(CORE / f"{name}.py")
+
+
+def test_importing_the_core_is_light():
+    modules = [f"evalcore.{name}" for name in FILES if name != "worker"]
+    heavy = ("streamlit", "altair", "sklearn")
+    script = (
+        f"import sys, importlib\nfor name in {modules}: importlib.import_module(name)\n"
+        f"print([name for name in {heavy} if name in sys.modules])"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", script], capture_output=True, text=True, cwd=REPOSITORY, check=True
+    )
+    assert done.stdout.strip() == "[]"
+
+
+def test_no_comparison_that_passes_when_the_assert_is_forgotten():
+    for path in TESTS.rglob("*.py"):
+        banned = {name for name in calls(path) if re.search(r"(^|\.)(isclose|allclose)$", name)}
+        assert not banned, f"{path.relative_to(TESTS)} calls {banned}"
+
+
+def test_one_of_each_error():
+    from evalcore import errors
+
+    kinds = [errors.TableError, errors.PlanError, errors.RecordError]
+    assert all(kind.__bases__ == (errors.EvalError,) for kind in kinds)
+    assert errors.EvalError.__bases__ == (ValueError,)
