@@ -118,9 +118,7 @@ def tables(evaluation: Evaluation) -> None:
         rows.append(row)
     with st.expander(look.safe(f"By class, {scheme_in_words(plan, table, evaluation.scheme)}")):
         look.table(rows, key="by-class")
-    with st.expander(
-        "Every estimate, by scheme and estimator, counted both ways where units repeat"
-    ):
+    with st.expander("Every estimate by scheme and estimator, counted both ways"):
         every = estimate_rows(evaluation, every=True)
         look.table([dict(zip(ESTIMATE_HEADER, row, strict=True)) for row in every], key="every")
 

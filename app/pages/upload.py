@@ -113,7 +113,7 @@ def choose_noun(unit: str) -> Noun:
 
 
 def choose_copies(sheet: Sheet, roles: Roles) -> Copies:
-    """Ask only where there are copies; with a unit they are set aside unless the user keeps them."""
+    """Ask only where there are copies; with a unit they are set aside unless kept."""
     rows, units = copies(sheet, roles)
     if not rows and not units:
         return "keep"
