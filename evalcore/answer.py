@@ -8,6 +8,7 @@ from evalcore.measures import MEASURES
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
 from evalcore.sample_size import cases_to_show, upper_bound
+from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from evalcore.verdict import LEAST_UNITS, Verdict, verdicts
 from evalcore.wording import (
@@ -60,21 +61,41 @@ def measure_name(table: Table, plan: Plan, measure: str, of_class: str = "") -> 
 
 
 def scheme_in_words(plan: Plan, table: Table, scheme: str) -> str:
-    """A scheme as a caption: "stratified 5-fold cross-validation by lot, 20 times"."""
+    """A scheme as captions name it.
+
+    Parameters
+    ----------
+    plan : Plan
+    table : Table
+    scheme : str
+        Name of the scheme in the plan.
+
+    Returns
+    -------
+    str
+        E.g. "stratified 5-fold cross-validation by lot, 20 times". Without a unit column nothing
+        is said about what is kept together.
+    """
     choice = plan.scheme(scheme)
     values = choice.values()
-    kind = "stratified " if values.get("stratified") else ""
+    if choice.key == "leave_one_out":
+        return f"leave one {table.noun.singular} out"
+    stratified = "stratified " if values.get("stratified") else ""
     by = f" by {table.noun.singular}" if table.has_units else ""
-    share = percent(float(values.get("test_share", 0)), 1)
-    return {
-        "cross_validation": f"{kind}{values.get('folds')}-fold cross-validation{by}, "
-        f"{values.get('repeats')} times",
-        "bootstrap": f"{count(int(values.get('rounds', 0)))} {kind}bootstrap rounds{by}",
-        "random_subsampling": f"{count(int(values.get('rounds', 0)))} {kind}random splits{by}, "
-        f"{share} held out",
-        "holdout": f"one {kind}split{by}, {share} held out",
-        "leave_one_out": f"each {table.noun.singular} left out once",
-    }[choice.key]
+    if choice.key == "cross_validation":
+        repeats = int(values["repeats"])
+        times = "once" if repeats == 1 else f"{count(repeats)} times"
+        return f"{stratified}{values['folds']}-fold cross-validation{by}, {times}"
+    held_out = percent(float(values["test_share"]), 1) if "test_share" in values else ""
+    rounds = int(values.get("rounds", 1))
+    if choice.key == "bootstrap":
+        return f"{count(rounds)} {stratified}bootstrap {'round' if rounds == 1 else 'rounds'}{by}"
+    if choice.key == "random_subsampling":
+        splits = "split" if rounds == 1 else "splits"
+        return f"{count(rounds)} {stratified}random {splits}{by}, {held_out} held out"
+    if choice.key == "holdout":
+        return f"{stratified}hold-out{by}, once, {held_out}"
+    return str(SCHEMES[choice.key].title).lower()
 
 
 def _figure(estimate: Estimate, *, noun: str = "") -> str:

@@ -222,3 +222,15 @@ def _root(excess: Callable[[float], float], outer: float, inner: float) -> float
             break
         outer, inner = (middle, inner) if excess(middle) > 0 else (outer, middle)
     return outer
+
+
+METHODS: dict[str, str] = {
+    "wilson": "Wilson",
+    "wilson_model_variance": "Wilson with the model's variance (own)",
+    "clopper_pearson": "exact (Clopper and Pearson)",
+    "square_and_add": "square-and-add of Wilson intervals",
+    "square_and_add_model_variance": "square-and-add with the model's variance (own)",
+    "rows_of_units": "rows of units, with the model's variance (own)",
+    "auc_score_type": "score type for AUC (Newcombe)",
+    "auc_score_type_model_variance": "score type for AUC with the model's variance (own)",
+}

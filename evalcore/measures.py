@@ -204,7 +204,7 @@ MEASURES: dict[str, Measure] = {
         Measure("accuracy", "share of {units} right", "accuracy", accuracy),
         Measure(
             "balanced_accuracy",
-            "mean of the classes' shares right",
+            "mean of the classes’ shares right",
             "balanced accuracy",
             balanced_accuracy,
         ),

@@ -212,10 +212,12 @@ class Plan:
         choice = self.candidate(name)
         title = CANDIDATES[choice.key].named(choice.values())
         alike = [c for c in self.candidates if CANDIDATES[c.key].named(c.values()) == title]
-        if len(alike) == 1:
-            return title
-        settings = ", ".join(f"{key} {_written(value)}" for key, value in choice.settings)
-        return f"{title} ({settings})"
+        differ = [
+            f"{name} {_written(value)}"
+            for name, value in choice.settings
+            if len({c.values()[name] for c in alike}) > 1
+        ]
+        return f"{title} ({', '.join(differ)})" if differ else title
 
     @property
     def about_name(self) -> str:

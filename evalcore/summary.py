@@ -16,23 +16,13 @@ from evalcore.candidates import CANDIDATES
 from evalcore.evaluation import ESTIMATORS, Evaluation
 from evalcore.figures import Estimate
 from evalcore.findings import findings
+from evalcore.intervals import METHODS
 from evalcore.record import Record
 from evalcore.sources import SOURCES
 from evalcore.wording import capitalised, count, decimal, level, listed, percent, quoted
 from evalcore.wording import interval as interval_text
 
 NOT_STATED = "not stated"
-
-INTERVALS: dict[str, str] = {
-    "wilson": "Wilson",
-    "wilson_model_variance": "Wilson with model variance (own)",
-    "clopper_pearson": "exact (Clopper-Pearson)",
-    "square_and_add": "square-and-add of Wilson",
-    "square_and_add_model_variance": "square-and-add of Wilson with model variance (own)",
-    "rows_of_units": "rows of units, cluster and model variance (own)",
-    "auc_score_type": "score-type for AUC (Newcombe)",
-    "auc_score_type_model_variance": "score-type for AUC with model variance (own)",
-}
 
 
 @dataclass(frozen=True)
@@ -216,7 +206,7 @@ def _estimate_row(evaluation: Evaluation, e: Estimate) -> tuple[str, ...]:
         measure_name(table, plan, e.measure, e.of_class),
         value,
         bounds,
-        INTERVALS[shown.method] if shown else "",
+        METHODS[shown.method] if shown else "",
         f"{count(e.n)} {table.noun_for(e.counted_by).plural}",
     )
 

@@ -66,8 +66,12 @@ def percent(value: float, n: int) -> str:
     return f"{_percent_number(value, n)}{NBSP}%" if not math.isnan(value) else "undefined"
 
 
+def _decimals(n: int) -> int:
+    return 1 if n >= 200 else 0
+
+
 def _percent_number(value: float, n: int) -> str:
-    decimals = 1 if n >= 200 else 0
+    decimals = _decimals(n)
     smallest = 10.0**-decimals
     shown = 100 * value
     if 0 < shown < smallest / 2:
@@ -85,7 +89,8 @@ def interval(bounds: Interval, n: int) -> str:
     """
     if not bounds.defined:
         return "undefined"
-    return f"{_percent_number(bounds.low, n)}{DASH}{_percent_number(bounds.high, n)}{NBSP}%"
+    decimals = _decimals(n)
+    return f"{100 * bounds.low:.{decimals}f}{DASH}{100 * bounds.high:.{decimals}f}{NBSP}%"
 
 
 def with_interval(value: float, bounds: Interval | None, n: int) -> str:

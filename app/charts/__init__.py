@@ -6,7 +6,7 @@ from app.charts.in_and_out import in_and_out
 from app.charts.per_class import per_class
 from app.charts.print_form import svg
 from app.charts.round_scores import round_scores
-from app.charts.style import Figure, scheme_in_words
+from app.charts.style import Figure
 
 __all__ = [
     "Figure",
@@ -15,6 +15,5 @@ __all__ = [
     "in_and_out",
     "per_class",
     "round_scores",
-    "scheme_in_words",
     "svg",
 ]

@@ -193,8 +193,7 @@ def _bars(
         open_y = y + BAR + 3
         hollow.append({**bar, "x2": share.case_share, "y": open_y, "y2": open_y + OPEN_BAR})
         cuts += [
-            {"x": at / table.n_units, "y": y, "y2": y + BAR}
-            for at in range(cut, share.units, cut)
+            {"x": at / table.n_units, "y": y, "y2": y + BAR} for at in range(cut, share.units, cut)
         ]
     layers = [_rects(solid, rule, height, hollow=False)]
     if table.has_units:

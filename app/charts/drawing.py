@@ -192,9 +192,7 @@ def words_at(
     return drawn
 
 
-def upright(
-    rows: Sequence[Datum], rule: Ruler, height: float, **mark: Any
-) -> alt.Chart:
+def upright(rows: Sequence[Datum], rule: Ruler, height: float, **mark: Any) -> alt.Chart:
     """Upright rules from `y` to `y2` at `x`."""
     drawn: alt.Chart = (
         alt.Chart(data(rows))
@@ -225,9 +223,7 @@ def axis(rule: Ruler, y: float, height: float, *, title: str, short: str = "") -
         level_line([y], height, color=AXIS),
         upright(ticks, rule, height, color=AXIS),
         words_at(words, rule, height),
-        line_of_words(
-            name, height, side="left", colour=SOFT_INK, size=SMALL_WORDS, limit=limit
-        ),
+        line_of_words(name, height, side="left", colour=SOFT_INK, size=SMALL_WORDS, limit=limit),
     ]
 
 
@@ -253,9 +249,7 @@ def level_line(ys: Sequence[float], height: float, *, color: str = HAIRLINE) -> 
 
 def grid(rule: Ruler, bands: Sequence[tuple[float, float]], height: float) -> alt.Chart:
     """Upright rules at the ticks, in bands without words only."""
-    rows = [
-        {"x": tick, "y": top, "y2": bottom} for top, bottom in bands for tick in rule.ticks
-    ]
+    rows = [{"x": tick, "y": top, "y2": bottom} for top, bottom in bands for tick in rule.ticks]
     return upright(rows, rule, height, color=HAIRLINE)
 
 

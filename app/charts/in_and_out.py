@@ -167,6 +167,7 @@ def _chart(
             rows = bar_rows(counted, bins, base=base, tall=tall, measure=measure, m=m)
             fill = colour if side == sides.out else PAPER
             histograms.append(_bars(rows, side, rule, height, fill=fill, stroke=colour))
+    title = f"{AXIS_TITLES.get(measure, measure)} in one round"
     return drawing.composed(
         [
             drawing.grid(rule, [(base - UP, base + DOWN) for base in bases], height),
@@ -176,7 +177,7 @@ def _chart(
             *_plus_marks(pairs, bases, rule, height=height, measure=measure),
             _side_names(sides, height),
             *drawing.headers(_headers(evaluation, pairs, bases, sides, measure), height),
-            *drawing.axis(rule, bottom, height, title=f"{AXIS_TITLES.get(measure, measure)} in one round"),
+            *drawing.axis(rule, bottom, height, title=title),
         ],
         height,
     )

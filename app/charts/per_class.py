@@ -16,9 +16,10 @@ from app.charts.style import (
     text_alternative,
 )
 from app.charts.tracks import Bound, TrackRow, track_chart
+from evalcore.answer import class_rate
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
-from evalcore.wording import level, listed, n_equals, percent, quoted
+from evalcore.wording import capitalised, class_name, level, listed, n_equals, percent
 
 MOST_IN_TITLE = 3
 
@@ -34,8 +35,7 @@ def per_class(
     candidate : str
         Name in the plan.
     bounds : mapping of class name to float, optional
-        The cautious lower bound that must reach the class's limit: a black stroke with words,
-        so that nobody holds the interval's end against the limit.
+        The cautious bound that must reach the class's limit: a black stroke with words.
 
     Returns
     -------
@@ -74,9 +74,9 @@ def _limits(evaluation: Evaluation) -> dict[str, float]:
     return least
 
 
-def _called(evaluation: Evaluation, estimate: Estimate, *, length: int = 30) -> str:
-    noun = evaluation.table.noun_for(estimate.counted_by)
-    return f"{quoted(shorten(estimate.of_class, length))} {noun.plural} found"
+def _called(evaluation: Evaluation, estimate: Estimate, *, length: int = 60) -> str:
+    name = class_rate(evaluation.table, evaluation.plan, estimate.of_class, trade=False)
+    return shorten(name, length)
 
 
 def _track(
@@ -94,7 +94,7 @@ def _track(
         words = f"at least {percent(cautious[name], estimate.n)}"
         marks.append(Bound(cautious[name], words, INK))
     return TrackRow(
-        name=_called(evaluation, estimate, length=60),
+        name=_called(evaluation, estimate),
         long=f"{figure}, {n_equals(estimate.n, noun)}",
         short=f"{figure}, {n_equals(estimate.n)}",
         value=estimate.value,
@@ -119,8 +119,8 @@ def _title(
     """Bounds against limits where both are known, else the figures; verdicts are not made here."""
     decided = [e for e in found if e.of_class in least and e.of_class in cautious]
     parts = [
-        f"{_called(evaluation, e)}: at least {percent(cautious[e.of_class], e.n)}, limit "
-        f"{level(least[e.of_class])}"
+        f"{capitalised(_called(evaluation, e, length=30))}: at least "
+        f"{percent(cautious[e.of_class], e.n)}, limit {level(least[e.of_class])}"
         for e in decided
     ]
     if parts:
@@ -142,7 +142,7 @@ def _title(
 
 
 def _name(estimate: Estimate) -> str:
-    return quoted(shorten(estimate.of_class, 30))
+    return class_name(shorten(estimate.of_class, 30))
 
 
 def _spoken(

@@ -80,9 +80,7 @@ def side_that_fits(words: str, place: float, wanted: str) -> str:
     return wanted if room[wanted] >= need or room[wanted] >= room[other] else other
 
 
-def _span(
-    reference: Reference, rule: drawing.Ruler, side: str, width: int
-) -> tuple[float, float]:
+def _span(reference: Reference, rule: drawing.Ruler, side: str, width: int) -> tuple[float, float]:
     words = reference.long if width == WIDE else reference.short
     x, length = width * rule.place(reference.value), drawing.CHARACTER * len(words)
     return (x, x + length) if side == "left" else (x - length, x)

@@ -3,20 +3,9 @@
 import math
 
 from evalcore.figures import Estimate, Interval
+from evalcore.intervals import METHODS
 from evalcore.measures import MEASURES
 from evalcore.wording import DASH, Noun, count, decimal, interval, percent, points, with_interval
-
-METHODS = {
-    "wilson": "Wilson",
-    "clopper_pearson": "exact (Clopper and Pearson)",
-    "wilson_model_variance": "Wilson, with the model's variance",
-    "auc_score_type": "score type",
-    "auc_score_type_model_variance": "score type, with the model's variance",
-    "square_and_add": "square-and-add",
-    "rows_of_units": "for rows of units, with the model's variance",
-    "square_and_add_model_variance": "square-and-add, with the model's variance",
-}
-
 
 NUMBERS = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten")
 
@@ -75,7 +64,7 @@ def method(ends: Interval | None) -> str:
     """The name of an interval's method."""
     if ends is None:
         return "none is offered that keeps its word"
-    return METHODS.get(ends.method, ends.method.replace("_", " "))
+    return METHODS[ends.method]
 
 
 def axis_title(measure: str, noun: Noun) -> str:

@@ -9,12 +9,11 @@ from typing import Any
 
 import altair as alt
 
+from evalcore.answer import scheme_in_words
 from evalcore.candidates import CANDIDATES
 from evalcore.evaluation import Evaluation
 from evalcore.plan import Plan
-from evalcore.schemes import SCHEMES
-from evalcore.table import Table
-from evalcore.wording import capitalised, count, percent
+from evalcore.wording import capitalised, count
 
 INK = "#12181B"
 SOFT_INK = "#4F5960"
@@ -156,44 +155,6 @@ def shorten(text: str, length: int) -> str:
     """
     shown = "".join(c if c.isprintable() else " " for c in text)
     return shown if len(shown) <= length else shown[: length - 1].rstrip() + "…"
-
-
-def scheme_in_words(plan: Plan, table: Table, scheme: str) -> str:
-    """A scheme as captions name it.
-
-    Parameters
-    ----------
-    plan : Plan
-    table : Table
-    scheme : str
-        Name of the scheme in the plan.
-
-    Returns
-    -------
-    str
-        E.g. "stratified 5-fold cross-validation by lot, 20 times". Without a unit column nothing
-        is said about what is kept together.
-    """
-    choice = plan.scheme(scheme)
-    values = choice.values()
-    if choice.key == "leave_one_out":
-        return f"leave one {table.noun.singular} out"
-    stratified = "stratified " if values.get("stratified") else ""
-    by = f" by {table.noun.singular}" if table.has_units else ""
-    if choice.key == "cross_validation":
-        repeats = int(values["repeats"])
-        times = "once" if repeats == 1 else f"{count(repeats)} times"
-        return f"{stratified}{values['folds']}-fold cross-validation{by}, {times}"
-    held_out = percent(float(values["test_share"]), 1) if "test_share" in values else ""
-    rounds = int(values.get("rounds", 1))
-    if choice.key == "bootstrap":
-        return f"{count(rounds)} {stratified}bootstrap {'round' if rounds == 1 else 'rounds'}{by}"
-    if choice.key == "random_subsampling":
-        splits = "split" if rounds == 1 else "splits"
-        return f"{count(rounds)} {stratified}random {splits}{by}, {held_out} held out"
-    if choice.key == "holdout":
-        return f"{stratified}hold-out{by}, once, {held_out}"
-    return SCHEMES[choice.key].title.lower()
 
 
 def scheme_so_far(evaluation: Evaluation, scheme: str) -> str:

@@ -269,5 +269,3 @@ def _marks(
             tooltip=[alt.Tooltip(f"{key}:N") for key in rows[0].tip],
         )
     ]
-
-

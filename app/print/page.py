@@ -119,7 +119,7 @@ def page(content: Content) -> str:
         *(_figure(picture, level=3) for picture in pictures if picture),
         "<h2>How cases were held out</h2>",
         *(f"<p>{escape(text)}</p>" for text in said.design),
-        "<h2>From rows read to rows judged on</h2>",
+        "<h2>From rows read to judged</h2>",
         _pairs(said.flow, kind="counts"),
         "<h2>The plan</h2>",
         _pairs(said.plan),

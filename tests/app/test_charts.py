@@ -18,7 +18,6 @@ from app.charts import (
     in_and_out,
     per_class,
     round_scores,
-    scheme_in_words,
     svg,
 )
 from app.charts.balance import cut_every
@@ -28,6 +27,7 @@ from app.charts.estimates import title_of
 from app.charts.placing import Reference, placed
 from app.charts.print_form import printed
 from app.charts.style import LOOKS, candidate_look, short_title, shorten
+from evalcore.answer import scheme_in_words
 from evalcore.answers import joined
 from evalcore.candidates import CANDIDATES
 from evalcore.engine import run, tasks
@@ -223,7 +223,7 @@ def test_per_class_marks_limits_and_cautious_bounds(lots):
     words = {plain(row["long"]): row["x"] for row in drawn(figure, "x", "long", "align")}
     assert words["at least 41 %"] == 0.41
     assert words["limit 90 %"] == 0.9
-    assert plain(figure.title) == "‘failing’ lots found: at least 41 %, limit 90 %"
+    assert plain(figure.title) == "Failing lots found: at least 41 %, limit 90 %"
 
 
 def test_every_figure_has_its_words_and_takes_the_width_of_its_container(lots):

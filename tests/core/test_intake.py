@@ -431,6 +431,10 @@ class TestCopies:
         assert copies(sheet, Roles("class", unit="lot")) == ({4}, {"C"})
         assert copies(sheet, Roles("class")) == ({4}, set())
 
+    def test_a_row_entered_twice_does_not_hide_a_copy(self):
+        text = "lot,x,class\nA,1,a\nA,1,a\nA,3,a\nB,1,a\nB,3,a\nC,5,b\n"
+        assert copies(sheet_of(text), Roles("class", unit="lot")) == ({1}, {"B"})
+
     def test_columns_left_out_do_not_tell_units_apart(self):
         sheet = sheet_of("lot,day,x,class\nA,1,5,a\nB,2,5,a\nC,3,5,b\n")
         assert copies(sheet, Roles("class", unit="lot")) == (set(), set())

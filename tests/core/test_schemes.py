@@ -189,6 +189,10 @@ class TestThroughAPlan:
         alone = self.drawn("bootstrap", rounds=11)
         beside = self.drawn("bootstrap", others=(choose(SCHEMES, "cross_validation"),), rounds=11)
         assert alone.train.tobytes() == beside.train.tobytes()
+        # nor does a second bootstrap, beside which both go by longer names
+        second = choose(SCHEMES, "bootstrap", rounds=11, stratified=False)
+        named = self.drawn("bootstrap", others=(second,), rounds=11)
+        assert alone.train.tobytes() == named.train.tobytes()
 
     def test_the_seed_moves_the_rounds(self):
         assert (
