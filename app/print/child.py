@@ -33,22 +33,17 @@ def build_in_child(record_folder: Path, out: Path) -> tuple[Path, Path]:
     RecordError
         Nothing can be summarised yet, the child failed, or it took over two minutes.
     """
-    command = [sys.executable, "-m", "app.print.build", str(record_folder), str(out)]
-    paths = [str(ROOT), *filter(None, [os.environ.get("PYTHONPATH")])]
     try:
         ended = subprocess.run(
-            command,
+            # -P: a folder named `app` where the user happens to be is not ours
+            [sys.executable, "-P", "-m", "app.print.build", str(record_folder), str(out)],
             stdin=subprocess.DEVNULL,
             capture_output=True,
             text=True,
             encoding="utf-8",
             errors="replace",
             timeout=LONGEST,
-            env={
-                **os.environ,
-                "PYTHONPATH": os.pathsep.join(paths),
-                "PYTHONIOENCODING": "utf-8",
-            },
+            env=_environment(),
         )
     except subprocess.TimeoutExpired:
         raise RecordError(
@@ -56,6 +51,12 @@ def build_in_child(record_folder: Path, out: Path) -> tuple[Path, Path]:
             "untouched."
         ) from None
     return _paths(ended, out)
+
+
+def _environment() -> dict[str, str]:
+    """The child's, so that it finds the same `app` from any folder and writes UTF-8."""
+    paths = [str(ROOT), *filter(None, [os.environ.get("PYTHONPATH")])]
+    return {**os.environ, "PYTHONPATH": os.pathsep.join(paths), "PYTHONIOENCODING": "utf-8"}
 
 
 def _paths(ended: subprocess.CompletedProcess[str], out: Path) -> tuple[Path, Path]:

@@ -101,9 +101,22 @@ def page(content: Content) -> str:
     str
         Every text of it escaped; no script, nothing fetched, and a policy that forbids both.
     """
+    title = escape(content.summary.title)
+    body = "\n".join(part for part in (*_answer(content), *_grounds(content)) if part)
+    return (
+        '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8">\n'
+        f'<meta http-equiv="Content-Security-Policy" content="{POLICY}">\n'
+        '<meta name="viewport" content="width=device-width, initial-scale=1">\n'
+        f"<title>{title}</title>\n<style>{STYLE}</style>\n</head>\n<body>\n"
+        f'<main>\n{body}\n</main>\n<footer class="soft">{escape(content.foot)}</footer>\n'
+        "</body>\n</html>\n"
+    )
+
+
+def _answer(content: Content) -> list[str]:
+    """What page 1 of the PDF holds: the answer, how sure it is, what to weigh."""
     said = content.summary
-    pictures = (content.limits, content.rounds, content.bags)
-    main = [
+    return [
         f'<p class="soft">{_stated(said.question)} · evaluated {escape(content.evaluated)}</p>',
         f"<h1>{escape(said.title)}</h1>",
         f'<p class="lead">{escape(said.answer)}</p>',
@@ -113,6 +126,14 @@ def page(content: Content) -> str:
         _findings(content.findings),
         "<h2>Where this does not hold</h2>",
         *(f"<p>{_stated(text)}</p>" for text in (*said.does_not_hold, *said.cautions)),
+    ]
+
+
+def _grounds(content: Content) -> list[str]:
+    """What all this rests on."""
+    said = content.summary
+    pictures = (content.limits, content.rounds, content.bags)
+    return [
         "<h2>What the figures rest on</h2>",
         _figure(content.balance, level=3),
         f'<div class="small">{_table(said.balance.header, _rows(said.balance.rows))}</div>',
@@ -131,15 +152,6 @@ def page(content: Content) -> str:
         "<h2>Which evaluation this is</h2>",
         _pairs(said.identity),
     ]
-    body = "\n".join(part for part in main if part)
-    return (
-        '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8">\n'
-        f'<meta http-equiv="Content-Security-Policy" content="{POLICY}">\n'
-        '<meta name="viewport" content="width=device-width, initial-scale=1">\n'
-        f"<title>{escape(said.title)}</title>\n<style>{STYLE}</style>\n</head>\n<body>\n"
-        f'<main>\n{body}\n</main>\n<footer class="soft">{escape(content.foot)}</footer>\n'
-        "</body>\n</html>\n"
-    )
 
 
 def _stated(text: str) -> str:

@@ -78,6 +78,11 @@ class TestTable:
         assert len(prints) == len(changes)
         assert table_of(**base).fingerprint in prints
 
+    def test_the_fingerprint_sees_which_unit_a_case_is_of(self):
+        one, other = (table_of([0, 1, 1, 1], units=units) for units in ([0, 1, 1, 2], [0, 1, 2, 2]))
+        assert one.unit_names == other.unit_names
+        assert one.fingerprint != other.fingerprint
+
     def test_arrays_are_read_only(self):
         for array in (self.made.features, self.made.labels, self.made.units, self.made.lines):
             with pytest.raises(ValueError, match="read-only"):
