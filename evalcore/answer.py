@@ -207,5 +207,6 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     misses = round((1 - verdict.value) * n)
     needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
     with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)
-    more = f" To show {least} with {misses} misses takes {count(needed)} {units}"
+    misses_made = f"{misses} miss{'' if misses == 1 else 'es'}"
+    more = f" To show {least} with {misses_made} takes {count(needed)} {units}"
     return shows + more + (f", with one miss {count(with_one)}." if misses > 1 else ".")

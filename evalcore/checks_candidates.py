@@ -2,6 +2,7 @@
 
 import math
 from collections.abc import Iterator
+from dataclasses import dataclass
 
 from evalcore import intervals
 from evalcore.estimates import mean_of_rounds
@@ -104,42 +105,57 @@ def misleading_632(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
         return
     for scheme in _bootstraps(plan, evaluation):
         for name in _learned(evaluation):
-            reason = why_632_misleads(evaluation, name, scheme)
-            if reason is None:
+            sign = why_632_misleads(evaluation, name, scheme)
+            if sign is None:
                 continue
-            apparent, out_of_bag, overfitting = reason
-            gap = apparent - out_of_bag
             yield Finding(
                 "misleading_632",
                 "moderate",
                 name,
-                f".632 misleads for {plan.title(name)}: relative overfitting "
-                f"{decimal(overfitting)}, allowed up to {decimal(OVERFITTING)}",
-                f"Right on the cases fitted to {decimal(apparent, 3)}, out-of-bag "
-                f"{decimal(out_of_bag, 3)}, gap {points(gap, signed=False)}. Thresholds: apparent "
-                f"{decimal(MEMORY, 3)}, relative overfitting {decimal(OVERFITTING)}, gap "
-                f"{points(GAP, signed=False)}. In simulations .632 was then 3 to 18 points too "
-                "high, the per-round form more, and .632+ up to 6.",
+                f".632 misleads for {plan.title(name)}: {sign.what} {decimal(sign.value, 3)}, "
+                f"the threshold is {decimal(sign.threshold, 3)}",
+                f"Of the three signs of a candidate that fits its own cases too well ({_SIGNS}) "
+                "at least one is there. In simulations .632 was then 3 to 18 points too high, the "
+                "per-round form more, and .632+ up to 6.",
                 "Use the held-out estimate of the first scheme.",
-                overfitting,
-                OVERFITTING,
+                sign.value,
+                sign.threshold,
                 "own_simulation",
             )
 
 
-def why_632_misleads(
-    evaluation: Evaluation, candidate: str, scheme: str
-) -> tuple[float, float, float] | None:
-    """Apparent, out-of-bag and relative overfitting if .632 must not be trusted, else None."""
+_SIGNS = (
+    f"share right on the cases fitted to at least {decimal(MEMORY, 3)}, relative overfitting above "
+    f"{decimal(OVERFITTING)}, or {points(GAP, signed=False)} above out-of-bag"
+)
+
+
+@dataclass(frozen=True)
+class Sign:
+    """One sign that .632 misleads: what, its value and the threshold it has crossed."""
+
+    what: str
+    value: float
+    threshold: float
+
+
+def why_632_misleads(evaluation: Evaluation, candidate: str, scheme: str) -> Sign | None:
+    """The first sign that .632 must not be trusted for a candidate, or None."""
     out_of_bag = evaluation.estimate("accuracy", candidate, scheme=scheme).value
     part = evaluation.part(candidate, scheme)
     plus = plus_632(part, "accuracy", out_of_bag)
     if plus is None:
         return None
     apparent = part.whole_value("accuracy")
-    if apparent >= MEMORY or plus.overfitting > OVERFITTING or apparent - out_of_bag > GAP:
-        return apparent, out_of_bag, plus.overfitting
-    return None
+    signs = (
+        (apparent >= MEMORY, Sign("share right on the cases fitted to", apparent, MEMORY)),
+        (
+            plus.overfitting > OVERFITTING,
+            Sign("relative overfitting", plus.overfitting, OVERFITTING),
+        ),
+        (apparent - out_of_bag > GAP, Sign("gap to out-of-bag", apparent - out_of_bag, GAP)),
+    )
+    return next((sign for crossed, sign in signs if crossed), None)
 
 
 def wide_interval(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:

@@ -85,15 +85,17 @@ def too_few_rounds(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
         if worst[0] <= MONTE_CARLO:
             continue
         once = math.isnan(worst[0])
-        moved = "by an unknown amount" if once else f"by about {points(worst[0], signed=False)}"
+        done = evaluation.rounds[scheme].n_rounds
+        moved = "unknown" if once else f"about {points(worst[0], signed=False)}"
         yield Finding(
             "too_few_rounds",
             "moderate",
             scheme,
             f"Too few rounds of {title(plan, scheme)}: drawing them anew would move an estimate "
-            f"{moved}, 1 point is the threshold",
-            f"The standard error from the draw alone is {moved.removeprefix('by ')} for "
-            f"{plan.title(worst[1])} ({count(evaluation.rounds[scheme].n_rounds)} rounds). "
+            f"by {'an unknown amount' if once else moved}; the threshold is "
+            f"{points(MONTE_CARLO, signed=False)}",
+            f"The standard error from the draw alone is {moved} for "
+            f"{plan.title(worst[1])} ({count(done)} {'round' if done == 1 else 'rounds'}). "
             + (
                 "In simulations a single 70/30 split moved by 12 points at 30 cases, 8 at 60 and "
                 "5.5 at 120."

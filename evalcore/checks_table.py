@@ -21,7 +21,7 @@ ALONE, ALONE_GRAVE = 0.97, 0.99
 def class_too_small(table: Table, plan: Plan, _: Evaluation | None) -> Iterator[Finding]:
     """Too few units of a class to say much about it; more are asked for where it has a limit."""
     limited = {limit.of_class for limit in plan.limits}
-    for k, units in enumerate(table.class_counts("unit").tolist()):
+    for k, units in enumerate(table.units_holding.tolist()):
         name, noun = table.classes[k], table.noun
         if units < GRAVE_UNITS:
             severity, threshold, source = "grave", GRAVE_UNITS, "clopper_pearson1934"

@@ -1,7 +1,7 @@
 """Table, plan, rounds and answers put together: every estimate of every candidate and scheme."""
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -75,6 +75,13 @@ class Judged:
     def tau2(self) -> float:
         """Model variance of the share right."""
         return model_variance.model_variance(self.held.correct, self.held.rounds, units=self.units)
+
+    @cached_property
+    def tau2_auc(self) -> float:
+        """Model variance of the AUC within rounds, of two classes."""
+        return model_variance.auc_model_variance(
+            self.held.labels == 1, self.held.rounds, self.held.scores[:, 1]
+        )
 
     def tau2_of(self, of_class: int) -> float:
         """Model variance of the share right within one class."""
@@ -219,16 +226,19 @@ def evaluate(
                     table.units if way == "case" and table.has_units else None,
                 )
             )
-    figures = tuple(e for part in judged for e in _estimates(table, plan, part))
+    figures = tuple(e for part in judged for e in _estimates(table, plan, part, judged))
     return Evaluation(table, plan, rounds, planned, tuple(judged), figures, failures)
 
 
-def _estimates(table: Table, plan: Plan, part: Judged) -> Iterator[Estimate]:
-    bootstrap = SCHEMES[plan.scheme(part.scheme).key].repeats_cases
+def _estimates(
+    table: Table, plan: Plan, part: Judged, judged: Sequence[Judged]
+) -> Iterator[Estimate]:
+    this = (part.candidate, part.counted_by)
+    alike = [p for p in judged if (p.candidate, p.counted_by) == this]
     for measure in MEASURES.values():
         classes = list(enumerate(table.classes)) if measure.per_class else [(0, "")]
         for k, name in classes:
-            values = _figures(plan, part, measure.key, k, bootstrap=bootstrap)
+            values = _figures(plan, part, alike, measure.key, of_class=k)
             n = _n_behind(part, k if measure.per_class else None)
             for estimator, value, interval, undefined in values:
                 yield Estimate(
@@ -253,7 +263,7 @@ def _n_behind(part: Judged, of_class: int | None) -> int:
 
 
 def _figures(
-    plan: Plan, part: Judged, measure: str, of_class: int, *, bootstrap: bool
+    plan: Plan, part: Judged, alike: Sequence[Judged], measure: str, *, of_class: int
 ) -> Iterator[tuple[str, float, Interval | None, int]]:
     """Estimator, value, interval and undefined rounds of one measure."""
     apparent = part.whole_value(measure, of_class)
@@ -263,12 +273,12 @@ def _figures(
     if measure == "auc":
         # never pooled across rounds: scores of different models are not on one scale
         out_of_bag = mean
-        yield "mean_of_rounds", mean, _auc_interval(plan, part, mean), undefined
+        yield "mean_of_rounds", mean, _auc_interval(plan, part, alike, mean), undefined
     else:
         out_of_bag, interval = _held_out(plan, part, measure, of_class)
         yield "held_out_by_case", out_of_bag, interval, 0
         yield "mean_of_rounds", mean, None, undefined
-    if not bootstrap:
+    if not SCHEMES[plan.scheme(part.scheme).key].repeats_cases:
         return
     per_round, lacking = estimates.mean_of_rounds(estimates.per_round_632(held, in_bag))
     yield "weighted_632_per_round", per_round, None, lacking
@@ -338,12 +348,18 @@ def share_interval(
     return intervals.with_model_variance(float(shares.mean()), len(shares), tau2, level=level)
 
 
-def _auc_interval(plan: Plan, part: Judged, value: float) -> Interval | None:
-    """For two classes and independent cases; None otherwise, since none keeps its word there."""
+def _auc_interval(
+    plan: Plan, part: Judged, alike: Sequence[Judged], value: float
+) -> Interval | None:
+    """For two classes and independent cases; None otherwise, since none keeps its word there.
+
+    The model's variance is the largest that any scheme shows: the folds alone cannot tell it
+    where a class has few cases (own simulation).
+    """
     if part.held.scores.shape[1] != 2 or part.units is not None or math.isnan(value):
         return None
-    positive = part.held.labels == 1
-    tau2 = model_variance.auc_model_variance(positive, part.held.rounds, part.held.scores[:, 1])
+    known = part.held.labels[~np.isnan(part.shares)]
+    tau2 = max((p.tau2_auc for p in alike if not math.isnan(p.tau2_auc)), default=math.nan)
     return intervals.auc_score_type(
-        value, int(positive.sum()), int((~positive).sum()), tau2, level=plan.level
+        value, int((known == 1).sum()), int((known == 0).sum()), tau2, level=plan.level
     )

@@ -6,7 +6,9 @@ or a code with leading zeros is not eaten on the way.
 
 import csv
 import io
+import math
 import re
+import unicodedata
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -51,15 +53,19 @@ class Sheet:
     decimal: str
     notices: tuple[str, ...]
 
-    def column(self, name: str) -> list[str]:
-        """The entries of one column; raises `TableError` if there is no such column."""
+    def column(self, name: str, rows: Sequence[int] | None = None) -> list[str]:
+        """The entries of one column, of some rows if given.
+
+        Raises `TableError` if there is no such column.
+        """
         if name not in self.header:
             raise TableError(
                 f"There is no column {quoted(name)} in {quoted(self.name)}; it has "
                 f"{listed([quoted(h) for h in self.header])}."
             )
         at = self.header.index(name)
-        return [row[at] for row in self.rows]
+        chosen = range(len(self.rows)) if rows is None else rows
+        return [self.rows[i][at] for i in chosen]
 
 
 def read_sheet(data: bytes, name: str) -> Sheet:
@@ -147,7 +153,7 @@ def _reader(text: str, delimiter: str) -> list[list[str]]:
 def _records(text: str, delimiter: str) -> tuple[list[list[str]], list[int]]:
     """Records that are not blank, and the line each starts on (a quoted cell may hold newlines)."""
     csv.field_size_limit(1_000_000)
-    reader = csv.reader(io.StringIO(text, newline=""), delimiter=delimiter)
+    reader = csv.reader(io.StringIO(text, newline=""), delimiter=delimiter, strict=True)
     records, lines, start = [], [], 1
     try:
         for record in reader:
@@ -232,11 +238,11 @@ def make_table(sheet: Sheet, roles: Roles) -> Table:
     if roles.unit == roles.label:
         raise TableError(f"{quoted(roles.label)} cannot be both the label and the unit.")
     keep, set_aside = _rows_kept(sheet, roles)
-    label_entries = [sheet.column(roles.label)[i] for i in keep]
+    label_entries = sheet.column(roles.label, keep)
     classes = tuple(sorted(set(label_entries)))
     _refuse_measurement(label_entries, classes, roles.label)
     unit_entries = (
-        [sheet.column(roles.unit)[i] for i in keep]
+        sheet.column(roles.unit, keep)
         if roles.unit
         else [f"row on line {sheet.lines[i]}" for i in keep]
     )
@@ -254,8 +260,19 @@ def make_table(sheet: Sheet, roles: Roles) -> Table:
         rows_read=len(sheet.rows),
         set_aside=set_aside,
         left_out=left_out,
-        notices=sheet.notices + notices,
+        notices=sheet.notices + _look_alikes(classes) + notices,
         repeating=repeating_columns(sheet, roles.label, keep),
+    )
+
+
+def _look_alikes(classes: Sequence[str]) -> tuple[str, ...]:
+    """Classes that differ in characters but not to the eye: a letter with its accent apart."""
+    composed = [unicodedata.normalize("NFC", name) for name in classes]
+    alike = sorted({name for name in composed if composed.count(name) > 1})
+    return tuple(
+        f"Two classes look alike, {quoted(name)}: they differ only in how accents are encoded. "
+        "They are kept apart; make them one in the file if they are."
+        for name in alike
     )
 
 
@@ -347,9 +364,9 @@ def _columns(
     for name in sheet.header:
         if name in (roles.label, roles.unit) or name in left_out:
             continue
-        entries = [sheet.column(name)[i] for i in keep]
+        entries = sheet.column(name, keep)
         column, said = _column(name, entries, sheet.decimal)
-        reason = _unusable(column)
+        reason = _unusable(column, keep)
         if reason:
             left_out.append(name)
             said = [f"Left out {quoted(name)}: {reason}."]
@@ -364,12 +381,15 @@ def _column(name: str, entries: Sequence[str], decimal: str) -> tuple[Column, li
     present = [entry for entry in entries if entry not in MISSING]
     numbers = {entry: _number(entry, decimal) for entry in set(present)}
     odd = sorted({entry for entry in present if numbers[entry] is None})
-    infinite = sorted({entry for entry in present if _INFINITE.match(entry)})
-    words = [entry for entry in odd if entry not in infinite]
-    n_words = sum(entry in set(words) for entry in present)
+    infinite = sorted(
+        {e for e in present if _INFINITE.match(e) or not math.isfinite(numbers[e] or 0.0)}
+    )
+    words = set(odd) - set(infinite)
+    n_words = sum(entry in words for entry in present)
     if present and n_words <= len(present) / 2:
         values = np.array([_or_nan(numbers.get(entry)) for entry in entries], dtype=np.float64)
-        return Column(name, "number", values), _number_notices(name, words, infinite, n_words)
+        notices = _number_notices(name, sorted(words), infinite, n_words)
+        return Column(name, "number", values), notices
     categories = tuple(sorted(set(present)))
     place = {entry: float(at) for at, entry in enumerate(categories)}
     values = np.array([place.get(entry, np.nan) for entry in entries], dtype=np.float64)
@@ -377,7 +397,7 @@ def _column(name: str, entries: Sequence[str], decimal: str) -> tuple[Column, li
 
 
 def _or_nan(value: float | None) -> float:
-    return float("nan") if value is None else value
+    return value if value is not None and math.isfinite(value) else math.nan
 
 
 def _number(entry: str, decimal: str) -> float | None:
@@ -403,7 +423,7 @@ def _number_notices(
     return notices
 
 
-def _unusable(column: Column) -> str:
+def _unusable(column: Column, rows: Sequence[int]) -> str:
     """Why nothing could be learned from a column; empty if something can."""
     present = column.values[~np.isnan(column.values)]
     if len(present) == 0:
@@ -413,7 +433,9 @@ def _unusable(column: Column) -> str:
         return "it has the same value everywhere"
     if column.kind == "text" and distinct == len(present) >= 10:
         return "it has a different text in every row, like an identifier or a remark"
-    if distinct == len(present) >= 10 and np.all(np.diff(present) == 1):
+    # row numbers keep step with the places in the file, whatever rows were set aside
+    places = np.asarray(rows)[~np.isnan(column.values)]
+    if distinct == len(present) >= 10 and np.all(np.diff(present) == np.diff(places)):
         return "it numbers the rows"
     return ""
 
@@ -426,9 +448,13 @@ def noun_from(column: str) -> Noun:
     """
     if not column:
         return CASE
-    word = re.sub(r"[_\s]*(id|no|nr|number|name|code)$", "", column.strip(), flags=re.IGNORECASE)
+    # an ending of its own: behind a gap ("lot_no") or a change to capitals ("lotNo")
+    ending = r"[_\s.-]+(?i:id|no|nr|number|name|code)$|(?<=[a-z])(ID|Id|No|Nr)$"
+    word = re.sub(ending, "", column.strip())
     word = (word or column).replace("_", " ").strip().lower()
-    return Noun(word, word[:-1] + "ies" if re.search(r"[^aeiou]y$", word) else word + "s")
+    if re.search(r"[^aeiou]y$", word):
+        return Noun(word, word[:-1] + "ies")
+    return Noun(word, word + ("es" if re.search(r"(s|x|z|ch|sh)$", word) else "s"))
 
 
 def repeating_columns(
@@ -440,10 +466,10 @@ def repeating_columns(
     -------
     tuple of (column name, number of different entries, whether any is more than a number)
     """
-    labels = [sheet.column(label)[i] for i in rows]
+    labels = sheet.column(label, rows)
     found = []
     for name in sheet.header:
-        entries = [sheet.column(name)[i] for i in rows]
+        entries = sheet.column(name, rows)
         distinct = set(entries)
         if name == label or not 10 <= len(distinct) <= 2 * len(rows) / 3:
             continue
@@ -452,7 +478,7 @@ def repeating_columns(
         classes: dict[str, set[str]] = {}
         for entry, of_class in zip(entries, labels, strict=True):
             classes.setdefault(entry, set()).add(of_class)
-        if all(len(seen) == 1 for seen in classes.values()):
+        if all(len(seen) == 1 for entry, seen in classes.items() if entry not in MISSING):
             spelled = any(not entry.isdigit() for entry in distinct - MISSING)
             found.append((name, len(distinct), spelled))
     return tuple(found)

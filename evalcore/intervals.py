@@ -146,7 +146,7 @@ def rows_of_units(
 def square_and_add(
     shares: Sequence[float],
     parts: Sequence[Interval],
-    tau2: float = 0.0,
+    tau2: float = math.nan,
 ) -> Interval:
     """Interval for the mean of independent shares from an interval for each.
 
@@ -185,7 +185,7 @@ def hanley_mcneil_variance(value: float, n_positive: float, n_negative: float) -
 
 
 def auc_score_type(
-    value: float, n_positive: int, n_negative: int, tau2: float = 0.0, *, level: float = 0.95
+    value: float, n_positive: int, n_negative: int, tau2: float = math.nan, *, level: float = 0.95
 ) -> Interval:
     """Score-type interval for an AUC (Newcombe 2006, part 2, method 5).
 

@@ -17,7 +17,7 @@ from evalcore.profile import smallest_class
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES, Setting, Value, draw
 from evalcore.table import Roles, Table
-from evalcore.wording import Noun, count, listed, quoted
+from evalcore.wording import Noun, capitalised, count, listed, quoted
 
 FORMAT = 1
 APPENDING = ("rounds", "repeats")  # settings that only append rounds, so they move no draw
@@ -47,7 +47,7 @@ class Choice:
 def _written(value: Value) -> str:
     if isinstance(value, bool):
         return "yes" if value else "no"
-    return f"{value:g}" if isinstance(value, float) else str(value)
+    return repr(value).removesuffix(".0") if isinstance(value, float) else str(value)
 
 
 def choose(registry: Registry, key: str, **values: Value) -> Choice:
@@ -256,9 +256,11 @@ class Plan:
             raise PlanError("A limit on sensitivity needs a class: sensitivity:CLASS=VALUE.")
         if len(table.mixed_units) and self.answered_from == "all" and table.has_units:
             name = table.unit_names[table.mixed_units[0]]
+            others = len(table.mixed_units) - 1
+            as_do = f", as {'does' if others == 1 else 'do'} {count(others)} more" if others else ""
             raise PlanError(
-                f"{table.noun.singular} {quoted(name)} carries more than one class, as do "
-                f"{count(len(table.mixed_units) - 1)} others, so it cannot be answered as one. "
+                f"{capitalised(table.noun.singular)} {quoted(name)} carries more than one "
+                f"class{as_do}, so it cannot be answered as one. "
                 "Count single rows instead: a future unit is then answered from one reading."
             )
 
@@ -309,7 +311,14 @@ class Plan:
     @classmethod
     def from_json(cls, text: str) -> "Plan":
         """A plan from its JSON text; raises `PlanError` if it is of a newer format."""
-        data = json.loads(text)
+        try:
+            data = json.loads(text)
+            return cls._from_data(data)
+        except (json.JSONDecodeError, KeyError, TypeError, AttributeError) as error:
+            raise PlanError(f"This is not a plan as this program writes it: {error!r}.") from error
+
+    @classmethod
+    def _from_data(cls, data: dict[str, Any]) -> "Plan":
         if data["format"] != FORMAT:
             raise PlanError(
                 f"This plan is of format {data['format']}; this version reads format {FORMAT}."

@@ -109,8 +109,8 @@ def majority(table: Table, counted_by: CountedBy) -> tuple[int, float]:
 
 
 def smallest_class(table: Table) -> tuple[int, int]:
-    """The class with the fewest units (the first on ties) and their number."""
-    counts = table.class_counts("unit")
+    """The class held by the fewest units (the first on ties) and their number."""
+    counts = table.units_holding
     return int(counts.argmin()), int(counts.min())
 
 
@@ -132,11 +132,14 @@ def _facts(table: Table, at: int) -> ColumnFacts:
 
 
 def _copied(table: Table) -> tuple[int, int]:
-    first: dict[bytes, int] = {}
+    alike: dict[bytes, list[int]] = {}
+    for i, row in enumerate(table.features + 0.0):  # -0.0 becomes 0.0
+        alike.setdefault(row.tobytes(), []).append(i)
     copied = contradicting = 0
-    for i, row in enumerate(table.features):
-        j = first.setdefault(row.tobytes(), i)
-        if table.units[i] != table.units[j]:
-            copied += bool(table.labels[i] == table.labels[j])
-            contradicting += bool(table.labels[i] != table.labels[j])
+    for rows in alike.values():
+        first: dict[int, int] = {}
+        for i in rows:
+            of_class = first.setdefault(int(table.labels[i]), i)
+            copied += bool(table.units[i] != table.units[of_class])
+        contradicting += len(rows) if len(first) > 1 else 0
     return copied, contradicting

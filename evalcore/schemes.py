@@ -60,7 +60,11 @@ class Setting:
             raise PlanError(f"`{self.key}` must be {wanted}; got {text!r}.") from None
 
     def check(self, value: Value) -> None:
-        """Raise `PlanError` if a value is out of bounds."""
+        """Raise `PlanError` if a value is out of bounds or of another kind."""
+        if self.kind == "yes_no" and not isinstance(value, bool):
+            raise PlanError(f"`{self.key}` must be yes or no; got {value!r}.")
+        if self.kind == "whole" and type(value) is not int:
+            raise PlanError(f"`{self.key}` must be a whole number; got {value!r}.")
         if self.kind == "choice":
             if value not in self.choices:
                 raise PlanError(
@@ -207,7 +211,10 @@ def _need_two_each(table: Table, _: Settings) -> None:
 def _folds_fit(table: Table, settings: Settings) -> None:
     _need_two_each(table, settings)
     folds = int(settings["folds"])
-    k, smallest = smallest_class(table)
+    # a class that is the most frequent one of no unit has no stratum
+    sizes = table.class_counts("unit")
+    k = int(np.where(sizes > 0, sizes, table.n_units + 1).argmin())
+    smallest = int(sizes[k])
     if settings["stratified"] and folds > smallest:
         raise PlanError(
             f"`folds` must be between 2 and {smallest}, because class "

@@ -184,6 +184,11 @@ class Table:
         np.add.at(counts, (self.units, self.labels), 1)
         return counts
 
+    @cached_property
+    def units_holding(self) -> NDArray[np.intp]:
+        """Units that hold at least one case of each class, shape (n_classes,)."""
+        return np.asarray((self._class_counts_per_unit > 0).sum(axis=0))
+
     def labels_by(self, counted_by: CountedBy) -> NDArray[np.intp]:
         """Labels per unit or per case."""
         return self.unit_labels if counted_by == "unit" else self.labels

@@ -6,6 +6,7 @@ numbers too (the print font has no minus sign).
 
 import math
 import re
+import unicodedata
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -183,4 +184,6 @@ def class_name(name: str) -> str:
     >>> class_name("failing"), class_name("1")
     ('failing', '‘1’')
     """
-    return name if re.fullmatch(r"[^\W\d_]+(?:[ \-’][^\W\d_]+)*", name) else quoted(name)
+    # composed first: a letter with its accent apart would not count as a letter
+    composed = unicodedata.normalize("NFC", name)
+    return name if re.fullmatch(r"[^\W\d_]+(?:[ \-’][^\W\d_]+)*", composed) else quoted(name)

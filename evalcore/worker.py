@@ -4,6 +4,7 @@ It reports through the record alone, ends when it is told to or when its parent 
 every finished chunk behind.
 """
 
+import multiprocessing
 import os
 import sys
 import threading
@@ -87,10 +88,8 @@ def _watch(record: Record, parent: int) -> None:
 
 def _stop_processes() -> None:
     """Stop the processes that carry out rounds, if any were started."""
-    loky = sys.modules.get("joblib.externals.loky.reusable_executor")
-    executor = getattr(loky, "_executor", None)
-    if executor is not None:
-        executor.shutdown(wait=False, kill_workers=True)
+    for process in multiprocessing.active_children():
+        process.kill()
 
 
 def main(folder: str, parent: str) -> None:

@@ -13,19 +13,23 @@ from app.charts.balance import class_balance
 from app.charts.estimates import estimates_with_intervals
 from app.charts.in_and_out import in_and_out
 from app.charts.per_class import per_class
-from app.charts.print_form import svg, without_forbidden
+from app.charts.print_form import printed, svg, without_forbidden
 from app.charts.round_scores import round_scores
 from app.charts.style import Figure
+from app.print.lower import lowered
 from evalcore.answer import scheme_in_words
 from evalcore.errors import RecordError
 from evalcore.evaluation import ESTIMATORS, Evaluation
 from evalcore.figures import Estimate
 from evalcore.record import Record
 from evalcore.summary import Summary, estimate_rows, summary
+from evalcore.table import Table
 from evalcore.wording import NBSP, capitalised, count, level, listed
 
 FONTS = Path(__file__).parent / "fonts"
 WIDE, SLIM = 640, 352  # px; the charts change to their short words below 520
+PAPER_WIDE = 740  # px; set across the text, words come out as large as in a slim chart in a column
+LOWER = 0.6  # on paper, of the height between lines of words
 MOST_CLASSES = 4  # of more, the classes' shares would fill a page
 # Marks that turn the direction of whatever follows: a name must not turn the sentence around it.
 TURNING = re.compile("[\u202a-\u202e\u2066-\u2069]")
@@ -83,9 +87,10 @@ class Content:
     Attributes
     ----------
     summary : Summary
-    findings : tuple of (severity, title, advice, seen)
-        As in the summary, each naming its source by number.
+    findings : tuple of (severity, title, advice, seen, number of the source)
     sources : tuple of (number, citation)
+    flow : str
+        From rows read to rows judged on, as one sentence.
     evaluated : str
         When, as the record has it.
     foot : str
@@ -95,18 +100,20 @@ class Content:
     balance : Picture
         Units and rows of each class.
     limits : Picture or None
-        The classes against their limits, if there are any.
+        The share found of each class, against its limit if it has one; none for many classes
+        without limits.
     rounds, bags : Picture
         Scores of the rounds; in-bag against out-of-bag.
     figures : tuple of Groups
         Held out by candidate and measure, then by every scheme and estimator.
-    rest : str
-        Where the figures are that are not shown.
+    rest, paper_rest : str
+        Where to find what is not shown; on paper findings stand without what was seen.
     """
 
     summary: Summary
-    findings: tuple[tuple[str, str, str, str], ...]
+    findings: tuple[tuple[str, str, str, str, str], ...]
     sources: tuple[tuple[str, str], ...]
+    flow: str
     evaluated: str
     foot: str
     first: Picture
@@ -116,6 +123,7 @@ class Content:
     bags: Picture
     figures: tuple[Groups, ...]
     rest: str
+    paper_rest: str
 
     def as_data(self) -> dict[str, Any]:
         """The same as nested dicts and lists, fit for JSON."""
@@ -148,10 +156,11 @@ def content(record: Record) -> Content:
     return Content(
         summary=said,
         findings=tuple(
-            (severity, title, advice, f"{seen} [{count(sources.index(source) + 1)}]")
+            (severity, title, advice, seen, count(sources.index(source) + 1))
             for severity, title, seen, advice, source in said.findings
         ),
         sources=tuple((count(at), source) for at, source in enumerate(sources, start=1)),
+        flow=cleaned(flow_in_words(evaluation.table)),
         evaluated=known["evaluated"],
         foot=f"Record {known['record']}, table {_cut(known['file'])} (sha256 "
         f"{known['table (sha256)'][:12]}…)",
@@ -159,6 +168,23 @@ def content(record: Record) -> Content:
         figures=(held_out(evaluation), by_estimator(evaluation)),
         rest="Every figure in full precision, with its method, is in results.csv of the record; "
         "every finding is in findings.csv.",
+        paper_rest="Findings stand here without what was seen and, unless grave, without what to "
+        "do: both are in findings.csv of the record and on the HTML page, which has the sources in "
+        "full. Every figure in full precision is in results.csv.",
+    )
+
+
+def flow_in_words(table: Table) -> str:
+    """From rows read to rows judged on, as one sentence."""
+    judged = f": {table.noun.counted(table.n_units)}" if table.has_units else ""
+    if not table.set_aside:
+        return f"All {count(table.rows_read)} rows read are judged on{judged}."
+    aside = sum(part.rows for part in table.set_aside)
+    why = "; ".join(f"{part.reason}: {count(part.rows)}" for part in table.set_aside)
+    return (
+        f"Of {count(table.rows_read)} rows read, {count(aside)} "
+        f"{'is' if aside == 1 else 'are'} set aside ({why}) and {count(table.n_cases)} "
+        f"{'is' if table.n_cases == 1 else 'are'} judged on{judged}."
     )
 
 
@@ -192,7 +218,8 @@ def _cut(name: str, most: int = 40) -> str:
 def _pictures(evaluation: Evaluation) -> dict[str, Any]:
     """The charts, by their place in the content."""
     vl_convert.register_font_directory(str(FONTS))  # else words are measured with another font
-    limited = any(limit.of_class for limit in evaluation.plan.limits)
+    few = evaluation.table.n_classes <= MOST_CLASSES
+    limited = few or any(limit.of_class for limit in evaluation.plan.limits)
     figures = {
         "first": estimates_with_intervals(evaluation, "accuracy"),
         "balance": class_balance(evaluation.table),
@@ -214,11 +241,16 @@ def _picture(figure: Figure) -> Picture:
         title=cleaned(figure.title),
         caption=cleaned(figure.caption),
         alt=cleaned(figure.alt),
-        wide=svg(figure, WIDE, titled=False),
-        slim=svg(figure, SLIM, titled=False),
+        wide=_low(figure, PAPER_WIDE),
+        slim=_low(figure, SLIM),
         page_wide=svg(figure, WIDE, font=FONT_ON_SCREEN, titled=False),
         page_slim=svg(figure, SLIM, font=FONT_ON_SCREEN, titled=False),
     )
+
+
+def _low(figure: Figure, width: int) -> str:
+    spec = lowered(printed(figure, width, titled=False), LOWER)
+    return str(vl_convert.vegalite_to_svg(spec))
 
 
 def held_out(evaluation: Evaluation) -> Groups:

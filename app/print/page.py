@@ -202,12 +202,12 @@ def _limits(rows: Iterable[tuple[str, str, str, str]]) -> str:
     return '<ul class="limits">\n' + "\n".join(items) + "\n</ul>" if items else ""
 
 
-def _findings(rows: Iterable[tuple[str, str, str, str]]) -> str:
+def _findings(rows: Iterable[tuple[str, str, str, str, str]]) -> str:
     items = [
         f'<li><p><span class="severity {escape(severity)}">{escape(severity)}</span> '
         f"{escape(title)}{f'. {escape(advice)}' if advice else ''}</p>"
-        f'<p class="soft">{escape(seen)}</p></li>'
-        for severity, title, advice, seen in rows
+        f'<p class="soft">{escape(seen)} [{escape(source)}]</p></li>'
+        for severity, title, advice, seen, source in rows
     ]
     if not items:
         return "<p>None of the checks found anything to weigh.</p>"
