@@ -68,7 +68,7 @@ def _seconds_left(done: int, left: int, began: float) -> float | None:
     return None if done < 5 else (time.monotonic() - began) / done * left
 
 
-def _watch(record: Record, parent: int) -> None:
+def _watch(record: Record, parent: int, ending: threading.Event) -> None:
     """End this process when asked to, or when the parent is gone; show signs of life meanwhile."""
     while True:
         time.sleep(BEAT)
@@ -81,24 +81,29 @@ def _watch(record: Record, parent: int) -> None:
             else None
         )
         if state:
-            record.set_status(Status(state, record.done(), record.total))
+            ending.set()
             _stop_processes()
+            record.set_status(Status(state, record.done(), record.total))
             os._exit(0)
 
 
 def _stop_processes() -> None:
     """Stop the processes that carry out rounds, if any were started."""
     for process in multiprocessing.active_children():
-        process.kill()
+        process.terminate()
 
 
 def main(folder: str, parent: str) -> None:
     """Fill the record of a folder on behalf of a parent process."""
     record = Record(Path(folder))
-    threading.Thread(target=_watch, args=(record, int(parent)), daemon=True).start()
+    ending = threading.Event()
+    threading.Thread(target=_watch, args=(record, int(parent), ending), daemon=True).start()
     try:
         fill(record)
     except Exception as error:  # the boundary: whatever happens is kept in the log and told
+        if ending.is_set():
+            # processes that were stopped look like a failure from here; the watch has the word
+            threading.Event().wait()
         traceback.print_exc()
         message = (
             str(error)

@@ -257,28 +257,37 @@ def held_out(evaluation: Evaluation) -> Groups:
     """Held-out figures of the headline's scheme: a candidate a row, a measure a column."""
     few = evaluation.table.n_classes <= MOST_CLASSES
     found: dict[str, dict[str, str]] = {}
-    measures: dict[str, list[str]] = {}
+    methods: dict[str, list[str]] = {}
+    n = ""
     for e, row in _usual(evaluation):
         estimator = "mean_of_rounds" if e.measure == "auc" else "held_out_by_case"
         if e.scheme != evaluation.scheme or e.estimator != estimator or (e.of_class and not few):
             continue
-        candidate, _, by, measure, value, bounds, method, n = row
-        column = f"{measure}{f', {by}' if e.measure == 'auc' else ''}, {_n(n)}"
+        candidate, _, _, measure, value, bounds, method, counted = row
+        n = n or counted  # the title says it once for all columns but those of a class
+        column = measure if counted == n else f"{measure}, {_n(counted)}"
         # one cell for both, since a value without its interval says little
         found.setdefault(candidate, {})[column] = f"{value} ({bounds})" if method else value
-        methods = measures.setdefault(column, [])
-        if method and method not in methods:
-            methods.append(method)
-    named: dict[str, list[str]] = {}
-    for measure, methods in measures.items():
-        named.setdefault(listed(methods) or "none", []).append(measure.split(" (")[0])
-    said = "; ".join(f"{method}: {listed(of)}" for method, of in named.items())
+        known = methods.setdefault(column, [])
+        if method and method not in known:
+            known.append(method)
+    scheme = scheme_in_words(evaluation.plan, evaluation.table, evaluation.scheme)
     return Groups(
-        title=f"Held out: {scheme_in_words(evaluation.plan, evaluation.table, evaluation.scheme)}",
-        header=cleaned(("candidate", *measures)),
-        groups=(("", _filled(found, list(measures))),),
-        note=cleaned(f"In brackets the {level(evaluation.plan.level)} interval. Methods: {said}."),
+        title=cleaned(f"Held out, {_n(n)}: {scheme}"),
+        header=cleaned(("candidate", *methods)),
+        groups=(("", _filled(found, list(methods))),),
+        note=cleaned(_how_found(evaluation, methods)),
     )
+
+
+def _how_found(evaluation: Evaluation, methods: dict[str, list[str]]) -> str:
+    """Which method gave the interval of which measure, for the note below the table."""
+    named: dict[str, list[str]] = {}
+    for measure, known in methods.items():
+        named.setdefault(listed(known) or "none", []).append(measure.split(" (")[0])
+    said = "; ".join(f"{method}: {listed(of)}" for method, of in named.items())
+    auc = " AUC is the mean of the rounds." if any("(AUC)" in column for column in methods) else ""
+    return f"In brackets the {level(evaluation.plan.level)} interval. Methods: {said}.{auc}"
 
 
 def _n(counted: str) -> str:

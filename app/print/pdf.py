@@ -4,7 +4,9 @@ import datetime as dt
 import json
 import logging
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
+from itertools import groupby
+from operator import itemgetter
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -17,7 +19,7 @@ if TYPE_CHECKING:
 
 TEMPLATE = Path(__file__).parent / "summary.typ"
 STANDARDS: "tuple[PDFStandard, ...]" = ("a-2a", "ua-1")
-FIRST_FINDINGS = 4  # on page 1
+FIRST_FINDINGS = 8  # on page 1
 LONGEST, IN_HEADER = 32, 16  # characters without a space after which a line may break
 PLACES = ("first", "balance", "limits", "rounds", "bags")
 FINGERPRINT = re.compile("[0-9a-f]{64}")
@@ -85,6 +87,8 @@ def data(content: Content, form: str) -> dict[str, Any]:
     given["form"] = form
     given["date"] = [int(part) for part in re.findall(r"\d+", content.evaluated)]
     given["first_findings"] = FIRST_FINDINGS
+    given["plan"] = in_one_line(content.summary.plan)
+    given["references"] = references(content.sources)
     for place in PLACES:
         picture = given[place] or {}
         for unused in ("page_wide", "page_slim"):
@@ -92,6 +96,27 @@ def data(content: Content, form: str) -> dict[str, Any]:
     for part in given["figures"]:
         part["header"] = breakable(part["header"], IN_HEADER)
     return dict(breakable(given))
+
+
+def in_one_line(plan: Sequence[tuple[str, str]]) -> list[tuple[str, str]]:
+    """The plan with what is chosen several times named once.
+
+    >>> in_one_line([("label", "verdict"), ("scheme", "a"), ("scheme", "b")])
+    [('label', 'verdict'), ('scheme', 'a; b')]
+    """
+    return [
+        (what, "; ".join(choice for _, choice in choices))
+        for what, choices in groupby(plan, key=itemgetter(0))
+    ]
+
+
+def references(sources: Sequence[tuple[str, str]]) -> list[tuple[str, str]]:
+    """Sources by their short names; the HTML page has them in full.
+
+    >>> references([("1", "Efron & Tibshirani 1993, An Introduction"), ("2", "own study: tables")])
+    [('1', 'Efron & Tibshirani 1993'), ('2', 'own study')]
+    """
+    return [(number, re.split("[,:]", source)[0]) for number, source in sources]
 
 
 def breakable(value: Any, longest: int = LONGEST) -> Any:

@@ -78,6 +78,19 @@ def log(record: Record) -> str:
     return (record.folder / "log.txt").read_text()
 
 
+def in_session(session: int) -> list[int]:
+    """Processes of a session that still run."""
+    found = []
+    for stat in Path("/proc").glob("[0-9]*/stat"):
+        try:
+            state, _, _, of_session = stat.read_text().rpartition(")")[2].split()[:4]
+        except (OSError, ValueError):  # ended meanwhile
+            continue
+        if int(of_session) == session and state != "Z":
+            found.append(int(stat.parent.name))
+    return found
+
+
 @pytest.fixture
 def worker():
     """Starts workers, and ends those that are left when the test is over."""
@@ -89,8 +102,9 @@ def worker():
 
     yield start
     for process in processes:
-        if process.poll() is None:
-            os.killpg(process.pid, signal.SIGKILL)
+        for left in in_session(process.pid):
+            os.kill(left, signal.SIGKILL)
+        process.kill()
         process.wait()
 
 
@@ -157,20 +171,12 @@ def test_cancelled_it_ends_at_once_keeps_what_has_finished_and_goes_on_later(
     assert figures(record) == figures(uninterrupted)
 
 
-def in_session(session: int) -> list[int]:
-    """Processes of a session that still run."""
-    found = []
-    for stat in Path("/proc").glob("[0-9]*/stat"):
-        try:
-            state, _, _, of_session = stat.read_text().rpartition(")")[2].split()[:4]
-        except (OSError, ValueError):  # ended meanwhile
-            continue
-        if int(of_session) == session and state != "Z":
-            found.append(int(stat.parent.name))
-    return found
+needs_proc = pytest.mark.skipif(
+    not Path("/proc/self/stat").exists(), reason="processes can be listed under Linux only"
+)
 
 
-@pytest.mark.skipif(not Path("/proc/self/stat").exists(), reason="needs /proc to list processes")
+@needs_proc
 def test_cancelled_with_much_left_it_takes_its_processes_along(tmp_path, worker):
     record = a_record(tmp_path, LONG)
     process = worker(record)
@@ -186,6 +192,7 @@ def test_cancelled_with_much_left_it_takes_its_processes_along(tmp_path, worker)
     assert "Traceback" not in log(record)
 
 
+@needs_proc
 def test_ends_when_its_parent_is_gone(tmp_path):
     record = a_record(tmp_path, LONG)
     record.beat()
@@ -216,8 +223,8 @@ def test_ends_when_its_parent_is_gone(tmp_path):
     finally:
         short_lived.kill()
         short_lived.wait()
-        if worker in in_session(worker):
-            os.killpg(worker, signal.SIGKILL)
+        for left in in_session(worker):
+            os.kill(left, signal.SIGKILL)
 
 
 def test_an_altered_file_is_told_in_the_status(tmp_path, worker):
