@@ -1,5 +1,6 @@
 """The answer in sentences: what the figures say, in the user's own nouns."""
 
+import math
 from dataclasses import dataclass
 
 from evalcore.evaluation import Evaluation
@@ -8,7 +9,7 @@ from evalcore.measures import MEASURES
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
 from evalcore.sample_size import cases_to_show, upper_bound
-from evalcore.schemes import SCHEMES
+from evalcore.schemes import LEAST_BLOCKS
 from evalcore.table import Table
 from evalcore.verdict import LEAST_UNITS, Verdict, verdicts
 from evalcore.wording import (
@@ -82,6 +83,8 @@ def scheme_in_words(plan: Plan, table: Table, scheme: str) -> str:
         return f"leave one {table.noun.singular} out"
     stratified = "stratified " if values.get("stratified") else ""
     by = f" by {table.noun.singular}" if table.has_units else ""
+    if values.get("keep"):
+        by = f" by {quoted(str(values['keep']))}"
     if choice.key == "cross_validation":
         repeats = int(values["repeats"])
         times = "once" if repeats == 1 else f"{count(repeats)} times"
@@ -95,7 +98,10 @@ def scheme_in_words(plan: Plan, table: Table, scheme: str) -> str:
         return f"{count(rounds)} {stratified}random {splits}{by}, {held_out} held out"
     if choice.key == "holdout":
         return f"{stratified}hold-out{by}, once, {held_out}"
-    return str(SCHEMES[choice.key].title).lower()
+    column = quoted(str(values["column"]))
+    if choice.key == "leave_block_out":
+        return f"each entry of {column} left out once"
+    return f"forward in time by {column}, {values['parts']} stretches judged"
 
 
 def _figure(estimate: Estimate, *, noun: str = "") -> str:
@@ -190,6 +196,8 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     least = percent(limit.least, 1)
     set_on = f", set {limit.set_on}" if limit.set_on else ""
     given = f"Limit {least}{set_on}"
+    if math.isnan(verdict.at_least):
+        return f"{given}; no bound is offered over fewer than {LEAST_BLOCKS} blocks."
     if verdict.word == "shown to fall short":
         return f"{given}; these {noun.plural} show at most {percent(verdict.at_most, n)}."
     shows = f"{given}; these {noun.plural} show at least {percent(verdict.at_least, n)}."

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from evalcore.preparation import preparation
-from evalcore.schemes import Setting, Settings
+from evalcore.settings import Setting, Settings
 from evalcore.table import Table
 
 

@@ -17,7 +17,7 @@ from evalcore.candidates import CANDIDATES, estimator
 from evalcore.measures import Floats
 from evalcore.plan import APPENDING, Choice, Plan, generator
 from evalcore.rounds import Counts, Rounds
-from evalcore.schemes import Settings
+from evalcore.settings import Settings
 from evalcore.table import Table
 
 CHUNK = 10  # rounds finished together; depends on nothing, so that a resume meets the same bounds

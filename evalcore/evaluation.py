@@ -15,7 +15,7 @@ from evalcore.figures import CountedBy, Estimate, Interval
 from evalcore.measures import MEASURES, Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
-from evalcore.schemes import SCHEMES
+from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
 
 ESTIMATORS: dict[str, str] = {
@@ -43,7 +43,7 @@ class Judged:
     whole : Reduced
         Of the fit on all cases, one round.
     units : ndarray of int or None
-        Unit of each case where rows of units are counted, else None.
+        What counted cases resemble each other by (see `clusters`), else None.
     """
 
     scheme: str
@@ -91,6 +91,21 @@ class Judged:
             chosen=self.held.labels == of_class,
             units=self.units,
         )
+
+
+def clusters(
+    table: Table, plan: Plan, scheme: str, *, counted_by: CountedBy
+) -> NDArray[np.intp] | None:
+    """What counted cases or units resemble each other by, beyond what is counted; None if nothing.
+
+    Rows of a unit where rows are counted; blocks or groups that a scheme keeps together.
+    """
+    choice = plan.scheme(scheme)
+    registered = SCHEMES[choice.key]
+    groups = registered.groups(table, choice.values())
+    first_case = np.unique(table.units, return_index=True)[1]
+    of_counted = groups.of_case[first_case] if counted_by == "unit" else groups.of_case
+    return of_counted if groups.number < len(of_counted) else None
 
 
 def _values(measure: str, confusion: Floats, auc: Floats, of_class: int) -> Floats:
@@ -223,7 +238,7 @@ def evaluate(
                     held_out(table, rounds[scheme], given.scores, counted_by=way),
                     given.in_bag[way],
                     whole[candidate].in_bag[way],
-                    table.units if way == "case" and table.has_units else None,
+                    clusters(table, plan, scheme, counted_by=way),
                 )
             )
     figures = tuple(e for part in judged for e in _estimates(table, plan, part, judged))
@@ -303,7 +318,21 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
     )
 
 
-def _held_out(plan: Plan, part: Judged, measure: str, of_class: int) -> tuple[float, Interval]:
+def _held_out(
+    plan: Plan, part: Judged, measure: str, of_class: int
+) -> tuple[float, Interval | None]:
+    value, interval = _value_and_interval(plan, part, measure, of_class)
+    return value, interval if offers_interval(part) else None
+
+
+def offers_interval(part: Judged) -> bool:
+    """Whether there are enough blocks, where cases come in blocks, to tell their variance."""
+    return part.units is None or len(np.unique(part.units)) >= LEAST_BLOCKS
+
+
+def _value_and_interval(
+    plan: Plan, part: Judged, measure: str, of_class: int
+) -> tuple[float, Interval]:
     n_classes = part.held.scores.shape[1]
     if measure == "accuracy":
         value = estimates.by_case(part.held.correct, part.held.rounds)

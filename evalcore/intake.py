@@ -261,6 +261,7 @@ def make_table(sheet: Sheet, roles: Roles) -> Table:
         set_aside=set_aside,
         left_out=left_out,
         notices=sheet.notices + _look_alikes(classes) + notices,
+        entries={name: tuple(sheet.column(name, keep)) for name in sheet.header},
         repeating=repeating_columns(sheet, roles.label, keep),
     )
 

@@ -15,7 +15,8 @@ from evalcore.figures import CountedBy
 from evalcore.measures import MEASURES
 from evalcore.profile import smallest_class
 from evalcore.rounds import Rounds
-from evalcore.schemes import SCHEMES, Setting, Value, draw
+from evalcore.schemes import SCHEMES, draw
+from evalcore.settings import Setting, Value
 from evalcore.table import Roles, Table
 from evalcore.wording import Noun, capitalised, count, listed, quoted
 
@@ -39,7 +40,9 @@ class Choice:
     def written(self, *, without: Iterable[str] = ()) -> str:
         """As on the command line, all settings in order: ``bootstrap:rounds=200,...``."""
         shown = [
-            f"{name}={_written(value)}" for name, value in self.settings if name not in without
+            f"{name}={_written(value)}"
+            for name, value in self.settings
+            if name not in without and value != ""
         ]
         return f"{self.key}:{','.join(shown)}" if shown else self.key
 
@@ -293,7 +296,7 @@ class Plan:
 
     def fits(self, table: Table) -> int:
         """How many models will be fitted, those on all cases included."""
-        rounds = sum(SCHEMES[c.key].n_rounds(c.values(), table.n_units) for c in self.schemes)
+        rounds = sum(SCHEMES[c.key].n_rounds(table, c.values()) for c in self.schemes)
         return (rounds + 1) * len(self.candidates)
 
     def seconds(self, table: Table) -> float:

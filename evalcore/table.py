@@ -2,6 +2,7 @@
 
 import hashlib
 import json
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Literal
@@ -9,9 +10,9 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from evalcore.errors import TableError
+from evalcore.errors import PlanError, TableError
 from evalcore.figures import CountedBy
-from evalcore.wording import CASE, Noun
+from evalcore.wording import CASE, Noun, listed, quoted
 
 Kind = Literal["number", "text"]
 Copies = Literal["set_aside", "keep"]
@@ -104,6 +105,8 @@ class Table:
         What was decided while reading.
     repeating : tuple of (str, int, bool)
         Columns that look like names of units: name, different entries, whether spelled out.
+    entries : mapping of str to tuple of str
+        Every column of the file as it was written, for the cases that are judged on.
     features : ndarray of float, shape (n, p)
         The columns' values side by side.
     """
@@ -121,6 +124,7 @@ class Table:
     left_out: tuple[str, ...] = ()
     notices: tuple[str, ...] = ()
     repeating: tuple[tuple[str, int, bool], ...] = ()
+    entries: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     features: NDArray[np.float64] = field(init=False)
 
     def __post_init__(self) -> None:
@@ -189,6 +193,15 @@ class Table:
         """Units that hold at least one case of each class, shape (n_classes,)."""
         return np.asarray((self._class_counts_per_unit > 0).sum(axis=0))
 
+    def entries_of(self, column: str) -> tuple[str, ...]:
+        """A column as written, feature or not; raises `PlanError` if there is none of the name."""
+        if column not in self.entries:
+            raise PlanError(
+                f"There is no column {quoted(column)}; the file has "
+                f"{listed([quoted(name) for name in self.entries])}."
+            )
+        return self.entries[column]
+
     def labels_by(self, counted_by: CountedBy) -> NDArray[np.intp]:
         """Labels per unit or per case."""
         return self.unit_labels if counted_by == "unit" else self.labels
@@ -206,6 +219,7 @@ class Table:
             self.unit_names,
             self.roles.label,
             self.roles.unit,
+            {name: self.entries[name] for name in self.left_out if name in self.entries},
         ]
         digest = hashlib.sha256(json.dumps(head, ensure_ascii=False).encode())
         for array in (self.features, self.labels, self.units):

@@ -6,7 +6,7 @@ from typing import Literal
 
 import numpy as np
 
-from evalcore.evaluation import Evaluation, Judged, share_interval
+from evalcore.evaluation import Evaluation, Judged, offers_interval, share_interval
 from evalcore.figures import Interval
 from evalcore.intervals import square_and_add
 from evalcore.model_variance import balanced_model_variance
@@ -14,6 +14,7 @@ from evalcore.plan import Limit
 from evalcore.sample_size import lower_bound, upper_bound
 
 Word = Literal["shown", "not shown yet", "shown to fall short"]
+_NOTHING = Interval(math.nan, math.nan, 0.9, "none")
 LEAST_UNITS = 10  # below this nothing is called shown: 9 of 10 right may mean 60 % (exact, 95 %)
 
 
@@ -74,12 +75,12 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
         limit.measure, part.candidate, of_class=limit.of_class, scheme=part.scheme
     )
     if limit.measure == "balanced_accuracy":
-        bounds = _balanced(part, level)
+        bounds = _balanced(part, level) if offers_interval(part) else _NOTHING
         at_least, at_most = bounds.low, bounds.high
         n = int(table.class_counts("unit").min())
     else:
         k = table.classes.index(limit.of_class) if limit.of_class else None
-        bounds = share_interval(level, part, k)
+        bounds = share_interval(level, part, k) if offers_interval(part) else _NOTHING
         n = _units_behind(evaluation, part, k)
         # exact bounds take whole units: rounded down for the lower, up for the upper
         right = estimate.value * n

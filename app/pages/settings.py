@@ -10,7 +10,8 @@ from evalcore.candidates import CANDIDATES
 from evalcore.errors import EvalError, PlanError
 from evalcore.measures import MEASURES
 from evalcore.plan import Plan, recommended_candidates, recommended_schemes
-from evalcore.schemes import SCHEMES, Scheme, Setting
+from evalcore.schemes import SCHEMES, Scheme
+from evalcore.settings import Setting
 from evalcore.table import Table
 from evalcore.wording import (
     capitalised,
@@ -133,8 +134,8 @@ def ask_schemes(table: Table, values: Values) -> None:
     )
     for key in (values["first"], *values["second"]):
         if SCHEMES[key].settings:
-            with st.expander(f"{SCHEMES[key].title}: {in_short(key, values)}"):
-                ask_settings(key, SCHEMES[key].settings, values)
+            with st.expander(look.safe(f"{SCHEMES[key].title}: {in_short(key)}")):
+                ask_settings(key, SCHEMES[key].settings, values, table)
 
 
 def caption(scheme: Scheme, table: Table, recommended: str) -> str:
@@ -143,7 +144,9 @@ def caption(scheme: Scheme, table: Table, recommended: str) -> str:
     sentence = scheme.what.format(
         unit=table.noun.singular, units=table.noun.plural, n=count(table.n_units), **defaults
     )
-    rounds = scheme.n_rounds(defaults, table.n_units)
+    if "column" in defaults:
+        return f"{sentence} Choose its column below."
+    rounds = scheme.n_rounds(table, defaults)
     cost = f" {count(rounds)} {'fit' if rounds == 1 else 'fits'} a candidate."
     first = f"Recommended for {table.noun.counted(table.n_units)}. "
     try:
@@ -153,7 +156,7 @@ def caption(scheme: Scheme, table: Table, recommended: str) -> str:
     return (first if scheme.key == recommended else "") + sentence + cost
 
 
-def in_short(key: str, values: Values) -> str:
+def in_short(key: str) -> str:
     """The settings of a scheme or a candidate in a few words, for a closed row."""
     registry = SCHEMES if key in SCHEMES else CANDIDATES
     parts = []
@@ -162,22 +165,32 @@ def in_short(key: str, values: Values) -> str:
         value = state.choice(choices.PLAN + name, setting.default)
         if setting.kind == "yes_no":
             parts.append("stratified" if value else "not stratified")
-        else:
+        elif value != "":
             parts.append(f"{setting.key.replace('_', ' ')} {value}")
     return ", ".join(parts)
 
 
-def ask_settings(key: str, settings: tuple[Setting, ...], values: Values) -> None:
+def ask_settings(key: str, settings: tuple[Setting, ...], values: Values, table: Table) -> None:
     """One widget a setting, its kind and bounds from the registry."""
     for at in range(0, len(settings), 2):
         for column, setting in zip(st.columns(2), settings[at : at + 2], strict=False):
             with column:
                 name = choices.setting(key, setting.key)
-                values[name] = ask_setting(setting, value_key(name, setting.default))
+                values[name] = ask_setting(setting, name, table)
 
 
-def ask_setting(setting: Setting, key: str) -> Any:
+def ask_setting(setting: Setting, name: str, table: Table) -> Any:
     """The widget of one setting."""
+    if setting.kind == "column":
+        columns = ["", *(c for c in table.entries if c != table.roles.label)]
+        return st.selectbox(
+            setting.title,
+            columns,
+            key=value_key(name, "", allowed=columns),
+            persist_state="session",
+            format_func=lambda column: column or "none",
+        )
+    key = value_key(name, setting.default)
     if setting.kind == "yes_no":
         return st.checkbox(setting.title, key=key, persist_state="session")
     if setting.kind == "choice":
@@ -196,7 +209,7 @@ def ask_setting(setting: Setting, key: str) -> Any:
     )
 
 
-def ask_candidates(values: Values) -> None:
+def ask_candidates(table: Table, values: Values) -> None:
     """Who answers, with what settings, and whom the headline is about."""
     st.header("Candidates", anchor=False)
     recommended = [choice.key for choice in recommended_candidates()]
@@ -213,7 +226,7 @@ def ask_candidates(values: Values) -> None:
         with st.expander("Settings of the candidates"):
             for key in with_settings:
                 st.markdown(f"**{capitalised(CANDIDATES[key].title)}**")
-                ask_settings(key, CANDIDATES[key].settings, values)
+                ask_settings(key, CANDIDATES[key].settings, values, table)
     learned = [key for key in values["candidates"] if not CANDIDATES[key].baseline]
     options = ["", *learned]
     values["about"] = st.selectbox(
@@ -320,7 +333,7 @@ def main() -> None:
     place, values = st.container(), Values()
     ask_use(table, values)
     ask_schemes(table, values)
-    ask_candidates(values)
+    ask_candidates(table, values)
     ask_rest(values)
     plan = offer(table, values, place)
     if plan and st.button("Evaluate", type="primary", key="evaluate-foot"):

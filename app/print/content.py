@@ -35,6 +35,16 @@ MOST_CLASSES = 4  # of more, the classes' shares would fill a page
 TURNING = re.compile("[\u202a-\u202e\u2066-\u2069]")
 FONT_ON_SCREEN = "Noto Sans, Segoe UI, Helvetica, Arial, sans-serif"  # a page brings no font along
 
+REST = (
+    "Every figure in full precision, with its method, is in results.csv of the record; every "
+    "finding is in findings.csv."
+)
+PAPER_REST = (
+    "Findings stand here without what was seen and, unless grave, without what to do: both are in "
+    "findings.csv of the record and on the HTML page, which has the sources in full. Every figure "
+    "in full precision is in results.csv."
+)
+
 Row = tuple[str, ...]
 
 
@@ -166,11 +176,8 @@ def content(record: Record) -> Content:
         f"{known['table (sha256)'][:12]}…)",
         **_pictures(evaluation),
         figures=(held_out(evaluation), by_estimator(evaluation)),
-        rest="Every figure in full precision, with its method, is in results.csv of the record; "
-        "every finding is in findings.csv.",
-        paper_rest="Findings stand here without what was seen and, unless grave, without what to "
-        "do: both are in findings.csv of the record and on the HTML page, which has the sources in "
-        "full. Every figure in full precision is in results.csv.",
+        rest=REST,
+        paper_rest=PAPER_REST,
     )
 
 
@@ -304,21 +311,33 @@ def _filled(found: dict[str, dict[str, str]], columns: list[str]) -> tuple[Row, 
 def by_estimator(evaluation: Evaluation) -> Groups:
     """The share right of each candidate by every scheme and estimator."""
     found: dict[str, dict[str, dict[str, str]]] = {}
+    counted: dict[str, str] = {}
     measure = ""
     for e, row in _usual(evaluation):
-        if e.measure == "accuracy":
-            found.setdefault(row[1], {}).setdefault(row[0], {})[e.estimator] = row[4]
-            measure = f"{row[3]}, {_n(row[7])}"
+        if e.measure != "accuracy":
+            continue
+        found.setdefault(row[1], {}).setdefault(row[0], {})[e.estimator] = row[4]
+        measure = row[3]
+        if e.estimator == "held_out_by_case":
+            counted[row[1]] = f", {_n(row[7])}"
+    alike = len(set(counted.values())) == 1  # a bootstrap may never hold some cases out
     used = [
         key
         for key in ESTIMATORS
         if any(key in values for scheme in found.values() for values in scheme.values())
     ]
     return Groups(
-        title=f"By every scheme and estimator: {measure}",
+        title=cleaned(
+            f"By every scheme and estimator: {measure}"
+            f"{next(iter(counted.values())) if alike else ''}"
+        ),
         header=("candidate", *(ESTIMATORS[key] for key in used)),
         groups=tuple(
-            (capitalised(scheme), _filled(candidates, used)) for scheme, candidates in found.items()
+            (
+                cleaned(f"{capitalised(scheme)}{'' if alike else counted.get(scheme, '')}"),
+                _filled(candidates, used),
+            )
+            for scheme, candidates in found.items()
         ),
     )
 

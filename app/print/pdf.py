@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
 TEMPLATE = Path(__file__).parent / "summary.typ"
 STANDARDS: "tuple[PDFStandard, ...]" = ("a-2a", "ua-1")
-FIRST_FINDINGS = 8  # on page 1
+FIRST_FINDINGS = 14  # on page 1
 LONGEST, IN_HEADER = 32, 16  # characters without a space after which a line may break
 PLACES = ("first", "balance", "limits", "rounds", "bags")
 FINGERPRINT = re.compile("[0-9a-f]{64}")

@@ -15,7 +15,8 @@ import typst
 
 from app.print import child
 from app.print.build import build, main
-from app.print.content import FONTS, Content, cleaned, content
+from app.print.content import FONTS, Content, cleaned, content, flow_in_words
+from app.print.lower import lowered
 from app.print.page import LOOKS, page
 from app.print.pdf import FIRST_FINDINGS, TEMPLATE, breakable, data, pdf
 from evalcore.candidates import CANDIDATES
@@ -24,11 +25,13 @@ from evalcore.figures import SEVERITIES
 from evalcore.plan import Limit, Plan, choose
 from evalcore.record import Record
 from evalcore.schemes import SCHEMES
-from evalcore.table import Roles
+from evalcore.table import Roles, SetAside
 from evalcore.verdict import Word
+from evalcore.wording import Noun
 from evalcore.worker import fill
 
 DATA = Path(__file__).parents[1] / "data"
+BEANS = Path(__file__).parents[2] / "demo_data" / "bean_lots.csv"
 HOSTILE = "</td></table><script>alert(2)</script>"
 QUESTION = "<script>alert(3)</script> #panic() $x$ *b* @ref \u202eturned\u0007"
 
@@ -63,6 +66,46 @@ def record(tmp_path_factory: pytest.TempPathFactory) -> Record:
     )
     fill(made, jobs=1)
     return made
+
+
+@pytest.fixture(scope="module")
+def beans(tmp_path_factory: pytest.TempPathFactory) -> Content:
+    """An ordinary case: four candidates, two schemes, two limits, few rounds."""
+    plan = Plan(
+        roles=Roles(
+            "verdict",
+            unit="lot",
+            leave_out=(
+                "producer",
+                "harvest_year",
+                "instrument",
+                "operator",
+                "days_to_certificate",
+                "present_practice",
+            ),
+            noun=Noun("lot", "lots"),
+            copies="set_aside",
+        ),
+        schemes=(
+            choose(SCHEMES, "cross_validation", folds=3, repeats=2),
+            choose(SCHEMES, "bootstrap", rounds=4),
+        ),
+        candidates=(
+            choose(CANDIDATES, "majority"),
+            choose(CANDIDATES, "logistic"),
+            choose(CANDIDATES, "nearest_neighbours"),
+            choose(CANDIDATES, "forest", trees=10),
+        ),
+        question="May these lots be released without the certificate?",
+        limits=(
+            Limit("sensitivity", 0.9, "failing", set_on="2 March 2026"),
+            Limit("sensitivity", 0.8, "good", set_on="2 March 2026"),
+        ),
+    )
+    folder = tmp_path_factory.mktemp("beans") / "record"
+    made = Record.create(folder, BEANS.read_bytes(), BEANS.name, plan)
+    fill(made, jobs=1)
+    return content(made)
 
 
 @pytest.fixture(scope="module")
@@ -122,6 +165,57 @@ def test_pdf_has_the_answer_first_and_no_level_of_headings_left_out(given: Conte
 def test_markup_in_names_and_question_stays_text_in_the_pdf(given: Content) -> None:
     assert "#panic() $x$ *b* @ref turned" in data(given, "")["summary"]["question"]
     assert any("<i>ill</i>&amp;" in text for _, text in headings(given))
+
+
+def test_an_ordinary_case_takes_two_pages(beans: Content) -> None:
+    assert len(beans.findings) > 4
+    assert len(re.findall(rb"/Type\s*/Page\b", pdf(beans))) == 2
+
+
+def test_on_paper_findings_are_titles_and_the_html_page_has_the_rest(beans: Content) -> None:
+    text = unescape(re.sub("<[^>]*>", "", page(beans)))
+    for _, title, advice, seen, number in beans.findings:
+        assert title in text
+        assert advice in text
+        assert f"{seen} [{number}]" in text
+    assert "findings.csv" in beans.paper_rest
+
+
+def test_charts_are_lower_on_paper_and_lose_no_words(beans: Content) -> None:
+    for picture in (beans.first, beans.balance, beans.limits, beans.rounds, beans.bags):
+        assert picture is not None
+        low, full = (
+            float(re.findall(r'viewBox="0 0 [\d.]+ ([\d.]+)', svg)[0])
+            for svg in (picture.slim, picture.page_slim)
+        )
+        assert low < 0.9 * full
+        words = [
+            re.findall(r"<text[^>]*>([^<]*)", svg) for svg in (picture.slim, picture.page_slim)
+        ]
+        assert words[0] == words[1]
+
+
+def test_lines_of_words_keep_their_height_and_bars_their_proportion() -> None:
+    def layer(mark: str, *rows: dict[str, float]) -> dict[str, object]:
+        return {"mark": {"type": mark}, "data": {"values": list(rows)}}
+
+    words = layer("text", {"y": 13}, {"y": 113})
+    bars = layer("rect", {"y": 97, "y2": 17}, {"y": 97, "y2": 57})
+    lower = lowered({"height": 120, "layer": [words, bars]}, 0.5)
+    first, second = lower["layer"][0]["data"]["values"]
+    tall, half = lower["layer"][1]["data"]["values"]
+    assert first["y"] == 13
+    assert tall["y"] - tall["y2"] == 2 * (half["y"] - half["y2"]) == 40
+    assert second["y"] - tall["y"] == 0.5 * 3 + 13
+    assert lower["height"] == second["y"] + 4 + 0.5 * 3
+
+
+def test_from_rows_read_to_judged_is_one_sentence(given: Content, record: Record) -> None:
+    assert re.fullmatch(r"All \d+ rows read are judged on\.", given.flow)
+    evaluation = record.evaluation()
+    assert evaluation is not None
+    some = replace(evaluation.table, set_aside=(SetAside("entered twice", 1),))
+    assert " 1 is set aside (entered twice: 1) and " in flow_in_words(some)
 
 
 def test_page_says_all_the_summary_says(given: Content, html: str) -> None:

@@ -6,9 +6,11 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from evalcore.candidates import CANDIDATES
+from evalcore.draws import held_out_sizes
 from evalcore.errors import PlanError
 from evalcore.plan import Plan, choose
-from evalcore.schemes import SCHEMES, Setting, draw, held_out_sizes
+from evalcore.schemes import SCHEMES, draw
+from evalcore.settings import Setting
 
 from .checks import exactly, table_of
 
