@@ -193,7 +193,7 @@ def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
 def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     table, limit, n = evaluation.table, verdict.limit, verdict.n
     noun = table.noun_for(evaluation.counted_by)
-    least = percent(limit.least, 1)
+    least = level(limit.least)
     set_on = f", set {limit.set_on}" if limit.set_on else ""
     given = f"Limit {least}{set_on}"
     if math.isnan(verdict.at_least):

@@ -38,10 +38,13 @@ class Answers:
         Held-out scores in the order of `Rounds.pairs` over cases.
     in_bag : dict of CountedBy to Reduced
         Answers for the bags themselves, by unit and by case.
+    on_all : dict of CountedBy to ndarray, shape (R, K, K)
+        Confusion counts of the same models' answers for all cases, each counted once.
     """
 
     scores: Floats
     in_bag: dict[CountedBy, Reduced]
+    on_all: dict[CountedBy, Floats]
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,26 +167,47 @@ def answers_of(table: Table, rounds: Rounds, scores: Floats) -> Answers:
     scores : ndarray, shape (R, n, K)
         What each round's model answers for every case.
     """
-    in_bag: dict[CountedBy, Reduced] = {"case": reduce(table.labels, scores, rounds.train)}
+    ways: dict[CountedBy, tuple[NDArray[np.intp], Floats, NDArray[np.uint8]]] = {
+        "case": (table.labels, scores, rounds.train)
+    }
     if table.has_units:
-        in_bag["unit"] = reduce(
-            table.unit_labels, unit_means(table, scores), rounds.of_units(table.units).train
-        )
-    else:
-        in_bag["unit"] = in_bag["case"]
-    return Answers(scores[rounds.pairs], in_bag)
+        by_unit = rounds.of_units(table.units).train
+        ways["unit"] = (table.unit_labels, unit_means(table, scores), by_unit)
+    in_bag = {way: reduce(*given) for way, given in ways.items()}
+    on_all = {
+        way: _confusion_on_all(labels, predicted_class(given))
+        for way, (labels, given, _) in ways.items()
+    }
+    in_bag.setdefault("unit", in_bag["case"])
+    on_all.setdefault("unit", on_all["case"])
+    return Answers(scores[rounds.pairs], in_bag, on_all)
+
+
+def _confusion_on_all(labels: NDArray[np.intp], predicted: NDArray[np.intp]) -> Floats:
+    n_rounds, n = predicted.shape
+    return confusion(
+        np.tile(labels, n_rounds),
+        predicted.ravel(),
+        n_classes=int(labels.max()) + 1,
+        groups=np.repeat(np.arange(n_rounds), n),
+        n_groups=n_rounds,
+    )
 
 
 def joined(parts: list[Answers]) -> Answers:
     """Answers of consecutive rounds put together again."""
-    ways: tuple[CountedBy, CountedBy] = ("unit", "case")
     return Answers(
         np.concatenate([part.scores for part in parts]),
-        {
-            way: Reduced(
-                np.concatenate([part.in_bag[way].confusion for part in parts]),
-                np.concatenate([part.in_bag[way].auc for part in parts]),
-            )
-            for way in ways
-        },
+        _joined([part.in_bag for part in parts]),
+        {way: np.concatenate([part.on_all[way] for part in parts]) for way in parts[0].on_all},
     )
+
+
+def _joined(parts: list[dict[CountedBy, Reduced]]) -> dict[CountedBy, Reduced]:
+    return {
+        way: Reduced(
+            np.concatenate([part[way].confusion for part in parts]),
+            np.concatenate([part[way].auc for part in parts]),
+        )
+        for way in parts[0]
+    }

@@ -5,9 +5,10 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from evalcore import intervals
-from evalcore.estimates import mean_of_rounds
-from evalcore.evaluation import Evaluation, plus_632
+from evalcore.estimates import MEMORISES, mean_of_rounds
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
+from evalcore.judged import plus_632
 from evalcore.plan import Plan
 from evalcore.profile import majority
 from evalcore.schemes import SCHEMES
@@ -22,7 +23,6 @@ from evalcore.wording import (
     with_interval,
 )
 
-MEMORY = 0.999
 OVERFITTING, GAP = 0.3, 0.15
 WIDTH = 0.20
 APART = 0.03
@@ -81,7 +81,7 @@ def memorises(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterat
         part = evaluation.part(name, evaluation.scheme)
         seen = mean_of_rounds(part.in_bag_values("accuracy"))[0]
         held = mean_of_rounds(part.held_values("accuracy"))[0]
-        if seen < MEMORY:
+        if seen < MEMORISES:
             continue
         n = table.n_units
         yield Finding(
@@ -90,11 +90,12 @@ def memorises(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterat
             name,
             f"{capitalised(plan.title(name))} memorises: {percent(seen, n)} on what it was trained "
             f"on, {percent(held, n)} held out",
-            f"Share right on its own bags {decimal(seen, 4)}, threshold {decimal(MEMORY, 3)}. What "
-            "such a candidate scores on cases it was trained on says nothing.",
+            f"Share right on its own bags {decimal(seen, 4)}, threshold "
+            f"{decimal(MEMORISES, 3)}. What such a candidate scores on cases it was trained on "
+            "says nothing.",
             "Look at held-out figures only.",
             seen,
-            MEMORY,
+            MEMORISES,
             "own_simulation",
         )
 
@@ -125,8 +126,8 @@ def misleading_632(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
 
 
 _SIGNS = (
-    f"share right on the cases fitted to at least {decimal(MEMORY, 3)}, relative overfitting above "
-    f"{decimal(OVERFITTING)}, or {points(GAP, signed=False)} above out-of-bag"
+    f"share right on the cases fitted to at least {decimal(MEMORISES, 3)}, relative overfitting "
+    f"above {decimal(OVERFITTING)}, or {points(GAP, signed=False)} above out-of-bag"
 )
 
 
@@ -148,7 +149,7 @@ def why_632_misleads(evaluation: Evaluation, candidate: str, scheme: str) -> Sig
         return None
     apparent = part.whole_value("accuracy")
     signs = (
-        (apparent >= MEMORY, Sign("share right on the cases fitted to", apparent, MEMORY)),
+        (apparent >= MEMORISES, Sign("share right on the cases fitted to", apparent, MEMORISES)),
         (
             plus.overfitting > OVERFITTING,
             Sign("relative overfitting", plus.overfitting, OVERFITTING),

@@ -6,10 +6,11 @@ from collections.abc import Iterator
 import numpy as np
 
 from evalcore import bag_facts
-from evalcore.evaluation import Evaluation, Judged
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
+from evalcore.judged import Judged, offers_interval
 from evalcore.plan import Plan
-from evalcore.schemes import SCHEMES
+from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
 from evalcore.wording import capitalised, count, decimal, percent, points, quoted
 
@@ -58,7 +59,7 @@ def never_held_out(table: Table, plan: Plan, evaluation: Evaluation | None) -> I
             expected = f" About {decimal(chance * table.n_units, 1)} are expected by chance."
         yield Finding(
             "never_held_out",
-            "moderate",
+            "moderate" if SCHEMES[plan.scheme(scheme).key].drawn else "note",
             scheme,
             f"{count(never)} of {table.noun.counted(table.n_units)} were never held out in "
             f"{title(plan, scheme)}, where none should be",
@@ -76,8 +77,8 @@ def too_few_rounds(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
     if evaluation is None:
         return
     for scheme in evaluation.rounds:
-        if plan.scheme(scheme).key == "leave_one_out":
-            continue  # nothing is drawn
+        if not SCHEMES[plan.scheme(scheme).key].drawn:
+            continue
         worst = max(
             ((_redraw(evaluation.part(c, scheme)), c) for c in evaluation.candidates),
             key=lambda pair: math.inf if math.isnan(pair[0]) else pair[0],
@@ -128,8 +129,8 @@ def class_missing(table: Table, plan: Plan, evaluation: Evaluation | None) -> It
     if evaluation is None:
         return
     for scheme, rounds in evaluation.rounds.items():
-        if plan.scheme(scheme).key == "leave_one_out":
-            continue
+        if not SCHEMES[plan.scheme(scheme).key].drawn:
+            continue  # a part that is one unit or one block may well lack a class
         by_unit = rounds.of_units(table.units)
         for k, name in enumerate(table.classes):
             of_class = table.unit_labels == k
@@ -212,3 +213,27 @@ def share_of_classes(table: Table, plan: Plan, evaluation: Evaluation | None) ->
         share,
         "own_simulation",
     )
+
+
+def few_blocks(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Too few blocks to say how much one block differs from the next."""
+    if evaluation is None:
+        return
+    for scheme in evaluation.rounds:
+        part = evaluation.part(evaluation.about, scheme)
+        if offers_interval(part) or part.units is None:
+            continue
+        blocks = len(np.unique(part.units))
+        yield Finding(
+            "few_blocks",
+            "moderate",
+            scheme,
+            f"Only {count(blocks)} blocks in {title(plan, scheme)}, where an interval needs "
+            f"{LEAST_BLOCKS}",
+            f"Cases of one block share what is particular to it, so {count(blocks)} blocks are "
+            f"{count(blocks)} observations of how it carries over (threshold: {LEAST_BLOCKS}).",
+            "Read the figure as an example, not as an estimate; judge more blocks.",
+            blocks,
+            LEAST_BLOCKS,
+            "own_simulation",
+        )

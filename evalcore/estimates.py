@@ -8,11 +8,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from evalcore.measures import Floats
+from evalcore.measures import Floats, confusion
 from evalcore.rounds import Rounds
 
 WEIGHT_OUT = 0.632  # 1 - 1/e, the chance that a case is in a large bag (Efron 1983 prints 0.632)
 WEIGHT_IN = 0.368
+MEMORISES = 0.999  # an apparent share right from which a candidate counts as memorising
 
 
 def mean_correct(correct: ArrayLike, rounds: Rounds) -> Floats:
@@ -58,6 +59,29 @@ def recalls_by_case(
     return np.divide(right, number, out=recalls, where=number > 0)
 
 
+def pooled_confusion(
+    labels: NDArray[np.intp], rounds: Rounds, predicted: ArrayLike, *, n_classes: int
+) -> Floats:
+    """Held-out confusion counts in which every case weighs one, spread over its answers.
+
+    Parameters
+    ----------
+    labels : ndarray of int, shape (n,)
+    rounds : Rounds
+    predicted : array_like of int, shape (T,)
+        Answered classes in the order of `rounds.pairs`.
+
+    Returns
+    -------
+    ndarray, shape (K, K)
+        Rows: true class. Means over a case's answers, so not whole numbers.
+    """
+    case_at = rounds.pairs[1]
+    weights = 1 / rounds.times_tested[case_at]
+    counts = confusion(labels[case_at], predicted, n_classes=n_classes, weights=weights)
+    return np.asarray(counts[0])
+
+
 def mean_of_rounds(values: ArrayLike) -> tuple[float, int]:
     """Mean of a measure over the rounds in which it is defined, and how many lack it."""
     array = np.asarray(values, dtype=np.float64)
@@ -79,6 +103,15 @@ def point_632(apparent: float, out_of_bag: float) -> float:
     Linear, so the same for shares right and for errors.
     """
     return WEIGHT_IN * apparent + WEIGHT_OUT * out_of_bag
+
+
+def out_of_bag_or_632_plus(apparent: float, out_of_bag: float, plus: float) -> float:
+    """Out-of-bag where a candidate is right on everything it was fitted to, else .632+.
+
+    Own rule: .632+ is 3 to 6 points too high for candidates that memorise. "Right on everything"
+    means apparent >= 0.999.
+    """
+    return out_of_bag if apparent >= MEMORISES else plus
 
 
 @dataclass(frozen=True)

@@ -6,16 +6,24 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from numpy.typing import NDArray
 
-from evalcore import estimates, intervals, model_variance
-from evalcore.answers import Answers, HeldOut, Reduced, held_out
+from evalcore import estimates, intervals
+from evalcore.answers import Answers, held_out
 from evalcore.candidates import CANDIDATES
 from evalcore.figures import CountedBy, Estimate, Interval
-from evalcore.measures import MEASURES, Floats
+from evalcore.judged import (
+    Judged,
+    auc_interval,
+    balanced_interval,
+    clusters,
+    offers_interval,
+    plus_632,
+    share_interval,
+)
+from evalcore.measures import MEASURES
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
-from evalcore.schemes import LEAST_BLOCKS, SCHEMES
+from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 
 ESTIMATORS: dict[str, str] = {
@@ -25,95 +33,11 @@ ESTIMATORS: dict[str, str] = {
     "weighted_632_per_round": "0.632 out-of-bag + 0.368 in-bag of each round",
     "point_632": ".632",
     "point_632_plus": ".632+",
+    "optimism_corrected": "apparent minus its optimism",
+    "out_of_bag_or_632_plus": "out-of-bag where it memorises, else .632+",
 }
-
-
-@dataclass(frozen=True, eq=False)
-class Judged:
-    """One candidate under one scheme, counted one way.
-
-    Attributes
-    ----------
-    scheme, candidate : str
-        Names in the plan.
-    counted_by : {"unit", "case"}
-    held : HeldOut
-    in_bag : Reduced
-        Of the rounds' own bags.
-    whole : Reduced
-        Of the fit on all cases, one round.
-    units : ndarray of int or None
-        What counted cases resemble each other by (see `clusters`), else None.
-    """
-
-    scheme: str
-    candidate: str
-    counted_by: CountedBy
-    held: HeldOut
-    in_bag: Reduced
-    whole: Reduced
-    units: NDArray[np.intp] | None
-
-    def held_values(self, measure: str, of_class: int = 0) -> Floats:
-        """A measure within each round's held-out cases, shape (R,)."""
-        return _values(measure, self.held.confusion, self.held.auc, of_class)
-
-    def in_bag_values(self, measure: str, of_class: int = 0) -> Floats:
-        """A measure on each round's own bag, repeats counted, shape (R,)."""
-        return _values(measure, self.in_bag.confusion, self.in_bag.auc, of_class)
-
-    def whole_value(self, measure: str, of_class: int = 0) -> float:
-        """A measure of the fit on all cases for these cases."""
-        return float(_values(measure, self.whole.confusion, self.whole.auc, of_class)[0])
-
-    @cached_property
-    def shares(self) -> Floats:
-        """Share of held-out answers that were right, per unit or case; nan if never held out."""
-        return estimates.mean_correct(self.held.correct, self.held.rounds)
-
-    @cached_property
-    def tau2(self) -> float:
-        """Model variance of the share right."""
-        return model_variance.model_variance(self.held.correct, self.held.rounds, units=self.units)
-
-    @cached_property
-    def tau2_auc(self) -> float:
-        """Model variance of the AUC within rounds, of two classes."""
-        return model_variance.auc_model_variance(
-            self.held.labels == 1, self.held.rounds, self.held.scores[:, 1]
-        )
-
-    def tau2_of(self, of_class: int) -> float:
-        """Model variance of the share right within one class."""
-        return model_variance.model_variance(
-            self.held.correct,
-            self.held.rounds,
-            chosen=self.held.labels == of_class,
-            units=self.units,
-        )
-
-
-def clusters(
-    table: Table, plan: Plan, scheme: str, *, counted_by: CountedBy
-) -> NDArray[np.intp] | None:
-    """What counted cases or units resemble each other by, beyond what is counted; None if nothing.
-
-    Rows of a unit where rows are counted; blocks or groups that a scheme keeps together.
-    """
-    choice = plan.scheme(scheme)
-    registered = SCHEMES[choice.key]
-    groups = registered.groups(table, choice.values())
-    first_case = np.unique(table.units, return_index=True)[1]
-    of_counted = groups.of_case[first_case] if counted_by == "unit" else groups.of_case
-    return of_counted if groups.number < len(of_counted) else None
-
-
-def _values(measure: str, confusion: Floats, auc: Floats, of_class: int) -> Floats:
-    function = MEASURES[measure].from_confusion
-    if function is None:
-        return auc
-    values = function(confusion)
-    return values[:, of_class] if MEASURES[measure].per_class else values
+# measures that in-bag and out-of-bag values may be weighed for
+WEIGHTED = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
 
 
 @dataclass(frozen=True, eq=False)
@@ -237,6 +161,7 @@ def evaluate(
                     way,
                     held_out(table, rounds[scheme], given.scores, counted_by=way),
                     given.in_bag[way],
+                    given.on_all[way],
                     whole[candidate].in_bag[way],
                     clusters(table, plan, scheme, counted_by=way),
                 )
@@ -281,114 +206,53 @@ def _figures(
     plan: Plan, part: Judged, alike: Sequence[Judged], measure: str, *, of_class: int
 ) -> Iterator[tuple[str, float, Interval | None, int]]:
     """Estimator, value, interval and undefined rounds of one measure."""
-    apparent = part.whole_value(measure, of_class)
-    held, in_bag = part.held_values(measure, of_class), part.in_bag_values(measure, of_class)
-    mean, undefined = estimates.mean_of_rounds(held)
-    yield "apparent", apparent, None, 0
-    if measure == "auc":
+    mean, undefined = estimates.mean_of_rounds(part.held_values(measure, of_class))
+    yield "apparent", part.whole_value(measure, of_class), None, 0
+    if MEASURES[measure].from_confusion is None:
         # never pooled across rounds: scores of different models are not on one scale
         out_of_bag = mean
-        yield "mean_of_rounds", mean, _auc_interval(plan, part, alike, mean), undefined
+        yield "mean_of_rounds", mean, auc_interval(plan.level, part, alike, mean), undefined
     else:
-        out_of_bag, interval = _held_out(plan, part, measure, of_class)
-        yield "held_out_by_case", out_of_bag, interval, 0
+        out_of_bag = part.pooled_value(measure, of_class)
+        yield "held_out_by_case", out_of_bag, _interval(plan, part, measure, of_class), 0
         yield "mean_of_rounds", mean, None, undefined
-    if not SCHEMES[plan.scheme(part.scheme).key].repeats_cases:
-        return
-    per_round, lacking = estimates.mean_of_rounds(estimates.per_round_632(held, in_bag))
+    if SCHEMES[plan.scheme(part.scheme).key].repeats_cases and measure in WEIGHTED:
+        yield from _bootstrap_figures(plan, part, measure, of_class, out_of_bag)
+
+
+def _bootstrap_figures(
+    plan: Plan, part: Judged, measure: str, of_class: int, out_of_bag: float
+) -> Iterator[tuple[str, float, Interval | None, int]]:
+    """What in-bag, out-of-bag and apparent values are combined to."""
+    apparent = part.whole_value(measure, of_class)
+    per_round, lacking = estimates.mean_of_rounds(
+        estimates.per_round_632(
+            part.held_values(measure, of_class), part.in_bag_values(measure, of_class)
+        )
+    )
     yield "weighted_632_per_round", per_round, None, lacking
     yield "point_632", estimates.point_632(apparent, out_of_bag), None, 0
-    if measure != "sensitivity":
-        plus = plus_632(part, measure, out_of_bag)
-        yield "point_632_plus", plus.value if plus else math.nan, None, 0
-
-
-def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632 | None:
-    """.632+ of accuracy, balanced accuracy or AUC with its own no-information value.
-
-    Accuracy: sum of label share x answer share; balanced accuracy: 1/K; AUC: 0.5. None where the
-    out-of-bag value is undefined.
-    """
-    if math.isnan(out_of_bag):
-        return None
-    counts = part.whole.confusion[0]
-    guess = {"accuracy": estimates.no_information(counts), "auc": 0.5}
-    return estimates.point_632_plus(
-        part.whole_value(measure), out_of_bag, no_information=guess.get(measure, 1 / len(counts))
-    )
-
-
-def _held_out(
-    plan: Plan, part: Judged, measure: str, of_class: int
-) -> tuple[float, Interval | None]:
-    value, interval = _value_and_interval(plan, part, measure, of_class)
-    return value, interval if offers_interval(part) else None
-
-
-def offers_interval(part: Judged) -> bool:
-    """Whether there are enough blocks, where cases come in blocks, to tell their variance."""
-    return part.units is None or len(np.unique(part.units)) >= LEAST_BLOCKS
-
-
-def _value_and_interval(
-    plan: Plan, part: Judged, measure: str, of_class: int
-) -> tuple[float, Interval]:
-    n_classes = part.held.scores.shape[1]
-    if measure == "accuracy":
-        value = estimates.by_case(part.held.correct, part.held.rounds)
-        return value, share_interval(plan.level, part, None)
-    recalls = estimates.recalls_by_case(
-        part.held.labels, part.held.rounds, part.held.correct, n_classes=n_classes
-    )
+    if measure != "auc":
+        yield "optimism_corrected", apparent - part.optimism(measure, of_class), None, 0
     if measure == "sensitivity":
-        return float(recalls[of_class]), share_interval(plan.level, part, of_class)
-    parts = [share_interval(plan.level, part, k, variance=False) for k in range(n_classes)]
-    tau2 = model_variance.balanced_model_variance(
-        part.held.labels, part.held.rounds, part.held.correct, n_classes=n_classes
-    )
-    return float(recalls.mean()), intervals.square_and_add(recalls.tolist(), parts, tau2)
+        return
+    plus = plus_632(part, measure, out_of_bag)
+    value = plus.value if plus else math.nan
+    yield "point_632_plus", value, None, 0
+    switched = estimates.out_of_bag_or_632_plus(apparent, out_of_bag, value)
+    interval = None
+    if measure == "accuracy" and part.units is None and not math.isnan(switched):
+        n = int((~np.isnan(part.shares)).sum())
+        interval = intervals.with_model_variance(switched, n, part.tau2, level=plan.level)
+    yield "out_of_bag_or_632_plus", switched, interval, 0
 
 
-def share_interval(
-    level: float, part: Judged, of_class: int | None, *, variance: bool = True
-) -> Interval:
-    """The default interval for a share right, of all cases or of one class.
-
-    Parameters
-    ----------
-    level : float
-        Two-sided.
-    part : Judged
-    of_class : int or None
-    variance : bool
-        Whether the model's variance is included.
-    """
-    chosen = ~np.isnan(part.shares)
-    if of_class is not None:
-        chosen &= part.held.labels == of_class
-    if not chosen.any():
-        return Interval(math.nan, math.nan, level, "wilson")
-    tau2 = math.nan
-    if variance:
-        tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
-    shares = part.shares[chosen]
-    if part.units is not None:
-        return intervals.rows_of_units(shares, part.units[chosen], tau2, level=level)
-    return intervals.with_model_variance(float(shares.mean()), len(shares), tau2, level=level)
-
-
-def _auc_interval(
-    plan: Plan, part: Judged, alike: Sequence[Judged], value: float
-) -> Interval | None:
-    """For two classes and independent cases; None otherwise, since none keeps its word there.
-
-    The model's variance is the largest that any scheme shows: the folds alone cannot tell it
-    where a class has few cases (own simulation).
-    """
-    if part.held.scores.shape[1] != 2 or part.units is not None or math.isnan(value):
+def _interval(plan: Plan, part: Judged, measure: str, of_class: int) -> Interval | None:
+    """The default interval of a held-out value; None where none is offered."""
+    if not offers_interval(part):
         return None
-    known = part.held.labels[~np.isnan(part.shares)]
-    tau2 = max((p.tau2_auc for p in alike if not math.isnan(p.tau2_auc)), default=math.nan)
-    return intervals.auc_score_type(
-        value, int((known == 1).sum()), int((known == 0).sum()), tau2, level=plan.level
-    )
+    if measure == "accuracy":
+        return share_interval(plan.level, part)
+    if measure == "sensitivity":
+        return share_interval(plan.level, part, of_class)
+    return balanced_interval(plan.level, part) if measure == "balanced_accuracy" else None

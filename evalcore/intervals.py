@@ -1,85 +1,51 @@
-"""Where the true value may lie: published intervals, and our own that add the model's variance.
+"""Where the true value may lie: shares with the model's variance, means of shares, and AUC.
 
-Own constructions say so: `with_model_variance`, `rows_of_units`, and every `tau2`. Bounds are
-clipped to 0..1.
+Own constructions say so: `with_model_variance`, `rows_of_units`, and every `tau2`. Ends are
+clipped to 0..1. The binomial family stands in `binomial` and is offered here too; `METHODS` names
+every interval of the core.
 """
 
 import math
 from collections.abc import Callable, Sequence
-from statistics import NormalDist
 
 import numpy as np
 from numpy.typing import NDArray
 
+from evalcore.binomial import (
+    agresti_coull,
+    clopper_pearson,
+    jeffreys,
+    newcombe_difference,
+    normal_quantile,
+    wald,
+    wilson,
+    wilson_corrected,
+    wilson_ends,
+)
 from evalcore.figures import Interval
 from evalcore.measures import Floats
 from evalcore.model_variance import cluster_variance
 
+__all__ = [
+    "LEAST_SPREAD",
+    "METHODS",
+    "agresti_coull",
+    "auc_score_type",
+    "clopper_pearson",
+    "effective_n",
+    "hanley_mcneil_variance",
+    "jeffreys",
+    "newcombe_difference",
+    "normal_quantile",
+    "rows_of_units",
+    "square_and_add",
+    "wald",
+    "wilson",
+    "wilson_corrected",
+    "with_model_variance",
+]
+
 LEAST_SPREAD = 0.001  # p(1-p) is not let below this, or a perfect score would have no width
-
-
-def normal_quantile(level: float) -> float:
-    """Half-width of a two-sided normal interval in standard deviations (1.96 at 0.95)."""
-    return NormalDist().inv_cdf(0.5 + level / 2)
-
-
-def wilson(p: float, n: float, *, level: float = 0.95) -> Interval:
-    """Wilson's score interval for a proportion (Wilson 1927).
-
-    Parameters
-    ----------
-    p : float
-        Observed share, 0 to 1.
-    n : float
-        Independent trials, > 0; need not be whole.
-    level : float
-        Two-sided confidence.
-
-    Examples
-    --------
-    >>> bounds = wilson(0.8, 50)
-    >>> round(bounds.low, 6), round(bounds.high, 6)
-    (0.669629, 0.887562)
-    """
-    low, high = _wilson_ends(p, n, normal_quantile(level))
-    return Interval(low, high, level, "wilson")
-
-
-def _wilson_ends(p: float, n: float, z: float) -> tuple[float, float]:
-    if math.isnan(p) or not n > 0:
-        return math.nan, math.nan
-    centre = (p + z * z / (2 * n)) / (1 + z * z / n)
-    half = z / (1 + z * z / n) * math.sqrt(p * (1 - p) / n + z * z / (4 * n * n))
-    # at p = 0 and p = 1 an end is 0 or 1 exactly, which rounding would miss
-    low = 0.0 if p == 0 else max(0.0, centre - half)
-    high = 1.0 if p == 1 else min(1.0, centre + half)
-    return float(low), float(high)
-
-
-def clopper_pearson(right: float, n: float, *, level: float = 0.95) -> Interval:
-    """The exact binomial interval (Clopper & Pearson 1934).
-
-    Parameters
-    ----------
-    right : float
-        Number of right answers, 0 to n.
-    n : float
-        Independent trials.
-    level : float
-        Two-sided confidence; a one-sided bound at confidence c is an end at level 2c - 1.
-
-    Examples
-    --------
-    >>> bounds = clopper_pearson(18, 20)
-    >>> round(bounds.low, 6), round(bounds.high, 6)
-    (0.683017, 0.987651)
-    """
-    from scipy.special import betaincinv
-
-    tail = (1 - level) / 2
-    low = 0.0 if right == 0 else float(betaincinv(right, n - right + 1, tail))
-    high = 1.0 if right == n else float(betaincinv(right + 1, n - right, 1 - tail))
-    return Interval(low, high, level, "clopper_pearson")
 
 
 def effective_n(p: float, n: float, tau2: float) -> float:
@@ -140,7 +106,7 @@ def rows_of_units(
     if p * (1 - p) < LEAST_SPREAD:
         n_equal = min(n_equal, groups)
     t = float(stdtrit(groups - 1, 0.5 + level / 2))
-    return Interval(*_wilson_ends(p, n_equal, t), level, "rows_of_units")
+    return Interval(*wilson_ends(p, n_equal, t), level, "rows_of_units")
 
 
 def square_and_add(
@@ -227,10 +193,22 @@ def _root(excess: Callable[[float], float], outer: float, inner: float) -> float
 METHODS: dict[str, str] = {
     "wilson": "Wilson",
     "wilson_model_variance": "Wilson with the model's variance (own)",
+    "wilson_corrected": "Wilson with continuity correction",
     "clopper_pearson": "exact (Clopper and Pearson)",
+    "agresti_coull": "Agresti and Coull",
+    "jeffreys": "Jeffreys",
+    "wald": "Wald",
+    "newcombe_difference": "hybrid score for a difference (Newcombe)",
     "square_and_add": "square-and-add of Wilson intervals",
     "square_and_add_model_variance": "square-and-add with the model's variance (own)",
     "rows_of_units": "rows of units, with the model's variance (own)",
     "auc_score_type": "score type for AUC (Newcombe)",
     "auc_score_type_model_variance": "score type for AUC with the model's variance (own)",
+    "corrected_t": "corrected resampled t (Nadeau and Bengio)",
+    "uncorrected_t": "t over rounds, overlap ignored",
+    "cv_normal": "normal approximation of cross-validation (Bayle and others)",
+    "bootstrap_percentile": "bootstrap percentile",
+    "bootstrap_basic": "basic bootstrap",
+    "bootstrap_bca": "bootstrap BCa (Efron)",
+    "bootstrap_normal": "normal with bootstrap bias and standard error",
 }

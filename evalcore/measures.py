@@ -1,17 +1,21 @@
 """Measures of right and wrong, each once, for many rounds at once.
 
-Two raw materials: confusion counts of shape (..., K, K) with true classes in rows, and scores.
-A value that cannot be computed (no case of a class) is nan.
+Raw material: confusion counts of shape (..., K, K) with true classes in rows, whole or weighted.
+Leading axes (rounds) are kept. A value that cannot be computed (no case of a class) is nan.
+What needs scores instead stands in `ranking` and `probabilities`.
 """
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from itertools import combinations
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-Floats = NDArray[np.float64]
+from evalcore.ranking import auc as auc
+from evalcore.ranking import average_precision as average_precision
+from evalcore.ranking import hand_till as hand_till
+from evalcore.shares import Floats as Floats
+from evalcore.shares import by_group, group_sums, quotient
 
 
 def predicted_class(scores: Floats) -> NDArray[np.intp]:
@@ -50,29 +54,20 @@ def confusion(
     [[1.0, 1.0], [0.0, 1.0]]
     """
     true = np.asarray(true, dtype=np.intp)
-    group = np.zeros(len(true), dtype=np.intp) if groups is None else np.asarray(groups)
+    group, weight = by_group(len(true), groups=groups, weights=weights)
     cell = (group * n_classes + true) * n_classes + np.asarray(predicted, dtype=np.intp)
     size = n_groups * n_classes * n_classes
-    weight = None if weights is None else np.asarray(weights)
-    counts: Floats = np.bincount(cell, weight, minlength=size).astype(np.float64)
-    return counts.reshape(n_groups, n_classes, n_classes)
-
-
-def _share(part: ArrayLike, whole: ArrayLike) -> Floats:
-    """part / whole, nan where the whole is 0."""
-    below = np.asarray(whole, dtype=np.float64)
-    share: Floats = np.full(np.shape(part), np.nan)
-    return np.divide(part, below, out=share, where=below > 0)
+    return group_sums(weight, cell, size).reshape(n_groups, n_classes, n_classes)
 
 
 def accuracy(counts: Floats) -> Floats:
     """Share right: trace over total."""
-    return _share(np.trace(counts, axis1=-2, axis2=-1), counts.sum(axis=(-2, -1)))
+    return quotient(np.trace(counts, axis1=-2, axis2=-1), counts.sum(axis=(-2, -1)))
 
 
 def recalls(counts: Floats) -> Floats:
     """Share right of each true class (sensitivity), shape (..., K); nan for an empty class."""
-    return _share(np.diagonal(counts, axis1=-2, axis2=-1), counts.sum(axis=-1))
+    return quotient(np.diagonal(counts, axis1=-2, axis2=-1), counts.sum(axis=-1))
 
 
 def balanced_accuracy(counts: Floats) -> Floats:
@@ -80,100 +75,124 @@ def balanced_accuracy(counts: Floats) -> Floats:
     return np.asarray(recalls(counts).mean(axis=-1))
 
 
-def auc(
-    positive: ArrayLike,
-    scores: ArrayLike,
-    *,
-    groups: ArrayLike | None = None,
-    n_groups: int = 1,
-    weights: ArrayLike | None = None,
-) -> Floats:
-    """Area under the ROC curve per group (round): how often a positive outranks a negative.
+def specificities(counts: Floats) -> Floats:
+    """Share of all other classes' cases that were not called this class, shape (..., K).
 
-    Ties count one half (Mann & Whitney). Never flipped: below 0.5 means ranked the wrong way.
-
-    Parameters
-    ----------
-    positive : array_like of bool, shape (T,)
-    scores : array_like, shape (T,)
-        Higher means more likely positive.
-    groups, n_groups, weights
-        As in `confusion`.
-
-    Returns
-    -------
-    ndarray, shape (n_groups,)
-        nan for a group that lacks positives or negatives.
+    For two classes this is the other class's share right, in reverse order. nan where no other
+    class has a case.
 
     Examples
     --------
-    >>> auc([0, 0, 1, 1], [0.1, 0.4, 0.35, 0.8]).tolist()
-    [0.75]
+    >>> specificities(np.array([[231.0, 27.0], [32.0, 54.0]])).round(3).tolist()
+    [0.628, 0.895]
     """
-    is_positive: NDArray[np.bool_] = np.asarray(positive, dtype=bool)
-    score = np.asarray(scores, dtype=np.float64)
-    group = np.zeros(len(score), dtype=np.intp) if groups is None else np.asarray(groups)
-    weight = np.ones(len(score)) if weights is None else np.asarray(weights, dtype=np.float64)
-    order = np.lexsort((score, group))
-    group, score = group[order], score[order]
-    up, down = weight[order] * is_positive[order], weight[order] * ~is_positive[order]
-    # one block per distinct score within a group
-    starts = np.ones(len(score), dtype=bool)
-    starts[1:] = (group[1:] != group[:-1]) | (score[1:] != score[:-1])
-    block = np.cumsum(starts) - 1
-    block_group = group[starts]
-    ups = np.bincount(block, up)
-    downs = np.bincount(block, down)
-    positives = np.bincount(block_group, ups, minlength=n_groups)
-    negatives = np.bincount(block_group, downs, minlength=n_groups)
-    negatives_before_group = np.concatenate([[0.0], np.cumsum(negatives)[:-1]])
-    below = np.cumsum(downs) - downs - negatives_before_group[block_group]
-    wins = np.bincount(block_group, ups * (below + downs / 2), minlength=n_groups)
-    return _share(wins, positives * negatives)
+    true, answered = counts.sum(axis=-1), counts.sum(axis=-2)
+    others = counts.sum(axis=(-2, -1))[..., None] - true
+    wrongly_called = answered - np.diagonal(counts, axis1=-2, axis2=-1)
+    return quotient(others - wrongly_called, others)
 
 
-def hand_till(
-    true: ArrayLike,
-    scores: Floats,
-    *,
-    groups: ArrayLike | None = None,
-    n_groups: int = 1,
-    weights: ArrayLike | None = None,
-) -> Floats:
-    """AUC for two or more classes: the mean over pairs of classes (Hand & Till's M) per group.
+def precisions(counts: Floats) -> Floats:
+    """Share right among the answers that name a class (positive predictive value), shape (..., K).
+
+    It holds for the class shares of these cases; for other shares see
+    `decisions.predictive_values`. nan for a class that was never answered.
+
+    Examples
+    --------
+    >>> precisions(np.array([[20.0, 5.0], [10.0, 15.0]])).round(4).tolist()
+    [0.6667, 0.75]
+    """
+    return quotient(np.diagonal(counts, axis1=-2, axis2=-1), counts.sum(axis=-2))
+
+
+def f1(counts: Floats) -> Floats:
+    """Harmonic mean of a class's share found and its precision, shape (..., K).
+
+    2 x right / (cases of the class + answers that name it) (van Rijsbergen 1979). So a class that
+    has cases but was never answered, or the reverse, gets 0; one with neither is undefined, nan.
+
+    Examples
+    --------
+    >>> f1(np.array([[30.0, 0, 0], [5, 5, 0], [4, 1, 0]])).round(4).tolist()
+    [0.8696, 0.625, 0.0]
+    """
+    both = counts.sum(axis=-1) + counts.sum(axis=-2)
+    return quotient(2 * np.diagonal(counts, axis1=-2, axis2=-1), both)
+
+
+def f1_macro(counts: Floats) -> Floats:
+    """Mean of the classes' F1; nan if a class has neither cases nor answers.
+
+    Examples
+    --------
+    >>> round(float(f1_macro(np.array([[20.0, 5.0], [10.0, 15.0]]))), 4)
+    0.697
+    """
+    return np.asarray(f1(counts).mean(axis=-1))
+
+
+def _beyond_chance(counts: Floats) -> tuple[Floats, Floats, Floats, Floats]:
+    """n x right - sum of row total x column total; row totals, column totals, n."""
+    true, answered = counts.sum(axis=-1), counts.sum(axis=-2)
+    n = counts.sum(axis=(-2, -1))
+    right = np.trace(counts, axis1=-2, axis2=-1)
+    return n * right - (true * answered).sum(axis=-1), true, answered, n
+
+
+def cohen_kappa(counts: Floats) -> Floats:
+    """Agreement of answers and classes beyond chance: (observed - expected) / (1 - expected).
+
+    Expected is the agreement of independent answers with the same totals (Cohen 1960). An answer
+    that never changes gets 0. nan for an empty table, and where all cases are of one class and
+    all were answered so: then chance alone agrees throughout.
 
     Parameters
     ----------
-    true : array_like of int, shape (T,)
-    scores : ndarray, shape (T, K)
-    groups, n_groups, weights
-        As in `confusion`.
+    counts : ndarray, shape (..., K, K)
 
     Returns
     -------
-    ndarray, shape (n_groups,)
-        nan for a group that lacks a class. For two classes with complementary scores this is
-        the ordinary AUC.
+    ndarray, shape (...)
+        At most 1; below 0 means less agreement than by chance.
+
+    Examples
+    --------
+    >>> round(float(cohen_kappa(np.array([[20.0, 5.0], [10.0, 15.0]]))), 4)
+    0.4
     """
-    label = np.asarray(true, dtype=np.intp)
-    group = np.zeros(len(label), dtype=np.intp) if groups is None else np.asarray(groups)
-    weight = np.ones(len(label)) if weights is None else np.asarray(weights, dtype=np.float64)
-    pairs = list(combinations(range(scores.shape[-1]), 2))
-    total = np.zeros(n_groups)
-    for a, b in pairs:
-        chosen = (label == a) | (label == b)
-        total += sum(
-            auc(
-                label[chosen] == k,
-                scores[chosen, k],
-                groups=group[chosen],
-                n_groups=n_groups,
-                weights=weight[chosen],
-            )
-            / 2
-            for k in (a, b)
-        )
-    return total / len(pairs)
+    excess, true, answered, n = _beyond_chance(counts)
+    return quotient(excess, n**2 - (true * answered).sum(axis=-1))
+
+
+def matthews(counts: Floats) -> Floats:
+    """Matthews correlation coefficient, for two or more classes.
+
+    (n x right - sum of t_k a_k) / sqrt((n^2 - sum of t_k^2)(n^2 - sum of a_k^2)), t_k cases and
+    a_k answers of class k (Matthews 1975; for more classes Gorodkin 2004, R_K). By convention 0
+    where all answers, or all cases, are of one class: the ratio is then 0/0, even if all is
+    right. nan for an empty table.
+
+    Parameters
+    ----------
+    counts : ndarray, shape (..., K, K)
+
+    Returns
+    -------
+    ndarray, shape (...)
+        -1 to 1 for two classes; for more the lowest value depends on the table.
+
+    Examples
+    --------
+    >>> matthews(np.array([[[6.0, 2.0], [1.0, 3.0]], [[90.0, 0.0], [10.0, 0.0]]])).round(3).tolist()
+    [0.478, 0.0]
+    """
+    excess, true, answered, n = _beyond_chance(counts)
+    # counted, not compared with n: weighted sums may differ in the last digit
+    constant = ((true > 0).sum(axis=-1) == 1) | ((answered > 0).sum(axis=-1) == 1)
+    spreads = [np.maximum(n**2 - (side**2).sum(axis=-1), 0) for side in (true, answered)]
+    value = quotient(excess, np.sqrt(spreads[0]) * np.sqrt(spreads[1]))
+    return np.where(constant, 0.0, value)
 
 
 @dataclass(frozen=True)
@@ -210,5 +229,24 @@ MEASURES: dict[str, Measure] = {
         ),
         Measure("sensitivity", "share of a class found", "sensitivity", recalls, per_class=True),
         Measure("auc", "how well the scores rank the {units}", "AUC", None),
+    )
+}
+
+# Not yet in MEASURES: everything there is estimated by case with an interval of its own, and may
+# be the headline; these are values of a whole table of counts.
+FURTHER_MEASURES: dict[str, Measure] = {
+    measure.key: measure
+    for measure in (
+        Measure(
+            "precision",
+            "right when it names a class",
+            "positive predictive value",
+            precisions,
+            per_class=True,
+        ),
+        Measure("f1", "share found and right when named, in one", "F1", f1, per_class=True),
+        Measure("f1_macro", "mean of the classes’ F1", "macro F1", f1_macro),
+        Measure("kappa", "agreement beyond chance", "Cohen’s kappa", cohen_kappa),
+        Measure("matthews", "correlation of answers and classes", "MCC", matthews),
     )
 }

@@ -186,8 +186,9 @@ class Record:
                 answers = finished.answers[name]
                 arrays[f"{at}-scores"] = answers.scores
                 for way in _WAYS:
-                    arrays[f"{at}-{way}-confusion"] = answers.in_bag[way].confusion
+                    arrays[f"{at}-{way}-bag"] = answers.in_bag[way].confusion
                     arrays[f"{at}-{way}-auc"] = answers.in_bag[way].auc
+                    arrays[f"{at}-{way}-all"] = answers.on_all[way]
         with _beside(self._chunk(finished.task)) as place:
             np.savez(place, **arrays)
 
@@ -200,9 +201,10 @@ class Record:
                     answers[name] = Answers(
                         stored[f"{at}-scores"],
                         {
-                            way: Reduced(stored[f"{at}-{way}-confusion"], stored[f"{at}-{way}-auc"])
+                            way: Reduced(stored[f"{at}-{way}-bag"], stored[f"{at}-{way}-auc"])
                             for way in _WAYS
                         },
+                        {way: stored[f"{at}-{way}-all"] for way in _WAYS},
                     )
         return answers, failures
 

@@ -50,6 +50,8 @@ class Scheme:
         The setting that names what is kept together; empty for units alone.
     repeats_cases : bool
         Whether bags hold cases more than once.
+    drawn : bool
+        Whether chance decides who is held out, so that a redraw could move the estimate.
     """
 
     key: str
@@ -61,6 +63,7 @@ class Scheme:
     draw: DrawFunction
     keeps: str = "keep"
     repeats_cases: bool = False
+    drawn: bool = True
 
     def groups(self, table: Table, settings: Settings) -> Groups:
         """What this scheme keeps together."""
@@ -241,6 +244,7 @@ SCHEMES: dict[str, Scheme] = {
             lambda table, _: table.n_units,
             _need_two_each,
             draws.leave_one_out,
+            drawn=False,
         ),
         Scheme(
             "leave_block_out",
@@ -251,6 +255,7 @@ SCHEMES: dict[str, Scheme] = {
             _blocks_fit,
             draws.leave_one_out,
             keeps="column",
+            drawn=False,
         ),
         Scheme(
             "forward_in_time",
@@ -264,6 +269,7 @@ SCHEMES: dict[str, Scheme] = {
             _forward_fit,
             draws.forward_in_time,
             keeps="",
+            drawn=False,
         ),
     )
 }

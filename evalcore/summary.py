@@ -231,7 +231,7 @@ def plan_lines(evaluation: Evaluation) -> tuple[tuple[str, str], ...]:
         (
             "acceptance limit",
             f"{measure_name(table, plan, limit.measure, limit.of_class)} at least "
-            f"{percent(limit.least, 1)}, one-sided {level(limit.confidence)}, set "
+            f"{level(limit.least)}, one-sided {level(limit.confidence)}, set "
             f"{limit.set_on or NOT_STATED}",
         )
         for limit in plan.limits

@@ -6,10 +6,9 @@ from typing import Literal
 
 import numpy as np
 
-from evalcore.evaluation import Evaluation, Judged, offers_interval, share_interval
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
-from evalcore.intervals import square_and_add
-from evalcore.model_variance import balanced_model_variance
+from evalcore.judged import Judged, balanced_interval, offers_interval, share_interval
 from evalcore.plan import Limit
 from evalcore.sample_size import lower_bound, upper_bound
 
@@ -75,7 +74,7 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
         limit.measure, part.candidate, of_class=limit.of_class, scheme=part.scheme
     )
     if limit.measure == "balanced_accuracy":
-        bounds = _balanced(part, level) if offers_interval(part) else _NOTHING
+        bounds = balanced_interval(level, part) if offers_interval(part) else _NOTHING
         at_least, at_most = bounds.low, bounds.high
         n = int(table.class_counts("unit").min())
     else:
@@ -99,13 +98,3 @@ def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) ->
     if of_class is not None:
         known &= part.held.labels == of_class
     return len(np.unique(part.units[known])) if part.units is not None else int(known.sum())
-
-
-def _balanced(part: Judged, level: float) -> Interval:
-    n_classes = part.held.scores.shape[1]
-    parts = [share_interval(level, part, k, variance=False) for k in range(n_classes)]
-    shares = [float(np.nanmean(part.shares[part.held.labels == k])) for k in range(n_classes)]
-    tau2 = balanced_model_variance(
-        part.held.labels, part.held.rounds, part.held.correct, n_classes=n_classes
-    )
-    return square_and_add(shares, parts, tau2)

@@ -23,8 +23,9 @@ from app.charts.style import (
     shorten,
     text_alternative,
 )
-from evalcore.evaluation import Evaluation, Judged
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
+from evalcore.judged import Judged
 from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.wording import Noun, count

@@ -3,7 +3,7 @@
 import json
 import pathlib
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -43,8 +43,12 @@ def table_of(
     units: Sequence[int] | None = None,
     features: object = None,
     classes: Sequence[str] = ("a", "b", "c", "d"),
+    entries: Mapping[str, Sequence[str]] | None = None,
 ) -> Table:
-    """A table from class codes; units numbered in order of first appearance."""
+    """A table from class codes; units numbered in order of first appearance.
+
+    `entries` are columns as written, an entry for each case.
+    """
     n = len(labels)
     unit = np.arange(n) if units is None else np.asarray(units, dtype=np.intp)
     x = np.arange(n)[:, None] * 1.37 if features is None else np.asarray(features, dtype=float)
@@ -58,6 +62,7 @@ def table_of(
         roles=Roles("class", "" if units is None else "unit"),
         lines=np.arange(2, n + 2),
         rows_read=n,
+        entries={name: tuple(column) for name, column in (entries or {}).items()},
     )
 
 

@@ -79,7 +79,7 @@ def lots(n_good: int = 60, n_failing: int = 20, *, classes=("failing", "good"), 
 
 
 # 2 of 20 failing lots and 6 of 60 good ones answered wrongly; the same each time, so that the
-# intervals are Wilson's: 72/80 0.814 to 0.948, 18/20 0.699 to 0.972, 54/60 0.799 to 0.953
+# intervals are Wilson's: 72/80 0.815 to 0.948, 18/20 0.699 to 0.972, 54/60 0.799 to 0.953
 EIGHT_WRONG = {**dict.fromkeys(range(2), 1), **dict.fromkeys(range(20, 26), 0)}
 
 
@@ -114,7 +114,7 @@ class TestTwoClasses:
 
     def test_another_level_stands_in_the_sentence(self):
         text = spaced(answer(told(lots(), EIGHT_WRONG, level=0.9)))
-        # statsmodels proportion_confint(72, 80, 0.1, "wilson"): 0.83125..0.94268
+        # statsmodels proportion_confint(72, 80, 0.1, "wilson"): 0.83110..0.94273
         assert "right in 90 % (90 % interval 83–94 %, n = 80 lots)" in text
 
     @pytest.mark.parametrize(
@@ -137,7 +137,7 @@ class TestTwoClasses:
 class TestMoreClasses:
     def test_three_are_all_found_and_no_share_is_singled_out(self):
         table = table_of([0] * 10 + [1] * 10 + [2] * 20, classes=("Adelie", "Chinstrap", "Gentoo"))
-        # Wilson: 36/40 0.76943..0.96043, 9/10 0.59585..0.98212, 8/10 0.49016..0.94331,
+        # Wilson: 36/40 0.76948..0.96042, 9/10 0.59585..0.98212, 8/10 0.49016..0.94332,
         # 19/20 0.76387..0.99112
         text = spaced(answer(told(table, {0: 1, 10: 0, 11: 2, 20: 1})))
         assert text == (
@@ -190,7 +190,7 @@ class TestLimits:
         return limit_rows(told(table or lots(), wrong, limits=limits), "logistic")
 
     def test_shown(self):
-        # exact one-sided 95 % lower bound of 54/60: scipy.stats.beta.ppf(0.05, 54, 7) = 0.81204
+        # exact one-sided 95 % lower bound of 54/60: scipy.stats.beta.ppf(0.05, 54, 7) = 0.81214
         (row,) = self.rows(Limit("sensitivity", 0.7, "good", set_on="4 May 2026"))
         assert row.verdict.word == "shown"
         assert spaced(row.name) == "Good lots passed (specificity)"
@@ -209,8 +209,8 @@ class TestLimits:
         )
 
     def test_shown_to_fall_short(self):
-        # exact one-sided 95 % upper bound of 72/80: beta.ppf(0.95, 73, 8) = 0.94913; Wilson at
-        # 90 % ends at 0.94268, and the more cautious one counts
+        # exact one-sided 95 % upper bound of 72/80: beta.ppf(0.95, 73, 8) = 0.94926; Wilson at
+        # 90 % ends at 0.94273, and the more cautious one counts
         (row,) = self.rows(Limit("accuracy", 0.97))
         assert row.verdict.word == "shown to fall short"
         assert spaced(row.detail) == "Limit 97 %; these lots show at most 95 %."

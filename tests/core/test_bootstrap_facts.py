@@ -21,18 +21,22 @@ from evalcore.bag_facts import (
     sd_shrink,
     stratified_distinct_share,
 )
+from evalcore.draws import bootstrap, subsample
 from evalcore.estimates import WEIGHT_IN, WEIGHT_OUT
+from evalcore.groups import groups_of
 from evalcore.rounds import Rounds
-from evalcore.schemes import SCHEMES
 
-from .checks import cases
+from .checks import cases, table_of
 
 
 def drawn(class_sizes: list[int], rounds: int, seed: int = 1) -> Rounds:
-    """Bags of the bootstrap scheme; cases of a class stand together."""
-    ends = np.cumsum(class_sizes)
-    strata = [np.arange(end - size, end) for size, end in zip(class_sizes, ends, strict=True)]
-    return SCHEMES["bootstrap"].draw(strata, {"rounds": rounds}, np.random.default_rng(seed))
+    """Bags of the bootstrap scheme, class by class; one size alone is drawn as a whole."""
+    stratified = len(class_sizes) > 1
+    # a table needs two classes; drawn as a whole, it does not matter which case is of which
+    sizes = class_sizes if stratified else [class_sizes[0] - 1, 1]
+    table = table_of(np.repeat(np.arange(len(sizes)), sizes).tolist())
+    settings = {"rounds": rounds, "stratified": stratified}
+    return bootstrap(table, groups_of(table), settings, rng=np.random.default_rng(seed))
 
 
 def within_error(values: np.ndarray, exact: float) -> None:
@@ -186,9 +190,9 @@ class TestWhatTheTradeSays:
 
     def test_unstratified_parts_miss_a_rare_class_as_the_hypergeometric_says(self):
         n, rare, rounds = 40, 3, 4000
-        drawn_parts = SCHEMES["random_subsampling"].draw(
-            [np.arange(n)], {"rounds": rounds, "test_share": 0.3}, np.random.default_rng(9)
-        )
+        table = table_of([0] * rare + [1] * (n - rare))
+        settings = {"rounds": rounds, "test_share": 0.3, "stratified": False}
+        drawn_parts = subsample(table, groups_of(table), settings, rng=np.random.default_rng(9))
         chance = stats.hypergeom.pmf(0, n, rare, 12)
         missed = (drawn_parts.test[:, :rare].sum(axis=1) == 0).astype(float)
         within_error(missed, chance)

@@ -9,6 +9,7 @@ import pytest
 from evalcore.candidates import CANDIDATES
 from evalcore.errors import PlanError
 from evalcore.plan import (
+    APPENDING,
     Choice,
     Limit,
     Plan,
@@ -40,12 +41,23 @@ def refused(message, action, *args, **kwargs):
 class TestChoosing:
     def test_defaults(self):
         assert (
-            Choice("cross_validation", (("folds", 5), ("repeats", 20), ("stratified", True))) == CV
+            Choice(
+                "cross_validation",
+                (("folds", 5), ("repeats", 20), ("stratified", True), ("keep", "")),
+            )
+            == CV
         )
-        assert Choice("bootstrap", (("rounds", 200), ("stratified", True))) == BOOTSTRAP
+        assert Choice("bootstrap", (("rounds", 200), ("stratified", True), ("keep", ""))) == (
+            BOOTSTRAP
+        )
         assert choose(SCHEMES, "bootstrap", rounds=35).values() == {
             "rounds": 35,
             "stratified": True,
+            "keep": "",
+        }
+        assert choose(SCHEMES, "forward_in_time", column="day").values() == {
+            "column": "day",
+            "parts": 4,
         }
 
     @pytest.mark.parametrize(
@@ -54,6 +66,11 @@ class TestChoosing:
             (SCHEMES, "cross_validation:folds=7,repeats=3,stratified=no"),
             (SCHEMES, "random_subsampling:rounds=40,test_share=0.25,stratified=yes"),
             (SCHEMES, "leave_one_out"),
+            (SCHEMES, "bootstrap:rounds=30,stratified=yes,keep=producer"),
+            (SCHEMES, "holdout:test_share=0.3,stratified=no,keep=Jahr und Ort"),
+            (SCHEMES, "leave_block_out:column=harvest year"),
+            (SCHEMES, "leave_block_out"),
+            (SCHEMES, "forward_in_time:column=day,parts=3"),
             (CANDIDATES, "logistic:C=0.125"),
             (CANDIDATES, "nearest_neighbours:k=3,scaling=none"),
         ],
@@ -68,6 +85,13 @@ class TestChoosing:
         assert choose_written(CANDIDATES, "logistic") == LOGISTIC
         assert CV.written(without=("repeats",)) == "cross_validation:folds=5,stratified=yes"
 
+    def test_no_column_is_not_written(self):
+        # what names the stream of random numbers is what it was before there were columns
+        assert BOOTSTRAP.written(without=APPENDING) == "bootstrap:stratified=yes"
+        kept = choose(SCHEMES, "bootstrap", keep="producer")
+        assert kept.written(without=APPENDING) == "bootstrap:stratified=yes,keep=producer"
+        assert choose_written(SCHEMES, "bootstrap:keep=") == BOOTSTRAP
+
     @pytest.mark.parametrize(
         ("registry", "text", "message"),
         [
@@ -75,7 +99,7 @@ class TestChoosing:
                 SCHEMES,
                 "jackknife",
                 "There is no 'jackknife'; choose cross_validation, bootstrap, random_subsampling, "
-                "holdout or leave_one_out.",
+                "holdout, leave_one_out, leave_block_out or forward_in_time.",
             ),
             (
                 CANDIDATES,
@@ -86,8 +110,14 @@ class TestChoosing:
             (
                 SCHEMES,
                 "bootstrap:folds=3",
-                "'bootstrap' has no setting 'folds'; it takes `rounds` or `stratified`.",
+                "'bootstrap' has no setting 'folds'; it takes `rounds`, `stratified` or `keep`.",
             ),
+            (
+                SCHEMES,
+                "leave_block_out:keep=site",
+                "'leave_block_out' has no setting 'keep'; it takes `column`.",
+            ),
+            (SCHEMES, "forward_in_time:parts=51", "`parts` must be between 1 and 50; got 51."),
             (CANDIDATES, "lda:C=3", "'lda' has no setting 'C'; it takes no setting."),
             (
                 SCHEMES,
@@ -115,6 +145,16 @@ class TestChoosing:
             choose(SCHEMES, "bootstrap", stratified="no")
 
 
+    def test_a_column_is_named_by_text(self):
+        refused(
+            "`column` must be the name of a column; got 3.",
+            choose,
+            SCHEMES,
+            "leave_block_out",
+            column=3,
+        )
+
+
 class TestNames:
     def test_the_key_where_it_is_enough(self):
         made = plan(schemes=(CV, BOOTSTRAP))
@@ -137,6 +177,12 @@ class TestNames:
             "5 nearest neighbours",
         ]
 
+    def test_blocks_of_two_columns_stand_side_by_side(self):
+        made = plan(
+            schemes=tuple(choose(SCHEMES, "leave_block_out", column=c) for c in ("site", "year"))
+        )
+        assert made.scheme_names == ("leave_block_out:column=site", "leave_block_out:column=year")
+
     def test_names_are_unique_for_settings_that_hardly_differ(self):
         close = choose(CANDIDATES, "logistic", C=1.0000001)
         names = plan(candidates=(LOGISTIC, close)).candidate_names
@@ -151,7 +197,11 @@ class TestNames:
 class TestJson:
     full = Plan(
         Roles("Klasse é", "Los", ("Tag",), Noun("Los", "Lose"), "set_aside"),
-        (BOOTSTRAP, choose(SCHEMES, "random_subsampling", test_share=0.1)),
+        (
+            BOOTSTRAP,
+            choose(SCHEMES, "random_subsampling", test_share=0.1, keep="Händler"),
+            choose(SCHEMES, "forward_in_time", column="Tag"),
+        ),
         (MAJORITY, choose(CANDIDATES, "nearest_neighbours", k=3, scaling="none")),
         answered_from="one",
         measure="accuracy",
@@ -177,6 +227,7 @@ class TestJson:
             {"level": 0.9},
             {"concern": "a"},
             {"schemes": (BOOTSTRAP,)},
+            {"schemes": (choose(SCHEMES, "cross_validation", keep="producer"),)},
             {"candidates": (LOGISTIC, MAJORITY)},
             {"limits": (Limit("accuracy", 0.7),)},
             {"question": "?"},
@@ -310,6 +361,25 @@ class TestOnATable:
         # 100 rounds, 200 rounds and one on all cases, for two candidates; 23 of leave-one-out
         assert plan(schemes=(CV, BOOTSTRAP)).fits(self.table) == 602
         assert plan(schemes=(choose(SCHEMES, "leave_one_out"),)).fits(self.table) == 48
+
+    def test_models_to_fit_for_blocks_and_stretches(self):
+        table = table_of(
+            [0, 1] * 6,
+            entries={"site": list("aabbccddaabb"), "day": [str(day) for day in range(12)]},
+        )
+        # four sites, or two stretches, and one on all cases, for two candidates
+        made = plan(schemes=(choose(SCHEMES, "leave_block_out", column="site"),))
+        assert made.fits(table) == 10
+        made = plan(schemes=(choose(SCHEMES, "forward_in_time", column="day", parts=2),))
+        assert made.fits(table) == 6
+
+    def test_a_scheme_without_its_column_is_refused(self):
+        refused(
+            "`column` must name the column whose blocks are left out (year, site, instrument); it "
+            "is empty.",
+            plan(schemes=(choose(SCHEMES, "leave_block_out"),)).check,
+            self.table,
+        )
 
     def test_the_guess_of_time_grows_with_the_work(self):
         few, many = plan(schemes=(CV,)), plan(schemes=(CV, BOOTSTRAP))

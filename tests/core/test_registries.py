@@ -67,12 +67,15 @@ def test_settings_of_an_entry_have_keys_of_their_own(entry):
 def test_defaults_are_within_bounds_and_readable(setting):
     assert setting.title
     assert setting.check(setting.default) is None
-    kinds = {"whole": int, "number": float, "yes_no": bool, "choice": str}
+    kinds = {"whole": int, "number": float, "yes_no": bool, "choice": str, "column": str}
     assert type(setting.default) is kinds[setting.kind]
     if setting.kind in ("whole", "number"):
         assert setting.low < setting.high
     if setting.kind == "choice":
         assert len(set(setting.choices)) == len(setting.choices) > 1
+    if setting.kind == "column":
+        # which columns there are is known with a table only
+        assert setting.default == ""
 
 
 @pytest.mark.parametrize("scheme", SCHEMES.values(), ids=SCHEMES)
@@ -80,11 +83,28 @@ def test_what_a_scheme_says_names_only_what_is_filled_in(scheme):
     fields = {name for _, name, _, _ in Formatter().parse(scheme.what) if name}
     known = {"n", "unit", "units"} | {setting.key for setting in scheme.settings}
     assert fields <= known
-    assert scheme.what.endswith(".")
+    # whole sentences; one that asks is answered by the figure
+    assert re.search(r"[^\s.?][.?]$", scheme.what)
+    assert scheme.what[0].isupper()
 
 
 def test_only_the_bootstrap_repeats_cases():
     assert [key for key, scheme in SCHEMES.items() if scheme.repeats_cases] == ["bootstrap"]
+
+
+def test_what_is_not_drawn_says_so():
+    fixed = [key for key, scheme in SCHEMES.items() if not scheme.drawn]
+    assert fixed == ["leave_one_out", "leave_block_out", "forward_in_time"]
+
+
+def test_what_is_kept_together_is_named_by_a_column_setting():
+    named = {key: scheme.keeps for key, scheme in SCHEMES.items() if scheme.keeps}
+    assert named.pop("leave_block_out") == "column"
+    assert named.pop("leave_one_out") == "keep"  # a setting it does not offer: units alone
+    for key, name in named.items():
+        (setting,) = [s for s in SCHEMES[key].settings if s.key == name]
+        assert setting.kind == "column"
+    assert SCHEMES["forward_in_time"].keeps == ""
 
 
 def test_only_rules_that_look_at_no_feature_are_baselines():

@@ -1,0 +1,205 @@
+"""One candidate under one scheme, counted one way: its values, model variances and intervals."""
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from evalcore import estimates, intervals, model_variance
+from evalcore.answers import HeldOut, Reduced
+from evalcore.figures import CountedBy, Interval
+from evalcore.measures import MEASURES, Floats
+from evalcore.plan import Plan
+from evalcore.schemes import LEAST_BLOCKS, SCHEMES
+from evalcore.table import Table
+
+
+@dataclass(frozen=True, eq=False)
+class Judged:
+    """One candidate under one scheme, counted one way.
+
+    Attributes
+    ----------
+    scheme, candidate : str
+        Names in the plan.
+    counted_by : {"unit", "case"}
+    held : HeldOut
+    in_bag : Reduced
+        Of the rounds' own bags.
+    on_all : ndarray, shape (R, K, K)
+        Confusion counts of all cases, by the rounds' models.
+    whole : Reduced
+        Of the fit on all cases, one round.
+    units : ndarray of int or None
+        What counted cases resemble each other by (see `clusters`), else None.
+    """
+
+    scheme: str
+    candidate: str
+    counted_by: CountedBy
+    held: HeldOut
+    in_bag: Reduced
+    on_all: Floats
+    whole: Reduced
+    units: NDArray[np.intp] | None
+
+    def held_values(self, measure: str, of_class: int = 0) -> Floats:
+        """A measure within each round's held-out cases, shape (R,)."""
+        return _values(measure, self.held.confusion, self.held.auc, of_class)
+
+    def in_bag_values(self, measure: str, of_class: int = 0) -> Floats:
+        """A measure on each round's own bag, repeats counted, shape (R,)."""
+        return _values(measure, self.in_bag.confusion, self.in_bag.auc, of_class)
+
+    def optimism(self, measure: str, of_class: int = 0) -> float:
+        """Mean over rounds of a measure on the own bag minus on all cases; nan for AUC."""
+        nothing = np.full(len(self.on_all), np.nan)
+        on_all = _values(measure, self.on_all, nothing, of_class)
+        return estimates.mean_of_rounds(self.in_bag_values(measure, of_class) - on_all)[0]
+
+    def whole_value(self, measure: str, of_class: int = 0) -> float:
+        """A measure of the fit on all cases for these cases."""
+        return float(_values(measure, self.whole.confusion, self.whole.auc, of_class)[0])
+
+    @cached_property
+    def shares(self) -> Floats:
+        """Share of held-out answers that were right, per unit or case; nan if never held out."""
+        return estimates.mean_correct(self.held.correct, self.held.rounds)
+
+    @property
+    def n_classes(self) -> int:
+        """Number of classes K."""
+        return int(self.held.scores.shape[1])
+
+    @cached_property
+    def pooled(self) -> Floats:
+        """Held-out confusion counts, every case weighing one over all its answers, (K, K)."""
+        return estimates.pooled_confusion(
+            self.held.labels, self.held.rounds, self.held.predicted, n_classes=self.n_classes
+        )
+
+    def pooled_value(self, measure: str, of_class: int = 0) -> float:
+        """A measure from `pooled`; not for measures that need scores."""
+        return float(_values(measure, self.pooled[None], np.array([math.nan]), of_class)[0])
+
+    @cached_property
+    def tau2(self) -> float:
+        """Model variance of the share right."""
+        return model_variance.model_variance(self.held.correct, self.held.rounds, units=self.units)
+
+    @cached_property
+    def tau2_auc(self) -> float:
+        """Model variance of the AUC within rounds, of two classes."""
+        return model_variance.auc_model_variance(
+            self.held.labels == 1, self.held.rounds, self.held.scores[:, 1]
+        )
+
+    def tau2_of(self, of_class: int) -> float:
+        """Model variance of the share right within one class."""
+        return model_variance.model_variance(
+            self.held.correct,
+            self.held.rounds,
+            chosen=self.held.labels == of_class,
+            units=self.units,
+        )
+
+
+def clusters(
+    table: Table, plan: Plan, scheme: str, *, counted_by: CountedBy
+) -> NDArray[np.intp] | None:
+    """What counted cases or units resemble each other by, beyond what is counted; None if nothing.
+
+    Rows of a unit where rows are counted; blocks or groups that a scheme keeps together.
+    """
+    choice = plan.scheme(scheme)
+    registered = SCHEMES[choice.key]
+    groups = registered.groups(table, choice.values())
+    first_case = np.unique(table.units, return_index=True)[1]
+    of_counted = groups.of_case[first_case] if counted_by == "unit" else groups.of_case
+    return of_counted if groups.number < len(of_counted) else None
+
+
+def _values(measure: str, confusion: Floats, auc: Floats, of_class: int) -> Floats:
+    function = MEASURES[measure].from_confusion
+    if function is None:
+        return auc
+    values = function(confusion)
+    return values[:, of_class] if MEASURES[measure].per_class else values
+
+
+def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632 | None:
+    """.632+ of accuracy, balanced accuracy or AUC with its own no-information value.
+
+    Accuracy: sum of label share x answer share; balanced accuracy: 1/K; AUC: 0.5. None where the
+    out-of-bag value is undefined.
+    """
+    if math.isnan(out_of_bag):
+        return None
+    counts = part.whole.confusion[0]
+    guess = {"accuracy": estimates.no_information(counts), "auc": 0.5}
+    return estimates.point_632_plus(
+        part.whole_value(measure), out_of_bag, no_information=guess.get(measure, 1 / len(counts))
+    )
+
+
+def offers_interval(part: Judged) -> bool:
+    """Whether there are enough blocks, where cases come in blocks, to tell their variance."""
+    return part.units is None or len(np.unique(part.units)) >= LEAST_BLOCKS
+
+
+def share_interval(
+    level: float, part: Judged, of_class: int | None = None, *, variance: bool = True
+) -> Interval:
+    """The default interval for a share right, of all cases or of one class.
+
+    Parameters
+    ----------
+    level : float
+        Two-sided.
+    part : Judged
+    of_class : int or None
+    variance : bool
+        Whether the model's variance is included.
+    """
+    chosen = ~np.isnan(part.shares)
+    if of_class is not None:
+        chosen &= part.held.labels == of_class
+    if not chosen.any():
+        return Interval(math.nan, math.nan, level, "wilson")
+    tau2 = math.nan
+    if variance:
+        tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
+    shares = part.shares[chosen]
+    if part.units is not None:
+        return intervals.rows_of_units(shares, part.units[chosen], tau2, level=level)
+    return intervals.with_model_variance(float(shares.mean()), len(shares), tau2, level=level)
+
+
+def balanced_interval(level: float, part: Judged) -> Interval:
+    """The default interval for balanced accuracy."""
+    parts = [share_interval(level, part, k, variance=False) for k in range(part.n_classes)]
+    recalls = [part.pooled_value("sensitivity", k) for k in range(part.n_classes)]
+    tau2 = model_variance.balanced_model_variance(
+        part.held.labels, part.held.rounds, part.held.correct, n_classes=part.n_classes
+    )
+    return intervals.square_and_add(recalls, parts, tau2)
+
+
+def auc_interval(
+    level: float, part: Judged, alike: Sequence[Judged], value: float
+) -> Interval | None:
+    """Interval for an AUC; None for more classes or dependent cases, since none keeps its word.
+
+    The model's variance is the largest that any scheme shows: the folds alone cannot tell it
+    where a class has few cases (own simulation).
+    """
+    if part.held.scores.shape[1] != 2 or part.units is not None or math.isnan(value):
+        return None
+    known = part.held.labels[~np.isnan(part.shares)]
+    tau2 = max((p.tau2_auc for p in alike if not math.isnan(p.tau2_auc)), default=math.nan)
+    return intervals.auc_score_type(
+        value, int((known == 1).sum()), int((known == 0).sum()), tau2, level=level
+    )
