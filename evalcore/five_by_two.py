@@ -69,6 +69,7 @@ def five_by_two(differences: ArrayLike) -> FiveByTwo:
     d = np.asarray(differences, dtype=np.float64)
     if d.shape != (5, 2):
         raise ValueError(f"`differences` must have 5 repeats of 2 folds; got shape {d.shape}.")
+    d = np.where(np.isfinite(d), d, np.nan)
     # of two values, the squared distances from their mean sum to half their squared difference
     s2 = np.diff(d, axis=1)[:, 0] ** 2 / 2
     variances, reason = tuple(s2.tolist()), _why_undefined(d)
@@ -81,7 +82,7 @@ def five_by_two(differences: ArrayLike) -> FiveByTwo:
 
 
 def _why_undefined(d: Floats) -> str:
-    missing = int((~np.isfinite(d)).sum())
+    missing = int(np.isnan(d).sum())
     if missing:
         return f"{missing} of 10 rounds have no value, so t and F are undefined."
     if all(alike(pair) for pair in d):

@@ -16,6 +16,7 @@ from evalcore.intervals import normal_quantile
 from evalcore.measures import Floats, auc
 
 LEAST_FOR_CHI2 = 25  # discordant pairs from which the chi-square approximation is used
+NO_SPREAD = 1e-12  # a standard error below this is rounding
 
 
 @dataclass(frozen=True)
@@ -149,7 +150,7 @@ def delong(
     --------
     >>> found = delong([0, 0, 0, 1, 1, 1], [1, 2, 4, 3, 5, 6], [1, 4, 5, 2, 3, 6])
     >>> round(found.difference, 4), round(found.z, 3), round(found.p, 3)
-    (0.3333, 1.414, 0.157)
+    (0.3333, 1.225, 0.221)
     """
     up = np.asarray(positive, dtype=bool)
     first, second = (np.asarray(s, dtype=np.float64) for s in (scores_first, scores_second))
@@ -168,8 +169,8 @@ def delong(
     spread = math.sqrt(_variance(v10 - w10, v01 - w01))
     covariance = (errors[0] ** 2 + errors[1] ** 2 - spread**2) / 2
     difference = areas[0] - areas[1]
-    if spread == 0:
-        z = 0.0 if difference == 0 else math.nan
+    if spread < NO_SPREAD:
+        spread, z = 0.0, (0.0 if abs(difference) < NO_SPREAD else math.nan)
     else:
         z = difference / spread
     half = normal_quantile(level) * (math.nan if math.isnan(z) else spread)

@@ -159,13 +159,11 @@ def power_law(
     n, error, weight = _checked(sizes, errors, weights)
     if len(n) < LEAST_SIZES:
         return NoPowerLaw(f"A curve needs at least {LEAST_SIZES} sizes; there are {len(n)}.")
-    rising = _pairs_against(error)
-    # a fit needs the trend, not only its lack of a rise: flat points have an error to continue too
     if _chance_of_falling(error) > LARGEST_CHANCE:
         return NoPowerLaw(
             "The error does not clearly fall as cases are added: it is no lower at the larger "
-            f"size in {rising} of {math.comb(len(n), 2)} pairs of sizes. So no curve is "
-            "continued."
+            f"size in {_pairs_against(error)} of {math.comb(len(n), 2)} pairs of sizes. So no "
+            "curve is drawn beyond the points."
         )
     c = _best_speed(n, error, weight)
     a, b, loss = _line(n**-c, error, weight)

@@ -3,69 +3,36 @@
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from evalcore.errors import EvalError
-from evalcore.intervals import clopper_pearson, hanley_mcneil_variance, normal_quantile, wilson
+from evalcore.intervals import hanley_mcneil_variance, normal_quantile, wilson
 from evalcore.measures import Floats
+from evalcore.one_sided import OneSided, confidence_shown, lower_bound, upper_bound
 
-Bound = Literal["exact", "wilson"]
+__all__ = [
+    "LEAST_UNITS",
+    "CasesForAuc",
+    "CasesForWidth",
+    "allowed_misses",
+    "auc_standard_error",
+    "cases_for_auc",
+    "cases_for_width",
+    "cases_to_show",
+    "confidence_shown",
+    "inside",
+    "lower_bound",
+    "upper_bound",
+]
+
 LEAST_UNITS = 10  # below this nothing is called shown: 9 of 10 right may mean 60 % (exact, 95 %)
 SLACK = 1e-12  # a confidence reached exactly must not be missed by rounding
 
 
-def lower_bound(right: float, n: float, *, confidence: float = 0.95) -> float:
-    """Exact one-sided lower bound of a share (Clopper & Pearson 1934).
-
-    >>> round(lower_bound(59, 59), 4)
-    0.9505
-    """
-    return clopper_pearson(right, n, level=2 * confidence - 1).low
-
-
-def upper_bound(right: float, n: float, *, confidence: float = 0.95) -> float:
-    """Exact one-sided upper bound of a share."""
-    return clopper_pearson(right, n, level=2 * confidence - 1).high
-
-
-def confidence_shown(right: float, n: float, *, least: float) -> float:
-    """Confidence with which right answers show a share of at least `least`.
-
-    1 - P(X <= misses), X binomial with n and 1 - least (Clopper & Pearson 1934): the confidence at
-    which `lower_bound` is `least`.
-
-    Parameters
-    ----------
-    right : float
-        Right answers, 0 to n; with none the confidence is 0.
-    n : float
-        Independent cases, from 0.
-    least : float
-        Limit, strictly between 0 and 1.
-
-    Raises
-    ------
-    EvalError
-        `least` or `right` out of range.
-
-    Examples
-    --------
-    >>> round(confidence_shown(59, 59, least=0.95), 4), round(confidence_shown(48, 50, least=0.9), 4)
-    (0.9515, 0.8883)
-    """
-    from scipy.special import betainc
-
-    inside("least", least)
-    if not 0 <= right <= n:
-        raise EvalError(f"`right` must be between 0 and the {n:g} cases; got {right:g}.")
-    return 0.0 if right == 0 else float(betainc(n - right + 1, right, 1 - least))
-
-
 def cases_to_show(
-    least: float, *, misses: int = 0, confidence: float = 0.95, bound: Bound = "exact"
+    least: float, *, misses: int = 0, confidence: float = 0.95, method: OneSided = "clopper_pearson"
 ) -> int:
     """Smallest number of cases that shows a share of at least `least` with some misses.
 
@@ -77,9 +44,9 @@ def cases_to_show(
         Wrong answers allowed, from 0.
     confidence : float
         One-sided, above 0.5.
-    bound : {"exact", "wilson"}
-        Clopper and Pearson's bound, which a verdict rests on, or Wilson's. They disagree near the
-        limit, so the choice must be made before looking.
+    method : {"clopper_pearson", "wilson"}
+        The exact bound, which a verdict rests on, or the score bound. They disagree near the limit,
+        so the choice must be made before looking.
 
     Raises
     ------
@@ -90,7 +57,7 @@ def cases_to_show(
     --------
     >>> [cases_to_show(0.9, misses=misses) for misses in (0, 1, 2, 3, 5)]
     [29, 46, 61, 76, 103]
-    >>> cases_to_show(0.9, bound="wilson")
+    >>> cases_to_show(0.9, method="wilson")
     25
     """
     _check_limit(least, confidence)
@@ -98,8 +65,8 @@ def cases_to_show(
         raise EvalError(f"`misses` must be 0 or more; got {misses}.")
 
     def enough(n: int) -> bool:
-        if bound == "wilson":
-            return wilson(1 - misses / n, n, level=2 * confidence - 1).low >= least
+        if method == "wilson":
+            return lower_bound(n - misses, n, confidence=confidence, method=method) >= least
         return confidence_shown(n - misses, n, least=least) >= confidence - SLACK
 
     return _smallest(enough, misses + 1)
@@ -110,7 +77,7 @@ def allowed_misses(
     *,
     least: float,
     confidence: float = 0.95,
-    bound: Bound = "exact",
+    method: OneSided = "clopper_pearson",
     n_effective: Floats | None = None,
 ) -> NDArray[np.intp]:
     """Most misses among n cases with which they still show a limit.
@@ -119,7 +86,7 @@ def allowed_misses(
     ----------
     n : sequence of int, length N
         Numbers of cases, from 0.
-    least, confidence, bound
+    least, confidence, method
         As in `cases_to_show`.
     n_effective : ndarray, shape (N,), optional
         Independent cases that Wilson's bound counts in place of n.
@@ -138,7 +105,7 @@ def allowed_misses(
 
     _check_limit(least, confidence)
     sizes = np.asarray(n, dtype=np.intp)
-    if bound == "wilson":
+    if method == "wilson":
         # Wilson's lower bound is `least` where share - least = z sqrt(least (1 - least) / n)
         z = normal_quantile(2 * confidence - 1)
         counted = np.maximum(sizes if n_effective is None else n_effective, np.finfo(float).tiny)
@@ -203,8 +170,7 @@ def cases_for_width(share: float, *, width: float, level: float = 0.95) -> Cases
     if not 0 <= share <= 1:
         raise EvalError(f"`share` must be between 0 and 1; got {share:g}.")
     n = _smallest(lambda size: wilson(share, size, level=level).width <= width, 1)
-    half = width / 2
-    simple = math.ceil(share * (1 - share) * (normal_quantile(level) / half) ** 2)
+    simple = math.ceil(share * (1 - share) * (2 * normal_quantile(level) / width) ** 2)
     return CasesForWidth(n, wilson(share, n, level=level).width, max(1, simple))
 
 
@@ -243,12 +209,10 @@ def cases_for_auc(
     ----------
     value : float
         Expected AUC, strictly between 0 and 1: at the ends the formula's variance is 0.
-    half_width : float
-        Strictly between 0 and 1.
+    half_width, level : float
+        Strictly between 0 and 1; the level is two-sided.
     ratio : float
         Negative cases for each positive one, > 0.
-    level : float
-        Two-sided confidence.
 
     Raises
     ------

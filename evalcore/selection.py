@@ -160,9 +160,7 @@ def _check(classes: Counts, right: Floats, drawn: Counts) -> None:
         raise ValueError("There must be a candidate, and a unit that all candidates answered.")
 
 
-def _means(
-    weights: Counts, right: Floats, classes: Counts, n_classes: int
-) -> dict[str, Floats]:
+def _means(weights: Counts, right: Floats, classes: Counts, n_classes: int) -> dict[str, Floats]:
     """Weighted means of every candidate: accuracy and balanced (B, C), recalls (B, C, K)."""
     sums = np.empty((len(weights), right.shape[1], n_classes))
     sizes = np.empty((len(weights), 1, n_classes))
@@ -173,9 +171,7 @@ def _means(
     total = np.broadcast_to(sizes.sum(axis=2), sums.shape[:2])
     recalls = np.divide(sums, sizes, out=np.full_like(sums, np.nan), where=sizes > 0)
     everything = sums.sum(axis=2)
-    accuracy = np.divide(
-        everything, total, out=np.full_like(everything, np.nan), where=total > 0
-    )
+    accuracy = np.divide(everything, total, out=np.full_like(everything, np.nan), where=total > 0)
     return {"accuracy": accuracy, "balanced_accuracy": recalls.mean(axis=2), "recalls": recalls}
 
 

@@ -39,7 +39,7 @@ from evalcore.schemes import SCHEMES
 from evalcore.table import Roles, Table
 from evalcore.wording import NBSP, Noun
 
-HOSTILE = ("<b>x</b>", "datum.x'] + \"$(1)\" :red[a] *b* " + "long " * 40)
+HOSTILE = ("<b>x</b>", 'datum.x\'] + "$(1)" :red[a] *b* ' + "long " * 40)
 
 
 def table_of(classes: tuple[str, ...], *, units: int = 24, rows: int = 1) -> Table:
@@ -80,9 +80,7 @@ def evaluation_of(table: Table, *, limits: tuple[Limit, ...] = ()) -> Evaluation
     )
     rounds = plan.draw(table)
     done = list(run(table, plan, rounds, todo=tasks(rounds), jobs=1))
-    whole = {
-        c: next(d.answers[c] for d in done if not d.task.scheme) for c in plan.candidate_names
-    }
+    whole = {c: next(d.answers[c] for d in done if not d.task.scheme) for c in plan.candidate_names}
     answers = {
         (s, c): joined([d.answers[c] for d in done if d.task.scheme == s])
         for s in rounds

@@ -24,7 +24,7 @@ HOSTILE = (
 # what Streamlit makes something else of even where every character is escaped: it looks at the
 # text once escapes are resolved (seen in the browser with Streamlit 1.67)
 MADE_INTO_SOMETHING = re.compile(
-    r"https?://|www\.|\w@\w|:\w+:|:[\w-]+\[|:material/|--|->|<-|>=|<=|~=", re.IGNORECASE
+    r"https?://|www\.|\w@\w|:\w+:|:material/|(?<!\S)(--|->|<-|>=|<=|~=)(?!\S)", re.IGNORECASE
 )
 
 
