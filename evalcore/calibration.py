@@ -106,11 +106,14 @@ def _logistic(
     from scipy.special import expit
 
     found = np.zeros(design.shape[1])
-    for _ in range(200):
+    for _ in range(1000):  # a few for usual forecasts, many steps of about 1 for far-out ones
         odds = offset + design @ found
         up, down = expit(odds), expit(-odds)
-        # not y - up: that would lose the digits of a forecast close to 1
-        gradient = design.T @ (weights * np.where(positive, down, -up))
+        # positive - up in two parts: whole answers cancel exactly, small tails keep their digits
+        above = odds > 0
+        whole = positive.astype(np.float64) - above
+        tail = np.where(above, down, -up)
+        gradient = design.T @ (weights * whole) + design.T @ (weights * tail)
         curvature = (design.T * (weights * up * down)) @ design
         try:
             step = np.linalg.solve(curvature, gradient)

@@ -10,6 +10,7 @@ import numpy as np
 from evalcore import estimates, intervals
 from evalcore.answers import Answers, held_out
 from evalcore.candidates import CANDIDATES
+from evalcore.comparison import Difference
 from evalcore.figures import CountedBy, Estimate, Interval
 from evalcore.judged import (
     Judged,
@@ -20,11 +21,13 @@ from evalcore.judged import (
     plus_632,
     share_interval,
 )
-from evalcore.measures import MEASURES
+from evalcore.measures import ALL_MEASURES
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.table import Table
+from evalcore.together import ESTIMATOR as WINNER
+from evalcore.together import differences, winner_estimates
 
 ESTIMATORS: dict[str, str] = {
     "apparent": "on the cases fitted to (apparent)",
@@ -35,6 +38,7 @@ ESTIMATORS: dict[str, str] = {
     "point_632_plus": ".632+",
     "optimism_corrected": "apparent minus its optimism",
     "out_of_bag_or_632_plus": "out-of-bag where it memorises, else .632+",
+    WINNER: "of the best, once the luck of being best is taken off",
 }
 # measures that in-bag and out-of-bag values may be weighed for
 WEIGHTED = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
@@ -90,6 +94,38 @@ class Evaluation:
     def is_baseline(self, candidate: str) -> bool:
         """Whether a candidate looks at no feature."""
         return CANDIDATES[self.plan.candidate(candidate).key].baseline
+
+    def parts(self, scheme: str = "", counted_by: CountedBy | None = None) -> list[Judged]:
+        """Every candidate under one scheme; the headline's scheme and counting unless given."""
+        wanted = (scheme or self.scheme, counted_by or self.counted_by)
+        return [j for j in self.judged if (j.scheme, j.counted_by) == wanted]
+
+    @cached_property
+    def winner(self) -> Estimate | None:
+        """The corrected estimate of the best candidate by the headline's measure, if any.
+
+        Of accuracy where the headline's measure is not balanced accuracy.
+        """
+        measure = "accuracy" if self.plan.measure == "accuracy" else "balanced_accuracy"
+        return self.corrected(measure)
+
+    def corrected(self, measure: str, of_class: str = "") -> Estimate | None:
+        """What the best candidate's figure is worth once the luck of being best is taken off."""
+        for e in self.estimates:
+            if (e.estimator, e.scheme, e.counted_by, e.measure, e.of_class) == (
+                WINNER,
+                self.scheme,
+                self.counted_by,
+                measure,
+                of_class,
+            ):
+                return e
+        return None
+
+    @cached_property
+    def differences(self) -> tuple[Difference, ...]:
+        """The candidate of the headline against all others, on the headline's rounds."""
+        return differences(self.plan, self.parts(), about=self.about)
 
     def part(self, candidate: str, scheme: str, counted_by: CountedBy | None = None) -> Judged:
         """One candidate under one scheme, counted as the headline unless said otherwise."""
@@ -166,8 +202,12 @@ def evaluate(
                     clusters(table, plan, scheme, counted_by=way),
                 )
             )
-    figures = tuple(e for part in judged for e in _estimates(table, plan, part, judged))
-    return Evaluation(table, plan, rounds, planned, tuple(judged), figures, failures)
+    figures = [e for part in judged for e in _estimates(table, plan, part, judged)]
+    for scheme in rounds:
+        for way in ways:
+            alike = [p for p in judged if (p.scheme, p.counted_by) == (scheme, way)]
+            figures += winner_estimates(table, plan, alike)
+    return Evaluation(table, plan, rounds, planned, tuple(judged), tuple(figures), failures)
 
 
 def _estimates(
@@ -175,7 +215,7 @@ def _estimates(
 ) -> Iterator[Estimate]:
     this = (part.candidate, part.counted_by)
     alike = [p for p in judged if (p.candidate, p.counted_by) == this]
-    for measure in MEASURES.values():
+    for measure in ALL_MEASURES.values():
         classes = list(enumerate(table.classes)) if measure.per_class else [(0, "")]
         for k, name in classes:
             values = _figures(plan, part, alike, measure.key, of_class=k)
@@ -208,7 +248,7 @@ def _figures(
     """Estimator, value, interval and undefined rounds of one measure."""
     mean, undefined = estimates.mean_of_rounds(part.held_values(measure, of_class))
     yield "apparent", part.whole_value(measure, of_class), None, 0
-    if MEASURES[measure].from_confusion is None:
+    if ALL_MEASURES[measure].from_confusion is None:
         # never pooled across rounds: scores of different models are not on one scale
         out_of_bag = mean
         yield "mean_of_rounds", mean, auc_interval(plan.level, part, alike, mean), undefined

@@ -96,6 +96,8 @@ def neighbours_pmf(n: int, k: int) -> Floats:
     low = k * np.log(i / n) + np.log1p(-(((i - 1) / i) ** k))
     j = n - i + 1
     high = (n - k) * np.log(j / n) + np.log1p(-(((j - 1) / j) ** (n - k)))
-    apart = np.triu(np.exp(ways + low[:, None] + high[None, :]), 1)
+    # below the diagonal the formula is no chance and may leave the range
+    above = i[:, None] < i[None, :]
+    apart = np.exp(np.where(above, ways + low[:, None] + high[None, :], -np.inf))
     kth = np.diff(betainc(k, n - k + 1, np.arange(n + 1) / n))
     return np.asarray(apart + np.diag(np.maximum(0.0, kth - apart.sum(axis=1))))

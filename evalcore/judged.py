@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from evalcore import estimates, intervals, model_variance
 from evalcore.answers import HeldOut, Reduced
 from evalcore.figures import CountedBy, Interval
-from evalcore.measures import MEASURES, Floats
+from evalcore.measures import ALL_MEASURES, Floats
 from evalcore.plan import Plan
 from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
@@ -123,11 +123,11 @@ def clusters(
 
 
 def _values(measure: str, confusion: Floats, auc: Floats, of_class: int) -> Floats:
-    function = MEASURES[measure].from_confusion
+    function = ALL_MEASURES[measure].from_confusion
     if function is None:
         return auc
     values = function(confusion)
-    return values[:, of_class] if MEASURES[measure].per_class else values
+    return values[:, of_class] if ALL_MEASURES[measure].per_class else values
 
 
 def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632 | None:

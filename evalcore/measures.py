@@ -61,17 +61,35 @@ def confusion(
 
 
 def accuracy(counts: Floats) -> Floats:
-    """Share right: trace over total."""
+    """Share right: trace over total; nan for an empty table.
+
+    Examples
+    --------
+    >>> float(accuracy(np.array([[20.0, 5.0], [10.0, 15.0]])))
+    0.7
+    """
     return quotient(np.trace(counts, axis1=-2, axis2=-1), counts.sum(axis=(-2, -1)))
 
 
 def recalls(counts: Floats) -> Floats:
-    """Share right of each true class (sensitivity), shape (..., K); nan for an empty class."""
+    """Share right of each true class (sensitivity), shape (..., K); nan for an empty class.
+
+    Examples
+    --------
+    >>> recalls(np.array([[20.0, 5.0], [10.0, 15.0]])).tolist()
+    [0.8, 0.6]
+    """
     return quotient(np.diagonal(counts, axis1=-2, axis2=-1), counts.sum(axis=-1))
 
 
 def balanced_accuracy(counts: Floats) -> Floats:
-    """Mean of the classes' shares right; nan if a class is empty."""
+    """Mean of the classes' shares right; nan if a class is empty.
+
+    Examples
+    --------
+    >>> float(balanced_accuracy(np.array([[45.0, 15.0], [25.0, 15.0]])))
+    0.5625
+    """
     return np.asarray(recalls(counts).mean(axis=-1))
 
 
@@ -232,8 +250,8 @@ MEASURES: dict[str, Measure] = {
     )
 }
 
-# Not yet in MEASURES: everything there is estimated by case with an interval of its own, and may
-# be the headline; these are values of a whole table of counts.
+# values of a whole table of counts: estimated like the others, but without an interval, and no
+# headline
 FURTHER_MEASURES: dict[str, Measure] = {
     measure.key: measure
     for measure in (
@@ -250,3 +268,5 @@ FURTHER_MEASURES: dict[str, Measure] = {
         Measure("matthews", "correlation of answers and classes", "MCC", matthews),
     )
 }
+
+ALL_MEASURES: dict[str, Measure] = MEASURES | FURTHER_MEASURES

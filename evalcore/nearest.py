@@ -62,7 +62,7 @@ def _shares(
 ) -> Floats:
     total = cast.sum(axis=1, keepdims=True)
     votes = [(cast * (labels[nearest] == k)).sum(axis=1) for k in range(n_classes)]
-    return np.stack(votes, axis=1) / total
+    return np.asarray(np.stack(votes, axis=1) / total)
 
 
 def round_scores(

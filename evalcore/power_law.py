@@ -94,11 +94,9 @@ class PowerLaw:
         exponent = math.log(self.b / (target - self.a)) / self.c
         if exponent > math.log(MOST_CASES):
             return None
-        n = max(1, math.ceil(math.exp(exponent)))
-        # the power and its inverse round differently: settle which whole number it is
-        if n > 1 and self.predict(n - 1, beyond=True) <= target:
-            n -= 1
-        elif self.predict(n, beyond=True) > target:
+        # the power and its inverse round differently: start one below and let the power decide
+        n = max(1, math.ceil(math.exp(exponent)) - 1)
+        while self.predict(n, beyond=True) > target:
             n += 1
         if not beyond and n > REACH * self.largest:
             raise EvalError(

@@ -118,20 +118,10 @@ def bootstrap(
     >>> round(found.value, 2), round(found.standard_error), round(found.shrink, 4)
     (86.86, 23, 0.9258)
     """
-    chosen = _chosen(statistic)
-    sample = _sample(chosen, first, second, units, share)
-    least = math.ceil(2 / (1 - level) - 1 - 1e-9)
-    if rounds < least:
-        raise EvalError(
-            f"`rounds` must be at least {least} for an interval at level {level:g}; got {rounds}."
-        )
+    _check_rounds(rounds, level)
+    sample = _sample(_chosen(statistic), first, second, units, share)
     value = float(sample.values(np.ones((1, sample.n_units)))[0])
     strata = sample.strata()
-    if np.bincount(strata).min() < 2:
-        raise EvalError(
-            f"{chosen.title} needs at least two units (of each class, where classes are compared): "
-            "from one alone nothing is known about how units vary."
-        )
     bags = _bags(strata, rounds, generator, step=max(1, CELLS // sample.n))
     replicas = np.concatenate([sample.values(bag) for bag in bags])
     left_out = np.concatenate([sample.values(counts) for counts in sample.leave_one_out()])
@@ -196,12 +186,20 @@ class _Sample:
             yield counts
 
     def strata(self) -> NDArray[np.intp]:
-        """Class of each unit where two classes are compared and no unit has both, else 0."""
+        """Class of each unit where two classes are compared and no unit has both, else 0.
+
+        Raises `EvalError` where one of them has a single unit.
+        """
         of_unit = np.zeros(self.n_units, dtype=np.intp)
         if self.chosen.reads == "numbers_by_class":
             of_unit[self.units] = self.second.astype(np.intp)
             if np.any(of_unit[self.units] != self.second):
                 of_unit[:] = 0
+        if np.bincount(of_unit).min() < 2:
+            raise EvalError(
+                f"{self.chosen.title} needs at least two units (of each class, where classes are "
+                "compared): from one alone nothing is known about how units vary."
+            )
         return of_unit
 
     def shrink(self) -> float:
@@ -259,6 +257,16 @@ def _check_values(sample: _Sample) -> None:
                 f"{chosen.title} needs at least {chosen.least} cases with a value{where}; "
                 f"got {cases}."
             )
+
+
+def _check_rounds(rounds: int, level: float) -> None:
+    if not 0 < level < 1:
+        raise EvalError(f"`level` must be between 0 and 1, both excluded; got {level}.")
+    least = math.ceil(2 / (1 - level) - 1 - 1e-9)
+    if rounds < least:
+        raise EvalError(
+            f"`rounds` must be at least {least} for an interval at level {level:g}; got {rounds}."
+        )
 
 
 def _bags(

@@ -61,8 +61,7 @@ def standard_deviation(first: Floats, second: Floats, counts: Floats, share: flo
 def quantile(first: Floats, second: Floats, counts: Floats, share: float) -> Floats:
     """Quantile at `share`, interpolated between neighbours (Hyndman & Fan 1996, type 7).
 
-    At rank (n - 1) `share` from the lowest, which has rank 0; nan without a case. The median is
-    the quantile at 0.5: the middle value, or halfway between the two middle ones.
+    At rank (n - 1) `share` from the lowest, which has rank 0; nan without a case.
     """
     order = np.argsort(first, kind="stable")
     ordered, reached = first[order], counts[:, order].cumsum(axis=1)
@@ -78,6 +77,11 @@ def quantile(first: Floats, second: Floats, counts: Floats, share: float) -> Flo
     low = at(below)
     value = low + (rank - below) * (at(above) - low)
     return np.asarray(np.where(n > 0, value, np.nan), dtype=np.float64)
+
+
+def median(first: Floats, second: Floats, counts: Floats, share: float) -> Floats:
+    """The middle value, or halfway between the two middle ones; nan without a case."""
+    return quantile(first, second, counts, 0.5)
 
 
 def correlation(first: Floats, second: Floats, counts: Floats, share: float) -> Floats:
@@ -116,7 +120,7 @@ STATISTICS: dict[str, Statistic] = {
     statistic.key: statistic
     for statistic in (
         Statistic("mean", "Mean", "numbers", 2, mean),
-        Statistic("median", "Median", "numbers", 2, quantile),
+        Statistic("median", "Median", "numbers", 2, median),
         Statistic("sd", "Standard deviation", "numbers", 3, standard_deviation),
         Statistic("quantile", "Quantile", "numbers", 2, quantile),
         Statistic("proportion", "Proportion", "yes_no", 2, mean),

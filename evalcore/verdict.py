@@ -7,7 +7,8 @@ from typing import Literal
 import numpy as np
 
 from evalcore.evaluation import Evaluation
-from evalcore.figures import Interval
+from evalcore.figures import Estimate, Interval
+from evalcore.intervals import with_model_variance
 from evalcore.judged import Judged, balanced_interval, offers_interval, share_interval
 from evalcore.plan import Limit
 from evalcore.sample_size import lower_bound, upper_bound
@@ -79,18 +80,41 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
         n = int(table.class_counts("unit").min())
     else:
         k = table.classes.index(limit.of_class) if limit.of_class else None
-        bounds = share_interval(level, part, k) if offers_interval(part) else _NOTHING
         n = _units_behind(evaluation, part, k)
+        rate = _rate(evaluation, estimate)
+        bounds = _bounds(level, part, k, rate) if offers_interval(part) else _NOTHING
         # exact bounds take whole units: rounded down for the lower, up for the upper
-        right = estimate.value * n
+        right = rate * n
         at_least = min(
             bounds.low, lower_bound(math.floor(right + 1e-9), n, confidence=limit.confidence)
         )
-        at_most = max(
-            bounds.high, upper_bound(math.ceil(right - 1e-9), n, confidence=limit.confidence)
-        )
+        most_right = math.ceil(estimate.value * n - 1e-9)
+        at_most = max(bounds.high, upper_bound(most_right, n, confidence=limit.confidence))
     word = judge(estimate.value, at_least, at_most, limit=limit.least, n=n)
     return Verdict(limit, word, estimate.value, at_least, at_most, n)
+
+
+def _rate(evaluation: Evaluation, estimate: Estimate) -> float:
+    """The rate a verdict starts from: corrected for the luck of being best of several."""
+    corrected = evaluation.corrected(estimate.measure, estimate.of_class)
+    if corrected is None or math.isnan(corrected.value):
+        return estimate.value
+    return min(estimate.value, corrected.value)
+
+
+def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> Interval:
+    """The default interval at a rate that may have been corrected downwards."""
+    own = share_interval(level, part, of_class)
+    shares = part.shares if of_class is None else part.shares[part.held.labels == of_class]
+    value = float(np.nanmean(shares))
+    if rate == value or not own.defined:
+        return own
+    if part.units is not None:
+        return Interval(max(0.0, own.low - (value - rate)), own.high, level, own.method)
+    tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
+    at_rate = with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
+    # what falls short must do so by the figure as it is
+    return Interval(at_rate.low, max(own.high, at_rate.high), level, at_rate.method)
 
 
 def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) -> int:

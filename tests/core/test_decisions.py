@@ -2,6 +2,7 @@
 
 import math
 from fractions import Fraction
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -142,7 +143,7 @@ class TestBestCutOff:
         assume(positive.any() and not positive.all())
         found = best_cut_off(positive, score, weights=weight)
         values = sorted(set(score.tolist()))
-        middles = [(a + b) / 2 for a, b in zip(values, values[1:], strict=False)]
+        middles = [(a + b) / 2 for a, b in pairwise(values)]
         indices = {}
         for threshold in (-math.inf, *middles, math.inf):
             called = score >= threshold
@@ -176,6 +177,12 @@ class TestBestCutOff:
             positive[again], score[again]
         )
 
+    def test_a_tie_stays_a_tie_where_rates_round_apart(self):
+        # 2/6 from 2.5 up; from 6.5 up 5/6 - 1/2, in the last digit more
+        assert 5 / 6 - 1 / 2 > 2 / 6
+        found = best_cut_off([0, 0, 1, 0, 0, 0, 0, 1], [1, 2, 3, 4, 5, 6, 7, 7])
+        assert (found.threshold, found.sensitivity, found.specificity) == (2.5, 1, 2 / 6)
+
     def test_scores_that_say_nothing_or_the_opposite(self):
         for score in ([0.4, 0.4, 0.4, 0.4], [0.1, 0.2, 0.8, 0.9]):
             found = best_cut_off([1, 1, 0, 0], score)
@@ -196,10 +203,13 @@ class TestBestCutOff:
         assert found.threshold == pytest.approx(0.4, rel=1e-15)
 
     def test_neighbouring_numbers_are_still_told_apart(self):
+        # half way between them rounds down for some, up for others
         low = 0.3
-        high = math.nextafter(low, 1)
-        found = best_cut_off([0, 1], [low, high])
-        assert (found.threshold, found.youden) == (high, 1)
+        for _ in range(4):
+            high = math.nextafter(low, 1)
+            found = best_cut_off([0, 1], [low, high])
+            assert (found.threshold, found.youden) == (high, 1)
+            low = high
 
     def test_wide_scores_do_not_overflow(self):
         assert best_cut_off([0, 1], [1.5e308, 1.7e308]).threshold == pytest.approx(1.6e308)

@@ -64,7 +64,9 @@ class TestGroups:
         table = table_of([0, 1] * 4, entries={"lot": spelled})
         assert groups_of(table, "lot").names == tuple(sorted(spelled))
 
-    @given(st.lists(st.tuples(st.sampled_from("pqrst"), st.integers(0, 2)), min_size=2, max_size=15))
+    @given(
+        st.lists(st.tuples(st.sampled_from("pqrst"), st.integers(0, 2)), min_size=2, max_size=15)
+    )
     def test_each_case_is_in_the_group_of_its_entry(self, rows):
         labels = [0, 1, *(label for _, label in rows)]
         sites = ["p", "q", *(site for site, _ in rows)]
@@ -149,9 +151,7 @@ class TestOrderOfTime:
         assert found.tolist() == (rankdata(numbers, method="dense") - 1).tolist()
 
     def test_of_units_not_rows(self):
-        table = table_of(
-            [0, 1, 0, 1], units=[0, 1, 0, 2], entries={"day": ["9", "10", "9", "8"]}
-        )
+        table = table_of([0, 1, 0, 1], units=[0, 1, 0, 2], entries={"day": ["9", "10", "9", "8"]})
         assert order_of(table, "day").tolist() == [1, 2, 0]
 
     @pytest.mark.xfail(reason="one time written in two ways counts as two times")

@@ -144,7 +144,6 @@ class TestChoosing:
         with pytest.raises(PlanError, match=exactly("`stratified` must be yes or no; got 'no'.")):
             choose(SCHEMES, "bootstrap", stratified="no")
 
-
     def test_a_column_is_named_by_text(self):
         refused(
             "`column` must be the name of a column; got 3.",

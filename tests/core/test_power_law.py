@@ -207,6 +207,11 @@ class TestCurve:
         # (0.8/0.01)^(1/0.6) = 1485.7
         assert LAW.n_for(0.06, beyond=True) == 1486
 
+    @pytest.mark.parametrize("c", [0.25, 0.35, 0.5, 1.0, 2.0])
+    def test_n_for_gives_back_the_size_of_an_error(self, c):
+        law = PowerLaw(0.25, 0.9, c, 1, 400, 0.0)
+        assert [law.n_for(law.predict(n)) for n in range(1, 400)] == list(range(1, 400))
+
     @pytest.mark.parametrize("target", [0.04, 0.05, 0.0, np.nan, 0.05 + 1e-9])
     def test_never(self, target):
         assert LAW.n_for(target) is None

@@ -43,7 +43,7 @@ def a_plan(**changes) -> Plan:
             choose(SCHEMES, "cross_validation", folds=4, repeats=5),
             choose(SCHEMES, "bootstrap", rounds=12),
         ),
-        (choose(CANDIDATES, "majority"), choose(CANDIDATES, "forest", trees=5)),
+        (choose(CANDIDATES, "majority"), choose(CANDIDATES, "forest", trees=3)),
     )
     return dataclasses.replace(plan, **changes)
 
@@ -339,7 +339,7 @@ class TestFailures:
             a_plan(
                 candidates=(
                     choose(CANDIDATES, "naive_bayes"),
-                    choose(CANDIDATES, "forest", trees=5),
+                    choose(CANDIDATES, "forest", trees=3),
                 ),
                 schemes=(choose(SCHEMES, "cross_validation", folds=5, repeats=3),),
             ),

@@ -125,6 +125,10 @@ class TestCasesToShow:
         # 0.1^n <= 1 - 0.9 at n = 1, 0.5^4 = 1 - 0.9375
         assert cases_to_show(0.1, confidence=0.9) == 1
         assert cases_to_show(0.5, confidence=0.9375) == 4
+        # 1 - 0.8^4 = 369/625, which floats give a hair less
+        assert cases_to_show(0.8, confidence=369 / 625) == 4
+        # P(more than 1 of 2 wrong at 0.9) = 81/100
+        assert cases_to_show(0.1, misses=1, confidence=0.81) == 2
 
     @given(st.floats(0.3, 0.98), st.integers(0, 6), st.floats(0.55, 0.99), st.floats(0.55, 0.99))
     def test_more_asked_takes_more(self, least, misses, confidence, other):
