@@ -8,10 +8,10 @@ from evalcore.figures import Estimate
 from evalcore.measures import MEASURES
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
-from evalcore.sample_size import cases_to_show, upper_bound
+from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
 from evalcore.schemes import LEAST_BLOCKS
 from evalcore.table import Table
-from evalcore.verdict import LEAST_UNITS, Verdict, verdicts
+from evalcore.verdict import Verdict, verdicts
 from evalcore.wording import (
     NBSP,
     capitalised,

@@ -4,9 +4,15 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
+from evalcore.errors import PlanError
+from evalcore.measures import Floats
+from evalcore.nearest import NearestNeighbours
 from evalcore.preparation import preparation
 from evalcore.settings import Setting, Settings
 from evalcore.table import Table
+from evalcore.wording import listed, quoted
 
 
 @dataclass(frozen=True)
@@ -32,6 +38,8 @@ class Candidate:
         time left before anything was measured.
     neighbours : bool
         Whether its `k` must not exceed the cases of a bag.
+    fixed : callable or None
+        For answers that stand in the table already: table and settings to scores (n, K).
     """
 
     key: str
@@ -44,6 +52,7 @@ class Candidate:
     offered_on: bool = False
     cost: tuple[float, float] = (0.008, 2e-6)
     neighbours: bool = False
+    fixed: Callable[[Table, Settings], Floats] | None = None
 
 
 def estimator(candidate: Candidate, settings: Settings, table: Table, random_state: int) -> Any:
@@ -94,9 +103,42 @@ def _naive_bayes(_: Settings, __: int) -> Any:
 
 
 def _nearest_neighbours(settings: Settings, _: int) -> Any:
-    from sklearn.neighbors import KNeighborsClassifier
+    return NearestNeighbours(int(settings["k"]))
 
-    return KNeighborsClassifier(int(settings["k"]), algorithm="brute")
+
+def _one_feature(_: Settings, random_state: int) -> Any:
+    from sklearn.tree import DecisionTreeClassifier
+
+    return DecisionTreeClassifier(max_depth=1, random_state=random_state)
+
+
+def _no_model(_: Settings, __: int) -> Any:
+    raise PlanError("Answers that stand in the table are not fitted.")
+
+
+def standing_answers(table: Table, settings: Settings) -> Floats:
+    """Somebody's own answers, from a column: 1 for the class named, shape (n, K).
+
+    Raises
+    ------
+    PlanError
+        No such column, or an entry that is none of the classes.
+    """
+    column = str(settings["column"])
+    if not column:
+        raise PlanError("`column` must name the column that holds somebody's answers; it is empty.")
+    entries = table.entries_of(column)
+    place = {name: at for at, name in enumerate(table.classes)}
+    odd = sorted(set(entries) - set(place))
+    if odd:
+        raise PlanError(
+            f"The column {quoted(column)} holds {quoted(odd[0])}, which is none of the classes "
+            f"{listed([quoted(name) for name in table.classes])}; it must name a class in every "
+            "row."
+        )
+    answers: Floats = np.zeros((table.n_cases, table.n_classes))
+    answers[np.arange(table.n_cases), [place[entry] for entry in entries]] = 1.0
+    return answers
 
 
 def _tree(_: Settings, random_state: int) -> Any:
@@ -179,6 +221,24 @@ CANDIDATES: dict[str, Candidate] = {
             offered_on=True,
             cost=(0.009, 2e-5),
             neighbours=True,
+        ),
+        Candidate(
+            "one_feature",
+            "best single split (one feature)",
+            (),
+            _one_feature,
+            _no,
+            _called("one-feature rule"),
+        ),
+        Candidate(
+            "present_practice",
+            "present practice (answers in a column)",
+            (Setting("column", "Column with the answers", "column", ""),),
+            _no_model,
+            _no,
+            _called("present practice"),
+            cost=(0.0, 0.0),
+            fixed=standing_answers,
         ),
         Candidate("tree", "decision tree", (), _tree, _no, _called("decision tree")),
         Candidate(

@@ -28,8 +28,8 @@ def _within(name: str, value: ArrayLike, *, below_one: bool = False) -> Floats:
 def likelihood_ratios(sensitivity: ArrayLike, specificity: ArrayLike) -> tuple[Floats, Floats]:
     """How many times likelier an answer is for the class than for the others.
 
-    Positive: sensitivity / (1 - specificity); negative: (1 - sensitivity) / specificity (Altman
-    & Bland 1994). They do not depend on the class shares; the odds of the class before an answer
+    Positive: sensitivity / (1 - specificity); negative: (1 - sensitivity) / specificity (Deeks &
+    Altman 2004). They do not depend on the class shares; the odds of the class before an answer
     times the ratio are the odds after it.
 
     Parameters

@@ -160,6 +160,10 @@ def plain_scores(
         Probabilities, or decision values where the candidate has no probabilities. A class the
         bag lacks has probability 0, or a decision value below all others.
     """
+    fixed = CANDIDATES[choice.key].fixed
+    if fixed is not None:
+        answers = fixed(table, choice.values())
+        return np.broadcast_to(answers, (len(counts), *answers.shape))
     scores = np.zeros((len(counts), table.n_cases, table.n_classes))
     for r, (bag, state) in enumerate(zip(counts, random_states, strict=True)):
         scores[r] = _round_scores(choice, table, np.repeat(np.arange(table.n_cases), bag), state)

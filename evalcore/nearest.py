@@ -212,8 +212,6 @@ class NearestNeighbours:
     k : int
     """
 
-    _estimator_type = "classifier"
-
     def __init__(self, k: int) -> None:
         self.k = k
 
@@ -248,3 +246,13 @@ class NearestNeighbours:
         for name, value in params.items():
             setattr(self, name, value)
         return self
+
+    def __sklearn_tags__(self) -> Any:
+        """What a pipeline asks of its last step."""
+        from sklearn.utils import ClassifierTags, Tags, TargetTags
+
+        return Tags(
+            estimator_type="classifier",
+            target_tags=TargetTags(required=True),
+            classifier_tags=ClassifierTags(),
+        )

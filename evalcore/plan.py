@@ -282,6 +282,10 @@ class Plan:
                 SCHEMES[choice.key], table, choice.values(), generator(self.seed, stream)
             )
             self._check_neighbours(drawn[name])
+        for choice in self.candidates:
+            fixed = CANDIDATES[choice.key].fixed
+            if fixed is not None:
+                fixed(table, choice.values())
         return drawn
 
     def _check_neighbours(self, rounds: Rounds) -> None:

@@ -7,6 +7,8 @@ from collections.abc import Iterable, Sequence
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate, Finding
 from evalcore.findings import findings
+from evalcore.other_intervals import of_headline
+from evalcore.per_case import cases
 from evalcore.record import Record, write
 from evalcore.sources import SOURCES
 
@@ -20,13 +22,19 @@ FINDING_COLUMNS = (
 
 
 def write_results(record: Record) -> None:
-    """Write `results.csv` and `findings.csv` into a record."""
+    """Write every figure of a record as CSV files into it."""
     evaluation = record.evaluation()
     if evaluation is None:
         return
-    write(record.folder / "results.csv", results_csv(evaluation).encode())
     found = findings(record.table, record.plan, evaluation)
-    write(record.folder / "findings.csv", findings_csv(found).encode())
+    for name, text in (
+        ("results", results_csv(evaluation)),
+        ("findings", findings_csv(found)),
+        ("comparison", comparison_csv(evaluation)),
+        ("intervals", intervals_csv(evaluation)),
+        ("cases", cases_csv(evaluation)),
+    ):
+        write(record.folder / f"{name}.csv", text.encode())
 
 
 def results_csv(evaluation: Evaluation) -> str:
@@ -48,6 +56,56 @@ def findings_csv(found: Iterable[Finding]) -> str:
                 repr(float(f.threshold)), SOURCES[f.source].citation,
             )
             for f in found
+        ),
+    )  # fmt: skip
+
+
+def comparison_csv(evaluation: Evaluation) -> str:
+    """Candidates compared in pairs on the headline's rounds, one pair a row."""
+    return _csv(
+        (
+            "first", "second", "difference", "low", "high", "level", "interval", "p", "p_adjusted",
+            "call", "only_first_right", "only_second_right", "n",
+        ),
+        (
+            (
+                d.first, d.second, repr(d.value), repr(d.interval.low), repr(d.interval.high),
+                repr(d.interval.level), d.interval.method, repr(d.p), repr(d.p_adjusted), d.call,
+                str(d.only_first), str(d.only_second), str(d.n),
+            )
+            for d in evaluation.differences
+        ),
+    )  # fmt: skip
+
+
+def intervals_csv(evaluation: Evaluation) -> str:
+    """The default interval of each held-out share and published ones beside it."""
+    return _csv(
+        (
+            "candidate", "scheme", "measure", "class", "counted_by", "value", "low", "high",
+            "level", "interval", "n",
+        ),
+        (
+            (
+                e.candidate, e.scheme, e.measure, e.of_class, e.counted_by, repr(float(e.value)),
+                repr(float(bounds.low)), repr(float(bounds.high)), repr(bounds.level),
+                bounds.method, str(e.n),
+            )
+            for e, bounds in of_headline(evaluation)
+        ),
+    )  # fmt: skip
+
+
+def cases_csv(evaluation: Evaluation) -> str:
+    """Every unit under the headline's scheme, those wrong most often first, by candidate."""
+    return _csv(
+        ("candidate", "name", "class", "times_held_out", "share_wrong", "named", "flips"),
+        (
+            (
+                candidate, c.name, c.of_class, str(c.times), repr(c.wrong), c.named, repr(c.flips)
+            )
+            for candidate in evaluation.candidates
+            for c in cases(evaluation, candidate)
         ),
     )  # fmt: skip
 

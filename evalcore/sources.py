@@ -79,6 +79,51 @@ SOURCES: dict[str, Source] = {
         "science, Patterns 4:100804",
         "10.1016/j.patter.2023.100804",
     ),
+    "agresti_coull1998": Source(
+        "Agresti & Coull 1998, Approximate is better than exact for interval estimation of "
+        "binomial proportions, Am. Stat. 52:119-126",
+        "10.1080/00031305.1998.10480550",
+    ),
+    "brown2001": Source(
+        "Brown, Cai & DasGupta 2001, Interval estimation for a binomial proportion, "
+        "Stat. Sci. 16:101-133",
+        "10.1214/ss/1009213286",
+    ),
+    "nadeau_bengio2003": Source(
+        "Nadeau & Bengio 2003, Inference for the generalization error, Mach. Learn. 52:239-281",
+        "10.1023/A:1024068626366",
+    ),
+    "corani_benavoli2015": Source(
+        "Corani & Benavoli 2015, A Bayesian approach for comparing cross-validated algorithms on "
+        "multiple data sets, Mach. Learn. 100:285-304",
+        "10.1007/s10994-015-5486-z",
+    ),
+    "bayle2020": Source(
+        "Bayle et al. 2020, Cross-validation confidence intervals for test error, NeurIPS 33"
+    ),
+    "efron1987": Source(
+        "Efron 1987, Better bootstrap confidence intervals, J. Am. Stat. Assoc. 82:171-185",
+        "10.1080/01621459.1987.10478410",
+    ),
+    "hanley_mcneil1982": Source(
+        "Hanley & McNeil 1982, The meaning and use of the area under a receiver operating "
+        "characteristic (ROC) curve, Radiology 143:29-36",
+        "10.1148/radiology.143.1.7063747",
+    ),
+    "tsamardinos2018": Source(
+        "Tsamardinos, Greasidou & Borboudakis 2018, Bootstrapping the out-of-sample predictions "
+        "for efficient and accurate cross-validation, Mach. Learn. 107:1895-1922",
+        "10.1007/s10994-018-5714-4",
+    ),
+    "holm1979": Source(
+        "Holm 1979, A simple sequentially rejective multiple test procedure, Scand. J. Stat. "
+        "6:65-70",
+    ),
+    "figueroa2012": Source(
+        "Figueroa et al. 2012, Predicting sample size required for classification performance, "
+        "BMC Med. Inform. Decis. Mak. 12:8",
+        "10.1186/1472-6947-12-8",
+    ),
     "own_model_variance": Source(
         "own construction: the model's own variability as a method-of-moments covariance between "
         "cases answered by one model; same idea as Nadeau & Bengio 2003, Mach. Learn. 52:239-281",

@@ -11,11 +11,10 @@ from evalcore.figures import Estimate, Interval
 from evalcore.intervals import with_model_variance
 from evalcore.judged import Judged, balanced_interval, offers_interval, share_interval
 from evalcore.plan import Limit
-from evalcore.sample_size import lower_bound, upper_bound
+from evalcore.sample_size import LEAST_UNITS, lower_bound, upper_bound
 
 Word = Literal["shown", "not shown yet", "shown to fall short"]
 _NOTHING = Interval(math.nan, math.nan, 0.9, "none")
-LEAST_UNITS = 10  # below this nothing is called shown: 9 of 10 right may mean 60 % (exact, 95 %)
 
 
 @dataclass(frozen=True)

@@ -138,7 +138,7 @@ def reading(value: float) -> str:
 
 def level(value: float) -> str:
     """A confidence level, e.g. "95 %"."""
-    return f"{100 * value:g}{NBSP}%"
+    return f"{100 * value:.4g}{NBSP}%"
 
 
 def duration(seconds: float) -> str:
