@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
-from evalcore.measures import MEASURES
+from evalcore.measures import ALL_MEASURES, MEASURES
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
 from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
@@ -25,6 +25,10 @@ from evalcore.wording import (
     with_interval,
 )
 
+LOSS_NAMES = {
+    "brier": "squared distance of probabilities (Brier score, sum over classes)",
+    "log_loss": "log loss",
+}
 CAUTION = (
     "Where a wrong answer can hurt someone, these figures support local rules and licensed "
     "practice and do not replace them."
@@ -54,9 +58,17 @@ def class_rate(table: Table, plan: Plan, name: str, *, trade: bool = True) -> st
 
 def measure_name(table: Table, plan: Plan, measure: str, of_class: str = "") -> str:
     """A measure said plainly, with the trade's name in brackets."""
-    if of_class:
+    if of_class and measure == "sensitivity":
         return class_rate(table, plan, of_class)
-    known = MEASURES[measure]
+    if of_class:
+        return f"{class_name(of_class)}: {_plainly(table, plan, measure)}"
+    return _plainly(table, plan, measure)
+
+
+def _plainly(table: Table, plan: Plan, measure: str) -> str:
+    if measure not in ALL_MEASURES:
+        return LOSS_NAMES[measure]
+    known = ALL_MEASURES[measure]
     units = table.noun_for(plan.counted_by(table)).plural
     return f"{known.plain.format(units=units)} ({known.trade})"
 

@@ -38,6 +38,8 @@ class Candidate:
         time left before anything was measured.
     neighbours : bool
         Whether its `k` must not exceed the cases of a bag.
+    probabilities : bool
+        Whether scores are probabilities, not decision values.
     fixed : callable or None
         For answers that stand in the table already: table and settings to scores (n, K).
     """
@@ -52,6 +54,7 @@ class Candidate:
     offered_on: bool = False
     cost: tuple[float, float] = (0.008, 2e-6)
     neighbours: bool = False
+    probabilities: bool = True
     fixed: Callable[[Table, Settings], Floats] | None = None
 
 
@@ -259,6 +262,7 @@ CANDIDATES: dict[str, Candidate] = {
             _yes,
             _called("support vectors"),
             cost=(0.01, 2e-5),
+            probabilities=False,
         ),
         Candidate(
             "boosting",

@@ -23,6 +23,7 @@ from evalcore.judged import (
 )
 from evalcore.measures import ALL_MEASURES
 from evalcore.plan import Plan
+from evalcore.probabilities import brier, log_loss
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.table import Table
@@ -40,6 +41,7 @@ ESTIMATORS: dict[str, str] = {
     "out_of_bag_or_632_plus": "out-of-bag where it memorises, else .632+",
     WINNER: "of the best, once the luck of being best is taken off",
 }
+LOSSES = {"brier": brier, "log_loss": log_loss}
 # measures that in-bag and out-of-bag values may be weighed for
 WEIGHTED = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
 
@@ -203,6 +205,7 @@ def evaluate(
                 )
             )
     figures = [e for part in judged for e in _estimates(table, plan, part, judged)]
+    figures += [e for part in judged for e in _losses(table, plan, part)]
     for scheme in rounds:
         for way in ways:
             alike = [p for p in judged if (p.scheme, p.counted_by) == (scheme, way)]
@@ -234,6 +237,39 @@ def _estimates(
                     part.held.rounds.n_rounds,
                     undefined,
                 )
+
+
+def _losses(table: Table, plan: Plan, part: Judged) -> Iterator[Estimate]:
+    """Held-out Brier score (sum over classes, 0 to 2) and log loss; low is good.
+
+    Of candidates with probabilities only, and of single rows or cases as of units.
+    """
+    if not CANDIDATES[plan.candidate(part.candidate).key].probabilities:
+        return
+    held = part.held
+    round_at, case_at = held.rounds.pairs
+    weights = 1 / held.rounds.times_tested[case_at]
+    for name, loss in LOSSES.items():
+        by_case = float(loss(held.true, held.scores, weights=weights)[0])
+        of_rounds = loss(held.true, held.scores, groups=round_at, n_groups=held.rounds.n_rounds)
+        mean, undefined = estimates.mean_of_rounds(of_rounds)
+        for estimator, value, lacking in (
+            ("held_out_by_case", by_case, 0),
+            ("mean_of_rounds", mean, undefined),
+        ):
+            yield Estimate(
+                value,
+                None,
+                name,
+                part.candidate,
+                part.scheme,
+                estimator,
+                "",
+                part.counted_by,
+                _n_behind(part, None),
+                held.rounds.n_rounds,
+                lacking,
+            )
 
 
 def _n_behind(part: Judged, of_class: int | None) -> int:

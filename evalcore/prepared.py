@@ -6,6 +6,7 @@ The result is what `preparation` gives fold by fold with scikit-learn's classes.
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -90,8 +91,9 @@ def prepare(table: Table, counts: Counts, *, scaled: bool) -> Prepared:
     """
     bags = counts.astype(np.float64)
     numbers = [at for at, column in enumerate(table.columns) if column.kind == "number"]
-    number = _filled(table.features[:, numbers], bags)
-    if scaled:
+    columns = [table.columns[at] for at in numbers]
+    number = _filled(columns, table.features[:, numbers], counts)
+    if scaled and numbers:
         number = _standardised(number, bags)
     texts = [_encoded(column, bags) for column in table.columns if column.kind == "text"]
     parts = [number, *(features for features, _ in texts)]
@@ -118,27 +120,35 @@ def _side_by_side(parts: list[Floats], n_rounds: int) -> tuple[Floats, bool]:
     return np.concatenate(spread, axis=2), False
 
 
-def _filled(values: Floats, bags: Floats) -> Floats:
+def _filled(columns: list[Column], values: Floats, counts: Counts) -> Floats:
     """Numbers with each bag's medians in place of missing ones; (n, p) if none is missing."""
     missing = np.isnan(values)
     if not missing.any():
         return values
-    filled = np.repeat(values[None], len(bags), axis=0)
+    filled = np.repeat(values[None], len(counts), axis=0)
     for at in np.flatnonzero(missing.any(axis=0)):
-        filled[:, missing[:, at], at] = _medians(values[:, at], bags)[:, None]
+        filled[:, missing[:, at], at] = _medians(columns[at], counts)[:, None]
     return filled
 
 
-def _medians(values: Floats, bags: Floats) -> Floats:
+@lru_cache(maxsize=256)
+def _ascending(column: Column) -> NDArray[np.intp]:
+    """Cases that have a value, lowest first; kept, because every block of rounds needs it."""
+    return np.argsort(column.values)[: len(column.values) - column.missing]
+
+
+def _medians(column: Column, counts: Counts) -> Floats:
     """Median of each bag's values, missing ones aside, shape (R,); 0 for a bag that has none."""
-    order = np.argsort(values, kind="stable")[: np.count_nonzero(~np.isnan(values))]
+    order = _ascending(column)
     if not len(order):
-        return np.zeros(len(bags))
-    upto = np.cumsum(bags[:, order], axis=1)
+        return np.zeros(len(counts))
+    upto = np.cumsum(counts.take(order, axis=1), axis=1, dtype=np.int32)
     total = upto[:, -1]
     # the first value whose running count passes a place stands in that place
     places = ((total - 1) // 2, total // 2)
-    low, high = (values[order[(upto > place[:, None]).argmax(axis=1)]] for place in places)
+    low, high = (
+        column.values[order[(upto > place[:, None]).argmax(axis=1)]] for place in places
+    )
     return np.where(total > 0, (low + high) / 2, 0.0)
 
 

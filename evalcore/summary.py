@@ -169,6 +169,7 @@ def flow(evaluation: Evaluation) -> tuple[tuple[str, str], ...]:
     return tuple(lines)
 
 
+PLAIN_NUMBERS = ("auc", "kappa", "matthews", "brier", "log_loss")
 ESTIMATE_HEADER = (
     "candidate", "scheme", "estimator", "measure", "value", "interval", "method", "n",
 )  # fmt: skip
@@ -192,7 +193,7 @@ def estimate_rows(evaluation: Evaluation, *, every: bool = False) -> list[tuple[
 def _estimate_row(evaluation: Evaluation, e: Estimate) -> tuple[str, ...]:
     table, plan = evaluation.table, evaluation.plan
     shown = e.interval if e.interval and e.interval.defined else None
-    as_auc = e.measure == "auc"
+    as_auc = e.measure in PLAIN_NUMBERS
     value = decimal(e.value) if as_auc else percent(e.value, e.n)
     bounds = (
         (f"{decimal(shown.low)} to {decimal(shown.high)}" if as_auc else interval_text(shown, e.n))

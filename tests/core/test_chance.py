@@ -66,9 +66,7 @@ class TestMajority:
     @pytest.mark.parametrize("case", cases("07", "nir"))
     def test_check_cases(self, case):
         given_ = case["inputs"]
-        found = majority_test(
-            given_["correct"], given_["n"], largest_class=given_["largest_class"]
-        )
+        found = majority_test(given_["correct"], given_["n"], largest_class=given_["largest_class"])
         figures = {"accuracy": found.accuracy, "nir": found.majority_share, "p": found.p}
         assert figures == pytest.approx(case["expected"], rel=0, abs=case["tolerance"])
         for name, value in case.get("published", {}).items():
@@ -78,9 +76,7 @@ class TestMajority:
     def test_counted_out_and_against_scipy(self, n, data):
         right, largest = data.draw(st.integers(0, n)), data.draw(st.integers(0, n))
         share = Fraction(largest, n)
-        tail = sum(
-            math.comb(n, k) * share**k * (1 - share) ** (n - k) for k in range(right, n + 1)
-        )
+        tail = sum(math.comb(n, k) * share**k * (1 - share) ** (n - k) for k in range(right, n + 1))
         found = majority_test(right, n, largest_class=largest).p
         assert found == pytest.approx(float(tail), rel=1e-11)
         theirs = stats.binomtest(right, n, largest / n, alternative="greater").pvalue

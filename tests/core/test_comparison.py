@@ -45,18 +45,22 @@ def unstable(rounds: Rounds, seed: int) -> np.ndarray:
     return rng.random(len(quality)) < quality
 
 
-def by_definition(a, b, rounds: Rounds, units=None) -> tuple[np.ndarray, float]:
-    """Each case's mean difference, and tau2 as a sum over pairs of cases in a round."""
+def by_definition(a, b, rounds: Rounds, units=None) -> tuple[np.ndarray, float, float]:
+    """Each case's mean difference; tau2 as a sum over pairs of cases in a round; its error."""
     grid = np.full(rounds.test.shape, np.nan)
     grid[rounds.pairs] = a.astype(float) - b.astype(float)
     d = np.nanmean(grid, axis=0)
-    total, number = 0.0, 0
-    for row in grid - d:
+    sums, numbers = np.zeros(rounds.n_rounds), np.zeros(rounds.n_rounds)
+    for r, row in enumerate(grid - d):
         for i, j in itertools.permutations(np.flatnonzero(~np.isnan(row)), 2):
             if units is None or units[i] != units[j]:
-                total, number = total + row[i] * row[j], number + 1
+                sums[r] += row[i] * row[j]
+                numbers[r] += 1
+    ratio = sums.sum() / numbers.sum()
     k = (~np.isnan(grid)).sum(axis=0).mean()
-    return d, max(0.0, total / number) * k / (k - 1)
+    # a ratio of sums over rounds: its influence in each round, squared and added up
+    influence = (sums - ratio * numbers) / numbers.sum()
+    return d, max(0.0, ratio) * k / (k - 1), math.sqrt((influence**2).sum()) * k / (k - 1)
 
 
 class TestPairedDifference:
@@ -80,9 +84,9 @@ class TestPairedDifference:
     def test_by_definition(self, seed):
         rounds = repeated(seed)
         a, b = unstable(rounds, 10 + seed), unstable(rounds, 20 + seed)
-        d, tau2 = by_definition(a, b, rounds)
-        assert tau2 > 0.001
-        error = math.sqrt(stats.sem(d) ** 2 + tau2)
+        d, tau2, its_error = by_definition(a, b, rounds)
+        assert min(tau2, its_error) > 0.001
+        error = math.sqrt(stats.sem(d) ** 2 + tau2 + its_error)
         found = paired_difference(a, b, rounds)
         assert (found.value, found.standard_error) == pytest.approx((d.mean(), error), rel=1e-12)
         p = 2 * stats.t.sf(abs(d.mean()) / error, len(d) - 1)
@@ -92,7 +96,7 @@ class TestPairedDifference:
 
     def test_by_hand(self):
         # folds {1, 2}, {3, 4} twice; the first right in folds 1 and 4, the second never:
-        # every case differs by 1/2, and tau2 = 1/2 (see test_model_variance)
+        # every case differs by 1/2, tau2 = 1/2 (see test_model_variance), in each round alike
         out = np.array([[1, 1, 0, 0], [0, 0, 1, 1]] * 2, dtype=np.uint8)
         rounds = Rounds(1 - out, out, np.array([0, 0, 1, 1]))
         found = paired_difference([1, 1, 0, 0, 0, 0, 1, 1], [0] * 8, rounds)
@@ -100,7 +104,9 @@ class TestPairedDifference:
         assert found.standard_error == pytest.approx(math.sqrt(1 / 2), rel=1e-15)
         # Student's t on 3 degrees of freedom in closed form
         u = math.sqrt(1 / 2) / math.sqrt(3)
-        assert found.p == pytest.approx(1 - 2 / math.pi * (math.atan(u) + u / (1 + u * u)), rel=1e-12)
+        assert found.p == pytest.approx(
+            1 - 2 / math.pi * (math.atan(u) + u / (1 + u * u)), rel=1e-12
+        )
         assert (found.only_first, found.only_second, found.left_out) == (2, 0, 0)
 
     @pytest.mark.parametrize("seed", range(4))
@@ -108,9 +114,9 @@ class TestPairedDifference:
         units = np.array([0, 0, 0, 1, 1, 2, 3, 3, 3, 3, 4, 5, 5, 6])
         rounds = repeated(seed, n=7).of_cases(units)
         a, b = unstable(rounds, 30 + seed), unstable(rounds, 40 + seed)
-        d, tau2 = by_definition(a, b, rounds, units)
+        d, tau2, its_error = by_definition(a, b, rounds, units)
         fit = sm.OLS(d, np.ones(14)).fit(cov_type="cluster", cov_kwds={"groups": units})
-        variance = max(fit.cov_params()[0, 0], stats.sem(d) ** 2) + tau2
+        variance = max(fit.cov_params()[0, 0], stats.sem(d) ** 2) + tau2 + its_error
         found = paired_difference(a, b, rounds, units=units)
         assert found.standard_error == pytest.approx(math.sqrt(variance), rel=1e-12)
         assert (found.df, found.n) == (6, 14)
@@ -118,7 +124,9 @@ class TestPairedDifference:
     def test_each_case_its_own_unit_changes_nothing(self):
         rounds = repeated(3)
         a, b = unstable(rounds, 1), unstable(rounds, 2)
-        assert paired_difference(a, b, rounds, units=np.arange(15)) == paired_difference(a, b, rounds)
+        assert paired_difference(a, b, rounds, units=np.arange(15)) == paired_difference(
+            a, b, rounds
+        )
 
     @given(st.integers(0, 10_000))
     def test_order_of_candidates(self, seed):
@@ -166,7 +174,9 @@ class TestPairedDifference:
         assert found.value == pytest.approx(3 / 8, rel=1e-15)
 
     def test_what_does_not_fit(self):
-        message = "Both candidates need one answer for each of the 4 held-out cases; got (4,) and (3,)."
+        message = (
+            "Both candidates need one answer for each of the 4 held-out cases; got (4,) and (3,)."
+        )
         with pytest.raises(ValueError, match=exactly(message)):
             paired_difference([1, 0, 1, 1], [1, 0, 1], once(4))
 
@@ -180,7 +190,9 @@ class TestWithoutSpread:
         found = paired_difference([1] * n, [0] * n, rounds)
         assert found.p == pytest.approx(stats.binomtest(n, n).pvalue, rel=1e-12)
         low = proportion_confint(n, n, method="beta")[0]
-        assert (found.interval.low, found.interval.high) == pytest.approx((2 * low - 1, 1), rel=1e-12)
+        assert (found.interval.low, found.interval.high) == pytest.approx(
+            (2 * low - 1, 1), rel=1e-12
+        )
 
     @pytest.mark.parametrize("n", [2, 6, 40])
     def test_no_difference_at_all(self, n):
@@ -195,7 +207,9 @@ class TestWithoutSpread:
         rounds = Rounds(1 - out, out, np.array([0, 0, 1, 1]))
         found = paired_difference([1, 1, 0, 0], [0, 0, 0, 0], rounds, level=0.5)
         # u = 1 - sqrt(1/4) = 1/2: from 1/2 - 1/2 x 3/2 to 1/2 + 1/2 x 1/2; p = 2 (2/3)^2
-        assert (found.interval.low, found.interval.high) == pytest.approx((-1 / 4, 3 / 4), rel=1e-12)
+        assert (found.interval.low, found.interval.high) == pytest.approx(
+            (-1 / 4, 3 / 4), rel=1e-12
+        )
         assert found.p == pytest.approx(8 / 9, rel=1e-12)
 
     def test_a_single_unit_says_nothing(self):
@@ -268,9 +282,7 @@ class TestCompare:
         rounds = repeated(seed, n=40, folds=4)
         rng = np.random.default_rng(seed)
         names = list("abcdefgh")[:n_candidates]
-        correct = {
-            name: rng.random(len(rounds.pairs[0])) < rng.uniform(0.5, 0.8) for name in names
-        }
+        correct = {name: rng.random(len(rounds.pairs[0])) < rng.uniform(0.5, 0.8) for name in names}
         return compare(names, correct, rounds, **kind), correct, rounds
 
     @pytest.mark.parametrize("seed", range(20))
@@ -284,8 +296,10 @@ class TestCompare:
         for d, one, no_chance in zip(found, alone, rejected, strict=True):
             assert (d.interval.low > 0 or d.interval.high < 0) == no_chance
             assert (d.call in ("better", "worse")) == no_chance
-            assert d.value == one.value == pytest.approx(
-                np.mean(correct[d.first]) - np.mean(correct[d.second]), abs=1e-12
+            assert (
+                d.value
+                == one.value
+                == pytest.approx(np.mean(correct[d.first]) - np.mean(correct[d.second]), abs=1e-12)
             )
             # the end towards 0 is that of the difference alone, at the level shown
             plain = one.at(d.interval.level)
@@ -356,12 +370,19 @@ class TestCompare:
         assert call(slight.interval.low, slight.interval.high, delta=0.0127) == "practically equal"
         assert slight.call == "worse"
         # with a limit that the interval for all at once keeps, it is
-        assert compare(names, correct, rounds, about="base", delta=0.0145)[1].call == "practically equal"
+        assert (
+            compare(names, correct, rounds, about="base", delta=0.0145)[1].call
+            == "practically equal"
+        )
 
     def test_undefined_pairs_do_not_count(self):
         rounds = Rounds.of_bags([[0, 1, 1], [0, 2, 1]])
         found = compare(["a", "b"], {"a": [1, 1], "b": [0, 1]}, rounds)
-        assert (found[0].call, found[0].n, math.isnan(found[0].p_adjusted)) == ("cannot tell", 1, True)
+        assert (found[0].call, found[0].n, math.isnan(found[0].p_adjusted)) == (
+            "cannot tell",
+            1,
+            True,
+        )
 
     @pytest.mark.parametrize("names", [[], ["base"]])
     def test_nothing_to_compare(self, names):
@@ -370,5 +391,7 @@ class TestCompare:
 
     def test_unknown_candidate(self):
         names, correct, rounds = with_differences(10, other=(1, 0))
-        with pytest.raises(ValueError, match=exactly("`about` must be one of base, other; got 'x'.")):
+        with pytest.raises(
+            ValueError, match=exactly("`about` must be one of base, other; got 'x'.")
+        ):
             compare(names, correct, rounds, about="x")

@@ -105,7 +105,7 @@ class TestChoosing:
                 CANDIDATES,
                 "perceptron:C=1",
                 "There is no 'perceptron'; choose majority, logistic, lda, naive_bayes, "
-                "nearest_neighbours, tree, forest, svm or boosting.",
+                "nearest_neighbours, one_feature, present_practice, tree, forest, svm or boosting.",
             ),
             (
                 SCHEMES,

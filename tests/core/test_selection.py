@@ -247,10 +247,10 @@ class TestExpectedBest:
         assert values[0] == pytest.approx(0.7, rel=1e-12)
         assert values == sorted(values)
 
-    @pytest.mark.parametrize(("c", "n", "p"), [(0, 5, 0.5), (2, 0, 0.5), (2, 5, 1.2), (2, 5, math.nan)])
+    @pytest.mark.parametrize(
+        ("c", "n", "p"), [(0, 5, 0.5), (2, 0, 0.5), (2, 5, 1.2), (2, 5, math.nan)]
+    )
     def test_out_of_bounds(self, c, n, p):
-        message = (
-            f"`candidates` and `n` must be 1 or more and `chance` between 0 and 1; got {c}, {n} and {p}."
-        )
+        message = f"`candidates` and `n` must be 1 or more and `chance` between 0 and 1; got {c}, {n} and {p}."
         with pytest.raises(ValueError, match=exactly(message)):
             expected_best(c, n, chance=p)
