@@ -161,6 +161,22 @@ def _by_class(evaluation: Evaluation, candidate: str) -> list[str]:
     return [f"{class_rate(table, plan, e.of_class, trade=False)} {_figure(e)}" for e in given]
 
 
+def best_sentence(evaluation: Evaluation) -> str:
+    """Who came out best, and what that is worth without luck; empty with one candidate."""
+    best = evaluation.winner
+    if best is None or math.isnan(best.value):
+        return ""
+    table, plan = evaluation.table, evaluation.plan
+    selected = evaluation.estimate(best.measure, best.candidate)
+    tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
+    name = measure_name(table, plan, best.measure)
+    return (
+        f"Of {tried} candidates {plan.title(best.candidate)} came out best by the {name}: "
+        f"{percent(selected.value, best.n)}, {percent(best.value, best.n)} once the luck of being "
+        "best is taken off. Verdicts start from the corrected rate."
+    )
+
+
 def title(evaluation: Evaluation) -> str:
     """The answer in a few words: the verdicts, or about how many of ten are right."""
     given = verdicts(evaluation, evaluation.about)

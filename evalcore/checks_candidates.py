@@ -26,6 +26,7 @@ from evalcore.wording import (
 OVERFITTING, GAP = 0.3, 0.15
 WIDTH = 0.20
 APART = 0.03
+LUCK, MANY, MANY_UNITS = 0.02, 10, 200
 
 
 def failed(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -268,6 +269,34 @@ def schemes_disagree(_: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
                 APART,
                 "common_practice",
             )
+
+
+def best_of_several(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The best of several candidates is partly the luckiest."""
+    best = evaluation.winner if evaluation else None
+    if evaluation is None or best is None or math.isnan(best.value):
+        return
+    selected = evaluation.estimate(best.measure, best.candidate)
+    luck = selected.value - best.value
+    tried = len(_learned(evaluation))
+    if not (luck > LUCK or (tried > MANY and table.n_units < MANY_UNITS)):
+        return
+    n = best.n
+    yield Finding(
+        "best_of_several",
+        "moderate",
+        best.candidate,
+        f"{capitalised(plan.title(best.candidate))} came out best of {tried}: "
+        f"{percent(selected.value, n)}, {percent(best.value, n)} once the luck of being best is "
+        "taken off",
+        f"Choosing the best of {tried} on these cases flatters it by "
+        f"{points(luck, signed=False)}; thresholds: {points(LUCK, signed=False)}, or more than "
+        f"{MANY} candidates on fewer than {MANY_UNITS} cases.",
+        "Quote the corrected figure, and try fewer candidates.",
+        luck,
+        LUCK,
+        "tsamardinos2018",
+    )
 
 
 def _learned(evaluation: Evaluation) -> list[str]:

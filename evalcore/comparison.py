@@ -94,13 +94,15 @@ def compare(
     m comparisons, alpha = 1 - level. p-values are adjusted by Holm (1979). A comparison that Holm
     rejects at step k of the sorted p-values shows its interval at 1 - alpha/(m - k + 1), any
     other at 1 - alpha/m, so that an interval excludes 0 exactly where its adjusted p is below
-    alpha. *Better* and *worse* follow from that: at most alpha of families call one of equals so.
+    alpha. *Better* and *worse* follow from that: at most alpha of families call one of equals
+    so, as far as the single p-values keep their word (see `paired_difference`).
 
     *Practically equal* is always read off at 1 - alpha/m (Holm's order proves nothing about it:
     a pair it has rejected may still be called equal), so at most alpha/2 of families call a pair
     equal that is delta or more apart. And no interval's far end lies nearer than G units allow:
     if none of them showed a difference, a share u of future ones still may (see
-    `PairedDifference.at`). With fewer than about 180 units nothing is called equal within 0.02.
+    `PairedDifference.at`). Within 0.02, fewer than 183 units are never enough for one comparison at
+    95 %, and more comparisons take more.
 
     Parameters
     ----------

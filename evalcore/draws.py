@@ -17,11 +17,18 @@ def split(held_out: NDArray[np.bool_], repeat: NDArray[np.intp]) -> Rounds:
 
 
 def strata_of(groups: Groups, settings: Settings) -> list[NDArray[np.intp]]:
-    """Groups by their most frequent class where stratified, else all in one."""
+    """Groups by their most frequent class where stratified, else all in one.
+
+    A group that is alone of its class would never be held out, so it joins the smallest other
+    stratum.
+    """
     if not settings.get("stratified", False):
         return [np.arange(groups.number)]
     strata = [np.flatnonzero(groups.labels == k) for k in range(groups.counts.shape[1])]
-    return [stratum for stratum in strata if len(stratum)]
+    filled = sorted((stratum for stratum in strata if len(stratum)), key=len)
+    while len(filled) > 1 and len(filled[0]) == 1:
+        filled = sorted([np.sort(np.concatenate(filled[:2])), *filled[2:]], key=len)
+    return sorted(filled, key=lambda stratum: int(groups.labels[stratum].min()))
 
 
 def held_out_sizes(sizes: NDArray[np.intp], share: float) -> NDArray[np.intp]:
@@ -53,7 +60,7 @@ def subsample(_: Table, groups: Groups, settings: Settings, *, rng: Draw) -> Rou
 
 
 def folds(_: Table, groups: Groups, settings: Settings, *, rng: Draw) -> Rounds:
-    """Every group in one fold per repeat, each class as even over the folds as groups allow."""
+    """Every group in one fold per repeat, each class about as even as groups allow."""
     n_folds, repeats = int(settings["folds"]), int(settings["repeats"])
     even = settings["stratified"] and not groups.alike
     held_out = np.zeros((repeats, n_folds, groups.number), dtype=bool)
@@ -72,7 +79,8 @@ def _even_folds(counts: NDArray[np.intp], n_folds: int, rng: Draw) -> NDArray[np
     """Fold of each group: large ones first, each to the fold where its classes are scarcest.
 
     What is kept small is the sum over folds and classes of squared class shares; ties go to the
-    fold with the fewest groups, then to the first.
+    fold with the fewest groups, then to the first. Then single groups are moved while that helps.
+    Near the most even folds, but no search through all.
     """
     totals = np.maximum(counts.sum(axis=0), 1)
     shares = counts / totals
@@ -91,6 +99,30 @@ def _even_folds(counts: NDArray[np.intp], n_folds: int, rng: Draw) -> NDArray[np
         fold[group] = open_folds[best]
         filled[fold[group]] += shares[group]
         number[fold[group]] += 1
+    return _moved(fold, shares, filled, number)
+
+
+def _moved(
+    fold: NDArray[np.intp],
+    shares: NDArray[np.float64],
+    filled: NDArray[np.float64],
+    number: NDArray[np.intp],
+) -> NDArray[np.intp]:
+    """Single groups moved to another fold as long as that makes folds more even."""
+    moved = True
+    while moved:
+        moved = False
+        for group, share in enumerate(shares):
+            home = fold[group]
+            if number[home] == 1:
+                continue
+            rise = filled @ share
+            rise[home] -= share @ share
+            to = int(np.round(rise, 12).argmin())
+            if rise[to] < rise[home] - 1e-9:
+                filled[home], filled[to] = filled[home] - share, filled[to] + share
+                number[home], number[to] = number[home] - 1, number[to] + 1
+                fold[group], moved = to, True
     return fold
 
 
@@ -129,7 +161,9 @@ def time_stretches(table: Table, settings: Settings) -> NDArray[np.intp]:
     """Which stretch of time each unit falls in, 0 for the earliest, without gaps."""
     rank = order_of(table, str(settings["column"]))
     parts = int(settings["parts"]) + 1
-    # share of units at or before each unit's time, so that equal times stay together
-    at_or_before = np.searchsorted(np.sort(rank), rank, side="right") / len(rank)
-    wanted = np.ceil(at_or_before * parts - 1e-9).astype(np.intp) - 1
+    # by the middle of the units that share a time, so that equal times stay together and the
+    # first and the last time, one on each side of the half, never end up in one stretch
+    in_order = np.sort(rank)
+    before, reached = (np.searchsorted(in_order, rank, side=side) for side in ("left", "right"))
+    wanted = (before + reached) * parts // (2 * len(rank))
     return np.asarray(np.unique(wanted, return_inverse=True)[1])

@@ -53,6 +53,7 @@ CHECKS: dict[str, Check] = {
             candidates.model_variance_unknown,
         ),
         Check("schemes_disagree", "two schemes are apart", candidates.schemes_disagree),
+        Check("best_of_several", "the best is partly the luckiest", candidates.best_of_several),
         Check("misleading_632", ".632 misleads here", candidates.misleading_632),
         Check("never_held_out", "cases never held out", rounds.never_held_out),
         Check("too_few_rounds", "a redraw would move the estimate", rounds.too_few_rounds),

@@ -1,13 +1,22 @@
 """What is kept together in rounds: units, or coarser groups that a column names."""
 
+import datetime
+import math
+import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from evalcore.errors import PlanError
+from evalcore.intake import MISSING
 from evalcore.table import Table
 from evalcore.wording import quoted
+
+_DATE = re.compile(
+    r"(\d{4})-(\d{1,2})(?:-(\d{1,2})(?:[T ](\d{1,2}):(\d{2})(?::(\d{2}))?)?)?", re.ASCII
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -20,22 +29,20 @@ class Groups:
         Group of each case, 0 to G - 1.
     names : tuple of str, length G
     counts : ndarray of int, shape (G, K)
-        Units of each class in each group.
+        Units of each group that hold a case of each class; one of several classes counts in each.
+    labels : ndarray of int, shape (G,)
+        Most frequent class of each group's units, the first on ties.
     """
 
     of_case: NDArray[np.intp]
     names: tuple[str, ...]
     counts: NDArray[np.intp]
+    labels: NDArray[np.intp]
 
     @property
     def number(self) -> int:
         """Number of groups G."""
         return len(self.names)
-
-    @property
-    def labels(self) -> NDArray[np.intp]:
-        """Most frequent class of each group, the first on ties, shape (G,)."""
-        return np.asarray(self.counts.argmax(axis=1))
 
     @property
     def alike(self) -> bool:
@@ -52,10 +59,15 @@ def groups_of(table: Table, column: str = "") -> Groups:
         No such column, a missing entry, or a unit that is in two groups.
     """
     if not column:
-        counts = np.zeros((table.n_units, table.n_classes), dtype=np.intp)
-        counts[np.arange(table.n_units), table.unit_labels] = 1
-        return Groups(table.units, table.unit_names, counts)
+        return Groups(
+            table.units, table.unit_names, table.units_with_class.astype(np.intp), table.unit_labels
+        )
     entries = table.entries_of(column)
+    for entry, line in zip(entries, table.lines, strict=True):
+        if entry in MISSING:
+            raise PlanError(
+                f"The column {quoted(column)} has no entry on line {line}; every row needs one."
+            )
     names = tuple(sorted(set(entries), key=_in_order))
     place = {name: at for at, name in enumerate(names)}
     of_case = np.array([place[entry] for entry in entries], dtype=np.intp)
@@ -70,8 +82,10 @@ def groups_of(table: Table, column: str = "") -> Groups:
             f"{table.noun.plural}."
         )
     counts = np.zeros((len(names), table.n_classes), dtype=np.intp)
-    np.add.at(counts, (of_unit, table.unit_labels), 1)
-    return Groups(of_case, names, counts)
+    np.add.at(counts, of_unit, table.units_with_class)
+    units = np.zeros_like(counts)
+    np.add.at(units, (of_unit, table.unit_labels), 1)
+    return Groups(of_case, names, counts, np.asarray(units.argmax(axis=1)))
 
 
 def order_of(table: Table, column: str) -> NDArray[np.float64]:
@@ -88,31 +102,57 @@ def order_of(table: Table, column: str) -> NDArray[np.float64]:
         No such column, an entry that is neither, or a unit with two times.
     """
     groups = groups_of(table, column)
-    if not all(_is_time(name) for name in groups.names):
-        odd = next(name for name in groups.names if not _is_time(name))
+    time = _times(column, groups.names)
+    rank = {moment: at for at, moment in enumerate(sorted(set(time)))}
+    first_case = np.unique(table.units, return_index=True)[1]
+    return np.array([rank[time[g]] for g in groups.of_case[first_case]], dtype=np.float64)
+
+
+def _times(column: str, names: Sequence[str]) -> list[float]:
+    """Numbers, or seconds of dates; one kind throughout."""
+    numbers, dates = [_number(name) for name in names], [_date(name) for name in names]
+    found = dates if None in numbers else numbers
+    times = [time for time in found if time is not None]
+    if len(times) == len(names):
+        return times
+    pairs = list(zip(names, numbers, dates, strict=True))
+    odd = [name for name, number, date in pairs if number is None and date is None]
+    if odd:
         raise PlanError(
             f"The column {quoted(column)} cannot be put in order of time: it holds "
-            f"{quoted(odd)}. Numbers are allowed, and dates written year-month-day."
+            f"{quoted(odd[0])}. Numbers are allowed, and dates written year-month-day."
         )
-    first_case = np.unique(table.units, return_index=True)[1]
-    return groups.of_case[first_case].astype(np.float64)
+    a_number = next(name for name, number, _ in pairs if number is not None)
+    a_date = next(name for name, _, date in pairs if date is not None)
+    raise PlanError(
+        f"The column {quoted(column)} cannot be put in order of time: it holds both numbers, as "
+        f"{quoted(a_number)}, and dates, as {quoted(a_date)}."
+    )
 
 
-def _is_time(entry: str) -> bool:
-    if _number(entry) is not None:
-        return True
-    digits = entry.replace("-", "").replace(":", "").replace("T", "").replace(" ", "")
-    return len(entry) >= 7 and entry[:4].isdigit() and entry[4] == "-" and digits.isdigit()
+def _date(entry: str) -> float | None:
+    """Seconds since the year 1 of a date, with the time of day or without the day."""
+    found = _DATE.fullmatch(entry)
+    if not found:
+        return None
+    filled = (int(part or least) for part, least in zip(found.groups(), "111000", strict=True))
+    year, month, day, hour, minute, second = filled
+    try:
+        moment = datetime.datetime(year, month, day, hour, minute, second)
+    except ValueError:
+        return None
+    return (moment - datetime.datetime.min).total_seconds()
 
 
 def _number(entry: str) -> float | None:
     try:
-        return float(entry)
+        value = float(entry)
     except ValueError:
         return None
+    return value if math.isfinite(value) else None
 
 
 def _in_order(entry: str) -> tuple[float, str]:
-    """Numbers by size, then everything else as text."""
+    """Numbers by size, then everything else as text; spellings of one number as text."""
     number = _number(entry)
-    return (float("inf"), entry) if number is None else (number, "")
+    return (math.inf if number is None else number, entry)

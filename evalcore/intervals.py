@@ -191,6 +191,9 @@ def _root(excess: Callable[[float], float], outer: float, inner: float) -> float
 
 
 METHODS: dict[str, str] = {
+    "paired_t": "paired t with the model's variance (own)",
+    "unseen_share": "exact bound where no case differs (own)",
+    "delong": "DeLong",
     "wilson": "Wilson",
     "wilson_model_variance": "Wilson with the model's variance (own)",
     "wilson_corrected": "Wilson with continuity correction",

@@ -130,8 +130,7 @@ def _folds_fit(table: Table, settings: Settings) -> None:
     if not settings["stratified"]:
         return
     holding = (groups.counts > 0).sum(axis=0)
-    # a class that is the most frequent one of no group is spread as it comes
-    smallest = int(holding[holding > 0].min())
+    smallest = int(holding.min())
     if folds > smallest:
         k = int(np.flatnonzero(holding == smallest)[0])
         has = f"is found in {smallest} {noun}" if keep else f"has {table.noun.counted(smallest)}"
@@ -174,12 +173,12 @@ def _forward_fit(table: Table, settings: Settings) -> None:
     stretch = draws.time_stretches(table, settings)
     if stretch.max() < 1:
         raise PlanError(f"All {table.noun.plural} share one time in {quoted(column)}.")
-    first = table.unit_labels[stretch == 0]
-    lacking = sorted(set(range(table.n_classes)) - set(first.tolist()))
-    if lacking:
+    first = stretch == 0
+    lacking = np.flatnonzero(~table.units_with_class[first].any(axis=0))
+    if len(lacking):
         raise PlanError(
-            f"The earliest {table.noun.plural} by {quoted(column)} ({count(len(first))} of them) "
-            f"hold no {quoted(table.classes[lacking[0]])} to learn from; take fewer `parts`."
+            f"The earliest {table.noun.plural} by {quoted(column)} ({count(int(first.sum()))} of "
+            f"them) hold no {quoted(table.classes[lacking[0]])} to learn from; take fewer `parts`."
         )
 
 

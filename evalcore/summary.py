@@ -7,6 +7,7 @@ from typing import Any
 from evalcore.answer import (
     CAUTION,
     answer,
+    best_sentence,
     limit_rows,
     measure_name,
     scheme_in_words,
@@ -131,6 +132,7 @@ def design(evaluation: Evaluation) -> tuple[str, ...]:
         if table.has_units
         else f"n counts {table.noun.plural}.",
     }[evaluation.counted_by]
+    luck = best_sentence(evaluation)
     return (
         f"{capitalised(listed(schemes))}; the first gives the headline.{kept}",
         "Filling of gaps, scaling and the coding of text are learned anew inside every bag.",
@@ -138,6 +140,7 @@ def design(evaluation: Evaluation) -> tuple[str, ...]:
         "model in use is refitted on all of them.",
         f"Intervals are two-sided at {level(plan.level)} and say where the true share of this "
         "recipe may lie; limits are judged one-sided.",
+        *([luck] if luck else []),
     )
 
 

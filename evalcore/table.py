@@ -188,10 +188,15 @@ class Table:
         np.add.at(counts, (self.units, self.labels), 1)
         return counts
 
+    @property
+    def units_with_class(self) -> NDArray[np.bool_]:
+        """Whether each unit holds a case of each class, shape (n_units, n_classes)."""
+        return np.asarray(self._class_counts_per_unit > 0)
+
     @cached_property
     def units_holding(self) -> NDArray[np.intp]:
         """Units that hold at least one case of each class, shape (n_classes,)."""
-        return np.asarray((self._class_counts_per_unit > 0).sum(axis=0))
+        return np.asarray(self.units_with_class.sum(axis=0))
 
     def entries_of(self, column: str) -> tuple[str, ...]:
         """A column as written, feature or not; raises `PlanError` if there is none of the name."""

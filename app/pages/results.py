@@ -3,7 +3,15 @@
 import streamlit as st
 
 from app import charts, look, state
-from evalcore.answer import CAUTION, answer, class_rate, limit_rows, scheme_in_words, title
+from evalcore.answer import (
+    CAUTION,
+    answer,
+    best_sentence,
+    class_rate,
+    limit_rows,
+    scheme_in_words,
+    title,
+)
 from evalcore.checks_candidates import why_632_misleads
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
@@ -72,6 +80,9 @@ def how_sure(evaluation: Evaluation) -> None:
     st.header("How sure", anchor=False)
     measure = evaluation.plan.measure
     look.figure(charts.estimates_with_intervals(evaluation, measure), key="estimates")
+    luck = best_sentence(evaluation)
+    if luck:
+        look.soft(luck)
     if measure != "accuracy":
         look.figure(charts.estimates_with_intervals(evaluation, "accuracy"), key="share-right")
     bounds = {

@@ -92,7 +92,9 @@ class TestPairedDifference:
         p = 2 * stats.t.sf(abs(d.mean()) / error, len(d) - 1)
         ends = stats.t.interval(0.95, len(d) - 1, d.mean(), error)
         assert found.p == pytest.approx(p, rel=1e-12)
-        assert (found.interval.low, found.interval.high) == pytest.approx(ends, rel=1e-12)
+        assert (found.interval.low, found.interval.high) == pytest.approx(
+            (max(-1, ends[0]), min(1, ends[1])), rel=1e-12
+        )
 
     def test_by_hand(self):
         # folds {1, 2}, {3, 4} twice; the first right in folds 1 and 4, the second never:
@@ -282,7 +284,7 @@ class TestCompare:
         rounds = repeated(seed, n=40, folds=4)
         rng = np.random.default_rng(seed)
         names = list("abcdefgh")[:n_candidates]
-        correct = {name: rng.random(len(rounds.pairs[0])) < rng.uniform(0.5, 0.8) for name in names}
+        correct = {name: rng.random(len(rounds.pairs[0])) < rng.uniform(0.2, 0.9) for name in names}
         return compare(names, correct, rounds, **kind), correct, rounds
 
     @pytest.mark.parametrize("seed", range(20))

@@ -252,7 +252,6 @@ class TestBlocks:
         )
         assert rounds.n_rounds == number
 
-    @pytest.mark.xfail(reason="a class that is the most frequent of no unit counts as absent")
     def test_a_class_within_units_of_another_is_there_to_learn_from(self):
         # three rows a person, the last of class ‘b’; two persons a site
         table = table_of(
@@ -321,7 +320,6 @@ class TestForwardInTime:
         assert rounds.train.tolist() == [[0, 0, 0, 1, 1, 0], [0, 1, 0, 1, 1, 1]]
         assert rounds.test.tolist() == [[0, 1, 0, 0, 0, 1], [1, 0, 1, 0, 0, 0]]
 
-    @pytest.mark.xfail(reason="a class that is the most frequent of no unit counts as absent")
     def test_a_class_within_units_of_another_is_there_to_learn_from(self):
         table = table_of(
             [0, 0, 1] * 6,
@@ -394,7 +392,6 @@ class TestKeptTogether:
         for k in (0, 1):
             assert (rounds.test[:, table.labels == k].sum(axis=1) == 4).all()
 
-    @pytest.mark.xfail(reason="the only producer that is mostly of one class is never held out")
     @pytest.mark.parametrize("key", ["bootstrap", "random_subsampling"])
     def test_a_producer_that_is_alone_of_its_kind_is_held_out_too(self, key):
         labels = [0, 0, 1] * 5 + [1, 1, 0]
@@ -402,7 +399,6 @@ class TestKeptTogether:
         rounds = rounds_of(table, key, rounds=60, keep="producer")
         assert (rounds.times_tested > 0).all()
 
-    @pytest.mark.xfail(reason="two producers that differ in their most frequent class")
     @pytest.mark.parametrize("key", ["bootstrap", "random_subsampling", "holdout"])
     def test_something_is_held_out(self, key):
         table = table_of([0, 0, 1, 0, 1, 1], entries={"producer": list("pppqqq")})
@@ -559,7 +555,6 @@ class TestRefusals:
         rounds = rounds_of(table, "bootstrap", rounds=3)
         assert (rounds.of_units(table.units).train.sum(axis=1) == 6).all()
 
-    @pytest.mark.xfail(reason="the bound counts units by their most frequent class alone")
     def test_folds_are_bounded_by_the_units_that_hold_a_class(self):
         # five persons mostly of ‘a’ and one mostly of ‘b’; all six have readings of both
         table = table_of([0, 0, 1] * 5 + [1, 1, 0], units=np.repeat(np.arange(6), 3))
@@ -703,7 +698,6 @@ class TestRefusalsOfTime:
             rounds = rounds_of(table, "forward_in_time", column="day", parts=parts)
             assert (rounds.of_units(table.units).train[0] == first).all()
 
-    @pytest.mark.xfail(reason="a time that most units share swallows the others")
     @pytest.mark.parametrize("days", ["1112", "1111119", "112"])
     def test_two_times_are_enough(self, days):
         labels = [0, 1] * 4
