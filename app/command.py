@@ -96,6 +96,12 @@ def _evaluate_parser(parser: argparse.ArgumentParser) -> None:
     )  # fmt: skip
     parser.add_argument("--question", default="", help="what the judgement is for")
     parser.add_argument("--seed", type=int, default=1, metavar="N", help="random seed")
+    parser.add_argument(
+        "--engine",
+        choices=("fast", "plain"),
+        default="fast",
+        help="plain: every round fitted on its own with scikit-learn's public classes",
+    )
     parser.add_argument("--jobs", type=int, metavar="N", help="processes; digits do not depend")
     parser.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="new record")
     parser.set_defaults(run=_evaluate)
@@ -170,6 +176,7 @@ def _plan(given: argparse.Namespace) -> Plan:
         limits=tuple(_limit(text) for text in given.limit),
         seed=given.seed,
         question=given.question,
+        engine=given.engine,
     )
 
 

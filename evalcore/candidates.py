@@ -99,6 +99,13 @@ def _lda(_: Settings, __: int) -> Any:
     return LinearDiscriminantAnalysis()
 
 
+def _qda(settings: Settings, _: int) -> Any:
+    """A little shrinkage, so that a class with few cases or collinear columns has a covariance."""
+    from sklearn.discriminant_analysis import QuadraticDiscriminantAnalysis
+
+    return QuadraticDiscriminantAnalysis(solver="eigen", shrinkage=float(settings["shrinkage"]))
+
+
 def _naive_bayes(_: Settings, __: int) -> Any:
     from sklearn.naive_bayes import GaussianNB
 
@@ -207,6 +214,14 @@ CANDIDATES: dict[str, Candidate] = {
         ),
         Candidate(
             "lda", "linear discriminant (LDA)", (), _lda, _no, _called("linear discriminant")
+        ),
+        Candidate(
+            "qda",
+            "quadratic discriminant (QDA)",
+            (Setting("shrinkage", "Shrinkage towards a sphere", "number", 0.01, 0.0, 1.0),),
+            _qda,
+            _no,
+            _called("quadratic discriminant"),
         ),
         Candidate("naive_bayes", "naive Bayes", (), _naive_bayes, _no, _called("naive Bayes")),
         Candidate(

@@ -14,8 +14,9 @@ from numpy.typing import NDArray
 
 from evalcore.answers import Answers, answers_of
 from evalcore.candidates import CANDIDATES, estimator
+from evalcore.exact_rounds import Preparations, exact_scores
 from evalcore.measures import Floats
-from evalcore.plan import APPENDING, Choice, Plan, generator
+from evalcore.plan import APPENDING, Choice, Engine, Plan, generator
 from evalcore.rounds import Counts, Rounds
 from evalcore.settings import Settings
 from evalcore.table import Table
@@ -117,12 +118,13 @@ def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -
         else whole_rounds(table.n_cases)
     )
     answers, failures = {}, {}
+    preparations = Preparations(table, part.train)
     # one thread inside: more would fight over the cores and could change the last digits
     with threadpool_limits(1):
         for name, choice in zip(plan.candidate_names, plan.candidates, strict=True):
             states = _random_states(plan, choice, task)
             try:
-                scores = plain_scores(choice, table, part.train, random_states=states)
+                scores = round_scores(choice, preparations, engine=plan.engine, states=states)
             except Exception as error:  # a candidate that cannot be fitted must not end the rest
                 rounds_of = task.scheme or "the whole table"
                 warnings.warn(f"{name} failed in {rounds_of}: {error!r}", stacklevel=2)
@@ -139,6 +141,32 @@ def _random_states(plan: Plan, choice: Choice, task: Task) -> list[int]:
         int(generator(plan.seed, choice.written(), scheme, str(r)).integers(2**31))
         for r in range(task.start, task.stop)
     ]
+
+
+def round_scores(
+    choice: Choice, preparations: Preparations, *, engine: Engine, states: Sequence[int]
+) -> Floats:
+    """Answers of one candidate for every case in some rounds, shape (R, n, K).
+
+    By its fast path where there is one and `engine` is "fast"; rounds it does not cover, and
+    everything under "plain", by the plain adapter.
+    """
+    table, counts = preparations.table, preparations.counts
+    scaled = CANDIDATES[choice.key].scaled(choice.values())
+    found = (
+        exact_scores(choice, preparations, scaled=scaled, random_states=states)
+        if engine == "fast"
+        else None
+    )
+    if found is None:
+        return plain_scores(choice, table, counts, random_states=states)
+    scores, covered = found
+    left = np.flatnonzero(~covered).tolist()
+    if left:
+        scores[left] = plain_scores(
+            choice, table, counts[left], random_states=[states[r] for r in left]
+        )
+    return scores
 
 
 def plain_scores(

@@ -42,7 +42,7 @@ def logistic(
     --------
     A feature that says nothing leaves the shares of the classes:
 
-    >>> given = Prepared(np.zeros((1, 4, 1)), np.ones((1, 1), dtype=bool), True)
+    >>> given = Prepared(np.zeros((1, 1, 4)), np.ones((1, 1), dtype=bool), True)
     >>> bags = np.array([[1, 1, 1, 1]], dtype=np.uint8)
     >>> logistic(given, np.array([0, 1, 1, 1]), bags, n_classes=2, C=1.0)[0, 0].round(12).tolist()
     [0.25, 0.75]
@@ -51,8 +51,8 @@ def logistic(
     if n_classes > 2:
         # the penalty on all classes' weights, in terms of their differences from the first class
         penalty -= 1 / (C * n_classes)
-    target = np.eye(n_classes)[labels][:, 1:]
-    log_odds = np.full((*counts.shape, n_classes - 1), np.nan)
+    target = (labels == np.arange(1, n_classes)[:, None]).astype(np.float64)
+    log_odds = np.full((len(counts), *target.shape), np.nan)
     fits = _start(prepared, target, counts)
     for _ in range(_STEPS):
         settled = fits.step(target, penalty)
@@ -71,14 +71,14 @@ class _Fits:
     Attributes
     ----------
     rounds : ndarray of int, shape (R,)
-    design : ndarray, shape (R, n, q + 1)
-        Features and a column of ones.
-    bags : ndarray, shape (R, n, 1)
-    weights, move : ndarray, shape (R, q + 1, K - 1)
+    design : ndarray, shape (R, q + 1, n)
+        Columns and one of ones.
+    bags : ndarray, shape (R, 1, n)
+    weights, move : ndarray, shape (R, K - 1, q + 1)
         Where each fit is, and the step that led there.
     slope : ndarray, shape (R,)
         Slope of the loss along that step where it began; below 0.
-    log_odds : ndarray, shape (R, n, K - 1)
+    log_odds : ndarray, shape (R, K - 1, n)
     """
 
     rounds: NDArray[np.intp]
@@ -96,69 +96,68 @@ class _Fits:
     def step(self, target: Floats, penalty: Floats) -> NDArray[np.bool_]:
         """Take one step in every round; True where it was too small to need another."""
         chances = _chances(self.log_odds)
-        pull = self.weights @ penalty
-        pull[:, -1] = 0  # intercepts are free
-        gradient = self.design.swapaxes(1, 2) @ (self.bags * (chances - target)) + pull
+        gradient = (self.bags * (chances - target)) @ self.design.swapaxes(1, 2)
+        gradient[:, :, :-1] += penalty @ self.weights[:, :, :-1]  # intercepts are free
         newton = -self._solved(gradient, chances, penalty)
         # the loss is convex: steep uphill at the end of a step means it went too far
         too_far = (gradient * self.move).sum(axis=(1, 2)) > -_STEEP * self.slope
-        half = np.where(too_far, 0.5, 1.0)
         self.slope = np.where(too_far, self.slope / 2, (gradient * newton).sum(axis=(1, 2)))
-        change = np.where(too_far[:, None, None], -self.move / 2, newton)
-        self.move = np.where(too_far[:, None, None], self.move / 2, newton)
+        halved = self.move / 2
+        back = too_far[:, None, None]
+        self.move = np.where(back, halved, newton)
+        change = np.where(back, -halved, newton)
         self.weights = self.weights + change
-        moved = self.design @ change
+        moved = change @ self.design
         self.log_odds = self.log_odds + moved
         return np.asarray(~too_far & (np.abs(moved).max(axis=(1, 2)) <= _SMALL))
 
     def _solved(self, gradient: Floats, chances: Floats, penalty: Floats) -> Floats:
-        """Second derivatives divided into the gradient, shape (R, q + 1, K - 1)."""
-        n_rounds, width, others = gradient.shape
+        """Second derivatives divided into the gradient, shape (R, K - 1, q + 1)."""
+        n_rounds, others, width = gradient.shape
         curvature = np.empty((n_rounds, others, width, others, width))
         on = np.arange(width)
         ridge = np.ones(width)
         ridge[-1] = 0
         for j in range(others):
-            own = self.bags[:, :, 0] * chances[:, :, j]
+            own = self.bags[:, 0] * chances[:, j]
             for k in range(j + 1):
-                spread = own * ((j == k) - chances[:, :, k])
-                block = (self.design * spread[:, :, None]).swapaxes(1, 2) @ self.design
+                spread = own * ((j == k) - chances[:, k])
+                block = (self.design * spread[:, None, :]) @ self.design.swapaxes(1, 2)
                 block[:, on, on] += penalty[j, k] * ridge + _TINY * (j == k)
                 curvature[:, j, :, k] = curvature[:, k, :, j] = block
         size = others * width
-        flat = gradient.swapaxes(1, 2).reshape(n_rounds, size, 1)
-        solved = np.linalg.solve(curvature.reshape(n_rounds, size, size), flat)
-        return solved.reshape(n_rounds, others, width).swapaxes(1, 2)
+        square = curvature.reshape(n_rounds, size, size)
+        return np.linalg.solve(square, gradient.reshape(n_rounds, size, 1)).reshape(gradient.shape)
 
 
 def _start(prepared: Prepared, target: Floats, counts: Counts) -> _Fits:
     """All weights 0: equal chances for every class."""
-    n_rounds, n = counts.shape
-    width, others = prepared.features.shape[2] + 1, target.shape[1]
-    design = np.ones((n_rounds, n, width))
-    design[:, :, :-1] = prepared.features
-    zeros = np.zeros((n_rounds, width, others))
+    n_rounds, width, n = prepared.columns.shape
+    design = np.ones((n_rounds, width + 1, n))
+    design[:, :-1] = prepared.columns
+    zeros = np.zeros((n_rounds, len(target), width + 1))
     return _Fits(
         np.arange(n_rounds),
         design,
-        counts[:, :, None].astype(np.float64),
+        counts[:, None, :].astype(np.float64),
         zeros,
         zeros,
         np.zeros(n_rounds),
-        np.zeros((n_rounds, n, others)),
+        np.zeros((n_rounds, *target.shape)),
     )
 
 
 def _chances(log_odds: Floats) -> Floats:
-    """Probabilities of classes 1 to K - 1, shape (R, n, K - 1)."""
-    if log_odds.shape[2] == 1:
+    """Probabilities of classes 1 to K - 1, shape (R, K - 1, n)."""
+    if log_odds.shape[1] == 1:
         with np.errstate(over="ignore"):
             return 1 / (1 + np.exp(-log_odds))
-    return _answers(log_odds)[:, :, 1:]
+    return _answers(log_odds).swapaxes(1, 2)[:, 1:]
 
 
 def _answers(log_odds: Floats) -> Floats:
     """Probabilities of all classes, shape (R, n, K)."""
-    if log_odds.shape[2] == 1:
-        return from_log_odds(log_odds[:, :, 0])
-    return softmax(np.concatenate([np.zeros((*log_odds.shape[:2], 1)), log_odds], axis=2))
+    if log_odds.shape[1] == 1:
+        return from_log_odds(log_odds[:, 0])
+    first = np.zeros((len(log_odds), 1, log_odds.shape[2]))
+    return softmax(np.concatenate([first, log_odds], axis=1))

@@ -24,6 +24,7 @@ FORMAT = 1
 APPENDING = ("rounds", "repeats")  # settings that only append rounds, so they move no draw
 
 Registry = Mapping[str, Any]
+Engine = Literal["fast", "plain"]
 
 
 @dataclass(frozen=True)
@@ -154,6 +155,9 @@ class Plan:
         Random seed.
     question : str
         What the judgement is for, in the user's words.
+    engine : {"fast", "plain"}
+        Whether rounds are carried out from counts where that gives the same answers, or one by
+        one with scikit-learn's public classes, for anyone who doubts.
     """
 
     roles: Roles
@@ -167,6 +171,7 @@ class Plan:
     level: float = 0.95
     seed: int = 1
     question: str = ""
+    engine: Engine = "fast"
     format: int = field(default=FORMAT)
 
     def __post_init__(self) -> None:

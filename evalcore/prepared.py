@@ -15,7 +15,7 @@ from evalcore.rounds import Counts
 from evalcore.shares import Floats
 from evalcore.table import Column, Table
 
-_MOST = 2_000_000  # numbers held at once: 16 MB
+_MOST = 40_000  # numbers prepared together: what a processor keeps close at hand
 
 
 @dataclass(frozen=True, eq=False)
@@ -24,22 +24,27 @@ class Prepared:
 
     Attributes
     ----------
-    features : ndarray, shape (R, n, q)
+    columns : ndarray, shape (R, q, n)
         Numbers first, then one column a category; a category the bag lacks is 0 for every case.
-        Read-only; one and the same (n, q) behind every round if `shared`.
+        Read-only; one and the same (q, n) behind every round if `shared`.
     present : ndarray of bool, shape (R, q)
         Columns the bag's own preparation would have: all but the categories it lacks.
     shared : bool
         Whether all rounds see the same features.
     """
 
-    features: Floats
+    columns: Floats
     present: NDArray[np.bool_]
     shared: bool
 
     def __post_init__(self) -> None:
-        self.features.setflags(write=False)
+        self.columns.setflags(write=False)
         self.present.setflags(write=False)
+
+    @property
+    def features(self) -> Floats:
+        """The same with a row for each case, shape (R, n, q)."""
+        return self.columns.swapaxes(1, 2)
 
 
 def blocks(n_rounds: int, table: Table) -> list[slice]:
@@ -90,44 +95,45 @@ def prepare(table: Table, counts: Counts, *, scaled: bool) -> Prepared:
     [1.0, 4.0, 4.0, 9.0]
     """
     bags = counts.astype(np.float64)
-    numbers = [at for at, column in enumerate(table.columns) if column.kind == "number"]
-    columns = [table.columns[at] for at in numbers]
-    number = _filled(columns, table.features[:, numbers], counts)
-    if scaled and numbers:
-        number = _standardised(number, bags)
+    numbers = [column for column in table.columns if column.kind == "number"]
+    parts = []
+    if numbers:
+        filled = _filled(numbers, counts)
+        parts.append(_standardised(filled, bags) if scaled else filled)
     texts = [_encoded(column, bags) for column in table.columns if column.kind == "text"]
-    parts = [number, *(features for features, _ in texts)]
+    parts += [columns for columns, _ in texts]
     there = np.ones((len(bags), len(numbers)), dtype=bool)
     present = np.concatenate([there, *(found for _, found in texts)], axis=1)
-    features, shared = _side_by_side(parts, len(bags))
-    return Prepared(features, present, shared)
+    columns, shared = _stacked(parts, len(bags))
+    return Prepared(columns, present, shared)
 
 
 def _width(column: Column) -> int:
     return 1 if column.kind == "number" else max(1, len(column.categories))
 
 
-def _side_by_side(parts: list[Floats], n_rounds: int) -> tuple[Floats, bool]:
-    """Columns put together; parts of shape (n, .) are the same in every round."""
+def _stacked(parts: list[Floats], n_rounds: int) -> tuple[Floats, bool]:
+    """Columns put together; parts of shape (., n) are the same in every round."""
     shared = all(part.ndim == 2 for part in parts)
     if shared:
-        together = np.concatenate(parts, axis=1) if len(parts) > 1 else parts[0]
-        return np.broadcast_to(together, (n_rounds, *together.shape)), n_rounds > 0
+        together = np.concatenate(parts)
+        return np.broadcast_to(together, (n_rounds, *together.shape)), True
     if len(parts) == 1:
         return parts[0], False
     shapes = [(n_rounds, *part.shape[-2:]) for part in parts]
     spread = [np.broadcast_to(part, shape) for part, shape in zip(parts, shapes, strict=True)]
-    return np.concatenate(spread, axis=2), False
+    return np.concatenate(spread, axis=1), False
 
 
-def _filled(columns: list[Column], values: Floats, counts: Counts) -> Floats:
-    """Numbers with each bag's medians in place of missing ones; (n, p) if none is missing."""
+def _filled(numbers: list[Column], counts: Counts) -> Floats:
+    """Numbers with each bag's medians in place of missing ones; (p, n) if none is missing."""
+    values = np.stack([column.values for column in numbers])
     missing = np.isnan(values)
     if not missing.any():
         return values
     filled = np.repeat(values[None], len(counts), axis=0)
-    for at in np.flatnonzero(missing.any(axis=0)):
-        filled[:, missing[:, at], at] = _medians(columns[at], counts)[:, None]
+    for at in np.flatnonzero(missing.any(axis=1)):
+        filled[:, at, missing[at]] = _medians(numbers[at], counts)[:, None]
     return filled
 
 
@@ -146,42 +152,39 @@ def _medians(column: Column, counts: Counts) -> Floats:
     total = upto[:, -1]
     # the first value whose running count passes a place stands in that place
     places = ((total - 1) // 2, total // 2)
-    low, high = (
-        column.values[order[(upto > place[:, None]).argmax(axis=1)]] for place in places
-    )
+    low, high = (column.values[order[(upto > place[:, None]).argmax(axis=1)]] for place in places)
     return np.where(total > 0, (low + high) / 2, 0.0)
 
 
 def _standardised(values: Floats, bags: Floats) -> Floats:
-    """Values centred and divided by each bag's standard deviation, shape (R, n, p)."""
+    """Values centred and divided by each bag's standard deviation, shape (R, p, n)."""
     size = bags.sum(axis=1)[:, None]
-    anchor = values.reshape(-1, values.shape[-1]).mean(axis=0)
-    weights = bags[:, None, :]
+    weights = bags[:, :, None]
+    anchor = values.mean(axis=-1, keepdims=True)
     near = values - anchor
-    mean = (weights @ near)[:, 0] / size
-    centred = near - mean[:, None, :]
+    mean = near @ weights / size[:, :, None]
+    centred = near - mean
     # the second term takes out what rounding left in the mean (Chan, Golub & LeVeque 1983)
-    sum_left = (weights @ centred)[:, 0]
-    variance = ((weights @ np.square(centred))[:, 0] - sum_left**2 / size) / size
+    sum_left = (centred @ weights)[:, :, 0]
+    variance = ((np.square(centred) @ weights)[:, :, 0] - sum_left**2 / size) / size
     rounding = np.finfo(np.float64).eps * size
-    constant = variance <= rounding * variance + (rounding * (anchor + mean)) ** 2
-    scale = np.sqrt(np.where(constant, 1.0, variance))
-    centred /= scale[:, None, :]
+    constant = variance <= rounding * variance + (rounding * (anchor + mean)[:, :, 0]) ** 2
+    centred *= (1 / np.sqrt(np.where(constant, 1.0, variance)))[:, :, None]
     return centred
 
 
 def _encoded(column: Column, bags: Floats) -> tuple[Floats, NDArray[np.bool_]]:
     """One column a category, and which categories each bag has, shape (R, categories)."""
     codes = np.arange(_width(column))
-    entries = (column.values[:, None] == codes).astype(np.float64)
-    times = bags @ entries
+    entries = (column.values == codes[:, None]).astype(np.float64)
+    times = bags @ entries.T
     missing = np.isnan(column.values)
-    features = entries
+    columns = entries
     if missing.any():
         chosen = (times.argmax(axis=1)[:, None] == codes).astype(np.float64)
-        features = np.repeat(entries[None], len(bags), axis=0)
-        features[:, missing] = chosen[:, None]
-        times += (bags[:, missing].sum(axis=1)[:, None]) * chosen
+        columns = np.repeat(entries[None], len(bags), axis=0)
+        columns[:, :, missing] = chosen[:, :, None]
+        times += bags[:, missing].sum(axis=1)[:, None] * chosen
     present = times > 0
     # zeros for a category the bag lacks, also for cases outside the bag that have it
-    return (features if present.all() else features * present[:, None, :]), present
+    return (columns if present.all() else columns * present[:, :, None]), present

@@ -18,7 +18,7 @@ from evalcore.errors import EvalError
 from evalcore.record import Record, State, Status
 from evalcore.results import write_results
 
-WORTH_PROCESSES = 20.0  # seconds of work left from which starting processes pays
+WORTH_PROCESSES = 8.0  # seconds of work left from which starting processes pays
 BEAT = 0.5  # seconds between looks at the parent and the request to stop
 
 

@@ -220,9 +220,11 @@ def test_a_server_stopped_half_way_leaves_what_had_finished(page, dashboard):
     page.goto(address)
     see(page, re.compile(r"This evaluation was interrupted; \d+ of 401 rounds had finished"))
     press(page, "Go on from the finished rounds")
-    expect(page.get_by_text("This evaluation was interrupted")).to_be_hidden()
-    expect(page.get_by_role("button", name=ENDED)).to_be_visible(timeout=EVALUATION)
+    see(page, "rounds finished")
+    expect(page.get_by_text("rounds finished")).to_be_hidden(timeout=EVALUATION)
+    expect(page.get_by_role("button", name=ENDED)).to_be_visible()
     see(page, "is expected to be right in")
+    expect(page.get_by_text("This evaluation was interrupted")).to_be_hidden()
     assert {path.name for path in (record / "chunks").glob("[!.]*")} > kept
     assert (record / "results.csv").is_file()
 

@@ -308,6 +308,10 @@ class TestRounds:
         counts = np.ones((1, self.n), dtype=np.uint8)
         with pytest.raises(ValueError, match="infinity or a value too large"):
             scores_of(trees, x, self.labels, counts, n_classes=3, random_states=[0])
+        # a bag of one class needs no fit, so nothing is looked at
+        counts[0, self.labels != 2] = 0
+        (found,) = scores_of(trees, x, self.labels, counts, n_classes=3, random_states=[0])
+        assert (found == [0, 0, 1]).all()
 
 
 class TestWhichPathRuns:
