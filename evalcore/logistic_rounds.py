@@ -127,7 +127,8 @@ class _Fits:
                 curvature[:, j, :, k] = curvature[:, k, :, j] = block
         size = others * width
         square = curvature.reshape(n_rounds, size, size)
-        return np.linalg.solve(square, gradient.reshape(n_rounds, size, 1)).reshape(gradient.shape)
+        solved = np.linalg.solve(square, gradient.reshape(n_rounds, size, 1))
+        return np.asarray(solved.reshape(gradient.shape), dtype=np.float64)
 
 
 def _start(prepared: Prepared, target: Floats, counts: Counts) -> _Fits:

@@ -6,7 +6,7 @@ The result is what `preparation` gives fold by fold with scikit-learn's classes.
 """
 
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -41,6 +41,17 @@ class Prepared:
         self.columns.setflags(write=False)
         self.present.setflags(write=False)
 
+    @cached_property
+    def centred(self) -> Floats:
+        """Columns less their means over all cases, (R, q, n), or (1, q, n) if shared."""
+        given = self.columns[:1] if self.shared else self.columns
+        return np.asarray(given - given.mean(axis=2, keepdims=True), dtype=np.float64)
+
+    @cached_property
+    def extent(self) -> Floats:
+        """Largest distance of a case from that mean in each column, shape (R or 1, q)."""
+        return np.maximum(self.centred.max(axis=2), -self.centred.min(axis=2))
+
     @property
     def features(self) -> Floats:
         """The same with a row for each case, shape (R, n, q)."""
@@ -51,13 +62,13 @@ def blocks(n_rounds: int, table: Table) -> list[slice]:
     """Parts of some rounds small enough to be prepared and fitted together.
 
     They depend on the table and the number of rounds alone, so that digits do too. At least one
-    round a part; about 16 MB of features.
+    round a part, or as many as stay close to the processor (a third of a megabyte of features).
 
     Examples
     --------
     >>> from types import SimpleNamespace
     >>> column = SimpleNamespace(kind="number", categories=())
-    >>> blocks(10, SimpleNamespace(n_cases=100_000, columns=(column,) * 5))[:2]
+    >>> blocks(10, SimpleNamespace(n_cases=1000, columns=(column,) * 10))[:2]
     [slice(0, 4, None), slice(4, 8, None)]
     """
     wide = sum(_width(column) for column in table.columns)
@@ -95,7 +106,7 @@ def prepare(table: Table, counts: Counts, *, scaled: bool) -> Prepared:
     [1.0, 4.0, 4.0, 9.0]
     """
     bags = counts.astype(np.float64)
-    numbers = [column for column in table.columns if column.kind == "number"]
+    numbers = tuple(column for column in table.columns if column.kind == "number")
     parts = []
     if numbers:
         filled = _filled(numbers, counts)
@@ -116,7 +127,7 @@ def _stacked(parts: list[Floats], n_rounds: int) -> tuple[Floats, bool]:
     """Columns put together; parts of shape (., n) are the same in every round."""
     shared = all(part.ndim == 2 for part in parts)
     if shared:
-        together = np.concatenate(parts)
+        together = np.concatenate(parts) if len(parts) > 1 else parts[0]
         return np.broadcast_to(together, (n_rounds, *together.shape)), True
     if len(parts) == 1:
         return parts[0], False
@@ -125,9 +136,9 @@ def _stacked(parts: list[Floats], n_rounds: int) -> tuple[Floats, bool]:
     return np.concatenate(spread, axis=1), False
 
 
-def _filled(numbers: list[Column], counts: Counts) -> Floats:
+def _filled(numbers: tuple[Column, ...], counts: Counts) -> Floats:
     """Numbers with each bag's medians in place of missing ones; (p, n) if none is missing."""
-    values = np.stack([column.values for column in numbers])
+    values = _values(numbers)
     missing = np.isnan(values)
     if not missing.any():
         return values
@@ -135,6 +146,14 @@ def _filled(numbers: list[Column], counts: Counts) -> Floats:
     for at in np.flatnonzero(missing.any(axis=1)):
         filled[:, at, missing[at]] = _medians(numbers[at], counts)[:, None]
     return filled
+
+
+@lru_cache(maxsize=4)
+def _values(numbers: tuple[Column, ...]) -> Floats:
+    """A row for each column; kept, because every block of rounds needs it."""
+    values = np.stack([column.values for column in numbers])
+    values.setflags(write=False)
+    return values
 
 
 @lru_cache(maxsize=256)
@@ -170,7 +189,7 @@ def _standardised(values: Floats, bags: Floats) -> Floats:
     rounding = np.finfo(np.float64).eps * size
     constant = variance <= rounding * variance + (rounding * (anchor + mean)[:, :, 0]) ** 2
     centred *= (1 / np.sqrt(np.where(constant, 1.0, variance)))[:, :, None]
-    return centred
+    return np.asarray(centred, dtype=np.float64)
 
 
 def _encoded(column: Column, bags: Floats) -> tuple[Floats, NDArray[np.bool_]]:

@@ -130,6 +130,11 @@ def test_years_left_out_in_turn_score_lower(lots, by_lot, forest_by_lot):
     assert right(LOGISTIC) == pytest.approx(0.872, abs=0.006)
     assert right(LOGISTIC) < by_lot.estimate("accuracy", "logistic").value - 0.02
     assert right(FOREST) < forest_by_lot
+    scheme = choose(SCHEMES, "leave_block_out", column="harvest_year")
+    made = carried_out(lots, Plan(lots.roles, (scheme,), (LOGISTIC,)))[0]
+    assert made.estimate("accuracy", "logistic").value == pytest.approx(right(LOGISTIC), rel=1e-12)
+    # three years are too few to say how much years differ
+    assert made.estimate("accuracy", "logistic").interval is None
 
 
 def test_a_column_known_only_afterwards_is_asked_about_before_anything_is_fitted():

@@ -63,14 +63,15 @@ def evaluated(
 ) -> Evaluation:
     """An evaluation of hand-made answers, the same for every candidate.
 
-    `chosen` are classes by scheme, of shape (n,) or (rounds, n); rightly answered if left out, as
-    is `whole`, the answers of the fits on all cases.
+    `chosen` are classes by scheme, or by candidate where candidates differ, of shape (n,) or
+    (rounds, n); rightly answered if left out, as is `whole`, the answers of the fits on all cases.
     """
 
     def scores(classes, n_rounds: int):
         given = table.labels if classes is None else np.asarray(classes)
         return np.eye(table.n_classes)[np.broadcast_to(given, (n_rounds, table.n_cases))]
 
+    given = chosen or {}
     names = [name for name in plan.candidate_names if name not in (failures or {})]
     return evaluate(
         table,
@@ -78,7 +79,7 @@ def evaluated(
         dict(rounds),
         answers={
             (scheme, name): answers_of(
-                table, drawn, scores((chosen or {}).get(scheme), drawn.n_rounds)
+                table, drawn, scores(given.get(name, given.get(scheme)), drawn.n_rounds)
             )
             for scheme, drawn in rounds.items()
             for name in names
@@ -203,6 +204,27 @@ def one_class_out():
     return of_rounds({CV: rounds_of(held)}, table=table)
 
 
+def neighbours(number: int) -> tuple:
+    """So many candidates."""
+    return tuple(choose(CANDIDATES, "nearest_neighbours", k=k + 1) for k in range(number))
+
+
+def several(number: int):
+    """So many candidates, all of them right everywhere: nothing is luck."""
+    return of_rounds({CV: halves(100)}, plan=a_plan(candidates=neighbours(number)))
+
+
+def blocks(number: int):
+    """Each block left out once."""
+    labels = two_classes()
+    table = dataclasses.replace(
+        labels, entries={"year": tuple(str(2000 + i % number) for i in range(100))}
+    )
+    scheme = choose(SCHEMES, "leave_block_out", column="year")
+    plan = dataclasses.replace(a_plan(), schemes=(scheme,))
+    return table, plan, evaluated(table, plan, plan.draw(table))
+
+
 def wilson(right: int, n: int) -> tuple[float, float]:
     return proportion_confint(right, n, method="wilson")
 
@@ -235,6 +257,11 @@ RAISED = {
         ),
         ("moderate", "logistic", wilson(60, 100)[0], 0.51),
     ),
+    "best_of_several": (
+        several(11),
+        ("moderate", "nearest_neighbours:k=1,scaling=standard", 0, 0.02),
+    ),
+    "few_blocks": (blocks(4), ("moderate", "leave_block_out", 4, 5)),
     "class_too_small": (
         (table_of([0] * 9 + [1] * 30), a_plan()),
         ("grave", "a", 9, 10),
@@ -289,6 +316,8 @@ QUIET = {
         table=table_of([0] * 51 + [1] * 49),
         chosen={CV: wrong_in(table_of([0] * 51 + [1] * 49), range(39))},
     ),
+    "best_of_several": several(10),
+    "few_blocks": blocks(5),
     "class_too_small": (two_classes(30), a_plan()),
     # 90 of 100 right: Wilson 0.826 to 0.945
     "wide_interval": steady(10, measure="accuracy"),
@@ -481,6 +510,29 @@ def test_the_majority_itself_is_not_held_against_the_majority():
     given = of_rounds({CV: halves(100)}, plan=plan, chosen={CV: np.zeros(100, dtype=int)})
     assert [f.subject for f in found("not_better_than_majority", *given)] == ["logistic"]
     assert [f.subject for f in found("memorises", *given)] == []
+
+
+def test_luck_is_what_the_correction_takes_off():
+    # five candidates alike, each wrong on other cases: whoever comes out best is lucky
+    table, rng = two_classes(20), np.random.default_rng(1)
+    plan = a_plan(candidates=neighbours(5))
+    chosen = {
+        name: wrong_in(table, rng.choice(40, 12, replace=False)) for name in plan.candidate_names
+    }
+    made = evaluated(table, plan, {CV: halves(40)}, chosen=chosen)
+    finding = only("best_of_several", table, plan, made)
+    best = max(made.estimate("balanced_accuracy", name).value for name in plan.candidate_names)
+    assert made.estimate("balanced_accuracy", finding.subject).value == best
+    assert finding.value == pytest.approx(best - made.winner.value, rel=1e-12)
+    assert finding.value > finding.threshold == 0.02
+
+
+def test_a_clear_winner_is_not_lucky():
+    table, plan = two_classes(), a_plan(candidates=neighbours(2))
+    chosen = {plan.candidate_names[1]: wrong_in(table, range(0, 100, 2))}
+    made = evaluated(table, plan, {CV: halves(100)}, chosen=chosen)
+    assert made.winner.candidate == plan.candidate_names[0]
+    assert found("best_of_several", table, plan, made) == []
 
 
 def test_a_single_split_moves_by_an_unknown_amount():

@@ -29,11 +29,11 @@ SHORT = Plan(
     ),
     (choose(CANDIDATES, "forest", trees=8),),
 )
-# an hour of work, so that none of it ends by itself
+# more work than any test waits for, so that none of it ends by itself
 LONG = Plan(
     Roles("species"),
     (choose(SCHEMES, "bootstrap", rounds=10_000),),
-    (choose(CANDIDATES, "forest", trees=100),),
+    (choose(CANDIDATES, "forest", trees=1000),),
 )
 
 
@@ -59,12 +59,23 @@ def until(true, *, seconds: float, what: str) -> None:
         time.sleep(0.005)
 
 
-def started(record: Record, parent: int | None = None) -> subprocess.Popen:
+# the same worker that takes its time over each chunk, so that a test can meet it half-way
+SLOWLY = """
+import sys, time
+from evalcore import record, worker
+add = record.Record.add
+record.Record.add = lambda self, finished: (add(self, finished), time.sleep(0.2))[0]
+worker.main(*sys.argv[1:])
+"""
+
+
+def started(record: Record, *, slowly: bool = False) -> subprocess.Popen:
     """A worker as the dashboard starts it."""
     record.beat()
+    how = ["-c", SLOWLY] if slowly else ["-m", "evalcore.worker"]
     with (record.folder / "log.txt").open("ab") as log:
         return subprocess.Popen(
-            [sys.executable, "-m", "evalcore.worker", record.folder, str(parent or os.getpid())],
+            [sys.executable, *how, record.folder, str(os.getpid())],
             cwd=ROOT,
             stdin=subprocess.DEVNULL,
             stdout=log,
@@ -95,8 +106,8 @@ def worker():
     """Starts workers, and ends those that are left when the test is over."""
     processes = []
 
-    def start(record: Record, parent: int | None = None) -> subprocess.Popen:
-        processes.append(started(record, parent))
+    def start(record: Record, *, slowly: bool = False) -> subprocess.Popen:
+        processes.append(started(record, slowly=slowly))
         return processes[-1]
 
     yield start
@@ -122,7 +133,7 @@ def test_two_processes_give_the_same_digits(uninterrupted, tmp_path):
 
 def test_killed_half_way_it_goes_on_to_the_same_digits(uninterrupted, tmp_path, worker):
     record = a_record(tmp_path)
-    process = worker(record)
+    process = worker(record, slowly=True)
     until(lambda: len(chunks(record)) >= 3, seconds=60, what="three chunks finished")
     process.kill()
     process.wait()
@@ -146,7 +157,7 @@ def test_cancelled_it_ends_at_once_and_another_process_goes_on_to_the_same_digit
     uninterrupted, tmp_path, worker
 ):
     record = a_record(tmp_path)
-    process = worker(record)
+    process = worker(record, slowly=True)
     until(lambda: len(chunks(record)) >= 2, seconds=60, what="two chunks finished")
     record.cancel()
     assert process.wait(5) == 0
