@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from evalcore.figures import CountedBy
 from evalcore.measures import Floats, confusion, hand_till, predicted_class
 from evalcore.rounds import Rounds
+from evalcore.row_ranking import row_hand_till
 from evalcore.table import Table
 
 
@@ -140,21 +141,18 @@ def reduce(labels: NDArray[np.intp], scores: Floats, weights: NDArray[np.uint8])
     weights : ndarray, shape (R, N)
         Bag counts; cases of weight 0 are left out.
     """
-    n_rounds, _, n_classes = scores.shape
-    round_at, case_at = np.nonzero(weights)
-    weight = weights[round_at, case_at]
-    true, chosen = labels[case_at], scores[round_at, case_at]
-    return Reduced(
-        confusion(
-            true,
-            predicted_class(chosen),
-            n_classes=n_classes,
-            groups=round_at,
-            n_groups=n_rounds,
-            weights=weight,
-        ),
-        hand_till(true, chosen, groups=round_at, n_groups=n_rounds, weights=weight),
-    )
+    weight = weights.astype(np.float64)
+    counts = _confusions(labels, predicted_class(scores), weight, n_classes=scores.shape[2])
+    return Reduced(counts, row_hand_till(labels, scores, weight))
+
+
+def _confusions(
+    labels: NDArray[np.intp], predicted: NDArray[np.intp], weights: Floats, *, n_classes: int
+) -> Floats:
+    """Weighted confusion counts of each row by products, shape (R, K, K)."""
+    true = (labels == np.arange(n_classes)[:, None]).astype(np.float64)
+    columns = [((predicted == k) * weights) @ true.T for k in range(n_classes)]
+    return np.stack(columns, axis=2)
 
 
 def answers_of(table: Table, rounds: Rounds, scores: Floats) -> Answers:
@@ -175,23 +173,12 @@ def answers_of(table: Table, rounds: Rounds, scores: Floats) -> Answers:
         ways["unit"] = (table.unit_labels, unit_means(table, scores), by_unit)
     in_bag = {way: reduce(*given) for way, given in ways.items()}
     on_all = {
-        way: _confusion_on_all(labels, predicted_class(given))
+        way: _confusions(labels, predicted_class(given), np.ones((1, 1)), n_classes=table.n_classes)
         for way, (labels, given, _) in ways.items()
     }
     in_bag.setdefault("unit", in_bag["case"])
     on_all.setdefault("unit", on_all["case"])
     return Answers(scores[rounds.pairs], in_bag, on_all)
-
-
-def _confusion_on_all(labels: NDArray[np.intp], predicted: NDArray[np.intp]) -> Floats:
-    n_rounds, n = predicted.shape
-    return confusion(
-        np.tile(labels, n_rounds),
-        predicted.ravel(),
-        n_classes=int(labels.max()) + 1,
-        groups=np.repeat(np.arange(n_rounds), n),
-        n_groups=n_rounds,
-    )
 
 
 def joined(parts: list[Answers]) -> Answers:

@@ -89,21 +89,26 @@ def _logistic(settings: Settings, _: int) -> Any:
     from sklearn.linear_model import LogisticRegression
 
     return LogisticRegression(
-        C=float(settings["C"]), solver="newton-cholesky", tol=1e-10, max_iter=1000
+        C=float(settings["C"]), solver="newton-cholesky", tol=1e-12, max_iter=1000
     )
 
 
 def _lda(_: Settings, __: int) -> Any:
+    """Constant columns are dropped first: their rounding noise would be taken for a direction."""
     from sklearn.discriminant_analysis import LinearDiscriminantAnalysis
+    from sklearn.feature_selection import VarianceThreshold
+    from sklearn.pipeline import make_pipeline
 
-    return LinearDiscriminantAnalysis()
+    return make_pipeline(VarianceThreshold(), LinearDiscriminantAnalysis())
 
 
 def _qda(settings: Settings, _: int) -> Any:
     """A little shrinkage, so that a class with few cases or collinear columns has a covariance."""
     from sklearn.discriminant_analysis import QuadraticDiscriminantAnalysis
 
-    return QuadraticDiscriminantAnalysis(solver="eigen", shrinkage=float(settings["shrinkage"]))
+    return QuadraticDiscriminantAnalysis(
+        solver="eigen", shrinkage=float(settings["shrinkage"]), tol=0.0
+    )
 
 
 def _naive_bayes(_: Settings, __: int) -> Any:
@@ -218,9 +223,9 @@ CANDIDATES: dict[str, Candidate] = {
         Candidate(
             "qda",
             "quadratic discriminant (QDA)",
-            (Setting("shrinkage", "Shrinkage towards a sphere", "number", 0.01, 0.0, 1.0),),
+            (Setting("shrinkage", "Shrinkage towards a sphere", "number", 0.01, 1e-6, 1.0),),
             _qda,
-            _no,
+            _yes,
             _called("quadratic discriminant"),
         ),
         Candidate("naive_bayes", "naive Bayes", (), _naive_bayes, _no, _called("naive Bayes")),

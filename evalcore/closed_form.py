@@ -72,7 +72,8 @@ def naive_bayes(prepared: Prepared, labels: Labels, counts: Counts, *, n_classes
     [0.5, 0.5]
     """
     bag = moments(prepared, labels, counts, n_classes=n_classes)
-    sums = np.square(bag.residuals()) @ bag.weights.swapaxes(1, 2)
+    squares = bag.residuals()
+    sums = np.square(squares, out=squares) @ bag.weights.swapaxes(1, 2)
     variances = sums / bag.sizes[:, None, :]
     total = ((variances + np.square(bag.centres)) @ bag.shares[:, :, None])[:, :, 0]
     largest = np.where(total > NONE * bag.extent**2, total, 0.0).max(axis=1)

@@ -199,19 +199,22 @@ def plain_scores(
 
 
 def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: int) -> Floats:
+    if choice.key == "qda":
+        rows = _of_spread_classes(table, rows)
     labels = table.labels[rows]
-    present = np.unique(labels)
+    present, times = np.unique(labels, return_counts=True)
     scores = np.zeros((table.n_cases, table.n_classes))
-    if len(present) == 1:
-        # nothing to tell apart: always the one class that was seen
-        scores[:, present[0]] = 1.0
+    bag = table.features[rows]
+    if len(present) == 1 or (np.isnan(bag) | (bag == bag[0])).all():
+        # one class only, or nothing to tell cases apart by: the classes' shares
+        scores[:, present] = times / len(rows)
         return scores
     settings: Settings = choice.values()
     model = estimator(CANDIDATES[choice.key], settings, table, state)
     with warnings.catch_warnings():
         # collinear one-hot columns and the like are expected in small bags
         warnings.simplefilter("ignore")
-        model.fit(table.features[rows], labels)
+        model.fit(bag, labels)
         if hasattr(model, "predict_proba"):
             scores[:, present] = model.predict_proba(table.features)
             return scores
@@ -221,3 +224,13 @@ def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: i
     scores[:] = values.min() - 1
     scores[:, present] = values
     return scores
+
+
+def _of_spread_classes(table: Table, rows: NDArray[np.intp]) -> NDArray[np.intp]:
+    """Rows of classes with two different rows at least: fewer have no covariance."""
+    kept = [
+        k
+        for k in np.unique(table.labels[rows])
+        if len(np.unique(table.features[rows[table.labels[rows] == k]], axis=0)) > 1
+    ]
+    return rows[np.isin(table.labels[rows], kept)] if kept else rows

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from evalcore import closed_form, nearest, trees
+from evalcore import closed_form, discriminants, nearest, trees
 from evalcore.logistic_rounds import logistic
 from evalcore.measures import Floats
 from evalcore.plan import Choice
@@ -53,11 +53,11 @@ def _naive_bayes(bags: Bags) -> Floats:
 
 
 def _lda(bags: Bags) -> Floats:
-    return closed_form.lda(bags.prepared, bags.labels, bags.counts, n_classes=bags.n_classes)
+    return discriminants.lda(bags.prepared, bags.labels, bags.counts, n_classes=bags.n_classes)
 
 
 def _qda(bags: Bags) -> Floats:
-    return closed_form.qda(
+    return discriminants.qda(
         bags.prepared,
         bags.labels,
         bags.counts,

@@ -79,6 +79,8 @@ class _Fits:
     slope : ndarray, shape (R,)
         Slope of the loss along that step where it began; below 0.
     log_odds : ndarray, shape (R, K - 1, n)
+    room : ndarray, shape (R, q + 1, n)
+        Written over in every step: fresh memory would cost more than the sums.
     """
 
     rounds: NDArray[np.intp]
@@ -88,6 +90,7 @@ class _Fits:
     move: Floats
     slope: Floats
     log_odds: Floats
+    room: Floats
 
     def those(self, chosen: NDArray[np.bool_]) -> "_Fits":
         """Some of the rounds alone."""
@@ -122,7 +125,8 @@ class _Fits:
             own = self.bags[:, 0] * chances[:, j]
             for k in range(j + 1):
                 spread = own * ((j == k) - chances[:, k])
-                block = (self.design * spread[:, None, :]) @ self.design.swapaxes(1, 2)
+                np.multiply(self.design, spread[:, None, :], out=self.room)
+                block = self.room @ self.design.swapaxes(1, 2)
                 block[:, on, on] += penalty[j, k] * ridge + _TINY * (j == k)
                 curvature[:, j, :, k] = curvature[:, k, :, j] = block
         size = others * width
@@ -145,6 +149,7 @@ def _start(prepared: Prepared, target: Floats, counts: Counts) -> _Fits:
         zeros,
         np.zeros(n_rounds),
         np.zeros((n_rounds, *target.shape)),
+        np.empty_like(design),
     )
 
 

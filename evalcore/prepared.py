@@ -50,7 +50,8 @@ class Prepared:
     @cached_property
     def extent(self) -> Floats:
         """Largest distance of a case from that mean in each column, shape (R or 1, q)."""
-        return np.maximum(self.centred.max(axis=2), -self.centred.min(axis=2))
+        largest: Floats = np.maximum(self.centred.max(axis=2), -self.centred.min(axis=2))
+        return largest
 
     @property
     def features(self) -> Floats:

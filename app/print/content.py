@@ -21,6 +21,7 @@ from evalcore.answer import scheme_in_words
 from evalcore.errors import RecordError
 from evalcore.evaluation import ESTIMATORS, Evaluation
 from evalcore.figures import Estimate
+from evalcore.measures import MEASURES
 from evalcore.record import Record
 from evalcore.summary import Summary, estimate_rows, summary
 from evalcore.table import Table
@@ -260,6 +261,11 @@ def _low(figure: Figure, width: int) -> str:
     return str(vl_convert.vegalite_to_svg(spec))
 
 
+# of use to few readers; they stand in results.csv
+LESS_USED = ("optimism_corrected", "out_of_bag_or_632_plus", "winner_corrected")
+MAIN_ESTIMATORS = tuple(key for key in ESTIMATORS if key not in LESS_USED)
+
+
 def held_out(evaluation: Evaluation) -> Groups:
     """Held-out figures of the headline's scheme: a candidate a row, a measure a column."""
     few = evaluation.table.n_classes <= MOST_CLASSES
@@ -343,7 +349,16 @@ def by_estimator(evaluation: Evaluation) -> Groups:
 
 
 def _usual(evaluation: Evaluation) -> Sequence[tuple[Estimate, Row]]:
-    """Estimates counted as the headline counts, each with its text."""
+    """Estimates of the main measures, counted as the headline counts, each with its text.
+
+    The rest is in the record's results.csv.
+    """
     rows = estimate_rows(evaluation, every=True)
     pairs = zip(evaluation.estimates, rows, strict=True)
-    return [(e, row) for e, row in pairs if e.counted_by == evaluation.counted_by]
+    return [
+        (e, row)
+        for e, row in pairs
+        if e.counted_by == evaluation.counted_by
+        and e.measure in MEASURES
+        and e.estimator in MAIN_ESTIMATORS
+    ]

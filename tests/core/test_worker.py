@@ -65,6 +65,7 @@ import sys, time
 from evalcore import record, worker
 add = record.Record.add
 record.Record.add = lambda self, finished: (add(self, finished), time.sleep(0.2))[0]
+worker.WORTH_PROCESSES = 1e9
 worker.main(*sys.argv[1:])
 """
 
