@@ -25,15 +25,24 @@ _BAR = {"shown": 16, "not shown yet": 6, "shown to fall short": 0}
 SHOWN_FINDINGS = 5
 
 
+# what is turned into links, icons, arrows or dashes after escapes are resolved: addresses,
+# :names:, -- and <=; a word joiner, which nobody sees, keeps the characters apart
+_REWRITTEN = re.compile(
+    r"(?<=:)(?=\S)|(?<=@)(?=\S)|(?<=www)(?=\.)|(?<=-)(?=[->])|(?<=<)(?=[-=])|(?<=[>~])(?==)",
+    re.IGNORECASE,
+)
+
+
 def safe(text: str) -> str:
     """Text as Markdown that shows exactly this text.
 
     Names come from files: no character of theirs may become markup, a link or a colour code.
     """
+    text = _REWRITTEN.sub("\u2060", text)
     text = re.sub(r"([\\`*_{}\[\]<>|$~&])", r"\\\1", text)
     text = re.sub(r":(?=\S)", r"\\:", text)
     # only at the start of a line do these make headings and lists
-    return re.sub(r"^(\s*)([#+\-]|\d+(?=[.)]))", _escaped_start, text, flags=re.MULTILINE)
+    return re.sub(r"^(\s*)([#+\-=]|\d+(?=[.)]))", _escaped_start, text, flags=re.MULTILINE)
 
 
 def _escaped_start(found: re.Match[str]) -> str:

@@ -77,6 +77,8 @@ def serve(*, port: int, records: Path | None, browser: bool) -> None:
     EvalError
         No free port, or the folder for records cannot be made.
     """
+    # first: altair looks at pandas while another thread may still be importing it
+    import pandas  # noqa: F401
     import streamlit as st
 
     if records is not None:

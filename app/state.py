@@ -20,7 +20,7 @@ from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
 from evalcore.intake import Sheet, make_table, read_sheet
 from evalcore.plan import Plan
-from evalcore.record import Record, find, new_folder
+from evalcore.record import Record, Status, find, new_folder
 from evalcore.table import Roles, Table
 
 RECORD = "record"
@@ -152,7 +152,8 @@ def start(plan: Plan) -> Record:
 def go_on(record: Record) -> None:
     """Start the process that fills a record, or goes on with it."""
     record.clear_cancel()
-    record.beat()
+    # said at once: the worker takes a second to start, and the page must not look ended till then
+    record.set_status(Status("waiting", record.done(), record.total))
     with (record.folder / "log.txt").open("ab") as log:
         process = subprocess.Popen(
             [sys.executable, "-m", "evalcore.worker", str(record.folder), str(os.getpid())],

@@ -21,6 +21,8 @@ from evalcore.wording import (
     listed,
     n_equals,
     percent,
+    percent_down,
+    percent_up,
     quoted,
     with_interval,
 )
@@ -227,8 +229,8 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     if math.isnan(verdict.at_least):
         return f"{given}; no bound is offered over fewer than {LEAST_BLOCKS} blocks."
     if verdict.word == "shown to fall short":
-        return f"{given}; these {noun.plural} show at most {percent(verdict.at_most, n)}."
-    shows = f"{given}; these {noun.plural} show at least {percent(verdict.at_least, n)}."
+        return f"{given}; these {noun.plural} show at most {percent_up(verdict.at_most, n)}."
+    shows = f"{given}; these {noun.plural} show at least {percent_down(verdict.at_least, n)}."
     if verdict.word == "shown":
         return shows
     units = f"{class_name(limit.of_class)} {noun.plural}" if limit.of_class else noun.plural

@@ -24,6 +24,7 @@ DELIMITERS = {",": "comma", ";": "semicolon", "\t": "tab"}
 MISSING = frozenset({"", "NA", "N/A", "n/a", "NaN", "nan", "NULL", "null", "#N/A"})
 # a label may well be called "null" or "None": only these count as not given
 MISSING_LABEL = frozenset({"", "NA", "N/A", "NaN"})
+MOST_NUMBERS = 50  # different numbers from which a label is taken for a measurement
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?$")
 _INFINITE = re.compile(r"[+-]?inf(inity)?$", re.IGNORECASE)
 _FORBIDDEN = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ufffe\uffff]")
@@ -284,7 +285,8 @@ def _codes(entries: Sequence[str], names: Sequence[str]) -> NDArray[np.intp]:
 
 def _refuse_measurement(entries: Sequence[str], classes: Sequence[str], label: str) -> None:
     numbers = [c for c in classes if _NUMBER.match(c)]
-    if len(classes) > 20 and len(numbers) == len(classes) and len(classes) > len(entries) / 2:
+    many = len(classes) > MOST_NUMBERS or len(classes) > max(20, len(entries) / 2)
+    if many and len(numbers) == len(classes):
         raise TableError(
             f"The column {quoted(label)} holds {count(len(classes))} different numbers in "
             f"{count(len(entries))} rows; that looks like a measurement, not a class. Choose "

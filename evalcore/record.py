@@ -10,7 +10,9 @@ import json
 import os
 import re
 import secrets
+import threading
 import time
+import zipfile
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import asdict, dataclass
@@ -23,7 +25,7 @@ import numpy as np
 
 from evalcore.answers import Answers, Reduced, joined
 from evalcore.engine import WHOLE, Finished, Task, tasks
-from evalcore.errors import RecordError
+from evalcore.errors import EvalError, RecordError
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import CountedBy
 from evalcore.intake import make_table, read_sheet
@@ -81,7 +83,8 @@ class Record:
         self.folder = folder
         if not (folder / "about.json").is_file():
             raise RecordError(f"There is no record in {folder.name!r}.")
-        self.about: dict[str, Any] = json.loads((folder / "about.json").read_text("utf-8"))
+        with _undamaged(folder / "about.json"):
+            self.about: dict[str, Any] = json.loads((folder / "about.json").read_text("utf-8"))
 
     @classmethod
     def create(cls, folder: Path, data: bytes, name: str, plan: Plan) -> "Record":
@@ -133,7 +136,8 @@ class Record:
     @cached_property
     def plan(self) -> Plan:
         """The plan as stored."""
-        return Plan.from_json((self.folder / "plan.json").read_text("utf-8"))
+        with _undamaged(self.folder / "plan.json"):
+            return Plan.from_json((self.folder / "plan.json").read_text("utf-8"))
 
     @cached_property
     def source(self) -> bytes:
@@ -154,7 +158,8 @@ class Record:
     @cached_property
     def rounds(self) -> dict[str, Rounds]:
         """The rounds as drawn, by scheme name."""
-        with np.load(self.folder / "rounds.npz") as stored:
+        path = self.folder / "rounds.npz"
+        with _undamaged(path), np.load(path) as stored:
             return {
                 name: Rounds(stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"])
                 for at, name in enumerate(self.plan.scheme_names)
@@ -193,8 +198,8 @@ class Record:
             np.savez(place, **arrays)
 
     def _read(self, task: Task) -> tuple[dict[str, Answers], dict[str, str]]:
-        answers = {}
-        with np.load(self._chunk(task)) as stored:
+        answers, path = {}, self._chunk(task)
+        with _undamaged(path), np.load(path) as stored:
             failures = json.loads(str(stored["failures"]))
             for at, name in enumerate(self.plan.candidate_names):
                 if f"{at}-scores" in stored:
@@ -256,7 +261,8 @@ class Record:
         path = self.folder / "status.json"
         if not path.exists():
             return Status("interrupted", self.done(), self.total)
-        status = Status(**json.loads(path.read_text("utf-8")))
+        with _undamaged(path):
+            status = Status(**json.loads(path.read_text("utf-8")))
         beat = self.folder / "alive"
         silent = not beat.exists() or time.time() - beat.stat().st_mtime > SILENT
         if status.state in ("running", "waiting") and (silent or not _lives(status.process)):
@@ -303,9 +309,23 @@ def find(root: Path, name: str) -> Record:
 @contextmanager
 def _beside(path: Path) -> Iterator[Path]:
     """A place beside the path that takes its name once it is complete."""
-    place = path.with_name(f".{path.stem}-{os.getpid()}{path.suffix}")
+    place = path.with_name(f".{path.stem}-{os.getpid()}-{threading.get_ident()}{path.suffix}")
     yield place
     os.replace(place, path)
+
+
+@contextmanager
+def _undamaged(path: Path) -> Iterator[None]:
+    """Turn what a damaged file raises into a sentence."""
+    try:
+        yield
+    except (OSError, KeyError, TypeError, ValueError, zipfile.BadZipFile) as error:
+        if isinstance(error, EvalError):
+            raise
+        raise RecordError(
+            f"The file {path.name!r} of record {path.parent.name!r} is missing or damaged; "
+            "evaluate the table again."
+        ) from error
 
 
 def write(path: Path, data: bytes) -> None:

@@ -7,7 +7,7 @@ numbers too (the print font has no minus sign).
 import math
 import re
 import unicodedata
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 from evalcore.figures import Interval
@@ -65,6 +65,29 @@ def percent(value: float, n: int) -> str:
     '<1 %'
     """
     return f"{_percent_number(value, n)}{NBSP}%" if not math.isnan(value) else "undefined"
+
+
+def percent_down(value: float, n: int) -> str:
+    """A share that is said to be reached: rounded down, so that 89.6 % is not called 90 %.
+
+    >>> percent_down(0.896, 38).replace(NBSP, " ")
+    '89 %'
+    """
+    return _cut(value, n, math.floor)
+
+
+def percent_up(value: float, n: int) -> str:
+    """A share that is said not to be exceeded: rounded up."""
+    return _cut(value, n, math.ceil)
+
+
+def _cut(value: float, n: int, towards: Callable[[float], int]) -> str:
+    if math.isnan(value):
+        return "undefined"
+    decimals = _decimals(n)
+    # what is a whole step but for rounding noise stays it
+    steps = towards(round(100 * value * 10**decimals, 6))
+    return f"{steps / 10**decimals:.{decimals}f}{NBSP}%"
 
 
 def _decimals(n: int) -> int:

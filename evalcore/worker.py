@@ -27,6 +27,7 @@ def fill(
     *,
     jobs: int | None = None,
     tell: Callable[[Status], None] = lambda status: None,
+    ending: threading.Event | None = None,
 ) -> None:
     """Carry out what is unfinished, then write the results.
 
@@ -37,14 +38,17 @@ def fill(
         Processes; by default one until enough work is left to make more worth starting.
     tell : callable
         Called with each new status.
+    ending : Event, optional
+        Once set, nothing is said any more: whoever set it has the last word.
     """
     todo, rounds = record.unfinished(), record.rounds
     done, began = record.done(), time.monotonic()
     at_first = done
 
     def say(state: Status) -> None:
-        record.set_status(state)
-        tell(state)
+        if ending is None or not ending.is_set():
+            record.set_status(state)
+            tell(state)
 
     say(Status("running", done, record.total, process=os.getpid()))
     while todo:
@@ -99,7 +103,7 @@ def main(folder: str, parent: str) -> None:
     ending = threading.Event()
     threading.Thread(target=_watch, args=(record, int(parent), ending), daemon=True).start()
     try:
-        fill(record)
+        fill(record, ending=ending)
     except Exception as error:  # the boundary: whatever happens is kept in the log and told
         if ending.is_set():
             # processes that were stopped look like a failure from here; the watch has the word

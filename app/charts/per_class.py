@@ -19,7 +19,7 @@ from app.charts.tracks import Bound, TrackRow, track_chart
 from evalcore.answer import class_rate
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
-from evalcore.wording import capitalised, class_name, level, listed, n_equals, percent
+from evalcore.wording import capitalised, class_name, level, listed, n_equals, percent, percent_down
 
 MOST_IN_TITLE = 3
 
@@ -91,7 +91,7 @@ def _track(
     if name in least:
         marks.append(Bound(least[name], f"limit {level(least[name])}", LIMIT))
     if name in cautious:
-        words = f"at least {percent(cautious[name], estimate.n)}"
+        words = f"at least {percent_down(cautious[name], estimate.n)}"
         marks.append(Bound(cautious[name], words, INK))
     return TrackRow(
         name=_called(evaluation, estimate),
@@ -120,7 +120,7 @@ def _title(
     decided = [e for e in found if e.of_class in least and e.of_class in cautious]
     parts = [
         f"{capitalised(_called(evaluation, e, length=30))}: at least "
-        f"{percent(cautious[e.of_class], e.n)}, limit {level(least[e.of_class])}"
+        f"{percent_down(cautious[e.of_class], e.n)}, limit {level(least[e.of_class])}"
         for e in decided
     ]
     if parts:
@@ -154,7 +154,7 @@ def _spoken(
     name, noun = estimate.of_class, evaluation.table.noun_for(estimate.counted_by)
     text = f"{name}: {saying.spoken(estimate)}, {n_equals(estimate.n, noun)}"
     if name in cautious:
-        text += f", at least {percent(cautious[name], estimate.n)}"
+        text += f", at least {percent_down(cautious[name], estimate.n)}"
     return text + (f", limit {level(least[name])}" if name in least else "")
 
 
@@ -174,7 +174,7 @@ def _row(
         "n": estimate.n,
     }
     if cautious:
-        row["at least"] = percent(cautious[name], estimate.n) if name in cautious else ""
+        row["at least"] = percent_down(cautious[name], estimate.n) if name in cautious else ""
     if least:
         row["limit"] = level(least[name]) if name in least else ""
     return row

@@ -257,6 +257,7 @@ def test_a_candidate_that_fails_does_not_end_the_others(monkeypatch):
         table.roles,
         (choose(SCHEMES, "holdout"),),
         (choose(CANDIDATES, "lda"), choose(CANDIDATES, "majority")),
+        engine="plain",
     )
     rounds = plan.draw(table)
     with pytest.warns(UserWarning, match="lda failed") as warned:

@@ -104,7 +104,7 @@ class TestChoosing:
             (
                 CANDIDATES,
                 "perceptron:C=1",
-                "There is no 'perceptron'; choose majority, logistic, lda, naive_bayes, "
+                "There is no 'perceptron'; choose majority, logistic, lda, qda, naive_bayes, "
                 "nearest_neighbours, one_feature, present_practice, tree, forest, svm or boosting.",
             ),
             (
