@@ -168,14 +168,14 @@ def best_sentence(evaluation: Evaluation) -> str:
     best = evaluation.winner
     if best is None or math.isnan(best.value):
         return ""
-    table, plan = evaluation.table, evaluation.plan
+    plan = evaluation.plan
     selected = evaluation.estimate(best.measure, best.candidate)
     tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
-    name = measure_name(table, plan, best.measure)
     return (
-        f"Of {tried} candidates {plan.title(best.candidate)} came out best by the {name}: "
-        f"{percent(selected.value, best.n)}, {percent(best.value, best.n)} once the luck of being "
-        "best is taken off. Verdicts start from the corrected rate."
+        f"Of {tried} candidates {plan.title(best.candidate)} came out best by "
+        f"{ALL_MEASURES[best.measure].trade}: {percent(selected.value, best.n)}, "
+        f"{percent(best.value, best.n)} once the luck of being best is taken off; verdicts start "
+        "there."
     )
 
 
