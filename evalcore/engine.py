@@ -21,7 +21,7 @@ from evalcore.rounds import Counts, Rounds
 from evalcore.settings import Settings
 from evalcore.table import Table
 
-CHUNK = 10  # rounds finished together; depends on nothing, so that a resume meets the same bounds
+CHUNK = 50  # most rounds finished together
 WHOLE = ""  # the scheme name of the fits on all cases
 
 
@@ -59,11 +59,23 @@ def tasks(rounds: dict[str, Rounds]) -> list[Task]:
     """All tasks of drawn rounds: the fits on all cases first, then scheme by scheme."""
     todo = [Task(WHOLE, 0, 1)]
     for name, drawn in rounds.items():
+        step = chunk_rounds(drawn.n_cases)
         todo += [
-            Task(name, start, min(start + CHUNK, drawn.n_rounds))
-            for start in range(0, drawn.n_rounds, CHUNK)
+            Task(name, start, min(start + step, drawn.n_rounds))
+            for start in range(0, drawn.n_rounds, step)
         ]
     return todo
+
+
+def chunk_rounds(n_cases: int) -> int:
+    """Rounds finished together: many of a small table, ten of a large one.
+
+    It depends on the table alone, so that a resume meets the same bounds.
+
+    >>> [chunk_rounds(n) for n in (150, 720, 100_000)]
+    [50, 20, 10]
+    """
+    return max(10, min(CHUNK, 15_000 // n_cases))
 
 
 def whole_rounds(n_cases: int) -> Rounds:

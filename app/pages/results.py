@@ -13,6 +13,7 @@ from evalcore.answer import (
     title,
 )
 from evalcore.checks_candidates import why_632_misleads
+from evalcore.engine import chunk_rounds
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
 from evalcore.findings import findings
@@ -166,7 +167,9 @@ def figures(record: Record, *, live: bool) -> None:
         return
     if evaluation is None:
         look.page("Results")
-        st.write("First figures after 10 rounds." if live else "No round has finished yet.")
+        first = chunk_rounds(record.table.n_cases)
+        soon = f"First figures after {count(first)} rounds."
+        st.write(soon if live else "No round has finished yet.")
         return
     show(record, evaluation, live=live)
 
