@@ -11,6 +11,7 @@ from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
 from evalcore.intake import make_table, noun_from, read_sheet
 from evalcore.measures import MEASURES
+from evalcore.outlook import in_words, outlook
 from evalcore.plan import (
     Choice,
     Limit,
@@ -133,6 +134,9 @@ def _evaluate(given: argparse.Namespace) -> None:
     print(title(evaluation), answer(evaluation), sep="\n")
     for row in limit_rows(evaluation, evaluation.about):
         print(f"{row.name}: {row.verdict.word}. {row.detail}")
+        further = in_words(evaluation, outlook(evaluation, evaluation.about, row.verdict))
+        if further:
+            print(further)
     for finding in findings(record.table, plan, evaluation):
         print(f"{finding.severity}: {finding.title}")
     print(f"Record: {record.folder}")

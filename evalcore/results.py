@@ -7,10 +7,13 @@ from collections.abc import Iterable, Sequence
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate, Finding
 from evalcore.findings import findings
+from evalcore.further_cases import Needed
 from evalcore.other_intervals import of_headline
+from evalcore.outlook import outlook
 from evalcore.per_case import cases
 from evalcore.record import Record, write
 from evalcore.sources import SOURCES
+from evalcore.verdict import verdicts
 
 COLUMNS = (
     "candidate", "scheme", "estimator", "measure", "class", "counted_by", "value", "low", "high",
@@ -33,6 +36,7 @@ def write_results(record: Record) -> None:
         ("comparison", comparison_csv(evaluation)),
         ("intervals", intervals_csv(evaluation)),
         ("cases", cases_csv(evaluation)),
+        ("verdicts", verdicts_csv(evaluation)),
     ):
         write(record.folder / f"{name}.csv", text.encode())
 
@@ -94,6 +98,44 @@ def intervals_csv(evaluation: Evaluation) -> str:
             for e, bounds in of_headline(evaluation)
         ),
     )  # fmt: skip
+
+
+def verdicts_csv(evaluation: Evaluation) -> str:
+    """Each acceptance limit: its verdict, the bounds behind it, and what would show it.
+
+    The last columns are further units that give four chances in five, judged alone and together
+    with the present ones, at a cautious, the present and a hopeful true rate; ``never`` where no
+    number is enough, empty where none is asked for.
+    """
+    names = ("cautious", "present", "hopeful")
+    header = [
+        "candidate", "measure", "class", "limit", "confidence", "set_on", "verdict", "value",
+        "at_least", "at_most", "n",
+    ]  # fmt: skip
+    for name in names:
+        header += [f"{name}_rate", f"{name}_alone", f"{name}_together"]
+    rows = []
+    for verdict in verdicts(evaluation, evaluation.about):
+        limit = verdict.limit
+        row = [
+            evaluation.about, limit.measure, limit.of_class, repr(limit.least),
+            repr(limit.confidence), limit.set_on, verdict.word, repr(verdict.value),
+            repr(verdict.at_least), repr(verdict.at_most), str(verdict.n),
+        ]  # fmt: skip
+        found = {m.name: m for m in outlook(evaluation, evaluation.about, verdict).needed}
+        for name in names:
+            more = found.get(name)
+            row += (
+                [repr(more.rate), _needed(more.alone), _needed(more.together)]
+                if more
+                else ["", "", ""]
+            )
+        rows.append(row)
+    return _csv(header, rows)
+
+
+def _needed(needed: Needed) -> str:
+    return str(needed.cases) if needed.cases is not None else needed.outcome
 
 
 def cases_csv(evaluation: Evaluation) -> str:

@@ -116,6 +116,12 @@ def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> In
     return Interval(at_rate.low, max(own.high, at_rate.high), level, at_rate.method)
 
 
+def starting_rate(evaluation: Evaluation, candidate: str, limit: Limit) -> float:
+    """The rate the verdict on a limit starts from."""
+    estimate = evaluation.estimate(limit.measure, candidate, of_class=limit.of_class)
+    return _rate(evaluation, estimate)
+
+
 def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) -> int:
     known = ~np.isnan(part.shares)
     if of_class is not None:

@@ -74,6 +74,7 @@ ORDER = (
     "winner",
     "other_intervals",
     "verdict",
+    "outlook",
     "cut_off",
     "rehearsal",
     "answer",
