@@ -7,11 +7,11 @@ from pathlib import Path
 
 from evalcore.answer import answer, limit_rows, title
 from evalcore.candidates import CANDIDATES
+from evalcore.cluster import on_cluster
 from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
 from evalcore.intake import make_table, noun_from, read_sheet
 from evalcore.measures import MEASURES
-from evalcore.outlook import in_words, outlook
 from evalcore.plan import (
     Choice,
     Limit,
@@ -104,6 +104,9 @@ def _evaluate_parser(parser: argparse.ArgumentParser) -> None:
         help="plain: every round fitted on its own with scikit-learn's public classes",
     )
     parser.add_argument("--jobs", type=int, metavar="N", help="processes; digits do not depend")
+    parser.add_argument(
+        "--cluster", default="", metavar="ADDRESS", help="a Dask scheduler that carries out rounds"
+    )
     parser.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="new record")
     parser.set_defaults(run=_evaluate)
 
@@ -126,7 +129,11 @@ def _evaluate(given: argparse.Namespace) -> None:
         raise PlanError(f"`jobs` must be at least 1; got {given.jobs}.")
     data, plan = _read(given.file), _plan(given)
     record = _record(given.out, data, given.file.name, plan)
-    fill(record, jobs=given.jobs, tell=_progress)
+    if given.cluster:
+        with on_cluster(given.cluster):
+            fill(record, jobs=-1, tell=_progress)
+    else:
+        fill(record, jobs=given.jobs, tell=_progress)
     print(file=sys.stderr)
     evaluation = record.evaluation()
     if evaluation is None:
@@ -134,9 +141,8 @@ def _evaluate(given: argparse.Namespace) -> None:
     print(title(evaluation), answer(evaluation), sep="\n")
     for row in limit_rows(evaluation, evaluation.about):
         print(f"{row.name}: {row.verdict.word}. {row.detail}")
-        further = in_words(evaluation, outlook(evaluation, evaluation.about, row.verdict))
-        if further:
-            print(further)
+        if row.further:
+            print(row.further)
     for finding in findings(record.table, plan, evaluation):
         print(f"{finding.severity}: {finding.title}")
     print(f"Record: {record.folder}")

@@ -98,7 +98,8 @@ def limit_rows(rows: Sequence[LimitRow]) -> None:
         f"<strong style='font-weight:600;flex:1 1 17rem'>{html.escape(row.name)}</strong>"
         f"<span style='flex:1 1 10rem'>{html.escape(row.figure)}</span>"
         f"<span>{verdict_mark(row.verdict.word)}</span></div>"
-        f"<div style='color:#4F5960;font-size:0.9375rem'>{html.escape(row.detail)}</div></div>"
+        "<div style='color:#4F5960;font-size:0.9375rem'>"
+        f"{html.escape(f'{row.detail} {row.further}'.strip())}</div></div>"
         for row in rows
     )
     st.html(f"<div style='border-top:2px solid #12181B'>{lines}</div>")

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.measures import ALL_MEASURES, MEASURES
+from evalcore.outlook import in_words, outlook
 from evalcore.plan import Limit, Plan
 from evalcore.profile import majority
 from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
@@ -39,12 +40,16 @@ CAUTION = (
 
 @dataclass(frozen=True)
 class LimitRow:
-    """One acceptance limit as a row: name, figure, verdict, and what stands behind it."""
+    """One acceptance limit as a row: name, figure, verdict, what stands behind it and further on.
+
+    `further` says how many more units would show it; empty where none are asked for.
+    """
 
     name: str
     figure: str
     verdict: Verdict
     detail: str
+    further: str
 
 
 def class_rate(table: Table, plan: Plan, name: str, *, trade: bool = True) -> str:
@@ -215,6 +220,7 @@ def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
                 f"{n_equals(estimate.n)}",
                 verdict,
                 _detail(evaluation, verdict),
+                in_words(evaluation, outlook(evaluation, candidate, verdict)),
             )
         )
     return tuple(rows)

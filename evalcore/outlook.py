@@ -81,9 +81,11 @@ def in_words(evaluation: Evaluation, given: Outlook) -> str:
         f"{_said(more.alone)} if {percent(more.rate, n)} are truly right ({more.name})"
         for more in given.needed
     ]
+    limited = any(m.alone.outcome == "never" and m.rate > limit.least for m in given.needed)
+    why = " The model itself varies too much from round to round for that." if limited else ""
     return (
-        f"Further {units} judged alone that give four chances in five to show {level(limit.least)}: "
-        f"{'; '.join(parts)}."
+        f"Further {units} judged alone that give four chances in five to show "
+        f"{level(limit.least)}: {'; '.join(parts)}.{why}"
     )
 
 

@@ -35,7 +35,8 @@ def fill(
     ----------
     record : Record
     jobs : int, optional
-        Processes; by default one until enough work is left to make more worth starting.
+        Processes; by default one until enough work is left to make more worth starting; -1 for
+        all there are, e.g. of a cluster.
     tell : callable
         Called with each new status.
     ending : Event, optional

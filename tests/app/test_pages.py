@@ -527,7 +527,7 @@ class TestEndedEarly:
     def stopped(self, records: Path, state_: str, message: str = "") -> Record:
         plan = Plan(
             Roles("class"),
-            (choose(SCHEMES, "cross_validation", folds=4, repeats=5),),
+            (choose(SCHEMES, "cross_validation", folds=4, repeats=25),),
             (choose(CANDIDATES, "majority"), choose(CANDIDATES, "naive_bayes")),
         )
         data = (DATA / "iris.csv").read_bytes()
@@ -543,17 +543,17 @@ class TestEndedEarly:
             (
                 "cancelled",
                 "",
-                "This evaluation was cancelled; 11 of 21 rounds had finished and are kept.",
+                "This evaluation was cancelled; 51 of 101 rounds had finished and are kept.",
             ),
             (
                 "interrupted",
                 "",
-                "This evaluation was interrupted; 11 of 21 rounds had finished and are kept.",
+                "This evaluation was interrupted; 51 of 101 rounds had finished and are kept.",
             ),
             (
                 "failed",
                 "The disk is *full*.",
-                "This evaluation failed. The disk is *full*. 11 of 21 rounds had finished and are kept.",
+                "This evaluation failed. The disk is *full*. 51 of 101 rounds had finished and are kept.",
             ),
         ],
     )
@@ -564,7 +564,7 @@ class TestEndedEarly:
         visit(app, record, "results")
         assert [w.value for w in app.warning] == [look_safe(says)]
         assert "naive Bayes is expected to be right in" in texts(app)
-        assert any("Only 10 of 20 rounds" in e.label for e in app.expander)
+        assert any("Only 50 of 100 rounds" in e.label for e in app.expander)
         gone_on = []
         monkeypatch.setattr(state, "go_on", lambda given: gone_on.append(given.name))
         press(app, "Go on from the finished rounds")
@@ -572,7 +572,7 @@ class TestEndedEarly:
 
     def test_while_it_runs_there_is_a_button_to_cancel(self, app, records, monkeypatch):
         record = self.stopped(records, "running")
-        record.set_status(Status("running", 11, 21, 12.0, process=1))
+        record.set_status(Status("running", 51, 101, 12.0, process=1))
         monkeypatch.setattr("evalcore.record._lives", lambda process: True)
         visit(app, record, "results")
         assert [b.label for b in app.button] == ["Cancel"]

@@ -66,6 +66,7 @@ ORDER = (
     "trees",
     "exact_rounds",
     "engine",
+    "cluster",
     "tuning",
     "judged",
     "together",

@@ -183,7 +183,7 @@ class TestDigits:
     table = blurred_classes()
 
     def scores(self, candidates, *, schemes=None, jobs=1, seed=1):
-        schemes = schemes or (choose(SCHEMES, "bootstrap", rounds=12),)
+        schemes = schemes or (choose(SCHEMES, "bootstrap", rounds=CHUNK + 2),)
         plan = Plan(self.table.roles, schemes, candidates, seed=seed)
         _, answers = carried_out(self.table, plan, jobs=jobs)
         return {key: found.scores.tobytes() for key, found in answers.items()}
@@ -194,7 +194,7 @@ class TestDigits:
         assert beside["bootstrap", "forest"] == alone["bootstrap", "forest"]
 
     def test_other_schemes_move_nothing(self):
-        bootstrap = choose(SCHEMES, "bootstrap", rounds=12)
+        bootstrap = choose(SCHEMES, "bootstrap", rounds=CHUNK + 2)
         alone = self.scores((SMALL_FOREST,))
         beside = self.scores(
             (SMALL_FOREST,),
@@ -204,7 +204,8 @@ class TestDigits:
 
     def test_more_rounds_only_append(self):
         short = self.scores((SMALL_FOREST,))
-        long = self.scores((SMALL_FOREST,), schemes=(choose(SCHEMES, "bootstrap", rounds=17),))
+        more = (choose(SCHEMES, "bootstrap", rounds=CHUNK + 7),)
+        long = self.scores((SMALL_FOREST,), schemes=more)
         assert long["bootstrap", "forest"].startswith(short["bootstrap", "forest"])
         assert len(long["bootstrap", "forest"]) > len(short["bootstrap", "forest"])
 

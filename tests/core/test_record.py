@@ -12,7 +12,7 @@ import pytest
 from numpy.testing import assert_array_equal
 
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import CHUNK, WHOLE, Task, round_scores, run, tasks
+from evalcore.engine import WHOLE, Task, chunk_rounds, round_scores, run, tasks
 from evalcore.errors import EvalError, PlanError, RecordError, TableError
 from evalcore.estimates import by_case
 from evalcore.findings import findings
@@ -28,6 +28,9 @@ from .checks import DATA, exactly
 
 PENGUINS = (DATA / "penguins.csv").read_bytes()
 SOME_PENGUINS = b"".join(PENGUINS.splitlines(keepends=True)[::4])
+STEP = chunk_rounds(SOME_PENGUINS.count(b"\n") - 1)  # rounds of a whole chunk
+CROSS, BOOTSTRAP = 2 * STEP, STEP + 2  # rounds planned
+TOTAL = 1 + CROSS + BOOTSTRAP
 NO_SUCH = (
     "This address names no record kept here. A record's name has 22 characters, such as "
     "20260504-101200-0a1b2c."
@@ -35,12 +38,12 @@ NO_SUCH = (
 
 
 def a_plan(**changes) -> Plan:
-    """20 rounds of cross-validation (two chunks), 12 of the bootstrap (two), and all cases once."""
+    """Cross-validation in two whole chunks, the bootstrap in one and a bit, and all cases once."""
     plan = Plan(
         Roles("species"),
         (
-            choose(SCHEMES, "cross_validation", folds=4, repeats=5),
-            choose(SCHEMES, "bootstrap", rounds=12),
+            choose(SCHEMES, "cross_validation", folds=5, repeats=CROSS // 5),
+            choose(SCHEMES, "bootstrap", rounds=BOOTSTRAP),
         ),
         (choose(CANDIDATES, "majority"), choose(CANDIDATES, "forest", trees=3)),
     )
@@ -82,7 +85,7 @@ class TestCreating:
 
     def test_waits_with_nothing_finished(self, tmp_path):
         record = a_record(tmp_path)
-        assert record.status() == Status("waiting", 0, 1 + 20 + 12)
+        assert record.status() == Status("waiting", 0, TOTAL)
         assert record.unfinished() == tasks(record.rounds)
         assert record.evaluation() is None
 
@@ -195,7 +198,7 @@ class TestAlteredFile:
 
 class TestFilling:
     def test_ends_finished_with_results_and_findings(self, filled):
-        assert filled.status() == Status("finished", 33, 33)
+        assert filled.status() == Status("finished", TOTAL, TOTAL)
         assert filled.unfinished() == []
         evaluation = filled.evaluation()
         assert (filled.folder / "results.csv").read_text("utf-8") == results_csv(evaluation)
@@ -219,7 +222,7 @@ class TestFilling:
     def test_a_reader_later_gets_the_same_figures(self, filled):
         read = Record(filled.folder).evaluation()
         assert results_csv(read) == (filled.folder / "results.csv").read_text("utf-8")
-        assert read.planned == {"cross_validation": 20, "bootstrap": 12}
+        assert read.planned == {"cross_validation": CROSS, "bootstrap": BOOTSTRAP}
 
     def test_what_has_finished_is_not_carried_out_again(self, filled, tmp_path, monkeypatch):
         record = a_record(tmp_path)
@@ -242,9 +245,17 @@ class TestFilling:
     def test_tells_how_far_it_is(self, tmp_path):
         record, said = a_record(tmp_path), []
         fill(record, jobs=1, tell=said.append)
-        assert [s.done for s in said] == [0, 1, 11, 21, 31, 33, 33]
+        assert [s.done for s in said] == [
+            0,
+            1,
+            1 + STEP,
+            1 + CROSS,
+            1 + CROSS + STEP,
+            TOTAL,
+            TOTAL,
+        ]
         assert [s.state for s in said] == ["running"] * 6 + ["finished"]
-        assert {s.total for s in said} == {33}
+        assert {s.total for s in said} == {TOTAL}
         # nothing is promised before five rounds are through
         assert [s.seconds_left is None for s in said[:3]] == [True, True, False]
         assert said[5].seconds_left == 0
@@ -253,32 +264,32 @@ class TestFilling:
 class TestPartOfTheRounds:
     def test_figures_rest_on_finished_rounds_only(self, tmp_path):
         record = a_record(tmp_path)
-        carry_out(record, [Task(WHOLE, 0, 1), Task("cross_validation", 0, CHUNK)])
+        carry_out(record, [Task(WHOLE, 0, 1), Task("cross_validation", 0, STEP)])
         evaluation = record.evaluation()
         assert list(evaluation.rounds) == ["cross_validation"]
-        first = record.rounds["cross_validation"].first(CHUNK)
+        first = record.rounds["cross_validation"].first(STEP)
         assert_array_equal(evaluation.rounds["cross_validation"].test, first.test)
-        assert evaluation.planned == {"cross_validation": 20, "bootstrap": 12}
-        assert {(e.scheme, e.rounds) for e in evaluation.estimates} == {("cross_validation", CHUNK)}
+        assert evaluation.planned == {"cross_validation": CROSS, "bootstrap": BOOTSTRAP}
+        assert {(e.scheme, e.rounds) for e in evaluation.estimates} == {("cross_validation", STEP)}
         part = evaluation.part("forest", "cross_validation")
         assert part.held.scores.shape == (int(first.test.sum()), 3)
         estimate = evaluation.estimate("accuracy", "forest")
         assert estimate.value == by_case(part.held.correct, first)
-        assert record.done() == 1 + CHUNK
+        assert record.done() == 1 + STEP
 
     def test_a_chunk_behind_a_gap_waits(self, tmp_path):
         record = a_record(tmp_path)
-        later = Task("cross_validation", CHUNK, 2 * CHUNK)
-        carry_out(record, [Task(WHOLE, 0, 1), Task("bootstrap", 0, CHUNK), later])
+        later = Task("cross_validation", STEP, 2 * STEP)
+        carry_out(record, [Task(WHOLE, 0, 1), Task("bootstrap", 0, STEP), later])
         evaluation = record.evaluation()
         assert {name: drawn.n_rounds for name, drawn in evaluation.rounds.items()} == {
-            "bootstrap": CHUNK
+            "bootstrap": STEP
         }
-        assert record.done() == 1 + CHUNK + CHUNK
+        assert record.done() == 1 + STEP + STEP
 
     def test_without_the_fit_on_all_cases_there_are_no_figures(self, tmp_path):
         record = a_record(tmp_path)
-        carry_out(record, [Task("cross_validation", 0, CHUNK)])
+        carry_out(record, [Task("cross_validation", 0, STEP)])
         assert record.evaluation() is None
 
     def test_without_any_round_there_are_no_figures(self, tmp_path):
@@ -333,7 +344,7 @@ class TestFailures:
                     choose(CANDIDATES, "naive_bayes"),
                     choose(CANDIDATES, "forest", trees=3),
                 ),
-                schemes=(choose(SCHEMES, "cross_validation", folds=5, repeats=3),),
+                schemes=(choose(SCHEMES, "cross_validation", folds=5, repeats=STEP // 5 + 1),),
             ),
         )
         assert len(tasks(record.rounds)) == 3
@@ -368,7 +379,7 @@ class TestFailures:
 class TestStatus:
     def test_a_worker_that_lives_and_gives_signs_is_running(self, tmp_path, monkeypatch):
         record = a_record(tmp_path)
-        given = Status("running", 11, 33, 4.5, process=1)
+        given = Status("running", 1 + STEP, TOTAL, 4.5, process=1)
         monkeypatch.setattr("evalcore.record._lives", lambda process: process == 1)
         record.set_status(given)
         assert record.status() == given
@@ -377,13 +388,13 @@ class TestStatus:
         record = a_record(tmp_path)
         carry_out(record, record.unfinished()[:2])
         monkeypatch.setattr("evalcore.record._lives", lambda process: False)
-        record.set_status(Status("running", 1, 33, 4.5, process=1))
-        assert record.status() == Status("interrupted", 1 + CHUNK, 33)
+        record.set_status(Status("running", 1, TOTAL, 4.5, process=1))
+        assert record.status() == Status("interrupted", 1 + STEP, TOTAL)
 
     def test_a_worker_without_signs_of_life_shows_as_interrupted(self, tmp_path, monkeypatch):
         record = a_record(tmp_path)
         monkeypatch.setattr("evalcore.record._lives", lambda process: True)
-        record.set_status(Status("running", 1, 33, process=1))
+        record.set_status(Status("running", 1, TOTAL, process=1))
         now = (record.folder / "alive").stat().st_mtime
         monkeypatch.setattr("evalcore.record.time.time", lambda: now + SILENT - 1)
         assert record.status().state == "running"
@@ -393,14 +404,14 @@ class TestStatus:
     def test_a_record_without_status_shows_as_interrupted(self, tmp_path):
         record = a_record(tmp_path)
         (record.folder / "status.json").unlink()
-        assert record.status() == Status("interrupted", 0, 33)
+        assert record.status() == Status("interrupted", 0, TOTAL)
 
     @pytest.mark.parametrize("state", ["finished", "cancelled", "failed"])
     def test_an_ended_one_keeps_its_state(self, tmp_path, monkeypatch, state):
         record = a_record(tmp_path)
         monkeypatch.setattr("evalcore.record._lives", lambda process: False)
-        record.set_status(Status(state, 5, 33, message="why"))
-        assert record.status() == Status(state, 5, 33, message="why")
+        record.set_status(Status(state, 5, TOTAL, message="why"))
+        assert record.status() == Status(state, 5, TOTAL, message="why")
 
     def test_a_wish_to_stop_can_be_taken_back(self, tmp_path):
         record = a_record(tmp_path)

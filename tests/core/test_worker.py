@@ -25,10 +25,11 @@ SHORT = Plan(
     Roles("species"),
     (
         choose(SCHEMES, "cross_validation", folds=4, repeats=3),
-        choose(SCHEMES, "bootstrap", rounds=8 * CHUNK),
+        choose(SCHEMES, "bootstrap", rounds=4 * CHUNK),
     ),
-    (choose(CANDIDATES, "forest", trees=8),),
+    (choose(CANDIDATES, "forest", trees=3),),
 )
+TASKS, TOTAL = 1 + 1 + 4, 1 + 12 + 4 * CHUNK
 # more work than any test waits for, so that none of it ends by itself
 LONG = Plan(
     Roles("species"),
@@ -64,7 +65,7 @@ SLOWLY = """
 import sys, time
 from evalcore import record, worker
 add = record.Record.add
-record.Record.add = lambda self, finished: (add(self, finished), time.sleep(0.2))[0]
+record.Record.add = lambda self, finished: (add(self, finished), time.sleep(0.5))[0]
 worker.WORTH_PROCESSES = 1e9
 worker.main(*sys.argv[1:])
 """
@@ -140,16 +141,16 @@ def test_killed_half_way_it_goes_on_to_the_same_digits(uninterrupted, tmp_path, 
     process.wait()
     kept = chunks(record)
     status = record.status()
-    assert 3 <= len(kept) < 11
-    assert status == Status("interrupted", record.done(), 93)
-    assert 0 < status.done < 93
+    assert 3 <= len(kept) < TASKS
+    assert status == Status("interrupted", record.done(), TOTAL)
+    assert 0 < status.done < TOTAL
     assert list(record.evaluation().rounds) == ["cross_validation"] or (
-        record.evaluation().rounds["bootstrap"].n_rounds < 80
+        record.evaluation().rounds["bootstrap"].n_rounds < 4 * CHUNK
     )
 
     again = Record(record.folder)
     fill(again, jobs=1)
-    assert again.status() == Status("finished", 93, 93)
+    assert again.status() == Status("finished", TOTAL, TOTAL)
     assert chunks(again).items() >= kept.items()
     assert figures(again) == figures(uninterrupted)
 
@@ -163,13 +164,13 @@ def test_cancelled_it_ends_at_once_and_another_process_goes_on_to_the_same_digit
     record.cancel()
     assert process.wait(5) == 0
     status = record.status()
-    assert status == Status("cancelled", record.done(), 93)
-    assert 0 < status.done < 93
+    assert status == Status("cancelled", record.done(), TOTAL)
+    assert 0 < status.done < TOTAL
     kept = chunks(record)
 
     record.clear_cancel()
     assert worker(record).wait(60) == 0
-    assert record.status() == Status("finished", 93, 93)
+    assert record.status() == Status("finished", TOTAL, TOTAL)
     assert log(record) == ""
     assert chunks(record).items() >= kept.items()
     assert figures(record) == figures(uninterrupted)
@@ -251,7 +252,7 @@ def test_an_error_nobody_foresaw_is_told_in_a_sentence_and_logged(tmp_path, work
     assert record.status() == Status(
         "failed",
         0,
-        93,
+        TOTAL,
         message=(
             "The evaluation stopped on an error that was not foreseen; the record's log has it."
         ),
