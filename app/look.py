@@ -118,8 +118,8 @@ def findings(found: Sequence[Finding], *, empty: str) -> None:
             with st.expander(f"{badge} {safe(finding.title)}"):
                 _finding(finding)
         if rest + notes:
-            kind = "note" if not rest else "more"
-            with st.expander(f":gray-badge[{kind}] {len(rest + notes)} more"):
+            more = " more" if first else ""
+            with st.expander(f":gray-badge[note] {len(rest + notes)}{more}"):
                 for finding in rest + notes:
                     st.markdown(f"**{safe(finding.severity)}: {safe(finding.title)}**")
                     _finding(finding)

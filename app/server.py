@@ -55,7 +55,8 @@ CONFIG = {
     "server.showEmailPrompt": False,
     "browser.gatherUsageStats": False,
     "client.toolbarMode": "minimal",
-    "client.showErrorDetails": "type",
+    "client.showErrorDetails": "none",
+    "client.showErrorLinks": False,
     "logger.level": "warning",
 }
 

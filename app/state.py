@@ -16,6 +16,7 @@ import streamlit as st
 from platformdirs import user_data_path
 
 from app import choices
+from app.print.child import own_environment
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
 from evalcore.intake import Sheet, make_table, read_sheet
@@ -41,6 +42,8 @@ def keep_file(data: bytes, name: str) -> None:
     sheet = read_sheet(data, name)
     if st.session_state.get("file") != (data, name):
         forget_choices()
+        for name in ("roles", "table"):
+            st.session_state.pop(name, None)
         st.query_params.pop(RECORD, None)
     st.session_state["file"] = (data, name)
     st.session_state["sheet"] = sheet
@@ -156,11 +159,12 @@ def go_on(record: Record) -> None:
     record.set_status(Status("waiting", record.done(), record.total))
     with (record.folder / "log.txt").open("ab") as log:
         process = subprocess.Popen(
-            [sys.executable, "-m", "evalcore.worker", str(record.folder), str(os.getpid())],
+            [sys.executable, "-P", "-m", "evalcore.worker", str(record.folder), str(os.getpid())],
             stdin=subprocess.DEVNULL,
             stdout=log,
             stderr=log,
             start_new_session=True,
+            env=own_environment(),
         )
     _processes().append(process)
     remember(record)
@@ -170,6 +174,12 @@ def go_on(record: Record) -> None:
 def _processes() -> list[subprocess.Popen[bytes]]:
     """Started processes; polled now and then, so that ended ones do not linger."""
     return []
+
+
+def notice_ended() -> None:
+    """Take note of processes that have ended: until then they look alive to the system."""
+    for process in _processes():
+        process.poll()
 
 
 def remember(record: Record) -> None:
@@ -186,8 +196,7 @@ def record() -> Record | None:
     RecordError
         The address names no record that is kept here.
     """
-    for process in _processes():
-        process.poll()
+    notice_ended()
     name = st.query_params.get(RECORD) or st.session_state.get(RECORD)
     if not name:
         return None

@@ -32,6 +32,7 @@ LOSS_NAMES = {
     "brier": "squared distance of probabilities (Brier score, sum over classes)",
     "log_loss": "log loss",
 }
+NEARLY_ALL = 0.95  # where the interval must begin for the title to say so
 CAUTION = (
     "Where a wrong answer can hurt someone, these figures support local rules and licensed "
     "practice and do not replace them."
@@ -140,7 +141,8 @@ def answer(evaluation: Evaluation) -> str:
     noun = table.noun_for(evaluation.counted_by).plural
     about = evaluation.about
     concern = plan.concern_of(table)
-    mix = f"share of {class_name(concern)} {noun}" if table.n_classes == 2 else "shares of classes"
+    two = table.n_classes == 2 and concern
+    mix = f"share of {class_name(concern)} {noun}" if two else "shares of classes"
     whole = evaluation.estimate("accuracy", about)
     bounds = whole.interval
     stated = (
@@ -175,17 +177,33 @@ def best_sentence(evaluation: Evaluation) -> str:
         return ""
     plan = evaluation.plan
     selected = evaluation.estimate(best.measure, best.candidate)
+    starts = plan.limits and best.candidate == evaluation.about
+    start = "; verdicts start there" if starts else ""
     tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
     return (
         f"Of {tried} candidates {plan.title(best.candidate)} came out best by "
         f"{ALL_MEASURES[best.measure].trade}: {percent(selected.value, best.n)}, "
-        f"{percent(best.value, best.n)} once the luck of being best is taken off; verdicts start "
-        "there."
+        f"{percent(best.value, best.n)} once the luck of being best is taken off{start}."
     )
 
 
+def so_far(evaluation: Evaluation) -> str:
+    """How much of the first scheme the figures rest on; empty once it is complete."""
+    scheme = evaluation.plan.scheme_names[0]
+    planned = evaluation.planned.get(scheme, 0)
+    done = evaluation.rounds[scheme].n_rounds if scheme in evaluation.rounds else 0
+    return f"So far, {count(done)} of {count(planned)} rounds: " if done < planned else ""
+
+
 def title(evaluation: Evaluation) -> str:
-    """The answer in a few words: the verdicts, or about how many of ten are right."""
+    """The answer in a few words: the verdicts, or about how many of ten are right.
+
+    No verdict is given while rounds of the first scheme are missing.
+    """
+    missing = so_far(evaluation)
+    if missing:
+        said = _of_ten(evaluation)
+        return missing + said[:1].lower() + said[1:]
     given = verdicts(evaluation, evaluation.about)
     table, plan = evaluation.table, evaluation.plan
     noun = table.noun_for(evaluation.counted_by).plural
@@ -193,10 +211,15 @@ def title(evaluation: Evaluation) -> str:
         return " ".join(
             f"{capitalised(_short(table, plan, v.limit, noun))}: {v.word}." for v in given
         )
-    value = evaluation.estimate("accuracy", evaluation.about).value
-    of_ten = round(10 * value)
-    if of_ten == 10:
+    return _of_ten(evaluation)
+
+
+def _of_ten(evaluation: Evaluation) -> str:
+    noun = evaluation.table.noun_for(evaluation.counted_by).plural
+    estimate = evaluation.estimate("accuracy", evaluation.about)
+    if estimate.interval is not None and estimate.interval.low >= NEARLY_ALL:
         return f"Right on nearly all further {noun} like these."
+    of_ten = min(9, round(10 * estimate.value))
     return f"Right on about {of_ten} of 10 further {noun} like these."
 
 
@@ -207,7 +230,12 @@ def _short(table: Table, plan: Plan, limit: Limit, noun: str) -> str:
 
 
 def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
-    """Each acceptance limit with its figure, verdict and what would show it."""
+    """Each acceptance limit with its figure, verdict and what would show it.
+
+    None while rounds of the first scheme are missing: more rounds could change a verdict.
+    """
+    if so_far(evaluation):
+        return ()
     table, plan = evaluation.table, evaluation.plan
     rows = []
     for verdict in verdicts(evaluation, candidate):

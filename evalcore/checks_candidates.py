@@ -20,6 +20,7 @@ from evalcore.wording import (
     percent,
     points,
     quoted,
+    tenths,
     with_interval,
 )
 
@@ -117,8 +118,8 @@ def misleading_632(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
                 f".632 misleads for {plan.title(name)}: {sign.what} {decimal(sign.value, 3)}, "
                 f"the threshold is {decimal(sign.threshold, 3)}",
                 f"Of the three signs of a candidate that fits its own cases too well ({_SIGNS}) "
-                "at least one is there. In simulations .632 was then 3 to 18 points too high, the "
-                "per-round form more, and .632+ up to 6.",
+                "at least one is there. .632 then comes out too high, the per-round form more so, "
+                "and .632+ somewhat.",
                 "Use the held-out estimate of the first scheme.",
                 sign.value,
                 sign.threshold,
@@ -233,8 +234,8 @@ def model_variance_unknown(
         "The interval leaves out how much the model itself varies: each case was answered at most "
         "once, twice is needed",
         f"Each case is held out in at most {int(part.held.rounds.times_tested.max())} round of the "
-        "first scheme; from 2 on, the model's variance can be told apart. In simulations such "
-        "intervals held the truth in 66 to 97 of 100 tables where 95 were promised.",
+        "first scheme; from 2 on, the model's variance can be told apart. Such an interval holds "
+        "the truth less often than it promises, most so for a model that varies a lot.",
         "Repeat the cross-validation, or take random subsampling or the bootstrap.",
         1,
         2,
@@ -252,7 +253,7 @@ def schemes_disagree(_: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
             second = evaluation.estimate(
                 "accuracy", name, scheme=scheme, estimator="point_632_plus"
             ).value
-            if not abs(first - second) > APART:
+            if not abs(first - second) > APART or why_632_misleads(evaluation, name, scheme):
                 continue
             n = evaluation.estimate("accuracy", name).n
             yield Finding(
@@ -260,10 +261,9 @@ def schemes_disagree(_: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
                 "moderate",
                 name,
                 f"Two schemes disagree about {plan.title(name)} by "
-                f"{points(abs(first - second), signed=False)}, {points(APART, signed=False)} are "
-                "usual at most",
+                f"{tenths(abs(first - second))}, asked about from {tenths(APART)}",
                 f"The first scheme gives {percent(first, n)}, .632+ gives {percent(second, n)}; "
-                f"the threshold is {points(APART, signed=False)}.",
+                f"the threshold is {tenths(APART)}.",
                 "Take the lower figure until more cases decide.",
                 abs(first - second),
                 APART,

@@ -12,7 +12,7 @@ from evalcore.judged import Judged, offers_interval
 from evalcore.plan import Plan
 from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
-from evalcore.wording import capitalised, count, decimal, percent, points, quoted
+from evalcore.wording import capitalised, count, decimal, percent, quoted, tenths
 
 MONTE_CARLO = 0.01  # an estimate that a redraw would move by more than this has too few rounds
 
@@ -87,19 +87,18 @@ def too_few_rounds(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
             continue
         once = math.isnan(worst[0])
         done = evaluation.rounds[scheme].n_rounds
-        moved = "unknown" if once else f"about {points(worst[0], signed=False)}"
+        moved = "unknown" if once else f"about {tenths(worst[0])}"
         yield Finding(
             "too_few_rounds",
             "moderate",
             scheme,
             f"Too few rounds of {title(plan, scheme)}: drawing them anew would move an estimate "
             f"by {'an unknown amount' if once else moved}; the threshold is "
-            f"{points(MONTE_CARLO, signed=False)}",
+            f"{tenths(MONTE_CARLO)}",
             f"The standard error from the draw alone is {moved} for "
             f"{plan.title(worst[1])} ({count(done)} {'round' if done == 1 else 'rounds'}). "
             + (
-                "In simulations a single 70/30 split moved by 12 points at 30 cases, 8 at 60 and "
-                "5.5 at 120."
+                "A single part cannot say how far the next one would be from it."
                 if once
                 else "More rounds narrow this, never the interval."
             ),

@@ -68,7 +68,7 @@ def tells_classes_apart_alone(table: Table, _: Plan, __: Evaluation | None) -> I
             "Leave it out unless it is known when a new case is answered.",
             value,
             ALONE,
-            "kapoor2023",
+            "own_leakage",
         )
 
 
@@ -124,7 +124,7 @@ def copies_left(table: Table, _: Plan, __: Evaluation | None) -> Iterator[Findin
             f"{table.noun.singular}.",
             facts.copied_cases,
             0,
-            "kapoor2023",
+            "own_leakage",
         )
     if facts.contradicting_cases:
         yield Finding(
@@ -138,7 +138,7 @@ def copies_left(table: Table, _: Plan, __: Evaluation | None) -> Iterator[Findin
             "Look at the labels of these rows first.",
             facts.contradicting_cases,
             0,
-            "kapoor2023",
+            "own_leakage",
         )
 
 
@@ -161,7 +161,7 @@ def units_not_kept_together(table: Table, _: Plan, __: Evaluation | None) -> Ite
             f"If {quoted(column)} names what is independent, choose it as the unit.",
             rows,
             1,
-            "kapoor2023",
+            "own_leakage",
         )
 
 

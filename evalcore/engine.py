@@ -4,6 +4,7 @@ A chunk is fully determined by table and plan, so digits do not depend on the nu
 on the order or on an interruption.
 """
 
+import os
 import time
 import warnings
 from collections.abc import Iterator, Sequence
@@ -55,11 +56,14 @@ class Finished:
     seconds: float
 
 
-def tasks(rounds: dict[str, Rounds]) -> list[Task]:
-    """All tasks of drawn rounds: the fits on all cases first, then scheme by scheme."""
+def tasks(rounds: dict[str, Rounds], *, size: int = 0) -> list[Task]:
+    """All tasks of drawn rounds: the fits on all cases first, then scheme by scheme.
+
+    `size` rounds to a task; `chunk_rounds` decides where it is 0.
+    """
     todo = [Task(WHOLE, 0, 1)]
     for name, drawn in rounds.items():
-        step = chunk_rounds(drawn.n_cases)
+        step = size or chunk_rounds(drawn.n_cases)
         todo += [
             Task(name, start, min(start + step, drawn.n_rounds))
             for start in range(0, drawn.n_rounds, step)
@@ -124,6 +128,9 @@ def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -
     from threadpoolctl import threadpool_limits
 
     began = time.perf_counter()
+    for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
+        # the limit below reaches only what is loaded already; this is read on loading
+        os.environ.setdefault(name, "1")
     part = (
         rounds[task.scheme].part(slice(task.start, task.stop))
         if task.scheme

@@ -97,6 +97,13 @@ class Judged:
             self.held.labels == 1, self.held.rounds, self.held.scores[:, 1]
         )
 
+    def cautious_tau2(self, of_class: int | None) -> float:
+        """Model variance of all or of one class with its standard error added, for verdicts."""
+        chosen = None if of_class is None else self.held.labels == of_class
+        return model_variance.cautious_model_variance(
+            self.held.correct, self.held.rounds, chosen=chosen, units=self.units
+        )
+
     def tau2_of(self, of_class: int) -> float:
         """Model variance of the share right within one class."""
         return model_variance.model_variance(
@@ -151,7 +158,12 @@ def offers_interval(part: Judged) -> bool:
 
 
 def share_interval(
-    level: float, part: Judged, of_class: int | None = None, *, variance: bool = True
+    level: float,
+    part: Judged,
+    of_class: int | None = None,
+    *,
+    variance: bool = True,
+    cautious: bool = False,
 ) -> Interval:
     """The default interval for a share right, of all cases or of one class.
 
@@ -163,6 +175,8 @@ def share_interval(
     of_class : int or None
     variance : bool
         Whether the model's variance is included.
+    cautious : bool
+        Whether its standard error is added to it, as verdicts ask.
     """
     chosen = ~np.isnan(part.shares)
     if of_class is not None:
@@ -172,6 +186,7 @@ def share_interval(
     tau2 = math.nan
     if variance:
         tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
+        tau2 = part.cautious_tau2(of_class) if cautious else tau2
     shares = part.shares[chosen]
     if part.units is not None:
         return intervals.rows_of_units(shares, part.units[chosen], tau2, level=level)

@@ -43,31 +43,60 @@ def model_variance(
     float
         nan where no case is held out twice: then nothing is known of it.
     """
+    together, pairs, k = _per_round(correct, rounds, chosen, units)
+    if k <= 1 or pairs.sum() <= 0:
+        return math.nan
+    return max(0.0, float(together.sum() / pairs.sum())) * k / (k - 1)
+
+
+def cautious_model_variance(
+    correct: ArrayLike,
+    rounds: Rounds,
+    *,
+    chosen: NDArray[np.bool_] | None = None,
+    units: NDArray[np.intp] | None = None,
+) -> float:
+    """tau2 plus its standard error, for what must not rest on a lucky draw of the rounds.
+
+    Own construction: tau2 is a ratio of sums over rounds, and its error is that of such a ratio,
+    the rounds taken as independent. Parameters and nan as in `model_variance`.
+    """
+    together, pairs, k = _per_round(correct, rounds, chosen, units)
+    if k <= 1 or pairs.sum() <= 0:
+        return math.nan
+    ratio = together.sum() / pairs.sum()
+    error = math.sqrt(float(((together - ratio * pairs) ** 2).sum())) / float(pairs.sum())
+    return (max(0.0, float(ratio)) + error) * k / (k - 1)
+
+
+def _per_round(
+    correct: ArrayLike,
+    rounds: Rounds,
+    chosen: NDArray[np.bool_] | None,
+    units: NDArray[np.intp] | None,
+) -> tuple[Floats, Floats, float]:
+    """(sum q)^2 - sum q^2 and m(m - 1) of each round, and k; see `model_variance`."""
     round_at, case_at = rounds.pairs
     value = np.asarray(correct, dtype=np.float64)
     if chosen is not None:
         kept = chosen[case_at]
         round_at, case_at, value = round_at[kept], case_at[kept], value[kept]
     times = np.bincount(case_at, minlength=rounds.n_cases)
-    k = times[times > 0].mean() if value.size else 0.0
+    k = float(times[times > 0].mean()) if value.size else 0.0
     if k <= 1:
-        return math.nan
+        return np.zeros(0), np.zeros(0), k
     means = np.bincount(case_at, value, minlength=rounds.n_cases) / np.maximum(times, 1)
     q = value - means[case_at]
     group = case_at if units is None else units[case_at]
     n_groups = int(group.max()) + 1
-    cell = round_at * n_groups + group
-    per_round = np.bincount(round_at, q)
-    sizes = np.bincount(round_at).astype(np.float64)
-    # a sparse bincount: rounds x units is mostly empty for leave-one-out
-    _, place = np.unique(cell, return_inverse=True)
-    within = np.bincount(place, q)
-    within_sizes = np.bincount(place).astype(np.float64)
-    pairs = (sizes**2).sum() - (within_sizes**2).sum()
-    if pairs <= 0:
-        return math.nan
-    covariance = ((per_round**2).sum() - (within**2).sum()) / pairs
-    return max(0.0, float(covariance)) * k / (k - 1)
+    # rounds x units is mostly empty for leave-one-out: only cells that occur are counted
+    cells, place = np.unique(round_at * n_groups + group, return_inverse=True)
+    of_round, size = cells // n_groups, rounds.n_rounds
+    together: Floats = np.bincount(round_at, q, minlength=size) ** 2
+    together -= np.bincount(of_round, np.bincount(place, q) ** 2, minlength=size)
+    pairs: Floats = np.bincount(round_at, minlength=size).astype(np.float64) ** 2
+    pairs -= np.bincount(of_round, np.bincount(place).astype(np.float64) ** 2, minlength=size)
+    return together, pairs, k
 
 
 def balanced_model_variance(
@@ -106,8 +135,11 @@ def balanced_model_variance(
     return max(0.0, float(per_round.mean())) * k / (k - 1)
 
 
+LARGEST = 500  # cases of a class looked at together; larger classes are cut into parts
+
+
 def auc_model_variance(
-    positive: NDArray[np.bool_], rounds: Rounds, scores: ArrayLike, *, block: int = 2_000_000
+    positive: NDArray[np.bool_], rounds: Rounds, scores: ArrayLike, *, largest: int = LARGEST
 ) -> float:
     """tau_A2: the model's variance of the AUC within rounds (own construction).
 
@@ -122,8 +154,9 @@ def auc_model_variance(
     rounds : Rounds
     scores : array_like, shape (T,)
         In the order of `rounds.pairs`, higher for positives.
-    block : int
-        Pairs kept in memory at once; it changes nothing but the memory used.
+    largest : int
+        Classes with more cases are cut into parts of about this many, every so-many-th case in
+        one, and both sums run over the parts: the same quantity from fewer pairs.
 
     Returns
     -------
@@ -135,26 +168,35 @@ def auc_model_variance(
     ups, downs = np.flatnonzero(positive), np.flatnonzero(~positive)
     if not len(ups) or not len(downs):
         return math.nan
-    shape = (rounds.n_rounds, len(downs))
-    total, rows, columns, squares = np.zeros(shape[0]), 0.0, np.zeros(shape), 0.0
-    shared = held_out = 0.0
-    for start in range(0, len(ups), max(1, block // len(downs))):
-        part = ups[start : start + max(1, block // len(downs))]
-        times, mean = _mean_wins(dense[:, part], dense[:, downs])
-        shared, held_out = shared + times.sum(), held_out + (times > 0).sum()
-        for r in range(rounds.n_rounds):
-            g = np.nan_to_num(_wins(dense[r, part], dense[r, downs]) - mean)
-            total[r] += g.sum()
-            rows += float((g.sum(axis=1) ** 2).sum())
-            columns[r] += g.sum(axis=0)
-            squares += float((g**2).sum())
-    n1, n0 = rounds.test[:, ups].sum(axis=1, dtype=float), rounds.test[:, downs].sum(1, dtype=float)
-    pairs = float((n1 * (n1 - 1) * n0 * (n0 - 1)).sum())
+    parts = -(-max(len(ups), len(downs)) // largest)
+    found = np.zeros(4)
+    for part in range(parts):
+        found += _auc_sums(dense[:, ups[part::parts]], dense[:, downs[part::parts]])
+    numerator, pairs, shared, held_out = found.tolist()
     k = shared / held_out if held_out else 0.0
     if k <= 1 or pairs <= 0:
         return math.nan
-    covariance = ((total**2).sum() - rows - (columns**2).sum() + squares) / pairs
-    return max(0.0, float(covariance)) * k / (k - 1)
+    return max(0.0, numerator / pairs) * k / (k - 1)
+
+
+def _auc_sums(ups: Floats, downs: Floats) -> Floats:
+    """Numerator, denominator, and what k is made of, for some positives and negatives.
+
+    Scores of shape (R, n1) and (R, n0), nan where a case is not held out.
+    """
+    times, mean = _mean_wins(ups, downs)
+    numerator = 0.0
+    for up, down in zip(ups, downs, strict=True):
+        g = np.nan_to_num(_wins(up, down) - mean)
+        numerator += float(
+            g.sum() ** 2 - (g.sum(axis=1) ** 2).sum() - (g.sum(axis=0) ** 2).sum() + (g**2).sum()
+        )
+    n1, n0 = (
+        (~np.isnan(ups)).sum(axis=1).astype(float),
+        (~np.isnan(downs)).sum(axis=1).astype(float),
+    )
+    pairs = float((n1 * (n1 - 1) * n0 * (n0 - 1)).sum())
+    return np.array([numerator, pairs, times.sum(), (times > 0).sum()])
 
 
 def _wins(ups: Floats, downs: Floats) -> Floats:

@@ -10,7 +10,7 @@ from evalcore.estimates import mean_correct
 from evalcore.figures import Interval
 from evalcore.intervals import clopper_pearson
 from evalcore.measures import Floats
-from evalcore.model_variance import cluster_variance, model_variance
+from evalcore.model_variance import cautious_model_variance, cluster_variance
 from evalcore.rounds import Rounds
 
 NO_SPREAD = 1e-12  # a standard error below this is rounding
@@ -124,7 +124,8 @@ def paired_difference(
     _check_answers(first, second, rounds)
     differences = mean_correct(first, rounds) - mean_correct(second, rounds)
     owners = np.arange(rounds.n_cases) if units is None else units
-    tau2 = _cautious_model_variance(first.astype(float) - second, rounds, differences, owners)
+    tau2 = cautious_model_variance(first.astype(float) - second, rounds, units=owners)
+    tau2 = 0.0 if math.isnan(tau2) else tau2
     known = ~np.isnan(differences)
     value, variance, groups = _mean_and_variance(differences[known], owners[known], tau2)
     error = math.sqrt(variance)
@@ -149,33 +150,6 @@ def _check_answers(first: NDArray[np.bool_], second: NDArray[np.bool_], rounds: 
             f"Both candidates need one answer for each of the {wanted[0]} held-out cases; got "
             f"{first.shape} and {second.shape}."
         )
-
-
-def _cautious_model_variance(
-    each: Floats, rounds: Rounds, means: Floats, owners: NDArray[np.intp]
-) -> float:
-    """tau2_d plus its standard error; 0 where no case is held out twice.
-
-    tau2_d is a ratio of sums over rounds, of (sum q)^2 - sum q^2 and of m(m - 1), times
-    k/(k - 1); its error is that of such a ratio, the rounds taken as independent.
-    """
-    tau2 = model_variance(each, rounds, units=owners)
-    if math.isnan(tau2):
-        return 0.0
-    round_at, case_at = rounds.pairs
-    q = each - means[case_at]
-    cells, place = np.unique(
-        round_at * (int(owners.max()) + 1) + owners[case_at], return_inverse=True
-    )
-    of_round = cells // (int(owners.max()) + 1)
-    together = np.bincount(round_at, q, minlength=rounds.n_rounds) ** 2
-    together -= np.bincount(of_round, np.bincount(place, q) ** 2, minlength=rounds.n_rounds)
-    pairs = rounds.test_sizes.astype(np.float64) ** 2
-    pairs -= np.bincount(of_round, np.bincount(place) ** 2.0, minlength=rounds.n_rounds)
-    ratio = together.sum() / pairs.sum()
-    error = math.sqrt(float(((together - ratio * pairs) ** 2).sum())) / float(pairs.sum())
-    times = rounds.times_tested[rounds.times_tested > 0]
-    return tau2 + error * float(times.sum()) / float(times.sum() - len(times))
 
 
 def _mean_and_variance(

@@ -246,9 +246,10 @@ class Plan:
         if self.concern:
             return self.concern
         with_limit = [limit.of_class for limit in self.limits if limit.of_class]
-        smallest = table.classes[smallest_class(table)[0]]
         if table.n_classes == 2:
-            return smallest
+            equal = len(set(table.units_holding.tolist())) == 1
+            if not equal:
+                return table.classes[smallest_class(table)[0]]
         return with_limit[0] if len(set(with_limit)) == 1 else ""
 
     def check(self, table: Table) -> None:

@@ -24,7 +24,7 @@ from typing import Any, Literal
 import numpy as np
 
 from evalcore.answers import Answers, Reduced, joined
-from evalcore.engine import WHOLE, Finished, Task, tasks
+from evalcore.engine import WHOLE, Finished, Task, chunk_rounds, tasks
 from evalcore.errors import EvalError, RecordError
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import CountedBy
@@ -120,6 +120,7 @@ class Record:
             "name": name,
             "table": table.fingerprint,
             "plan": plan.fingerprint,
+            "chunk": chunk_rounds(table.n_cases),
             "begun": time.strftime("%Y-%m-%d %H:%M"),
             "versions": {package: _version(package) for package in PACKAGES},
         }
@@ -170,9 +171,13 @@ class Record:
         """Rounds planned, the fit on all cases included."""
         return 1 + sum(drawn.n_rounds for drawn in self.rounds.values())
 
+    def tasks(self) -> list[Task]:
+        """All tasks, in the chunks this record was begun with."""
+        return tasks(self.rounds, size=int(self.about["chunk"]))
+
     def unfinished(self) -> list[Task]:
         """Tasks that have no answers yet, in order."""
-        return [task for task in tasks(self.rounds) if not self._chunk(task).exists()]
+        return [task for task in self.tasks() if not self._chunk(task).exists()]
 
     def done(self) -> int:
         """Rounds finished."""
@@ -222,7 +227,7 @@ class Record:
             No candidate could be fitted.
         """
         finished: dict[str, list[Task]] = {}
-        for task in tasks(self.rounds):
+        for task in self.tasks():
             if not self._chunk(task).exists():
                 if task.scheme == WHOLE:
                     return None

@@ -135,6 +135,11 @@ SOURCES: dict[str, Source] = {
         "supported by it",
         own=True,
     ),
+    "own_leakage": Source(
+        "own thresholds; the kinds of leakage as in Kapoor & Narayanan 2023, Patterns 4:100804",
+        "10.1016/j.patter.2023.100804",
+        own=True,
+    ),
     "common_practice": Source("common practice, no source"),
     "elementary": Source("elementary probability"),
 }

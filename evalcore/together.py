@@ -38,11 +38,13 @@ def winner(table: Table, plan: Plan, parts: Sequence[Judged]) -> WinnersCorrecti
         return None
     shares = np.column_stack([part.shares for part in choice])
     rng = generator(plan.seed, "winner's correction")
+    # large tables need fewer resamples: each says more, and all are held in memory
+    resamples = max(50, min(RESAMPLES, 2_500_000 // table.n_cases))
     if parts[0].counted_by == "case" and table.has_units:
         # rows of a unit are drawn together
-        bags = stratified_bags(table.unit_labels, rng=rng, resamples=RESAMPLES)[:, table.units]
+        bags = stratified_bags(table.unit_labels, rng=rng, resamples=resamples)[:, table.units]
     else:
-        bags = stratified_bags(choice[0].held.labels, rng=rng, resamples=RESAMPLES)
+        bags = stratified_bags(choice[0].held.labels, rng=rng, resamples=resamples)
     primary: Primary = "accuracy" if plan.measure == "accuracy" else "balanced_accuracy"
     return winners_correction(choice[0].held.labels, shares, bags, primary=primary)
 

@@ -75,7 +75,9 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
     )
     if limit.measure == "balanced_accuracy":
         bounds = balanced_interval(level, part) if offers_interval(part) else _NOTHING
-        at_least, at_most = bounds.low, bounds.high
+        # moved down with the rate where that is corrected for the luck of being best
+        at_least = bounds.low - (estimate.value - _rate(evaluation, estimate))
+        at_most = bounds.high
         n = int(table.class_counts("unit").min())
     else:
         k = table.classes.index(limit.of_class) if limit.of_class else None
@@ -94,23 +96,27 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
 
 
 def _rate(evaluation: Evaluation, estimate: Estimate) -> float:
-    """The rate a verdict starts from: corrected for the luck of being best of several."""
+    """The rate a verdict starts from: corrected for luck if the candidate came out best."""
     corrected = evaluation.corrected(estimate.measure, estimate.of_class)
-    if corrected is None or math.isnan(corrected.value):
+    if (
+        corrected is None
+        or math.isnan(corrected.value)
+        or corrected.candidate != estimate.candidate
+    ):
         return estimate.value
     return min(estimate.value, corrected.value)
 
 
 def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> Interval:
     """The default interval at a rate that may have been corrected downwards."""
-    own = share_interval(level, part, of_class)
+    own = share_interval(level, part, of_class, cautious=True)
     shares = part.shares if of_class is None else part.shares[part.held.labels == of_class]
     value = float(np.nanmean(shares))
     if rate == value or not own.defined:
         return own
     if part.units is not None:
         return Interval(max(0.0, own.low - (value - rate)), own.high, level, own.method)
-    tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
+    tau2 = part.cautious_tau2(of_class)
     at_rate = with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
     # what falls short must do so by the figure as it is
     return Interval(at_rate.low, max(own.high, at_rate.high), level, at_rate.method)

@@ -143,6 +143,15 @@ def points(difference: float, *, signed: bool = True) -> str:
     return f"{sign}{abs(whole)}{NBSP}{'point' if abs(whole) == 1 else 'points'}"
 
 
+def tenths(difference: float) -> str:
+    """A difference in points with one decimal, where it is held against a threshold.
+
+    >>> tenths(0.0316).replace(NBSP, " ")
+    '3.2 points'
+    """
+    return f"{100 * difference:.1f}{NBSP}points"
+
+
 def decimal(value: float, digits: int = 2) -> str:
     """A plain decimal number such as an AUC or a threshold; an en dash for minus."""
     if math.isnan(value):

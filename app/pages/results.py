@@ -36,6 +36,7 @@ def nothing_yet() -> None:
 
 def progress(record: Record) -> None:
     """How far it has come, with a button to cancel; leaves the live page once it has ended."""
+    state.notice_ended()
     status = record.status()
     if status.state not in state.LIVE:
         st.rerun()
@@ -142,6 +143,8 @@ def show(record: Record, evaluation: Evaluation, *, live: bool) -> None:
     rows = limit_rows(evaluation, evaluation.about)
     if rows:
         look.limit_rows(rows)
+    elif evaluation.plan.limits:
+        look.soft("Verdicts are given once all rounds of the first scheme have finished.")
     else:
         look.soft(
             "No limit set, so there is no verdict. Set one in Settings; best before looking at "
@@ -167,7 +170,8 @@ def figures(record: Record, *, live: bool) -> None:
         return
     if evaluation is None:
         look.page("Results")
-        first = chunk_rounds(record.table.n_cases)
+        scheme = next(iter(record.rounds.values()))
+        first = min(chunk_rounds(record.table.n_cases), scheme.n_rounds)
         soon = f"First figures after {count(first)} rounds."
         st.write(soon if live else "No round has finished yet.")
         return

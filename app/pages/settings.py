@@ -234,7 +234,9 @@ def ask_candidates(table: Table, values: Values) -> None:
         options,
         key=value_key("about", "", allowed=options),
         persist_state="session",
-        format_func=lambda key: CANDIDATES[key].title if key else "the first candidate chosen",
+        format_func=lambda key: (
+            CANDIDATES[key].title if key else "the first that learns from the features"
+        ),
         help="Name it before looking at results: the best of several looks better than it is.",
     )
 

@@ -50,7 +50,9 @@ def take_file() -> None:
 def choose_roles(sheet: Sheet) -> Roles:
     """Label, unit, noun, columns to leave out, and what happens to copies."""
     header = list(sheet.header)
-    given = state.roles() or Roles(_likely_label(sheet))
+    given = state.roles()
+    if given is None or given.label not in header:
+        given = Roles(_likely_label(sheet))
     st.header("What the columns are for", anchor=False)
     label_at, unit_at = st.columns(2)
     with label_at:
@@ -166,7 +168,8 @@ def show_table(table: Table) -> None:
             "rows are counted, not " + table.noun.plural + "."
         )
     if notices:
-        with st.expander(f"{count(len(notices))} decisions while reading"):
+        decisions = "1 decision" if len(notices) == 1 else f"{count(len(notices))} decisions"
+        with st.expander(f"{decisions} while reading"):
             st.markdown("\n".join(f"- {look.safe(notice)}" for notice in notices))
     missing = [c for c in facts.columns if c.missing]
     label = (

@@ -43,7 +43,7 @@ def build_in_child(record_folder: Path, out: Path) -> tuple[Path, Path]:
             encoding="utf-8",
             errors="replace",
             timeout=LONGEST,
-            env=_environment(),
+            env=own_environment(),
         )
     except subprocess.TimeoutExpired:
         raise RecordError(
@@ -53,7 +53,7 @@ def build_in_child(record_folder: Path, out: Path) -> tuple[Path, Path]:
     return _paths(ended, out)
 
 
-def _environment() -> dict[str, str]:
+def own_environment() -> dict[str, str]:
     """The child's, so that it finds the same `app` from any folder and writes UTF-8."""
     paths = [str(ROOT), *filter(None, [os.environ.get("PYTHONPATH")])]
     return {**os.environ, "PYTHONPATH": os.pathsep.join(paths), "PYTHONIOENCODING": "utf-8"}

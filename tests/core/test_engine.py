@@ -12,7 +12,7 @@ from statsmodels.stats.proportion import proportion_confint
 
 from evalcore import engine
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import CHUNK, WHOLE, Task, plain_scores, run, tasks, whole_rounds
+from evalcore.engine import CHUNK, WHOLE, Task, chunk_rounds, plain_scores, run, tasks, whole_rounds
 from evalcore.intake import make_table, noun_from, read_sheet
 from evalcore.measures import predicted_class
 from evalcore.plan import Plan, choose
@@ -221,10 +221,14 @@ class TestDigits:
         states = [
             engine._random_states(plan, choice, task)
             for choice in plan.candidates
-            for task in (Task(WHOLE, 0, 1), Task("bootstrap", 0, 10), Task("bootstrap", 10, 20))
+            for task in (
+                Task(WHOLE, 0, 1),
+                Task("bootstrap", 0, CHUNK),
+                Task("bootstrap", CHUNK, 70),
+            )
         ]
         flat = [state for part in states for state in part]
-        assert len(set(flat)) == len(flat) == 42
+        assert len(set(flat)) == len(flat) == 2 * 71
 
 
 def test_tasks_are_whole_fits_and_then_chunks_of_each_scheme():
@@ -238,6 +242,21 @@ def test_tasks_are_whole_fits_and_then_chunks_of_each_scheme():
         Task("one", CHUNK, 2 * CHUNK),
         Task("one", 2 * CHUNK, 2 * CHUNK + 3),
         Task("two", 0, CHUNK),
+    ]
+
+
+@pytest.mark.parametrize(
+    ("n_cases", "step"),
+    [(1, 50), (300, 50), (301, 49), (720, 20), (1363, 11), (1364, 10), (100_000, 10)],
+)
+def test_a_larger_table_has_smaller_chunks(n_cases, step):
+    assert chunk_rounds(n_cases) == step
+    rounds = {"one": Rounds.of_bags(np.ones((2 * step + 1, n_cases), np.uint8))}
+    assert tasks(rounds) == [
+        Task(WHOLE, 0, 1),
+        Task("one", 0, step),
+        Task("one", step, 2 * step),
+        Task("one", 2 * step, 2 * step + 1),
     ]
 
 

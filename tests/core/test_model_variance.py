@@ -224,13 +224,13 @@ class TestAuc:
             expected, rel=1e-11
         )
 
-    def test_the_block_changes_nothing(self):
+    def test_parts_of_large_classes(self):
         rounds = some_rounds(7, n=10, n_rounds=24)
         scores = self.scores(rounds, 7)
         whole = auc_model_variance(self.positive, rounds, scores)
         assert whole > 0
         for block in (1, 7, 13):
-            found = auc_model_variance(self.positive, rounds, scores, block=block)
+            found = auc_model_variance(self.positive, rounds, scores, largest=block)
             assert found == pytest.approx(whole, rel=1e-12)
 
     def test_any_rising_scale_gives_the_same(self):

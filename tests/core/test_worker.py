@@ -34,7 +34,7 @@ TASKS, TOTAL = 1 + 1 + 4, 1 + 12 + 4 * CHUNK
 LONG = Plan(
     Roles("species"),
     (choose(SCHEMES, "bootstrap", rounds=10_000),),
-    (choose(CANDIDATES, "forest", trees=1000),),
+    (choose(CANDIDATES, "forest", trees=300),),
 )
 
 
