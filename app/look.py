@@ -119,7 +119,9 @@ def findings(found: Sequence[Finding], *, empty: str) -> None:
                 _finding(finding)
         if rest + notes:
             more = " more" if first else ""
-            with st.expander(f":gray-badge[note] {len(rest + notes)}{more}"):
+            with st.expander(
+                f":gray-badge[{'more' if rest else 'note'}] {len(rest + notes)}{more}"
+            ):
                 for finding in rest + notes:
                     st.markdown(f"**{safe(finding.severity)}: {safe(finding.title)}**")
                     _finding(finding)

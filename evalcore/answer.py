@@ -12,7 +12,7 @@ from evalcore.profile import majority
 from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
 from evalcore.schemes import LEAST_BLOCKS
 from evalcore.table import Table
-from evalcore.verdict import Verdict, verdicts
+from evalcore.verdict import Verdict, starting_rate, verdicts
 from evalcore.wording import (
     NBSP,
     capitalised,
@@ -261,7 +261,12 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     set_on = f", set {limit.set_on}" if limit.set_on else ""
     given = f"Limit {least}{set_on}"
     if math.isnan(verdict.at_least):
-        return f"{given}; no bound is offered over fewer than {LEAST_BLOCKS} blocks."
+        if verdict.n == 0:
+            return f"{given}; none of these {noun.plural} has been held out yet."
+        return (
+            f"{given}; no bound can be given: fewer than {LEAST_BLOCKS} blocks, or the luck of "
+            "being best cannot be told."
+        )
     if verdict.word == "shown to fall short":
         return f"{given}; these {noun.plural} show at most {percent_up(verdict.at_most, n)}."
     shows = f"{given}; these {noun.plural} show at least {percent_down(verdict.at_least, n)}."
@@ -276,9 +281,12 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
         )
     if limit.measure == "balanced_accuracy":
         return f"{shows} It may be true; these are too few to show it."
-    misses = round((1 - verdict.value) * n)
+    misses = math.ceil((1 - starting_rate(evaluation, evaluation.about, limit)) * n - 1e-9)
     needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
     with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)
     misses_made = f"{misses} miss{'' if misses == 1 else 'es'}"
+    if needed <= n:
+        # the count alone would do: it is the model's own variance that stands against it
+        return f"{shows} The model varies too much from round to round to show more."
     more = f" To show {least} with {misses_made} takes {count(needed)} {units}"
     return shows + more + (f", with one miss {count(with_one)}." if misses > 1 else ".")

@@ -108,7 +108,7 @@ def point_632(apparent: float, out_of_bag: float) -> float:
 def out_of_bag_or_632_plus(apparent: float, out_of_bag: float, plus: float) -> float:
     """Out-of-bag where a candidate is right on everything it was fitted to, else .632+.
 
-    Own rule: .632+ is 3 to 6 points too high for candidates that memorise. "Right on everything"
+    Own rule: .632+ is too high for candidates that memorise. "Right on everything"
     means apparent >= 0.999.
     """
     return out_of_bag if apparent >= MEMORISES else plus

@@ -77,7 +77,12 @@ def with_model_variance(p: float, n: float, tau2: float, *, level: float = 0.95)
 
 
 def rows_of_units(
-    shares: Floats, units: NDArray[np.intp], tau2: float, *, level: float = 0.95
+    shares: Floats,
+    units: NDArray[np.intp],
+    tau2: float,
+    *,
+    level: float = 0.95,
+    cluster: float = math.nan,
 ) -> Interval:
     """Interval for the rate of rows, where rows of a unit resemble each other (own construction).
 
@@ -93,6 +98,9 @@ def rows_of_units(
         G different ones, G >= 2.
     tau2 : float
         From `model_variance` with `units`; nan counts as 0.
+    cluster : float
+        From `cluster_variance_by_repeat` where rows were answered more than once; nan takes the
+        cluster variance of `shares`, right where each row was answered once.
     """
     from scipy.special import stdtrit
 
@@ -101,7 +109,8 @@ def rows_of_units(
         return Interval(math.nan, math.nan, level, "rows_of_units")
     p = float(shares.mean())
     spread = max(p * (1 - p), LEAST_SPREAD)
-    variance = cluster_variance(shares, units) + (0.0 if math.isnan(tau2) else tau2)
+    between = cluster_variance(shares, units) if math.isnan(cluster) else cluster
+    variance = between + (0.0 if math.isnan(tau2) else tau2)
     n_equal = spread / max(variance, spread / n)
     if p * (1 - p) < LEAST_SPREAD:
         n_equal = min(n_equal, groups)

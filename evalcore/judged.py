@@ -70,6 +70,11 @@ class Judged:
         return estimates.mean_correct(self.held.correct, self.held.rounds)
 
     @property
+    def blocks(self) -> int:
+        """How many groups the counted cases come in, where they do; else how many there are."""
+        return len(np.unique(self.units)) if self.units is not None else len(self.held.labels)
+
+    @property
     def n_classes(self) -> int:
         """Number of classes K."""
         return int(self.held.scores.shape[1])
@@ -154,7 +159,7 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
 
 def offers_interval(part: Judged) -> bool:
     """Whether there are enough blocks, where cases come in blocks, to tell their variance."""
-    return part.units is None or len(np.unique(part.units)) >= LEAST_BLOCKS
+    return part.units is None or part.blocks >= LEAST_BLOCKS
 
 
 def share_interval(
@@ -189,7 +194,14 @@ def share_interval(
         tau2 = part.cautious_tau2(of_class) if cautious else tau2
     shares = part.shares[chosen]
     if part.units is not None:
-        return intervals.rows_of_units(shares, part.units[chosen], tau2, level=level)
+        if len(np.unique(part.units[chosen])) < LEAST_BLOCKS:
+            return Interval(math.nan, math.nan, level, "rows_of_units")
+        within = model_variance.cluster_variance_by_repeat(
+            part.held.correct, part.held.rounds, part.units, chosen=chosen
+        )
+        return intervals.rows_of_units(
+            shares, part.units[chosen], tau2, level=level, cluster=within
+        )
     return intervals.with_model_variance(float(shares.mean()), len(shares), tau2, level=level)
 
 

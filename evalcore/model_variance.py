@@ -1,7 +1,7 @@
 """How much a share right varies because the model itself varies from table to table.
 
 All are own constructions: the covariance of centred correctness between cases that the same model
-answered, by the method of moments (evidence: the coverage study). They are nan where no case is
+answered, by the method of moments. They are nan where no case is
 held out more than once: one set of rounds then says nothing about the model's variance.
 """
 
@@ -92,9 +92,9 @@ def _per_round(
     # rounds x units is mostly empty for leave-one-out: only cells that occur are counted
     cells, place = np.unique(round_at * n_groups + group, return_inverse=True)
     of_round, size = cells // n_groups, rounds.n_rounds
-    together: Floats = np.bincount(round_at, q, minlength=size) ** 2
+    together = np.square(np.bincount(round_at, q, minlength=size)).astype(np.float64)
     together -= np.bincount(of_round, np.bincount(place, q) ** 2, minlength=size)
-    pairs: Floats = np.bincount(round_at, minlength=size).astype(np.float64) ** 2
+    pairs = np.square(np.bincount(round_at, minlength=size)).astype(np.float64)
     pairs -= np.bincount(of_round, np.bincount(place).astype(np.float64) ** 2, minlength=size)
     return together, pairs, k
 
@@ -230,3 +230,39 @@ def cluster_variance(shares: Floats, units: NDArray[np.intp]) -> float:
     sums = np.bincount(units, shares - p)
     groups = len(np.unique(units))
     return float((sums**2).sum() / len(shares) ** 2 * groups / (groups - 1))
+
+
+def cluster_variance_by_repeat(
+    correct: ArrayLike,
+    rounds: Rounds,
+    units: NDArray[np.intp],
+    *,
+    chosen: NDArray[np.bool_] | None = None,
+) -> float:
+    """Mean over repeats of the cluster variance of one answer a row.
+
+    Averaging a row's answers over repeats first would hide how much one answer varies.
+
+    Parameters
+    ----------
+    correct : array_like, shape (T,)
+        In the order of `rounds.pairs`.
+    rounds : Rounds
+    units : ndarray of int, shape (n,)
+    chosen : ndarray of bool, shape (n,), optional
+        Only these rows.
+
+    Returns
+    -------
+    float
+        nan where no repeat judges rows of two units.
+    """
+    round_at, case_at = rounds.pairs
+    value, repeat = np.asarray(correct, dtype=np.float64), rounds.repeat[round_at]
+    kept = np.ones(len(value), dtype=bool) if chosen is None else chosen[case_at]
+    found = []
+    for one in np.unique(repeat[kept]):
+        rows = kept & (repeat == one)
+        if len(np.unique(units[case_at[rows]])) > 1:
+            found.append(cluster_variance(value[rows], units[case_at[rows]]))
+    return float(np.mean(found)) if found else math.nan

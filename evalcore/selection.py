@@ -86,7 +86,12 @@ def stratified_bags(labels: ArrayLike, *, rng: np.random.Generator, resamples: i
 
 
 def winners_correction(
-    labels: ArrayLike, shares: ArrayLike, bags: ArrayLike, *, primary: Primary = "accuracy"
+    labels: ArrayLike,
+    shares: ArrayLike,
+    bags: ArrayLike,
+    *,
+    primary: Primary = "accuracy",
+    n_classes: int = 0,
 ) -> WinnersCorrection:
     """Bootstrap bias-corrected estimate of the best of several candidates.
 
@@ -106,6 +111,8 @@ def winners_correction(
         missing among the units drawn or those not drawn; a class of one unit skips all.
     primary : {"accuracy", "balanced_accuracy"}
         The measure that names the winner; the first candidate on ties.
+    n_classes : int
+        K; as many as `labels` show if 0. A class without a unit that was held out gives nan.
 
     Raises
     ------
@@ -124,7 +131,7 @@ def winners_correction(
     _check(classes, right, drawn)
     known = ~np.isnan(right).any(axis=1)
     right, drawn, classes = right[known], drawn[:, known], classes[known]
-    n_classes = int(classes.max()) + 1
+    n_classes = n_classes or int(classes.max()) + 1
     on_all = _means(np.ones((1, len(classes)), dtype=np.intp), right, classes, n_classes)
     winner = int(_first_best(on_all[primary])[0])
     naive = _shares({name: values[:, winner] for name, values in on_all.items()})

@@ -46,7 +46,9 @@ def winner(table: Table, plan: Plan, parts: Sequence[Judged]) -> WinnersCorrecti
     else:
         bags = stratified_bags(choice[0].held.labels, rng=rng, resamples=resamples)
     primary: Primary = "accuracy" if plan.measure == "accuracy" else "balanced_accuracy"
-    return winners_correction(choice[0].held.labels, shares, bags, primary=primary)
+    return winners_correction(
+        choice[0].held.labels, shares, bags, primary=primary, n_classes=table.n_classes
+    )
 
 
 def winner_estimates(table: Table, plan: Plan, parts: Sequence[Judged]) -> Iterator[Estimate]:

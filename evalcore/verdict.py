@@ -14,7 +14,6 @@ from evalcore.plan import Limit
 from evalcore.sample_size import LEAST_UNITS, lower_bound, upper_bound
 
 Word = Literal["shown", "not shown yet", "shown to fall short"]
-_NOTHING = Interval(math.nan, math.nan, 0.9, "none")
 
 
 @dataclass(frozen=True)
@@ -73,42 +72,42 @@ def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
     estimate = evaluation.estimate(
         limit.measure, part.candidate, of_class=limit.of_class, scheme=part.scheme
     )
+    rate, usable = _rate(evaluation, estimate), offers_interval(part)
+    at_least = at_most = math.nan
     if limit.measure == "balanced_accuracy":
-        bounds = balanced_interval(level, part) if offers_interval(part) else _NOTHING
-        # moved down with the rate where that is corrected for the luck of being best
-        at_least = bounds.low - (estimate.value - _rate(evaluation, estimate))
-        at_most = bounds.high
-        n = int(table.class_counts("unit").min())
+        n = int(np.bincount(part.held.labels[~np.isnan(part.shares)]).min())
+        if usable:
+            bounds = balanced_interval(level, part)
+            # moved down with the rate where that is corrected for the luck of being best
+            at_least, at_most = bounds.low - (estimate.value - rate), bounds.high
     else:
         k = table.classes.index(limit.of_class) if limit.of_class else None
         n = _units_behind(evaluation, part, k)
-        rate = _rate(evaluation, estimate)
-        bounds = _bounds(level, part, k, rate) if offers_interval(part) else _NOTHING
         # exact bounds take whole units: rounded down for the lower, up for the upper
-        right = rate * n
-        at_least = min(
-            bounds.low, lower_bound(math.floor(right + 1e-9), n, confidence=limit.confidence)
-        )
-        most_right = math.ceil(estimate.value * n - 1e-9)
-        at_most = max(bounds.high, upper_bound(most_right, n, confidence=limit.confidence))
+        if usable and not math.isnan(rate):
+            whole = math.floor(rate * n + 1e-9)
+            exact = lower_bound(whole, n, confidence=limit.confidence)
+            at_least = min(_bounds(level, part, k, rate).low, exact)
+        if usable and not math.isnan(estimate.value):
+            whole = math.ceil(estimate.value * n - 1e-9)
+            exact = upper_bound(whole, n, confidence=limit.confidence)
+            at_most = max(share_interval(level, part, k, cautious=True).high, exact)
     word = judge(estimate.value, at_least, at_most, limit=limit.least, n=n)
     return Verdict(limit, word, estimate.value, at_least, at_most, n)
 
 
 def _rate(evaluation: Evaluation, estimate: Estimate) -> float:
-    """The rate a verdict starts from: corrected for luck if the candidate came out best."""
+    """The rate a verdict starts from: where several were tried, no more than the best is worth."""
     corrected = evaluation.corrected(estimate.measure, estimate.of_class)
-    if (
-        corrected is None
-        or math.isnan(corrected.value)
-        or corrected.candidate != estimate.candidate
-    ):
+    if corrected is None:
         return estimate.value
+    if math.isnan(corrected.value):
+        return math.nan  # luck that cannot be told apart shows nothing
     return min(estimate.value, corrected.value)
 
 
 def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> Interval:
-    """The default interval at a rate that may have been corrected downwards."""
+    """The interval with cautious model variance at a rate that may have been corrected."""
     own = share_interval(level, part, of_class, cautious=True)
     shares = part.shares if of_class is None else part.shares[part.held.labels == of_class]
     value = float(np.nanmean(shares))
@@ -117,9 +116,7 @@ def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> In
     if part.units is not None:
         return Interval(max(0.0, own.low - (value - rate)), own.high, level, own.method)
     tau2 = part.cautious_tau2(of_class)
-    at_rate = with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
-    # what falls short must do so by the figure as it is
-    return Interval(at_rate.low, max(own.high, at_rate.high), level, at_rate.method)
+    return with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
 
 
 def starting_rate(evaluation: Evaluation, candidate: str, limit: Limit) -> float:

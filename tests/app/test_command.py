@@ -234,7 +234,9 @@ class TestSaying:
         assert "naive Bayes is expected to be right in" in lines[1]
         assert lines[2].startswith("Setosa cases found (sensitivity): shown. Limit 80 %;")
         assert lines[3].startswith("Share of cases right (accuracy): ")
-        assert all(line.partition(":")[0] in ("grave", "moderate", "note") for line in lines[4:-1])
+        # what would show the limit that is not shown, then the findings
+        assert lines[4].startswith("Further cases judged alone that give four chances in five")
+        assert all(line.partition(":")[0] in ("grave", "moderate", "note") for line in lines[5:-1])
         assert lines[-1] == f"Record: {out}"
         assert "9 of 9 rounds" in said.err
 

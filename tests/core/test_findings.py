@@ -278,10 +278,10 @@ RAISED = {
         of_rounds({CV: halves(100, repeats=1)}),
         ("moderate", CV, 1, 2),
     ),
-    # .632+ of 0 and 20 wrong of 100, half by chance: R = 0.2/0.5, w = 0.632/(1 - 0.368 R)
+    # .632+ of 4 and 12 wrong of 100, half by chance: R = 0.08/0.46, w = 0.632/(1 - 0.368 R)
     "schemes_disagree": (
-        two_schemes(20),
-        ("moderate", "logistic", 0.2 * 0.632 / (1 - 0.368 * 0.4), 0.03),
+        two_schemes(12, wrong_whole=4),
+        ("moderate", "logistic", 0.04 + 0.08 * 0.632 / (1 - 0.368 * 0.08 / 0.46), 0.03),
     ),
     "misleading_632": (two_schemes(20), ("moderate", "logistic", 1, 0.999)),
     "never_held_out": (never(3), ("moderate", CV, 3, 0)),

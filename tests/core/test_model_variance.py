@@ -224,14 +224,27 @@ class TestAuc:
             expected, rel=1e-11
         )
 
-    def test_parts_of_large_classes(self):
+    def test_classes_that_fit_are_one_part(self):
         rounds = some_rounds(7, n=10, n_rounds=24)
         scores = self.scores(rounds, 7)
         whole = auc_model_variance(self.positive, rounds, scores)
         assert whole > 0
-        for block in (1, 7, 13):
-            found = auc_model_variance(self.positive, rounds, scores, largest=block)
-            assert found == pytest.approx(whole, rel=1e-12)
+        assert auc_model_variance(self.positive, rounds, scores, largest=10) == whole
+
+    def test_parts_of_large_classes_add_up_to_the_same_quantity(self):
+        # every round's model shifts all positives together: tau of any part is that of the whole
+        n, n_rounds = 400, 60
+        rng = np.random.default_rng(5)
+        positive = np.arange(n) % 2 == 0
+        train = (rng.random((n_rounds, n)) < 0.5).astype(np.uint8)
+        rounds = Rounds(train, 1 - train, np.arange(n_rounds))
+        fixed, shift = rng.normal(size=n), rng.normal(scale=0.5, size=n_rounds)
+        round_at, case_at = rounds.pairs
+        scores = fixed[case_at] + positive[case_at] * (1 + shift[round_at])
+        whole = auc_model_variance(positive, rounds, scores)
+        parts = auc_model_variance(positive, rounds, scores, largest=50)
+        assert parts == pytest.approx(whole, rel=0.1)
+        assert parts != whole
 
     def test_any_rising_scale_gives_the_same(self):
         rounds = some_rounds(9, n=10, n_rounds=24)
