@@ -5,6 +5,7 @@ import sys
 from collections.abc import Sequence
 from pathlib import Path
 
+from app.columns import size_parser, statistic_parser
 from evalcore.answer import answer, limit_rows, title
 from evalcore.candidates import CANDIDATES
 from evalcore.cluster import on_cluster
@@ -49,6 +50,8 @@ def _parser() -> argparse.ArgumentParser:
     commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
     _dashboard_parser(commands.add_parser("dashboard", help="open the dashboard in the browser"))
     _evaluate_parser(commands.add_parser("evaluate", help="evaluate a file without a screen"))
+    statistic_parser(commands.add_parser("statistic", help="bootstrap any statistic of a column"))
+    size_parser(commands.add_parser("sample-size", help="cases to show a limit or reach a width"))
     made = commands.add_parser("summary", help="write a record's summary as PDF and HTML")
     made.add_argument("folder", type=Path, metavar="FOLDER", help="a record")
     made.add_argument("--out", type=Path, help="where to write; the record itself by default")

@@ -9,6 +9,7 @@ from evalcore.estimates import MEMORISES, mean_of_rounds
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import plus_632
+from evalcore.per_case import agreement_within_units
 from evalcore.plan import Plan
 from evalcore.profile import majority
 from evalcore.schemes import SCHEMES
@@ -296,6 +297,30 @@ def best_of_several(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
         luck,
         LUCK,
         "tsamardinos2018",
+    )
+
+
+def rows_agree(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Rows of one unit that are answered alike add little to each other."""
+    if evaluation is None or not table.has_units:
+        return
+    name = evaluation.about
+    alike = agreement_within_units(evaluation, name)
+    if math.isnan(alike):
+        return
+    noun, n = table.noun, table.n_units
+    yield Finding(
+        "rows_agree",
+        "note",
+        name,
+        f"Two rows of one {noun.singular} are answered alike in {percent(alike, n)}",
+        f"Held out together, two rows of a {noun.singular} got the same answer from "
+        f"{plan.title(name)} in {percent(alike, n)} of pairs (mean over {noun.plural}; 100 % would "
+        f"mean that further rows add nothing). {capitalised(noun.plural)} count, not rows.",
+        f"For a surer figure judge more {noun.plural}, not more rows of each.",
+        alike,
+        1.0,
+        "elementary",
     )
 
 

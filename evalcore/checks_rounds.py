@@ -12,8 +12,9 @@ from evalcore.judged import Judged, offers_interval
 from evalcore.plan import Plan
 from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
-from evalcore.wording import capitalised, count, decimal, percent, quoted, tenths
+from evalcore.wording import capitalised, class_name, count, decimal, percent, quoted, tenths
 
+UNEVEN = 0.10  # a share of a class in a held-out part may be this far from the table's
 MONTE_CARLO = 0.01  # an estimate that a redraw would move by more than this has too few rounds
 
 
@@ -235,4 +236,38 @@ def few_blocks(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[
             blocks,
             LEAST_BLOCKS,
             "own_simulation",
+        )
+
+
+def class_shares_reached(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """How even the classes are over held-out parts, where groups allow no better."""
+    if evaluation is None:
+        return
+    for scheme, rounds in evaluation.rounds.items():
+        choice = plan.scheme(scheme)
+        groups = SCHEMES[choice.key].groups(table, choice.values())
+        if not choice.values().get("stratified") or groups.alike:
+            continue
+        by_unit = rounds.of_units(table.units)
+        sizes = np.maximum(by_unit.test_sizes, 1)
+        k = int(table.class_counts("unit").argmin())
+        reached = by_unit.test[:, table.unit_labels == k].sum(axis=1) / sizes
+        wanted = float(table.class_counts("unit")[k] / table.n_units)
+        widest = float(np.abs(reached - wanted).max())
+        n = table.n_units
+        yield Finding(
+            "class_shares_reached",
+            "moderate" if widest > UNEVEN else "note",
+            scheme,
+            f"Held-out parts of {title(plan, scheme)} hold {percent(float(reached.min()), n)} to "
+            f"{percent(float(reached.max()), n)} {class_name(table.classes[k])} "
+            f"{table.noun.plural}, {percent(wanted, n)} in the table",
+            f"What is kept together does not divide evenly; the widest distance is "
+            f"{tenths(widest)}, moderate from {tenths(UNEVEN)}.",
+            "Take fewer folds, or keep less together, if that suits the question.",
+            widest,
+            UNEVEN,
+            "common_practice",
         )

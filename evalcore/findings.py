@@ -58,6 +58,8 @@ CHECKS: dict[str, Check] = {
         Check("never_held_out", "cases never held out", rounds.never_held_out),
         Check("too_few_rounds", "a redraw would move the estimate", rounds.too_few_rounds),
         Check("class_missing", "rounds that lack a class", rounds.class_missing),
+        Check("class_shares_reached", "classes uneven over parts", rounds.class_shares_reached),
+        Check("rows_agree", "rows of a unit are answered alike", candidates.rows_agree),
         Check("few_blocks", "too few blocks for an interval", rounds.few_blocks),
         Check("memorises", "right on all it was trained on", candidates.memorises),
         Check("missing_values", "gaps in the table", of_table.missing_values),

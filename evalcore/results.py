@@ -13,6 +13,7 @@ from evalcore.outlook import outlook
 from evalcore.per_case import cases
 from evalcore.record import Record, write
 from evalcore.sources import SOURCES
+from evalcore.together import round_tests
 from evalcore.verdict import verdicts
 
 COLUMNS = (
@@ -65,21 +66,26 @@ def findings_csv(found: Iterable[Finding]) -> str:
 
 
 def comparison_csv(evaluation: Evaluation) -> str:
-    """Candidates compared in pairs on the headline's rounds, one pair a row."""
-    return _csv(
-        (
-            "first", "second", "difference", "low", "high", "level", "interval", "p", "p_adjusted",
-            "call", "only_first_right", "only_second_right", "n",
-        ),
-        (
-            (
-                d.first, d.second, repr(d.value), repr(d.interval.low), repr(d.interval.high),
-                repr(d.interval.level), d.interval.method, repr(d.p), repr(d.p_adjusted), d.call,
-                str(d.only_first), str(d.only_second), str(d.n),
-            )
-            for d in evaluation.differences
-        ),
+    """Candidates compared in pairs on the headline's rounds, one pair a row.
+
+    The call rests on the paired difference; published tests stand beside it.
+    """
+    header = (
+        "first", "second", "difference", "low", "high", "level", "interval", "p", "p_adjusted",
+        "call", "only_first_right", "only_second_right", "n", "mcnemar_p", "corrected_t_p",
+        "posterior_worse", "posterior_equal", "posterior_better",
     )  # fmt: skip
+    rows = []
+    for d in evaluation.differences:
+        beside = round_tests(evaluation.parts(), d)
+        rows.append((
+            d.first, d.second, repr(d.value), repr(d.interval.low), repr(d.interval.high),
+            repr(d.interval.level), d.interval.method, repr(d.p), repr(d.p_adjusted), d.call,
+            str(d.only_first), str(d.only_second), str(d.n), repr(beside.mcnemar_p),
+            repr(beside.corrected_t_p), repr(beside.worse), repr(beside.equal),
+            repr(beside.better),
+        ))  # fmt: skip
+    return _csv(header, rows)
 
 
 def intervals_csv(evaluation: Evaluation) -> str:

@@ -2,6 +2,7 @@
 
 import math
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -10,7 +11,9 @@ from evalcore.candidates import CANDIDATES
 from evalcore.comparison import Difference, compare
 from evalcore.figures import Estimate, Interval
 from evalcore.judged import Judged
+from evalcore.paired_tests import mcnemar
 from evalcore.plan import Plan, generator
+from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior
 from evalcore.selection import Primary, WinnersCorrection, stratified_bags, winners_correction
 from evalcore.table import Table
 
@@ -118,3 +121,41 @@ def differences(
         level=plan.level,
         delta=delta,
     )
+
+
+@dataclass(frozen=True)
+class RoundTests:
+    """Published tests of one pair beside the paired difference.
+
+    Attributes
+    ----------
+    mcnemar_p : float
+        McNemar's test on one answer a case (first repeat), exact with under 25 discordant.
+    corrected_t_p : float
+        Corrected resampled t on differences of rounds; nan without at least two that differ.
+    worse, equal, better : float
+        Posterior of the Bayesian correlated t: the first is worse, practically equal, better.
+    """
+
+    mcnemar_p: float
+    corrected_t_p: float
+    worse: float
+    equal: float
+    better: float
+
+
+def round_tests(parts: Sequence[Judged], found: Difference, *, delta: float = 0.02) -> RoundTests:
+    """McNemar, corrected resampled t and Bayesian correlated t of one pair's share right."""
+    by_name = {part.candidate: part for part in parts}
+    first, second = by_name[found.first], by_name[found.second]
+    between = first.held_values("accuracy") - second.held_values("accuracy")
+    rounds = first.held.rounds
+    n_test = float(rounds.test_sizes.mean())
+    n_train = float((rounds.train > 0).sum(axis=1).mean())
+    between = between[~np.isnan(between)]
+    mcnemar_p = mcnemar(found.only_first, found.only_second).p
+    if len(between) < 2:
+        return RoundTests(mcnemar_p, math.nan, math.nan, math.nan, math.nan)
+    t = corrected_resampled_t(between, n_train=n_train, n_test=n_test)
+    posterior = correlated_t_posterior(between, rho=n_test / (n_train + n_test), rope=delta)
+    return RoundTests(mcnemar_p, t.p, posterior.left, posterior.rope, posterior.right)
