@@ -10,7 +10,8 @@ from evalcore.errors import PlanError, TableError
 from evalcore.intake import read_sheet
 from evalcore.plan import generator
 from evalcore.sample_size import cases_for_auc, cases_for_width, cases_to_show
-from evalcore.statistic import STATISTICS, bootstrap
+from evalcore.statistic import bootstrap
+from evalcore.statistic_formulas import STATISTICS
 from evalcore.wording import NBSP, count, decimal, level, percent, quoted
 
 MISSES = (0, 1, 2, 3, 5)
@@ -91,6 +92,10 @@ def _numbers(entries: list[str], name: str, mark: str) -> NDArray[np.float64]:
         raise TableError(f"The column {quoted(name)} must hold numbers; {error}.") from error
 
 
+def _misses(number: int) -> str:
+    return "miss" if number == 1 else "misses"
+
+
 def sample_size(given: argparse.Namespace) -> None:
     """Print how many cases it takes to show a limit or to reach a width."""
     if given.limit is None and given.width is None and given.half_width is None:
@@ -103,8 +108,8 @@ def sample_size(given: argparse.Namespace) -> None:
                 given.limit, misses=misses, confidence=given.confidence, method="wilson"
             )
             print(
-                f"{level(given.limit)} shown with {misses} misses: {count(exact)} cases (exact), "
-                f"{count(wilson)} (Wilson)"
+                f"{level(given.limit)} shown with {misses} {_misses(misses)}: "
+                f"{count(exact)} cases (exact), {count(wilson)} (Wilson)"
             )
     if given.width is not None:
         if given.share is None:

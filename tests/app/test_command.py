@@ -520,3 +520,41 @@ class TestSummary:
         assert capsys.readouterr().err.splitlines()[-1] == (
             f"There is no record in {tmp_path.name!r}."
         )
+
+
+class TestColumns:
+    def test_a_statistic_of_a_column(self, tmp_path, capsys):
+        # mouse data, treatment group: Efron & Tibshirani 1993, table 2.1 (mean 86.86; the
+        # bootstrap standard error of the mean without end is 23.36)
+        path = tmp_path / "mice.csv"
+        path.write_text(
+            "days,group\n" + "\n".join(f"{d},t" for d in (94, 197, 16, 38, 99, 141, 23))
+        )
+        arguments = ["statistic", str(path), "--column", "days", "--statistic", "mean"]
+        assert main([*arguments, "--rounds", "20000"]) == 0
+        lines = capsys.readouterr().out.replace("\u00a0", " ").splitlines()
+        assert lines[0] == "Mean of ‘days’: 86.857143"
+        assert lines[1] == "n = 7, units 7, missing 0"
+        error = float(lines[2].split()[2].rstrip(","))
+        assert error == pytest.approx(23.36, abs=0.5)
+
+    def test_words_have_no_mean(self, tmp_path, capsys):
+        path = tmp_path / "words.csv"
+        path.write_text("word,group\nup,a\ndown,b\n")
+        assert main(["statistic", str(path), "--column", "word", "--statistic", "mean"]) == 1
+        said = capsys.readouterr().err
+        assert said.startswith("The column ‘word’ must hold numbers;")
+        assert said.count("\n") == 1
+
+    def test_cases_to_show_a_limit(self, capsys):
+        # 29, 46, 61: exact binomial, recomputed with scipy in test_sample_size
+        assert main(["sample-size", "--limit", "0.9"]) == 0
+        lines = capsys.readouterr().out.replace("\u00a0", " ").splitlines()
+        assert lines[0] == "90 % shown with 0 misses: 29 cases (exact), 25 (Wilson)"
+        assert lines[1] == "90 % shown with 1 miss: 46 cases (exact), 42 (Wilson)"
+
+    def test_nothing_wanted(self, capsys):
+        assert main(["sample-size"]) == 1
+        assert capsys.readouterr().err == (
+            "Name what is wanted: --limit, --share with --width, or --auc with --half-width.\n"
+        )

@@ -225,6 +225,23 @@ def blocks(number: int):
     return table, plan, evaluated(table, plan, plan.draw(table))
 
 
+def sites(first: int):
+    """Two sites kept together, so many of the first one's 20 cases and 10 of the other's of a."""
+    labels = [0] * first + [1] * (20 - first) + [0] * 10 + [1] * 10
+    table = table_of(labels, entries={"site": ["east"] * 20 + ["west"] * 20})
+    scheme = choose(SCHEMES, "cross_validation", folds=2, repeats=1, keep="site")
+    plan = dataclasses.replace(a_plan(), schemes=(scheme,))
+    return table, plan, evaluated(table, plan, plan.draw(table))
+
+
+def pairs_of_rows(apart: int):
+    """Twenty units of two rows; in so many of them the second row is answered wrongly."""
+    table = table_of([0] * 20 + [1] * 20, units=[i // 2 for i in range(40)])
+    held = np.array([(np.arange(40) // 2) % 2 == half for half in (0, 1)])
+    wrong = wrong_in(table, [2 * unit + 1 for unit in range(apart)])
+    return of_rounds({CV: rounds_of(held, np.array([0, 0]))}, table=table, chosen={CV: wrong})
+
+
 def wilson(right: int, n: int) -> tuple[float, float]:
     return proportion_confint(right, n, method="wilson")
 
@@ -262,6 +279,10 @@ RAISED = {
         ("moderate", "nearest_neighbours:k=1,scaling=standard", 0, 0.02),
     ),
     "few_blocks": (blocks(4), ("moderate", "leave_block_out", 4, 5)),
+    # 2 of 20 and 10 of 20 where 12 of 40 are wanted: 0.3 - 0.1
+    "class_shares_reached": (sites(2), ("moderate", CV, 0.2, 0.1)),
+    # 5 of 20 units whose two rows disagree
+    "rows_agree": (pairs_of_rows(5), ("note", "logistic", 0.75, 1.0)),
     "class_too_small": (
         (table_of([0] * 9 + [1] * 30), a_plan()),
         ("grave", "a", 9, 10),
@@ -318,6 +339,9 @@ QUIET = {
     ),
     "best_of_several": several(10),
     "few_blocks": blocks(5),
+    # every case by itself divides evenly; rows by themselves have nothing to agree with
+    "class_shares_reached": of_rounds({CV: halves(100)}),
+    "rows_agree": of_rounds({CV: halves(100)}),
     "class_too_small": (two_classes(30), a_plan()),
     # 90 of 100 right: Wilson 0.826 to 0.945
     "wide_interval": steady(10, measure="accuracy"),

@@ -352,9 +352,7 @@ class TestCautiousVariance:
         sums, pairs = [], []
         for row in centred(grid):
             tested = np.flatnonzero(~np.isnan(row))
-            both = [
-                (i, j) for i, j in itertools.permutations(tested, 2) if units[i] != units[j]
-            ]
+            both = [(i, j) for i, j in itertools.permutations(tested, 2) if units[i] != units[j]]
             sums.append(sum(row[i] * row[j] for i, j in both))
             pairs.append(len(both))
         return np.array(sums, float), np.array(pairs, float), mean_times(grid)

@@ -112,7 +112,5 @@ def test_rows_of_a_unit_in_different_rounds_are_no_pair():
 
 def test_no_agreement_without_units_or_pairs():
     assert np.isnan(agreement_within_units(found_of([[0, 1]], [0, 1]), "lda"))
-    apart = found_of(
-        [[0, -1, 1], [-1, 0, -1]], [0, 0, 1], units=[0, 0, 1], by_unit=[[0, 1]]
-    )
+    apart = found_of([[0, -1, 1], [-1, 0, -1]], [0, 0, 1], units=[0, 0, 1], by_unit=[[0, 1]])
     assert np.isnan(agreement_within_units(apart, "lda"))

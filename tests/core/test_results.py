@@ -91,7 +91,8 @@ def test_comparison(found):
     text = results.comparison_csv(found)
     assert header(text) == (
         "first,second,difference,low,high,level,interval,p,p_adjusted,call,only_first_right,"
-        "only_second_right,n"
+        "only_second_right,n,mcnemar_p,corrected_t_p,posterior_worse,posterior_equal,"
+        "posterior_better"
     )
     (row,) = read(text)
     (d,) = found.differences
@@ -101,6 +102,9 @@ def test_comparison(found):
     assert numbers[1] < 6 / 40 < numbers[2]
     # one comparison: nothing to adjust
     assert numbers[3] == numbers[4] < 0.05
+    assert float(row.pop("mcnemar_p")) == pytest.approx(2 * 0.5**6, rel=1e-14)
+    # places 30 to 35 alone tell them apart: 3 of 20 in every round, so there is no t
+    assert [row.pop(name) for name in list(row)[-4:]] == ["nan"] * 4
     assert row == {
         "first": "lda", "second": "qda", "level": repr(1 - (1 - 0.95) / 1), "interval": "paired_t",
         "call": "better", "only_first_right": "6", "only_second_right": "0", "n": "40",
@@ -116,7 +120,7 @@ def test_intervals(found):
     mine = [r for r in rows if (r["candidate"], r["measure"]) == ("lda", "accuracy")]
     assert [r["interval"] for r in mine] == [
         "wilson_model_variance", "wilson", "wilson_corrected", "clopper_pearson", "agresti_coull",
-        "jeffreys", "corrected_t",
+        "jeffreys", "cv_normal",
     ]  # fmt: skip
     exact = mine[3]
     low, high = proportion_confint(36, 40, method="beta")

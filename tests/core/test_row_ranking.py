@@ -101,5 +101,6 @@ def test_by_hand():
 
 def test_two_classes_without_any_case():
     # units that carry several classes may leave two of them without a unit
-    found = row_hand_till(np.array([2, 2, 2]), np.random.default_rng(0).random((2, 3, 3)), np.ones((2, 3)))
+    scores = np.random.default_rng(0).random((2, 3, 3))
+    found = row_hand_till(np.array([2, 2, 2]), scores, np.ones((2, 3)))
     assert np.isnan(found).tolist() == [True, True]

@@ -9,8 +9,9 @@ from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
 from evalcore.plan import Limit, Plan, choose, generator
 from evalcore.schemes import SCHEMES
+from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior
 from evalcore.selection import stratified_bags, winners_correction
-from evalcore.together import differences, learned, winner, winner_estimates
+from evalcore.together import differences, learned, round_tests, winner, winner_estimates
 from evalcore.verdict import verdicts
 
 from .checks import carried_out, table_of
@@ -46,7 +47,7 @@ def test_values_and_intervals(primary):
     # lda is good at the large class, qda at the small one
     labels = np.array([0] * 40 + [1] * 20)
     chance = np.where(labels == 0, [[1.0], [0.7]], [[0.5], [0.95]])
-    right = np.random.default_rng(4).random((2, 2, 60)) < chance[:, None]
+    right = np.random.default_rng(0).random((2, 2, 60)) < chance[:, None]
     found = evaluation(right, labels=labels, measure=primary)
     of, figures = corrected_figures(found, drawn(found, labels), primary)
     best = ("lda", "qda")[of.winner]
@@ -148,6 +149,32 @@ def test_differences_are_about_the_named_candidate():
     assert len(differences(found.plan, parts, about="majority")) == 3
     means = [part.shares.mean() for part in parts]
     assert about[0].value == pytest.approx(means[1] - means[0], rel=1e-12)
+
+
+def test_published_tests_beside_a_difference():
+    # lda is right in all of the first repeat; qda misses 9 of 40 then and 5 in the second
+    right = np.ones((2, 2, 40), dtype=bool)
+    right[0, 1, :2] = right[1, 0, :9] = right[1, 1, :5] = False
+    found = evaluation(right, labels=[0, 1] * 20)
+    (difference,) = found.differences
+    beside = round_tests(found.parts(), difference, delta=0.1)
+    assert beside.mcnemar_p == pytest.approx(2 * 0.5**9, rel=1e-14)
+    # even places first; half of the cases held out each time
+    between = [5 / 20, 4 / 20, 2 / 20, 1 / 20]
+    t = corrected_resampled_t(between, n_train=20, n_test=20)
+    posterior = correlated_t_posterior(between, rho=0.5, rope=0.1)
+    assert beside.corrected_t_p == pytest.approx(t.p, rel=1e-10)
+    assert (beside.worse, beside.equal, beside.better) == pytest.approx(
+        (posterior.left, posterior.rope, posterior.right), rel=1e-9
+    )
+    assert beside.worse < beside.better
+
+
+def test_published_tests_of_equals():
+    found = evaluation(np.ones((2, 2, 40), dtype=bool), labels=[0, 1] * 20)
+    beside = round_tests(found.parts(), found.differences[0])
+    assert beside.mcnemar_p == 1
+    assert np.isnan([beside.corrected_t_p, beside.worse, beside.equal, beside.better]).all()
 
 
 def test_leave_one_out_part_of_the_way_over_a_sorted_table():
