@@ -74,6 +74,12 @@ def varying_in_b() -> Judged:
     return judged_of(answers, labels, repeat=[0, 0, 1, 1])
 
 
+MODELS = {
+    "nearest_neighbours": lambda: KNeighborsClassifier(1),
+    "lda": LinearDiscriminantAnalysis,
+}
+
+
 @pytest.fixture(scope="module")
 def bootstrapped():
     rng = np.random.default_rng(8)
@@ -90,12 +96,7 @@ def bootstrapped():
 class TestOptimism:
     """Each bag's rows repeated, fitted and scored again with scikit-learn."""
 
-    models = {
-        "nearest_neighbours": lambda: KNeighborsClassifier(1),
-        "lda": LinearDiscriminantAnalysis,
-    }
-
-    @pytest.mark.parametrize("name", models)
+    @pytest.mark.parametrize("name", MODELS)
     @pytest.mark.parametrize(
         ("measure", "of_class", "score"),
         [
@@ -110,9 +111,9 @@ class TestOptimism:
         differences = []
         for bag in bootstrapped.rounds["bootstrap"].train:
             rows = np.repeat(np.arange(26), bag)
-            model = self.models[name]().fit(x[rows], y[rows])
+            model = MODELS[name]().fit(x[rows], y[rows])
             differences.append(score(y[rows], model.predict(x[rows])) - score(y, model.predict(x)))
-        apparent = score(y, self.models[name]().fit(x, y).predict(x))
+        apparent = score(y, MODELS[name]().fit(x, y).predict(x))
         value = bootstrapped.estimate(
             measure, name, estimator="optimism_corrected", of_class=of_class
         ).value

@@ -132,7 +132,7 @@ def test_intervals(found):
         "n": "40",
     }  # fmt: skip
     classes = [r["class"] for r in rows if r["candidate"] == "qda" and r["measure"] != "accuracy"]
-    assert sorted(set(classes)) == ["a", "b"]
+    assert sorted(set(classes)) == ["", "a", "b"]
 
 
 def test_cases(found):

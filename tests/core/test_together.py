@@ -8,8 +8,8 @@ from evalcore.engine import run, tasks
 from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
 from evalcore.plan import Limit, Plan, choose, generator
-from evalcore.schemes import SCHEMES
 from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior
+from evalcore.schemes import SCHEMES
 from evalcore.selection import stratified_bags, winners_correction
 from evalcore.together import differences, learned, round_tests, winner, winner_estimates
 from evalcore.verdict import verdicts

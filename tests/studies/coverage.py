@@ -27,9 +27,8 @@ from evalcore import measures
 from evalcore.candidates import CANDIDATES, estimator
 from evalcore.evaluation import Evaluation
 from evalcore.judged import auc_interval
-from evalcore.plan import Plan, choose, choose_written, generator, recommended_schemes
+from evalcore.plan import Plan, choose_written, generator, recommended_schemes
 from evalcore.profile import smallest_class
-from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from tests.core.checks import carried_out, table_of
 
@@ -136,18 +135,22 @@ def further_cases(scenario: str) -> Cases:
     return MECHANISMS[scenario].draw(FURTHER, generator(SEED, scenario, "further cases"))
 
 
-def judge(cell: Cell, number: int, *, bootstrap: bool = True) -> dict[str, object]:
-    """One table drawn, judged and held against the truth: a row of the file."""
+def made(cell: Cell, number: int, *, bootstrap: bool = True) -> tuple[Table, Plan]:
+    """One table and the recommended plan for it, or the headline's scheme alone."""
     keys = (cell.scenario, str(cell.n), cell.candidate, str(number))
     labels, features = MECHANISMS[cell.scenario].draw(cell.n, generator(SEED, *keys))
     table = table_of(labels.tolist(), features=features)
-    schemes = recommended_schemes(table)
-    if not bootstrap and len(schemes) > 1:
-        schemes = (choose(SCHEMES, "cross_validation"),)
-    choice = choose_written(CANDIDATES, cell.candidate)
-    plan = Plan(table.roles, schemes, (choice,), seed=int(generator(SEED, *keys).integers(2**31)))
+    schemes = recommended_schemes(table)[: None if bootstrap else 1]
+    choice, seed = choose_written(CANDIDATES, cell.candidate), generator(SEED, *keys)
+    return table, Plan(table.roles, schemes, (choice,), seed=int(seed.integers(2**31)))
+
+
+def judge(cell: Cell, number: int, *, bootstrap: bool = True) -> dict[str, object]:
+    """One table judged and held against the truth: a row of the file."""
+    table, plan = made(cell, number, bootstrap=bootstrap)
     of_class, size = smallest_class(table)
-    row: dict[str, object] = dict(zip(KEYS, keys, strict=True)) | {"smallest_class": size}
+    keys = (cell.scenario, cell.n, cell.candidate, number, size)
+    row: dict[str, object] = dict(zip(COLUMNS, keys, strict=False))
     row |= true_values(table, plan, further_cases(cell.scenario), of_class)
     return row | judged_values(carried_out(table, plan)[0], table.classes[of_class])
 
