@@ -42,8 +42,8 @@ def keep_file(data: bytes, name: str) -> None:
     sheet = read_sheet(data, name)
     if st.session_state.get("file") != (data, name):
         forget_choices()
-        for name in ("roles", "table"):
-            st.session_state.pop(name, None)
+        for kept in ("roles", "table"):
+            st.session_state.pop(kept, None)
         st.query_params.pop(RECORD, None)
     st.session_state["file"] = (data, name)
     st.session_state["sheet"] = sheet

@@ -126,6 +126,16 @@ class TestEmpty:
         assert list(records.iterdir()) == []
 
 
+class TestAnotherFile:
+    def test_after_the_demo_a_new_file_gets_a_label_of_its_own_and_its_name(self, app):
+        demo(app)
+        upload(app, DATA / "iris.csv")
+        assert selected(app, "Label: the class of each case").value == "class"
+        assert "iris.csv" in texts(app)
+        assert "150 rows were read; they are 150 cases." in spaced(texts(app))
+        assert "iris.csv" in texts(go(app, "settings"))
+
+
 class TestDemo:
     def test_roles_are_chosen_and_the_table_is_told(self, app):
         demo(app)
