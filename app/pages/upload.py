@@ -211,10 +211,11 @@ def preview(sheet: Sheet) -> None:
 
 def main() -> None:
     """The page."""
-    sheet = state.sheet()
-    look.page("Which table?", [("Table", state.source()[1])] if sheet else [])
+    head = st.container()
     take_file()
     sheet = state.sheet()
+    with head:
+        look.page("Which table?", [("Table", state.source()[1])] if sheet else [])
     if sheet is None:
         st.write("No table yet. Drop a CSV file here, or take the demo table of bean lots.")
         return

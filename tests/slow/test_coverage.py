@@ -15,6 +15,7 @@ from functools import cache
 
 import numpy as np
 import pytest
+from joblib import Parallel, delayed
 
 from evalcore.binomial import wilson
 from tests.core.checks import table_of
@@ -31,7 +32,8 @@ VALUE, LOW, HIGH = (f"cross_validation/held_out_by_case/accuracy/{p}" for p in c
 @cache
 def rows(cell: coverage.Cell) -> list[dict[str, object]]:
     """A cell's tables, judged by folds alone; by the bootstrap where a class has under five."""
-    return [coverage.judge(cell, number, bootstrap=False) for number in range(TABLES)]
+    todo = (delayed(coverage.judge)(cell, number, bootstrap=False) for number in range(TABLES))
+    return list(Parallel(n_jobs=2)(todo))
 
 
 def column(cell: coverage.Cell, name: str) -> np.ndarray:

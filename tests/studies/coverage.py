@@ -238,8 +238,7 @@ def summary(rows: Iterable[Row]) -> Iterator[dict[str, object]]:
     for cell, alike in by_cell.items():
         smallest = int(np.median([int(str(row["smallest_class"])) for row in alike]))
         for figure in FIGURES:
-            found = _line(alike, figure)
-            if found:
+            if found := _line(alike, figure):
                 yield dict(zip(HEAD, (*cell, smallest, *figure), strict=True)) | found
 
 
@@ -278,7 +277,7 @@ def main() -> None:
     """Run or summarise, as was asked for."""
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("--tables", type=int, default=1000)
-    parser.add_argument("--out", type=pathlib.Path)
+    parser.add_argument("--out", type=pathlib.Path, required="--summarise" not in sys.argv)
     parser.add_argument("--cells", choices=list(CELLS), default="default")
     parser.add_argument("--jobs", type=int, default=1)
     parser.add_argument("--folds-only", action="store_true", help="no bootstrap rounds")
@@ -288,8 +287,6 @@ def main() -> None:
         with given.out.open("w", encoding="utf-8") if given.out else sys.stdout as file:
             write(summary(finished(given.summarise)), file)
         return
-    if given.out is None:
-        parser.error("--out FILE is needed")
     wanted = {"tables": given.tables, "jobs": given.jobs, "bootstrap": not given.folds_only}
     run(CELLS[given.cells], given.out, **wanted)
 
