@@ -7,9 +7,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from evalcore.errors import PlanError, TableError
-from evalcore.intake import read_sheet
 from evalcore.plan import generator
 from evalcore.sample_size import cases_for_auc, cases_for_width, cases_to_show
+from evalcore.sheet import read_sheet
 from evalcore.statistic import bootstrap
 from evalcore.statistic_formulas import STATISTICS
 from evalcore.wording import NBSP, count, decimal, level, percent, quoted

@@ -11,7 +11,7 @@ from evalcore.candidates import CANDIDATES
 from evalcore.cluster import on_cluster
 from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
-from evalcore.intake import make_table, noun_from, read_sheet
+from evalcore.intake import make_table, noun_from
 from evalcore.measures import MEASURES
 from evalcore.plan import (
     Choice,
@@ -23,6 +23,7 @@ from evalcore.plan import (
 )
 from evalcore.record import Record, Status
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Copies, Roles
 from evalcore.wording import Noun, count, duration
 from evalcore.worker import fill

@@ -19,9 +19,10 @@ from app import choices
 from app.print.child import own_environment
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
-from evalcore.intake import Sheet, make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Plan
 from evalcore.record import Record, Status, find, new_folder
+from evalcore.sheet import Sheet, read_sheet
 from evalcore.table import Roles, Table
 
 RECORD = "record"

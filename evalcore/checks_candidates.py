@@ -315,8 +315,8 @@ def rows_agree(table: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
         name,
         f"Two rows of one {noun.singular} are answered alike in {percent(alike, n)}",
         f"Held out together, two rows of a {noun.singular} got the same answer from "
-        f"{plan.title(name)} in {percent(alike, n)} of pairs (mean over {noun.plural}; all alike would "
-        f"mean that further rows add nothing). {capitalised(noun.plural)} count, not rows.",
+        f"{plan.title(name)} in {percent(alike, n)} of pairs (mean over {noun.plural}; all alike "
+        f"would mean that further rows add nothing). {capitalised(noun.plural)} count, not rows.",
         f"For a surer figure judge more {noun.plural}, not more rows of each.",
         alike,
         1.0,

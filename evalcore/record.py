@@ -28,9 +28,10 @@ from evalcore.engine import WHOLE, Finished, Task, chunk_rounds, tasks
 from evalcore.errors import EvalError, RecordError
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import CountedBy
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
+from evalcore.sheet import read_sheet
 from evalcore.table import Table
 
 State = Literal["waiting", "running", "finished", "cancelled", "failed", "interrupted"]

@@ -7,9 +7,10 @@ import streamlit as st
 from app import charts, choices, look, state
 from evalcore.errors import EvalError
 from evalcore.findings import findings
-from evalcore.intake import Sheet, copies, make_table, noun_from
+from evalcore.intake import copies, make_table, noun_from
 from evalcore.plan import Plan, recommended_candidates, recommended_schemes
 from evalcore.profile import ColumnFacts, profile
+from evalcore.sheet import Sheet
 from evalcore.table import Copies, Roles, Table
 from evalcore.wording import CASE, Noun, capitalised, count, listed, percent, quoted, reading
 

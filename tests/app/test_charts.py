@@ -33,9 +33,10 @@ from evalcore.candidates import CANDIDATES
 from evalcore.engine import run, tasks
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import Estimate, Interval
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Limit, Plan, choose
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Roles, Table
 from evalcore.wording import NBSP, Noun
 

@@ -15,10 +15,11 @@ from evalcore.answer import answer, limit_rows, title
 from evalcore.candidates import CANDIDATES
 from evalcore.engine import run
 from evalcore.findings import findings
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Limit, Plan, choose, recommended_candidates, recommended_schemes
 from evalcore.record import Record, Status, new_folder
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Roles
 from evalcore.wording import Noun
 from evalcore.worker import fill

@@ -11,8 +11,9 @@ import numpy as np
 from evalcore.answers import joined
 from evalcore.engine import run, tasks
 from evalcore.evaluation import Evaluation, evaluate
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Plan
+from evalcore.sheet import read_sheet
 from evalcore.table import Column, Roles, Table
 
 DATA = pathlib.Path(__file__).parents[1] / "data"

@@ -20,6 +20,7 @@ ORDER = (
     "wording",
     "settings",
     "table",
+    "sheet",
     "intake",
     "groups",
     "profile",

@@ -12,11 +12,12 @@ from evalcore.candidates import CANDIDATES
 from evalcore.engine import plain_scores
 from evalcore.evaluation import Evaluation
 from evalcore.findings import findings
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.measures import predicted_class
 from evalcore.plan import Limit, Plan, choose
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Roles, Table
 from evalcore.verdict import verdicts
 from evalcore.wording import Noun

@@ -13,11 +13,12 @@ from statsmodels.stats.proportion import proportion_confint
 from evalcore import engine
 from evalcore.candidates import CANDIDATES
 from evalcore.engine import CHUNK, WHOLE, Task, chunk_rounds, plain_scores, run, tasks, whole_rounds
-from evalcore.intake import make_table, noun_from, read_sheet
+from evalcore.intake import make_table, noun_from
 from evalcore.measures import predicted_class
 from evalcore.plan import Plan, choose
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Roles
 
 from .checks import DATA, carried_out, cases, table_from, table_of

@@ -15,10 +15,11 @@ from evalcore.engine import whole_rounds
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import SEVERITIES
 from evalcore.findings import CHECKS, findings
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Limit, Plan, choose
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.sources import SOURCES
 from evalcore.table import Column, Roles, Table
 from evalcore.wording import NBSP

@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from evalcore.errors import TableError
-from evalcore.intake import Sheet, copies, make_table, noun_from, read_sheet
+from evalcore.intake import copies, make_table, noun_from
+from evalcore.sheet import Sheet, read_sheet
 from evalcore.table import Roles, SetAside
 from evalcore.wording import CASE, Noun
 

@@ -16,11 +16,12 @@ from evalcore.engine import WHOLE, Task, chunk_rounds, round_scores, run, tasks
 from evalcore.errors import EvalError, PlanError, RecordError, TableError
 from evalcore.estimates import by_case
 from evalcore.findings import findings
-from evalcore.intake import make_table, read_sheet
+from evalcore.intake import make_table
 from evalcore.plan import Plan, choose
 from evalcore.record import NAME, SILENT, Record, Status, find, new_folder, write
 from evalcore.results import results_csv
 from evalcore.schemes import SCHEMES
+from evalcore.sheet import read_sheet
 from evalcore.table import Roles
 from evalcore.worker import fill
 
