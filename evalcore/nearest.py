@@ -149,6 +149,7 @@ def nearest_scores(
 def _listed(features: Floats, width: int) -> tuple[NDArray[np.intp], Floats]:
     """The nearest cases of each case, itself included, and the distance nobody else is below."""
     n = len(features)
+    width = min(width, n)
     places, reach = np.empty((n, width), dtype=np.intp), np.empty(n)
     step = max(1, _BLOCK // n)
     for start in range(0, n, step):
@@ -200,7 +201,9 @@ def _least_stretch(before: Floats, after: Floats) -> float:
     low, spread = before.min(axis=0), np.ptp(before, axis=0)
     ratio = np.divide(np.ptp(after, axis=0), spread, out=np.ones_like(spread), where=spread > 0)
     rebuilt = after.min(axis=0) + (before - low) * ratio
-    alike = np.abs(rebuilt - after).max(initial=0.0) <= 1e-9 * max(1.0, np.abs(after).max())
+    # column by column: one in large units must not hide what another does
+    apart = np.abs(rebuilt - after).max(axis=0, initial=0.0)
+    alike = bool((apart <= 1e-9 * np.ptp(after, axis=0) + 1e-15 * np.abs(after).max(axis=0)).all())
     return float((ratio**2).min(initial=1.0)) if alike else 0.0
 
 

@@ -27,6 +27,8 @@ def row_auc(positive: NDArray[np.bool_], scores: Floats, weights: Floats) -> Flo
         nan where positives or negatives have no weight.
     """
     n_rows, n = scores.shape
+    if not n:
+        return np.full(n_rows, np.nan)
     first = np.arange(n_rows) * n
     order = np.argsort(scores, axis=1) + first[:, None]
     value = scores.ravel()[order]

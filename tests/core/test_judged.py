@@ -222,6 +222,25 @@ class TestShareInterval:
             cautious = share_interval(0.9, part, k, cautious=True)
             assert cautious == with_model_variance(p, n, tau2, level=0.9)
 
+    def test_the_error_of_the_variance_moves_the_ends(self):
+        rng = np.random.default_rng(3)
+        labels = np.repeat([0, 1], 12)
+        rows = [np.where(rng.random(24) < rng.random(), labels, 1 - labels) for _ in range(5)]
+        part = judged_of(rows, labels)
+        for k in (None, 0, 1):
+            plain, cautious = (
+                share_interval(0.9, part, k),
+                share_interval(0.9, part, k, cautious=True),
+            )
+            assert cautious.low < plain.low < plain.high < cautious.high
+            chosen = None if k is None else labels == k
+            tau2 = cautious_model_variance(part.held.correct, part.held.rounds, chosen=chosen)
+            p = np.mean([row == labels for row in rows], axis=0)[
+                labels == k if k is not None else ...
+            ]
+            expected = with_model_variance(p.mean(), len(p), tau2, level=0.9)
+            assert (cautious.low, cautious.high) == pytest.approx((expected.low, expected.high))
+
     def test_cases_never_held_out_do_not_count(self):
         part = judged_of([[0, 1, 1, -1, -1, -1]], [0, 0, 1, 1, 0, 2], n_classes=3)
         assert share_interval(0.95, part) == wilson(2 / 3, 3)

@@ -132,6 +132,17 @@ class TestLists:
         expected = plain(x[:80], x, labels, counts[2], k=3, n_classes=2)
         assert found[2, :80] == pytest.approx(expected, rel=1e-14)
 
+    @pytest.mark.parametrize("shrunk", [0.02, 0.1, 0.3, 0.6])
+    def test_a_column_that_shrinks_brings_others_nearer(self, shrunk):
+        # listed by a table in which the first column keeps apart what is near in later rounds
+        rng = np.random.default_rng(15)
+        x = rng.normal(size=(600, 2))
+        features = np.stack([x, x * [shrunk, 1], x * [shrunk, 1], x * [1, shrunk]])
+        labels, counts = rng.integers(0, 2, 600), bags(600, 4, rng)
+        rest = {"k": 5, "n_classes": 2}
+        found = nearest_scores(features, labels, counts, **rest)
+        assert np.array_equal(found, self.each_round(features, labels, counts, **rest))
+
     def test_gaps_filled_otherwise_are_not_taken_from_lists(self):
         rng = np.random.default_rng(12)
         x = rng.normal(size=(510, 2))

@@ -60,20 +60,21 @@ def test_further_units_alone_keep_the_promise():
 def test_a_class_counts_its_own_units_and_variance():
     labels = [0] * 20 + [1] * 40
     right = np.ones((1, 2, 60), dtype=bool)
-    right[0, 0, 24:36] = False  # of b one repeat is wrong, the other right
+    right[0, 0, 25:36:2] = False  # of b's half one repeat is wrong, the other right
+    right[0, 0, 22:28:2] = False
     right[0, :, :1] = False
-    limits = (Limit("sensitivity", 0.8, "b", confidence=0.9),)
+    limits = (Limit("sensitivity", 0.7, "b", confidence=0.9),)
     found = evaluation(right, labels=labels, limits=limits)
     ((verdict, ahead),) = looked(found)
     part = found.part("lda", found.scheme)
     assert (verdict.word, verdict.n) == ("not shown yet", 40)
     assert part.tau2_of(1) > 0
     assert part.tau2_of(1) != part.tau2
-    rate = 1 - 12 / 80
+    rate = 1 - 9 / 80
     rates = {"cautious": (rate + verdict.at_least) / 2, "present": rate, "hopeful": (1 + rate) / 2}
-    assert ahead.needed == more_cases(
-        rate * 40, 40, least=0.8, confidence=0.9, rates=rates, tau2=part.tau2_of(1)
-    )
+    given = {"least": 0.7, "confidence": 0.9, "rates": rates}
+    assert ahead.needed == more_cases(rate * 40, 40, tau2=part.tau2_of(1), **given)
+    assert ahead.needed != more_cases(rate * 40, 40, tau2=part.tau2, **given)
 
 
 def test_of_several_it_starts_from_the_corrected_rate():

@@ -10,8 +10,10 @@ from statsmodels.stats.proportion import proportion_confint
 
 from evalcore import results
 from evalcore.figures import Estimate, Finding, Interval
+from evalcore.outlook import outlook
 from evalcore.plan import Limit
 from evalcore.sources import SOURCES
+from evalcore.verdict import verdicts
 
 from .test_verdict import evaluation, first
 
@@ -179,7 +181,10 @@ def test_verdicts(found):
     assert float(accuracy["cautious_rate"]) == pytest.approx((min(rate, 0.9) + at_least) / 2)
     assert float(accuracy["hopeful_rate"]) == pytest.approx((1 + min(rate, 0.9)) / 2)
     assert int(accuracy["hopeful_alone"]) < int(accuracy["present_alone"])
-    assert int(accuracy["hopeful_together"]) > 0
+    ahead = outlook(found, "lda", verdicts(found, "lda")[0]).needed[2]
+    assert accuracy["hopeful_alone"] == str(ahead.alone.cases)
+    assert accuracy["hopeful_together"] == str(ahead.together.cases)
+    assert ahead.alone.cases != ahead.together.cases
     # of a limit on no share of units nothing more is asked
     assert fixed.items() <= balanced.items()
     assert (balanced["measure"], balanced["set_on"]) == ("balanced_accuracy", "")

@@ -48,6 +48,9 @@ def test_values_and_intervals(primary):
     labels = np.array([0] * 40 + [1] * 20)
     chance = np.where(labels == 0, [[1.0], [0.7]], [[0.5], [0.95]])
     right = np.random.default_rng(0).random((2, 2, 60)) < chance[:, None]
+    # every second case of b flips from repeat to repeat, so that models vary, in b most
+    right[:, 0, 50:], right[:, 1, 50:] = True, False
+    right[1, 1, 51:] = True
     found = evaluation(right, labels=labels, measure=primary)
     of, figures = corrected_figures(found, drawn(found, labels), primary)
     best = ("lda", "qda")[of.winner]
@@ -55,6 +58,7 @@ def test_values_and_intervals(primary):
     estimates = list(winner_estimates(found.table, found.plan, found.parts()))
     assert {(e.measure, e.of_class): e.value for e in estimates} == figures
     part = found.part(best, SCHEME)
+    assert len({part.tau2, part.tau2_of(0), part.tau2_of(1)}) == 3 or primary != "accuracy"
     for e in estimates:
         n, k = {"": (60, None), "a": (40, 0), "b": (20, 1)}[e.of_class]
         assert (e.candidate, e.scheme, e.estimator) == (best, SCHEME, "winner_corrected")
