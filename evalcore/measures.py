@@ -68,7 +68,9 @@ def accuracy(counts: Floats) -> Floats:
     >>> float(accuracy(np.array([[20.0, 5.0], [10.0, 15.0]])))
     0.7
     """
-    return quotient(np.trace(counts, axis1=-2, axis2=-1), counts.sum(axis=(-2, -1)))
+    right = np.trace(counts, axis1=-2, axis2=-1)
+    # weights such as thirds add up differently in another order; all right must come out as 1
+    return quotient(right, np.maximum(counts.sum(axis=(-2, -1)), right))
 
 
 def recalls(counts: Floats) -> Floats:
