@@ -11,13 +11,13 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from evalcore.answers import Answers, answers_of
 from evalcore.candidates import CANDIDATES, estimator
 from evalcore.exact_rounds import Preparations, exact_scores
 from evalcore.measures import Floats
 from evalcore.plan import APPENDING, Choice, Engine, Plan, generator
+from evalcore.prepared import nothing_varies, prepare
 from evalcore.rounds import Counts, Rounds
 from evalcore.settings import Settings
 from evalcore.table import Table
@@ -213,18 +213,19 @@ def plain_scores(
         return np.broadcast_to(answers, (len(counts), *answers.shape))
     scores = np.zeros((len(counts), table.n_cases, table.n_classes))
     for r, (bag, state) in enumerate(zip(counts, random_states, strict=True)):
-        scores[r] = _round_scores(choice, table, np.repeat(np.arange(table.n_cases), bag), state)
+        scores[r] = _round_scores(choice, table, bag, state)
     return scores
 
 
-def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: int) -> Floats:
+def _round_scores(choice: Choice, table: Table, bag: Counts, state: int) -> Floats:
     if choice.key == "qda":
-        rows = _of_spread_classes(table, rows)
+        bag = _of_spread_classes(table, bag)
+    rows = np.repeat(np.arange(table.n_cases), bag)
     labels = table.labels[rows]
     present, times = np.unique(labels, return_counts=True)
     scores = np.zeros((table.n_cases, table.n_classes))
-    bag = table.features[rows]
-    if len(present) == 1 or (np.isnan(bag) | (bag == bag[0])).all():
+    alike = nothing_varies(prepare(table, bag[None], scaled=False), bag[None])[0]
+    if len(present) == 1 or alike:
         # one class only, or nothing to tell cases apart by: the classes' shares
         scores[:, present] = times / len(rows)
         return scores
@@ -233,7 +234,7 @@ def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: i
     with warnings.catch_warnings():
         # collinear one-hot columns and the like are expected in small bags
         warnings.simplefilter("ignore")
-        model.fit(bag, labels)
+        model.fit(table.features[rows], labels)
         if hasattr(model, "predict_proba"):
             scores[:, present] = model.predict_proba(table.features)
             return scores
@@ -245,11 +246,16 @@ def _round_scores(choice: Choice, table: Table, rows: NDArray[np.intp], state: i
     return scores
 
 
-def _of_spread_classes(table: Table, rows: NDArray[np.intp]) -> NDArray[np.intp]:
-    """Rows of classes with two different rows at least: fewer have no covariance."""
-    kept = [
-        k
-        for k in np.unique(table.labels[rows])
-        if len(np.unique(table.features[rows[table.labels[rows] == k]], axis=0)) > 1
-    ]
-    return rows[np.isin(table.labels[rows], kept)] if kept else rows
+def _of_spread_classes(table: Table, bag: Counts) -> Counts:
+    """The bag without classes whose cases are all alike once prepared: they have no covariance."""
+    while True:
+        features = prepare(table, bag[None], scaled=False).features[0]
+        inside = bag > 0
+        present = np.unique(table.labels[inside])
+        alone = [
+            k for k in present if len(np.unique(features[inside & (table.labels == k)], axis=0)) < 2
+        ]
+        if not alone or len(alone) == len(present):
+            return bag
+        # gaps are filled anew without them, so the others are looked at again
+        bag = np.where(np.isin(table.labels, alone), 0, bag).astype(np.uint8)

@@ -14,7 +14,7 @@ from evalcore import closed_form, discriminants, nearest, trees
 from evalcore.logistic_rounds import logistic
 from evalcore.measures import Floats
 from evalcore.plan import Choice
-from evalcore.prepared import Prepared, blocks, prepare
+from evalcore.prepared import Prepared, blocks, nothing_varies, prepare
 from evalcore.rounds import Counts
 from evalcore.settings import Settings
 from evalcore.table import Table
@@ -167,7 +167,7 @@ class Preparations:
         self._done: dict[tuple[int, bool], Prepared] = {}
 
     def of(self, block: slice, *, scaled: bool) -> Prepared:
-        """The features of one block of rounds; the last ones asked for are kept."""
+        """The features of one block of rounds, kept for the next candidate."""
         key = (block.start, scaled)
         if key not in self._done:
             self._done[key] = prepare(self.table, self.counts[block], scaled=scaled)
@@ -204,6 +204,8 @@ def exact_scores(
             prepared, table.labels, counts[rounds], table.n_classes, choice.values(), states
         )
         scores[rounds] = path.scores(bags)
+        # where all cases of a bag look alike, the plain adapter answers with the classes' shares
+        covered[rounds] &= ~nothing_varies(prepared, counts[rounds])
     covered &= ~np.isnan(scores).any(axis=(1, 2))
     return scores, covered
 

@@ -120,6 +120,30 @@ def prepare(table: Table, counts: Counts, *, scaled: bool) -> Prepared:
     return Prepared(columns, present, shared)
 
 
+def nothing_varies(prepared: Prepared, counts: Counts) -> NDArray[np.bool_]:
+    """Whether all cases of a bag look alike once prepared, so that nothing can be learned.
+
+    Parameters
+    ----------
+    prepared : Prepared
+    counts : ndarray of uint8, shape (R, n)
+
+    Returns
+    -------
+    ndarray of bool, shape (R,)
+    """
+    inside = counts > 0
+    first = inside.argmax(axis=1)
+    alike = np.ones(len(counts), dtype=bool)
+    for column in range(prepared.columns.shape[1]):
+        values = prepared.columns[:, column]
+        of_first = values[np.arange(len(counts)), first]
+        alike &= ~((values != of_first[:, None]) & inside).any(axis=1)
+        if not alike.any():
+            break  # as a rule after the first column
+    return alike
+
+
 def _width(column: Column) -> int:
     return 1 if column.kind == "number" else max(1, len(column.categories))
 

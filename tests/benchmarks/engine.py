@@ -118,7 +118,8 @@ def compare(n: int, p: int, turns: int) -> None:
     many = bags(table, chunk_rounds(n))
     for key in LINE_UP:
         choice = choose(CANDIDATES, key)
-        by_counts(choice, table, few)  # imports and first calls do not count
+        for way in (by_counts, by_hand):
+            way(choice, table, few)  # imports and first calls do not count
         for _ in range(turns):
             slow[key].append(seconds(lambda c=choice: by_hand(c, table, few)) / few.n_rounds)
             fast[key].append(seconds(lambda c=choice: by_counts(c, table, many)) / many.n_rounds)
@@ -133,7 +134,7 @@ def compare(n: int, p: int, turns: int) -> None:
 
 
 def growth() -> None:
-    """Print how the time of closed forms, a tree and neighbours grows with rounds, cases, features."""
+    """Print how the time of closed forms grows with rounds, cases and features."""
     keys = ("majority", "naive_bayes", "lda", "logistic")
 
     def spent(n: int, p: int, n_rounds: int) -> float:

@@ -12,7 +12,7 @@ from evalcore.plan import Plan, choose
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles
 
-from .checks import table_from
+from .checks import table_from, table_of
 
 FILES = {
     "iris": ("iris.csv", Roles("class")),
@@ -52,6 +52,55 @@ def test_the_same_answers_as_the_plain_adapter(file, scheme, key):
     fast = round_scores(chosen(key), Preparations(table, counts), engine="fast", states=states)
     plain = plain_scores(chosen(key), table, counts, random_states=states)
     assert_allclose(fast, plain, rtol=0, atol=0 if key in EXACT else 1e-9)
+
+
+@pytest.mark.parametrize("key", FAST)
+@pytest.mark.parametrize("file", FILES)
+def test_the_same_when_one_case_is_left_out(file, key):
+    table = table_from(*FILES[file])
+    counts = counts_of(table, choose(SCHEMES, "leave_one_out"))[::23]
+    states = list(range(len(counts)))
+    fast = round_scores(chosen(key), Preparations(table, counts), engine="fast", states=states)
+    plain = plain_scores(chosen(key), table, counts, random_states=states)
+    assert_allclose(fast, plain, rtol=0, atol=0 if key in EXACT else 1e-9)
+
+
+def odd_table():
+    """Nine rows, a gap in one, so small that bags lack classes, or all their cases look alike."""
+    features = np.array([[2, 2, 2, 2, 2, 2, 5, np.nan, 2], [1, 1, 1, 1, 1, 1, 4, 1, np.nan]]).T
+    return table_of([0, 1, 0, 1, 0, 1, 0, 1, 1], features=features)
+
+
+@pytest.mark.parametrize("key", FAST)
+def test_odd_bags_are_answered_alike_and_by_both(key):
+    table = odd_table()
+    counts = np.array(
+        [
+            [2, 1, 2, 1, 1, 1, 0, 0, 1],  # all alike
+            [0, 1, 2, 1, 1, 1, 0, 2, 1],  # all alike once gaps are filled
+            [0, 0, 2, 1, 1, 1, 0, 4, 0],
+            [1, 0, 2, 0, 3, 0, 2, 1, 0],  # one case of a class, with a gap
+            [3, 0, 3, 0, 3, 0, 0, 0, 0],  # one class
+            [1, 1, 1, 1, 1, 1, 1, 1, 1],
+        ],
+        dtype=np.uint8,
+    )
+    states = list(range(len(counts)))
+    fast = round_scores(
+        choose(CANDIDATES, key, **({"k": 1} if key == "nearest_neighbours" else {})),
+        Preparations(table, counts),
+        engine="fast",
+        states=states,
+    )
+    plain = plain_scores(
+        choose(CANDIDATES, key, **({"k": 1} if key == "nearest_neighbours" else {})),
+        table,
+        counts,
+        random_states=states,
+    )
+    assert not np.isnan(plain).any()
+    assert_allclose(fast, plain, rtol=0, atol=0 if key in EXACT else 1e-9)
+    assert_allclose(plain[0], np.tile([5 / 9, 4 / 9], (9, 1)), rtol=1e-12)
 
 
 @pytest.mark.parametrize("key", FAST)
