@@ -23,6 +23,7 @@ from evalcore.settings import Settings
 from evalcore.table import Table
 
 CHUNK = 50  # most rounds finished together
+LARGE = 5_000  # cases from which a single round takes long enough to be reported
 WHOLE = ""  # the scheme name of the fits on all cases
 
 
@@ -72,13 +73,16 @@ def tasks(rounds: dict[str, Rounds], *, size: int = 0) -> list[Task]:
 
 
 def chunk_rounds(n_cases: int) -> int:
-    """Rounds finished together: many of a small table, ten of a large one.
+    """Rounds finished together: many of a small table, one by one of a very large one.
 
-    It depends on the table alone, so that a resume meets the same bounds.
+    It depends on the table alone, so that a resume meets the same bounds; and no chunk takes so
+    long that nothing is heard of it.
 
-    >>> [chunk_rounds(n) for n in (150, 720, 100_000)]
-    [50, 20, 10]
+    >>> [chunk_rounds(n) for n in (150, 720, 3_000, 10_000, 100_000)]
+    [50, 20, 10, 5, 1]
     """
+    if n_cases > LARGE:
+        return max(1, 50_000 // n_cases)
     return max(10, min(CHUNK, 15_000 // n_cases))
 
 

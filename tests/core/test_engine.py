@@ -248,7 +248,17 @@ def test_tasks_are_whole_fits_and_then_chunks_of_each_scheme():
 
 @pytest.mark.parametrize(
     ("n_cases", "step"),
-    [(1, 50), (300, 50), (301, 49), (720, 20), (1363, 11), (1364, 10), (100_000, 10)],
+    [
+        (1, 50),
+        (300, 50),
+        (301, 49),
+        (720, 20),
+        (1363, 11),
+        (1364, 10),
+        (5_000, 10),
+        (5_001, 9),
+        (100_000, 1),
+    ],
 )
 def test_a_larger_table_has_smaller_chunks(n_cases, step):
     assert chunk_rounds(n_cases) == step
