@@ -126,8 +126,7 @@ def delong(
     """Compare two AUCs measured on the same cases (DeLong, DeLong & Clarke-Pearson 1988).
 
     For scores of two fixed models on one set of cases. Not for cross-validated scores pooled over
-    folds: those come from different models, on different scales, and the intervals fall short
-    (own simulation: 50 to 96 % instead of 95 %).
+    folds: those come from different models, on different scales, and the intervals fall short.
 
     With V10 a positive's share of negatives it outranks (ties one half) and V01 a negative's
     share of positives that outrank it: variance = s^2(V10)/n1 + s^2(V01)/n0.

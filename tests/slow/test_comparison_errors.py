@@ -3,6 +3,10 @@
 No models are fitted: answers are right or wrong by a case's difficulty, shared by all candidates,
 the candidate's own view of the case, and how good its models happen to be: once for the table,
 and anew in every round.
+
+The settings were made steadier after a first run in which the formula without the error of the
+model's variance failed, and after the formula was changed; so this is a check of the code, and no
+independent evidence that 5 % is kept for fitted models.
 """
 
 import math
