@@ -1,10 +1,11 @@
-"""Whether estimates and default intervals keep their word: simulated tables with known truth.
+"""Whether default intervals, verdicts and comparisons keep their word: tables with known truth.
 
-Each table is judged under the recommended schemes. The truth is what the same candidate, fitted on
-this very table through the plain pipeline, reaches on 20,000 further cases. A row is appended as
-each table is finished; a second run skips what is there.
+Each simulated table is judged under the recommended schemes, all candidates of a cell's line-up on
+the same rounds. The truth is what the same candidate, fitted on this very table through the plain
+pipeline, reaches on 10,000 further cases. Rows are appended as each table is finished; a second
+run skips what is there.
 
-    python -m tests.studies.coverage --tables 1000 --out FILE [--cells quick|default|all] [--jobs 2]
+    python -m tests.studies.coverage --tables 1000 --out FILE [--cells quick|default|...] [--jobs 2]
     python -m tests.studies.coverage --summarise FILE [--out SUMMARY]
 """
 
@@ -14,68 +15,29 @@ import math
 import os
 import pathlib
 import sys
-from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
-from functools import lru_cache
-from statistics import NormalDist
-from typing import TextIO
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
 from evalcore import measures
 from evalcore.candidates import CANDIDATES, estimator
+from evalcore.comparison import PRACTICAL
 from evalcore.evaluation import Evaluation
+from evalcore.figures import CountedBy, Interval
 from evalcore.judged import auc_interval
-from evalcore.plan import Plan, choose_written, generator, recommended_schemes
+from evalcore.plan import Limit, Plan, choose_written, generator, recommended_schemes
 from evalcore.profile import smallest_class
 from evalcore.table import Table
+from evalcore.together import ESTIMATOR as WINNER
+from evalcore.verdict import verdicts
 from tests.core.checks import carried_out, table_of
+from tests.studies.mechanisms import MECHANISMS, SEED, Cases, further_cases
 
-FURTHER = 20_000  # cases the truth is measured on
-LEAST = 4  # cases of each class in a table
-SEED = 1
-Row = Mapping[str, object]
-Cases = tuple[NDArray[np.intp], measures.Floats]  # labels and features
+Row = dict[str, object]
 MEASURES = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
-
-
-@dataclass(frozen=True, eq=False)
-class Mechanism:
-    """Clusters of unit variance; a case comes from one cluster of its class at random."""
-
-    shares: tuple[float, ...]  # of the classes
-    centres: measures.Floats  # shape (K, clusters of a class, features that tell something)
-    noise: int = 0  # features that tell nothing
-
-    def draw(self, n: int, rng: np.random.Generator) -> Cases:
-        """Labelled cases; labels are drawn again until every class has `LEAST`."""
-        classes, clusters, features = self.centres.shape
-        labels = np.zeros(n, dtype=np.intp)
-        while np.bincount(labels, minlength=classes).min() < LEAST:
-            labels = rng.choice(classes, size=n, p=self.shares)
-        cluster = rng.integers(clusters, size=n)
-        x = rng.normal(size=(n, features + self.noise))
-        x[:, :features] += self.centres[labels, cluster]
-        return labels, x
-
-
-def _two_normals(bayes: float, *, features: int = 5) -> measures.Floats:
-    """Centres of two classes which, equally frequent, can be told apart in a share `bayes`."""
-    half = NormalDist().inv_cdf(bayes) / math.sqrt(features)
-    return np.array([[[-half] * features], [[half] * features]])
-
-
-EVEN, RARE = (0.5, 0.5), (0.85, 0.15)
-MECHANISMS = {
-    "gauss": Mechanism(EVEN, _two_normals(0.85)),
-    "imb": Mechanism(RARE, _two_normals(0.85)),
-    "p50": Mechanism(EVEN, _two_normals(0.85), noise=45),
-    "noise": Mechanism(EVEN, np.zeros((2, 1, 1)), noise=9),
-    "three": Mechanism((1 / 3, 1 / 3, 1 / 3), 2.2 / math.sqrt(2) * np.eye(3)[:, None, :], noise=2),
-    "xor": Mechanism(EVEN, 1.5 * np.array([[[1.0, 1], [-1, -1]], [[1, -1], [-1, 1]]]), noise=3),
-    "sep": Mechanism(EVEN, _two_normals(0.98)),
-}
+SHARES = MEASURES[:3]  # measures that limits go on
+BEST = "best of all"  # the row of whoever came out best
 
 
 @dataclass(frozen=True)
@@ -83,113 +45,232 @@ class Cell:
     """What is repeated."""
 
     scenario: str
-    n: int
-    candidate: str  # as written in a plan
+    n: int  # units
+    candidates: tuple[str, ...]  # as written in a plan; the first is compared with the others
     most: int = 10**9  # tables of it, whatever is asked for; slow candidates have fewer
+    bootstrap: bool = True  # whether the second look is carried out too
 
 
-QUICK = (
-    *(Cell(scenario, 60, "lda") for scenario in ("gauss", "p50", "imb")),
-    *(Cell("noise", 40, "nearest_neighbours:k=1"), Cell("xor", 100, "tree")),
+STEADY = ("logistic", "lda", "naive_bayes")
+EIGHT = (
+    *STEADY,
+    *("qda", "tree", *(f"nearest_neighbours:k={k}" for k in (5, 1, 15))),
 )
-LEARNERS = ("lda", "naive_bayes", "nearest_neighbours:k=5", "nearest_neighbours:k=1", "tree")
+QUICK = (
+    *(Cell(scenario, 60, ("lda",), bootstrap=False) for scenario in ("gauss", "p50", "imb")),
+    Cell("noise", 40, ("nearest_neighbours:k=1",), bootstrap=False),
+    Cell("xor", 100, ("tree",), bootstrap=False),
+)
 SMALL = (
     *((scenario, n) for scenario in ("gauss", "imb") for n in (30, 60, 120)),
     *(("p50", 60), ("noise", 40), ("three", 60), ("xor", 100), ("sep", 40)),
 )
 LARGE = (("gauss", 300), ("gauss", 500), ("imb", 300), ("noise", 120))
 DEFAULT = (
-    *(Cell(*at, candidate) for at in SMALL for candidate in LEARNERS),
-    *(Cell(*at, candidate) for at in LARGE for candidate in ("lda", "tree")),
+    *(Cell(*at, EIGHT) for at in SMALL),
+    *(Cell(*at, (*STEADY, "tree")) for at in LARGE),
+    *(Cell("units", n, ("logistic", "lda", "nearest_neighbours:k=5")) for n in (10, 20, 40)),
 )
-LINE_UP = (
-    *(Cell(*at, "logistic") for at in (*SMALL, *LARGE)),
-    *(Cell(*at, candidate, 400) for at in SMALL for candidate in ("svm", "forest")),
+SLOW = (
+    *(Cell(*at, ("svm",), 400) for at in SMALL),
+    *(
+        Cell(scenario, n, ("forest",), 400, bootstrap=False)
+        for scenario, n in (("gauss", 60), ("xor", 100), ("imb", 60))
+    ),
 )
-CELLS = {"quick": QUICK, "default": DEFAULT, "all": (*DEFAULT, *LINE_UP)}
+CELLS = {"quick": QUICK, "default": DEFAULT, "slow": SLOW}
 
 HELD, MEAN, SWITCH = "held_out_by_case", "mean_of_rounds", "out_of_bag_or_632_plus"
-ALONE = "mean_of_rounds (this scheme's model variance alone)"
-AUCS = ((MEAN, "auc"), (ALONE, "auc"))
-BY_FOLDS = (*((HELD, measure) for measure in MEASURES[:3]), *AUCS)
-FIGURES = (  # scheme, estimator, measure
-    *(("cross_validation", *figure) for figure in BY_FOLDS),
-    *(("bootstrap", *figure) for figure in (*BY_FOLDS, (SWITCH, "accuracy"))),
+ALONE = "mean_of_rounds_alone"  # AUC with the model variance of its own scheme alone
+BY_SCHEME = (*((HELD, measure) for measure in SHARES), (MEAN, "auc"), (ALONE, "auc"))
+FIGURES = (  # scheme, estimator, measure; the default scheme is what the table is recommended
+    *(("default", *figure) for figure in BY_SCHEME),
+    *(("bootstrap", *figure) for figure in (*BY_SCHEME, (SWITCH, "accuracy"))),
 )
-TRUE = tuple(f"true {measure}" for measure in MEASURES)
-NONE = (math.nan, math.nan, "")
 PARTS = ("value", "low", "high", "method")
-KEYS = ("scenario", "n", "candidate", "table")
-HEAD = (*KEYS[:3], "smallest_class", "scheme", "estimator", "measure")
+KEYS = ("scenario", "n", "candidate", "counted_by", "table")
 COLUMNS = (
     *KEYS,
     "smallest_class",
-    *TRUE,
-    *(f"{scheme}/{name}/{m}/{part}" for scheme, name, m in FIGURES for part in PARTS),
+    *(f"true/{measure}" for measure in MEASURES),
+    *(f"{'/'.join(figure)}/{part}" for figure in FIGURES for part in PARTS),
+    *(f"at_least/{measure}" for measure in SHARES),
+    *(f"difference/{part}" for part in ("true", "value", "low", "high", "call", "false")),
 )
 
 
-@lru_cache(maxsize=4)
-def further_cases(scenario: str) -> Cases:
-    """The large sample that a scenario's models are tried on."""
-    return MECHANISMS[scenario].draw(FURTHER, generator(SEED, scenario, "further cases"))
-
-
-def made(cell: Cell, number: int, *, bootstrap: bool = True) -> tuple[Table, Plan]:
+def made(cell: Cell, number: int) -> tuple[Table, Plan]:
     """One table and the recommended plan for it, or the headline's scheme alone."""
-    keys = (cell.scenario, str(cell.n), cell.candidate, str(number))
-    labels, features = MECHANISMS[cell.scenario].draw(cell.n, generator(SEED, *keys))
-    table = table_of(labels.tolist(), features=features)
-    schemes = recommended_schemes(table)[: None if bootstrap else 1]
-    choice, seed = choose_written(CANDIDATES, cell.candidate), generator(SEED, *keys)
-    return table, Plan(table.roles, schemes, (choice,), seed=int(seed.integers(2**31)))
+    keys = (cell.scenario, str(cell.n), str(number))
+    cases = MECHANISMS[cell.scenario].draw(cell.n, generator(SEED, *keys))
+    units = cases.units if MECHANISMS[cell.scenario].rows > 1 else None
+    table = table_of(cases.labels.tolist(), features=cases.features, units=units)
+    schemes = recommended_schemes(table)[: None if cell.bootstrap else 1]
+    candidates = tuple(choose_written(CANDIDATES, written) for written in cell.candidates)
+    seed = int(generator(SEED, *keys, "plan").integers(2**31))
+    # limits that everything reaches: only the bounds that verdicts rest on are looked at
+    (of_class, _), least = smallest_class(table), 1e-9
+    limits = tuple(
+        Limit(measure, least, table.classes[of_class] if measure == "sensitivity" else "")
+        for measure in SHARES
+    )
+    return table, Plan(table.roles, schemes, candidates, limits=limits, seed=seed)
 
 
-def judge(cell: Cell, number: int, *, bootstrap: bool = True) -> dict[str, object]:
-    """One table judged and held against the truth: a row of the file."""
-    table, plan = made(cell, number, bootstrap=bootstrap)
+def judge(cell: Cell, number: int) -> list[Row]:
+    """One table judged and held against the truth: its rows of the file."""
+    table, plan = made(cell, number)
     of_class, size = smallest_class(table)
-    keys = (cell.scenario, cell.n, cell.candidate, number, size)
-    row: dict[str, object] = dict(zip(COLUMNS, keys, strict=False))
-    row |= true_values(table, plan, further_cases(cell.scenario), of_class)
-    return row | judged_values(carried_out(table, plan)[0], table.classes[of_class])
+    found = carried_out(table, plan)[0]
+    ways: list[CountedBy] = ["unit", "case"] if table.has_units else ["case"]
+    further = further_cases(cell.scenario)
+    scores = {name: scores_of(table, plan, name, further) for name in found.candidates}
+    rows = []
+    for way in ways:
+        counted = found if way == found.counted_by else _counted_by_case(found)
+        truth = {
+            name: true_values(cell.scenario, further, scores[name], counted_by=way)
+            for name in found.candidates
+        }
+        # candidates of the same key are told apart as they were written
+        for name, written in zip(found.candidates, cell.candidates, strict=True):
+            row: Row = dict(zip(KEYS, (cell.scenario, cell.n, written, way, number), strict=True))
+            row |= {"smallest_class": size} | _true_columns(truth[name], of_class)
+            row |= judged_values(counted, name, table.classes[of_class])
+            row |= _bounds(_alone(counted), name)
+            rows.append(row | _difference(counted, name, truth))
+        rows += _best(cell, counted, truth, rows[-1], of_class=of_class)
+    return rows
 
 
-def true_values(table: Table, plan: Plan, further: Cases, of_class: int) -> dict[str, float]:
-    """What the model fitted on this table reaches on further cases, through the plain pipeline."""
-    (choice,), (labels, features) = plan.candidates, further
+def scores_of(table: Table, plan: Plan, name: str, further: Cases) -> measures.Floats:
+    """What the model fitted on this table answers for further cases, by the plain pipeline."""
+    choice = plan.candidate(name)
     model = estimator(CANDIDATES[choice.key], choice.values(), table, plan.seed)
     model.fit(table.features, table.labels)
     answer = getattr(model, "predict_proba", None) or model.decision_function
-    scores = answer(features)
-    scores = scores if scores.ndim == 2 else np.column_stack([-scores, scores])
+    scores: measures.Floats = answer(further.features)
+    return scores if scores.ndim == 2 else np.column_stack([-scores, scores])
+
+
+def true_values(
+    scenario: str, further: Cases, scores: measures.Floats, *, counted_by: CountedBy
+) -> dict[str, measures.Floats]:
+    """Accuracy, balanced accuracy, sensitivity of each class and AUC, on further cases or units."""
+    labels = further.labels
+    if counted_by == "unit":
+        rows = MECHANISMS[scenario].rows
+        labels, scores = labels[::rows], scores.reshape(-1, rows, scores.shape[1]).mean(axis=1)
     named = measures.predicted_class(scores)
-    counts = measures.confusion(labels, named, n_classes=table.n_classes)
-    values = (
-        measures.accuracy(counts)[0],
-        measures.balanced_accuracy(counts)[0],
-        measures.recalls(counts)[0, of_class],
-        measures.hand_till(labels, scores)[0],
-    )
-    return dict(zip(TRUE, map(float, values), strict=True))
+    counts = measures.confusion(labels, named, n_classes=scores.shape[1])
+    values = {
+        "accuracy": measures.accuracy(counts)[0],
+        "balanced_accuracy": measures.balanced_accuracy(counts)[0],
+        "sensitivity": measures.recalls(counts)[0],
+        "auc": measures.hand_till(labels, scores)[0],
+    }
+    if scenario == "noise":  # known without measuring
+        values |= dict.fromkeys(("accuracy", "balanced_accuracy", "auc"), np.float64(0.5))
+    return values
 
 
-def judged_values(found: Evaluation, of_class: str) -> dict[str, object]:
-    """Value and default interval of every figure; schemes that were not used are left out."""
-    row: dict[str, object] = {}
-    for scheme, name, measure in FIGURES:
-        if scheme not in found.rounds or (name == ALONE and len(found.rounds) == 1):
+def _true_columns(truth: Mapping[str, measures.Floats], of_class: int) -> Row:
+    return {
+        f"true/{measure}": float(np.atleast_1d(value)[of_class if value.ndim else 0])
+        for measure, value in truth.items()
+    }
+
+
+def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
+    """Value and default interval of every figure of a candidate, as far as schemes were used."""
+    row: Row = {}
+    for scheme, by, measure in FIGURES:
+        scheme_name = found.scheme if scheme == "default" else scheme
+        if scheme_name not in found.rounds:
             continue
-        by, of = MEAN if name == ALONE else name, of_class if measure == "sensitivity" else ""
-        estimate = found.estimate(measure, found.about, scheme=scheme, estimator=by, of_class=of)
+        estimate = found.estimate(
+            measure,
+            name,
+            scheme=scheme_name,
+            estimator=MEAN if by == ALONE else by,
+            of_class=of_class if measure == "sensitivity" else "",
+        )
         interval = estimate.interval
-        if name == ALONE:
-            part = found.part(found.about, scheme)
+        if by == ALONE:
+            part = found.part(name, scheme_name)
             interval = auc_interval(found.plan.level, part, [part], estimate.value)
-        ends = (interval.low, interval.high, interval.method) if interval else NONE
-        values = (estimate.value, *ends)
-        row |= {f"{scheme}/{name}/{measure}/{p}": v for p, v in zip(PARTS, values, strict=True)}
+        row |= _parts(f"{scheme}/{by}/{measure}", estimate.value, interval)
     return row
+
+
+def _parts(name: str, value: float, interval: Interval | None) -> Row:
+    ends = (
+        (interval.low, interval.high, interval.method) if interval else (math.nan, math.nan, "")
+    )
+    return {f"{name}/{p}": v for p, v in zip(PARTS, (value, *ends), strict=True)}
+
+
+def _counted_by_case(found: Evaluation) -> Evaluation:
+    return replace(found, plan=replace(found.plan, answered_from="one"))
+
+
+def _alone(found: Evaluation) -> Evaluation:
+    """As if each candidate had been the only one tried."""
+    return replace(found, estimates=tuple(e for e in found.estimates if e.estimator != WINNER))
+
+
+def _bounds(found: Evaluation, name: str) -> Row:
+    """What each measure was shown to be at least; a limit at or below it is called shown."""
+    return {
+        f"at_least/{verdict.limit.measure}": verdict.at_least if verdict.n >= 10 else -math.inf
+        for verdict in verdicts(found, name)
+    }
+
+
+def _difference(
+    found: Evaluation, name: str, truth: Mapping[str, Mapping[str, measures.Floats]]
+) -> Row:
+    """The first candidate less this one, and whether the call is false."""
+    for d in found.differences:
+        if d.second == name:
+            true = float(truth[d.first]["accuracy"] - truth[d.second]["accuracy"])
+            false = {
+                "better": true <= 0,
+                "worse": true >= 0,
+                "practically equal": abs(true) > PRACTICAL,
+                "cannot tell": False,
+            }[d.call]
+            values = (true, d.value, d.interval.low, d.interval.high, d.call, int(false))
+            return {
+                f"difference/{part}": value
+                for part, value in zip(
+                    ("true", "value", "low", "high", "call", "false"), values, strict=True
+                )
+            }
+    return {}
+
+
+def _best(
+    cell: Cell,
+    found: Evaluation,
+    truth: Mapping[str, Mapping[str, measures.Floats]],
+    like: Row,
+    *,
+    of_class: int,
+) -> Iterator[Row]:
+    """A row for whoever came out best, with the luck of being best taken off."""
+    best = found.winner
+    if best is None:
+        return
+    row: Row = {key: like[key] for key in (*KEYS, "smallest_class")}
+    row |= {"candidate": f"{BEST} {len(cell.candidates)}"}
+    row |= _true_columns(truth[best.candidate], of_class)
+    for measure in SHARES:
+        name = found.table.classes[of_class] if measure == "sensitivity" else ""
+        corrected = found.corrected(measure, name)
+        if corrected:
+            row |= _parts(f"default/{HELD}/{measure}", corrected.value, corrected.interval)
+    yield row | _bounds(found, best.candidate)
 
 
 def finished(path: pathlib.Path) -> list[dict[str, str]]:
@@ -208,69 +289,25 @@ def _begun(path: pathlib.Path) -> None:
         path.write_text(",".join(COLUMNS) + "\n", encoding="utf-8")
 
 
-def run(
-    cells: Sequence[Cell], path: pathlib.Path, *, tables: int, jobs: int = 1, bootstrap: bool = True
-) -> None:
-    """Append a row for every table that the file lacks, all cells growing alike."""
+def run(cells: Sequence[Cell], path: pathlib.Path, *, tables: int, jobs: int = 1) -> None:
+    """Append the rows of every table that the file lacks, all cells growing alike."""
     from joblib import Parallel, delayed
 
     _begun(path)
-    done = {tuple(row[key] for key in KEYS) for row in finished(path)}
+    keys = ("scenario", "n", "candidate", "table")
+    done = {tuple(row[key] for key in keys) for row in finished(path)}
     todo = (
-        delayed(judge)(cell, number, bootstrap=bootstrap)
+        delayed(judge)(cell, number)
         for number in range(tables)
         for cell in cells
         if number < cell.most
-        and (cell.scenario, str(cell.n), cell.candidate, str(number)) not in done
+        and (cell.scenario, str(cell.n), cell.candidates[-1], str(number)) not in done
     )
     with path.open("a", newline="", encoding="utf-8") as file:
         writer = csv.DictWriter(file, COLUMNS, restval="", lineterminator="\n")
-        for row in Parallel(n_jobs=jobs, return_as="generator_unordered")(todo):
-            writer.writerow(row)
+        for rows in Parallel(n_jobs=jobs, return_as="generator_unordered")(todo):
+            writer.writerows(rows)
             file.flush()
-
-
-def summary(rows: Iterable[Row]) -> Iterator[dict[str, object]]:
-    """The small table, in shares: a line for each cell and figure; coverage where intervals are."""
-    by_cell: dict[tuple[object, ...], list[Row]] = {}
-    for row in rows:
-        by_cell.setdefault(tuple(row[key] for key in KEYS[:3]), []).append(row)
-    for cell, alike in by_cell.items():
-        smallest = int(np.median([int(str(row["smallest_class"])) for row in alike]))
-        for figure in FIGURES:
-            if found := _line(alike, figure):
-                yield dict(zip(HEAD, (*cell, smallest, *figure), strict=True)) | found
-
-
-def _line(alike: list[Row], figure: tuple[str, str, str]) -> dict[str, object]:
-    """Coverage, bias, RMSE and width of one figure over tables; empty where no table has it."""
-    name = "/".join(figure)
-    having = [row for row in alike if row.get(f"{name}/value", "") != ""]
-    if not having:
-        return {}
-    columns = (f"true {figure[2]}", *(f"{name}/{part}" for part in PARTS[:3]))
-    truth, value, low, high = np.array([[float(str(r[c])) for r in having] for c in columns])
-    offered = ~np.isnan(low)
-    error = (value - truth)[~np.isnan(value)]
-    covered = ((low <= truth) & (truth <= high))[offered]
-    share = float(covered.mean()) if len(covered) else math.nan
-    return {
-        "interval": next((r[f"{name}/method"] for r in having if r[f"{name}/method"]), ""),
-        "coverage": share,
-        "monte_carlo_error": math.sqrt(share * (1 - share) / max(1, len(covered))),
-        "bias": float(error.mean()),
-        "rmse": math.sqrt(float(np.square(error).mean())),
-        "width": float((high - low)[offered].mean()) if len(covered) else math.nan,
-        "tables": len(having),
-    }
-
-
-def write(lines: Iterable[Row], file: TextIO) -> None:
-    """Lines of the small table as CSV, shares to four digits."""
-    shown = [{k: f"{v:.4f}" if isinstance(v, float) else v for k, v in x.items()} for x in lines]
-    writer = csv.DictWriter(file, list(shown[0]) if shown else [], lineterminator="\n")
-    writer.writeheader()
-    writer.writerows(shown)
 
 
 def main() -> None:
@@ -280,15 +317,15 @@ def main() -> None:
     parser.add_argument("--out", type=pathlib.Path, required="--summarise" not in sys.argv)
     parser.add_argument("--cells", choices=list(CELLS), default="default")
     parser.add_argument("--jobs", type=int, default=1)
-    parser.add_argument("--folds-only", action="store_true", help="no bootstrap rounds")
     parser.add_argument("--summarise", type=pathlib.Path)
     given = parser.parse_args()
     if given.summarise:
+        from tests.studies.coverage_table import summary, write
+
         with given.out.open("w", encoding="utf-8") if given.out else sys.stdout as file:
             write(summary(finished(given.summarise)), file)
         return
-    wanted = {"tables": given.tables, "jobs": given.jobs, "bootstrap": not given.folds_only}
-    run(CELLS[given.cells], given.out, **wanted)
+    run(CELLS[given.cells], given.out, tables=given.tables, jobs=given.jobs)
 
 
 if __name__ == "__main__":
