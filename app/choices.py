@@ -4,7 +4,9 @@ from collections.abc import Mapping
 from typing import Any
 
 from evalcore.candidates import CANDIDATES
-from evalcore.plan import Choice, Limit, Plan, Registry, choose
+from evalcore.choice import Choice, Registry, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles, Table
 

@@ -8,21 +8,17 @@ from pathlib import Path
 from app.columns import size_parser, statistic_parser
 from evalcore.answer import answer, limit_rows, title
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import Choice, choose_written
 from evalcore.cluster import on_cluster
+from evalcore.cut_off import CutOffRule
 from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
 from evalcore.intake import make_table, noun_from
+from evalcore.limit import Limit
 from evalcore.measures import MEASURES
-from evalcore.plan import (
-    Choice,
-    Limit,
-    Plan,
-    choose_written,
-    recommended_candidates,
-    recommended_schemes,
-)
+from evalcore.plan import Plan, recommended_candidates, recommended_schemes
 from evalcore.record import Record, Status
-from evalcore.schemes import SCHEMES
+from evalcore.schemes import LEARNING_CURVE, SCHEMES
 from evalcore.sheet import read_sheet
 from evalcore.table import Copies, Roles
 from evalcore.wording import Noun, count, duration
@@ -84,7 +80,22 @@ def _evaluate_parser(parser: argparse.ArgumentParser) -> None:
     )  # fmt: skip
     parser.add_argument(
         "--candidate", action="append", default=[], metavar="KEY[:name=value,...]",
-        help=f"one of {', '.join(CANDIDATES)}",
+        help=f"one of {', '.join(CANDIDATES)}; several values of a setting, as in k=1/5/15, are a "
+        "grid that each round picks from inside its bag",
+    )  # fmt: skip
+    parser.add_argument(
+        "--cut-off", default="", metavar="CLASS:name=value,...",
+        help="learn from which score on a class is called: by costs (miss=10,alarm=1), by a floor "
+        "(floor=0.90), or fixed (at=0.35,set_on=DATE); share=0.08 or share=0.05-0.2 in use; "
+        "undecided=0.7 leaves lower probabilities to a person",
+    )  # fmt: skip
+    parser.add_argument(
+        "--learning-curve", nargs="?", const="", metavar="sizes=6,subsets=20",
+        help="what more cases would bring, from nested smaller bags",
+    )  # fmt: skip
+    parser.add_argument(
+        "--chance-check", type=int, default=0, metavar="N",
+        help="permute the labels between units N times (199 say) and judge each the same way",
     )  # fmt: skip
     parser.add_argument(
         "--answered-from",
@@ -191,7 +202,18 @@ def _plan(given: argparse.Namespace) -> Plan:
         seed=given.seed,
         question=given.question,
         engine=given.engine,
+        curve=_curve(given.learning_curve),
+        cut_off=CutOffRule.read(given.cut_off) if given.cut_off else None,
+        permutations=given.chance_check,
     )
+
+
+def _curve(text: str | None) -> Choice | None:
+    """The learning curve's scheme with the settings given; None where it was not asked for."""
+    if text is None:
+        return None
+    key = LEARNING_CURVE.key
+    return choose_written({key: LEARNING_CURVE}, f"{key}:{text}")
 
 
 def _about(text: str, candidates: Sequence[Choice]) -> str:

@@ -5,9 +5,10 @@ from dataclasses import dataclass
 
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
+from evalcore.limit import Limit
 from evalcore.measures import ALL_MEASURES, MEASURES
 from evalcore.outlook import in_words, outlook
-from evalcore.plan import Limit, Plan
+from evalcore.plan import Plan
 from evalcore.profile import majority
 from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
 from evalcore.schemes import LEAST_BLOCKS

@@ -1,7 +1,9 @@
 """What the rounds' models answered: held-out scores kept, everything else reduced per round."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -41,11 +43,18 @@ class Answers:
         Answers for the bags themselves, by unit and by case.
     on_all : dict of CountedBy to ndarray, shape (R, K, K)
         Confusion counts of the same models' answers for all cases, each counted once.
+    picked : ndarray of int, shape (R,), or None
+        Which option of a grid each bag picked; None where nothing is tuned.
+    inner : ndarray, shape (R, n), or None
+        Inner held-out scores for the class that a cut-off calls, nan outside the bag; kept so
+        that costs can be moved without a refit. None where no cut-off is learned.
     """
 
     scores: Floats
     in_bag: dict[CountedBy, Reduced]
     on_all: dict[CountedBy, Floats]
+    picked: NDArray[np.intp] | None = None
+    inner: Floats | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -187,7 +196,14 @@ def joined(parts: list[Answers]) -> Answers:
         np.concatenate([part.scores for part in parts]),
         _joined([part.in_bag for part in parts]),
         {way: np.concatenate([part.on_all[way] for part in parts]) for way in parts[0].on_all},
+        _put_together([part.picked for part in parts]),
+        _put_together([part.inner for part in parts]),
     )
+
+
+def _put_together(parts: Sequence[NDArray[Any] | None]) -> NDArray[Any] | None:
+    found = [part for part in parts if part is not None]
+    return np.concatenate(found) if len(found) == len(parts) else None
 
 
 def _joined(parts: list[dict[CountedBy, Reduced]]) -> dict[CountedBy, Reduced]:

@@ -192,7 +192,7 @@ def _called(name: str) -> Callable[[Settings], str]:
     return lambda settings: name
 
 
-_C = Setting("C", "Strength of fit to the data (C)", "number", 1.0, 1e-4, 1e4)
+_C = Setting("C", "Strength of fit to the data (C)", "number", 1.0, 1e-4, 1e4, smoother="low")
 
 CANDIDATES: dict[str, Candidate] = {
     candidate.key: candidate
@@ -223,7 +223,17 @@ CANDIDATES: dict[str, Candidate] = {
         Candidate(
             "qda",
             "quadratic discriminant (QDA)",
-            (Setting("shrinkage", "Shrinkage towards a sphere", "number", 0.01, 1e-6, 1.0),),
+            (
+                Setting(
+                    "shrinkage",
+                    "Shrinkage towards a sphere",
+                    "number",
+                    0.01,
+                    1e-6,
+                    1.0,
+                    smoother="high",
+                ),
+            ),
             _qda,
             _yes,
             _called("quadratic discriminant"),
@@ -233,7 +243,7 @@ CANDIDATES: dict[str, Candidate] = {
             "nearest_neighbours",
             "nearest neighbours",
             (
-                Setting("k", "Neighbours (k)", "whole", 5, 1, 200),
+                Setting("k", "Neighbours (k)", "whole", 5, 1, 200, smoother="high"),
                 Setting("scaling", "Scaling", "choice", "standard", choices=("standard", "none")),
             ),
             _nearest_neighbours,

@@ -1,5 +1,7 @@
 """How each scheme draws its rounds over groups of cases that are kept together."""
 
+import math
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -9,6 +11,10 @@ from evalcore.settings import Settings
 from evalcore.table import Table
 
 Draw = np.random.Generator
+CURVE_FOLDS = 5  # of a learning curve: four fifths can be learned from
+LEAST_SIZES = 4  # of a learning curve, as `power_law` asks
+SMALLEST_SHARE = 0.15  # of the training part, in the smallest bags of a learning curve
+LEAST_OF_CLASS = 2  # groups of a class in every bag of a learning curve
 
 
 def split(held_out: NDArray[np.bool_], repeat: NDArray[np.intp]) -> Rounds:
@@ -167,3 +173,72 @@ def time_stretches(table: Table, settings: Settings) -> NDArray[np.intp]:
     before, reached = (np.searchsorted(in_order, rank, side=side) for side in ("left", "right"))
     wanted = (before + reached) * parts // (2 * len(rank))
     return np.asarray(np.unique(wanted, return_inverse=True)[1])
+
+
+def nested_sizes(groups: Groups, sizes: int) -> NDArray[np.intp]:
+    """How many groups of each class the bags of a learning curve hold, smallest bags first.
+
+    Shares of the smallest training part in geometric steps, so that classes keep their
+    proportions; the first is 0.15, or more where the smallest class would keep fewer than two.
+
+    Parameters
+    ----------
+    groups : Groups
+    sizes : int
+        Wanted; where rounding makes two of them equal, one is left out.
+
+    Returns
+    -------
+    ndarray of int, shape (S, number of strata), S <= sizes
+        Rows differ and rise. The last is the smallest whole training part.
+    """
+    strata = strata_of(groups, {"stratified": True})
+    number = np.array([len(stratum) for stratum in strata], dtype=np.intp)
+    whole = number - -(-number // CURVE_FOLDS)
+    first = max(SMALLEST_SHARE, LEAST_OF_CLASS / max(int(whole.min()), 1))
+    shares = np.geomspace(min(first, 1.0), 1.0, sizes)
+    # what is half a group but for rounding noise goes the same way on every machine
+    wanted = np.rint(np.round(shares[:, None] * whole, 9)).astype(np.intp)
+    return np.asarray(np.unique(wanted, axis=0))
+
+
+def n_nested(groups: Groups, settings: Settings) -> int:
+    """How many rounds `nested_bags` makes."""
+    return len(nested_sizes(groups, int(settings["sizes"]))) * CURVE_FOLDS * _repeats(settings)
+
+
+def nested_bags(_: Table, groups: Groups, settings: Settings, *, rng: Draw) -> Rounds:
+    """Bags of rising size, each within the next; the groups left out of the largest judge all.
+
+    Each repeat deals the groups of every class into five folds. What is outside a fold is put in
+    random order, class by class; bags are its beginnings, and the largest holds all of it. Order:
+    by fold, then by size. A repeat and a size make one id in `Rounds.repeat`.
+    """
+    strata = strata_of(groups, {"stratified": True})
+    sizes, repeats = nested_sizes(groups, int(settings["sizes"])), _repeats(settings)
+    of_group = np.empty((len(sizes), groups.number), dtype=np.intp)
+    for stratum, size in zip(strata, sizes.T, strict=True):
+        of_group[:, stratum] = size[:, None]
+    of_group[-1] = groups.number  # folds differ by one: the largest bag takes what there is
+    shape = (repeats, CURVE_FOLDS, len(sizes), groups.number)
+    train, test = np.zeros(shape, dtype=np.uint8), np.zeros(shape, dtype=np.uint8)
+    for repeat in range(repeats):
+        dealt = np.concatenate([rng.permutation(stratum) for stratum in strata])
+        fold = np.empty(groups.number, dtype=np.intp)
+        fold[dealt] = np.arange(groups.number) % CURVE_FOLDS
+        for out in range(CURVE_FOLDS):
+            place = np.full(groups.number, groups.number)
+            for stratum in strata:
+                learned = rng.permutation(stratum[fold[stratum] != out])
+                place[learned] = np.arange(len(learned))
+            train[repeat, out] = place < of_group
+            test[repeat, out] = fold == out
+    ids = np.arange(repeats)[:, None, None] * len(sizes) + np.arange(len(sizes))
+    flat = (-1, groups.number)
+    repeat_of = np.broadcast_to(ids, shape[:3]).reshape(-1)
+    return Rounds(train.reshape(flat), test.reshape(flat), repeat_of.copy())
+
+
+def _repeats(settings: Settings) -> int:
+    """Repeats of five folds that give at least as many subsets as are wanted."""
+    return math.ceil(int(settings["subsets"]) / CURVE_FOLDS)

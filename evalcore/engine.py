@@ -6,30 +6,30 @@ on the order or on an interruption.
 
 import os
 import time
-import warnings
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from evalcore.answers import Answers, answers_of
-from evalcore.candidates import CANDIDATES, estimator
-from evalcore.exact_rounds import Preparations, exact_scores
 from evalcore.measures import Floats
-from evalcore.plan import APPENDING, Choice, Engine, Plan, generator
-from evalcore.prepared import nothing_varies, prepare
-from evalcore.rounds import Counts, Rounds
-from evalcore.settings import Settings
+from evalcore.permuted import permuted_figures
+from evalcore.pipeline import candidates_in
+from evalcore.plan import Plan
+from evalcore.rounds import Rounds
 from evalcore.table import Table
+from evalcore.tuning import Learned
 
 CHUNK = 50  # most rounds finished together
 LARGE = 5_000  # cases from which a single round takes long enough to be reported
 WHOLE = ""  # the scheme name of the fits on all cases
+CHANCE = "chance check"  # the scheme name of permuted tables; no scheme is named with a blank
+PERMUTATIONS = 5  # permuted tables finished together
 
 
 @dataclass(frozen=True)
 class Task:
-    """Some rounds of one scheme; the fits on all cases have the scheme name `WHOLE`."""
+    """Some rounds of one scheme; fits on all cases are `WHOLE`, permuted tables `CHANCE`."""
 
     scheme: str
     start: int
@@ -49,16 +49,19 @@ class Finished:
         By candidate name, why it could not be fitted.
     seconds : float
         Time taken.
+    chance : ndarray or None, shape (m, C)
+        Of permuted tables: the figure of each candidate on each, in the order of the plan.
     """
 
     task: Task
     answers: dict[str, Answers]
     failures: dict[str, str]
     seconds: float
+    chance: Floats | None = None
 
 
-def tasks(rounds: dict[str, Rounds], *, size: int = 0) -> list[Task]:
-    """All tasks of drawn rounds: the fits on all cases first, then scheme by scheme.
+def tasks(rounds: dict[str, Rounds], *, size: int = 0, permutations: int = 0) -> list[Task]:
+    """All tasks of drawn rounds: fits on all cases first, then by scheme, permuted tables last.
 
     `size` rounds to a task; `chunk_rounds` decides where it is 0.
     """
@@ -69,7 +72,10 @@ def tasks(rounds: dict[str, Rounds], *, size: int = 0) -> list[Task]:
             Task(name, start, min(start + step, drawn.n_rounds))
             for start in range(0, drawn.n_rounds, step)
         ]
-    return todo
+    return todo + [
+        Task(CHANCE, start, min(start + PERMUTATIONS, permutations))
+        for start in range(0, permutations, PERMUTATIONS)
+    ]
 
 
 def chunk_rounds(n_cases: int) -> int:
@@ -124,7 +130,7 @@ def run(
 
 
 def _only(rounds: dict[str, Rounds], task: Task) -> dict[str, Rounds]:
-    return {task.scheme: rounds[task.scheme]} if task.scheme else {}
+    return {task.scheme: rounds[task.scheme]} if task.scheme in rounds else {}
 
 
 def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -> Finished:
@@ -135,131 +141,34 @@ def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -
     for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
         # the limit below reaches only what is loaded already; this is read on loading
         os.environ.setdefault(name, "1")
+    # one thread inside: more would fight over the cores and could change the last digits
+    with threadpool_limits(1):
+        if task.scheme == CHANCE:
+            numbers = range(task.start, task.stop)
+            chance = np.array([permuted_figures(table, plan, number) for number in numbers])
+            return Finished(task, {}, {}, time.perf_counter() - began, chance)
+        answers, failures = _answered(table, plan, rounds, task)
+    return Finished(task, answers, failures, time.perf_counter() - began)
+
+
+def _answered(
+    table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task
+) -> tuple[dict[str, Answers], dict[str, str]]:
+    """Answers of every candidate in the rounds of one task, and why any failed."""
     part = (
         rounds[task.scheme].part(slice(task.start, task.stop))
         if task.scheme
         else whole_rounds(table.n_cases)
     )
     answers, failures = {}, {}
-    preparations = Preparations(table, part.train)
-    # one thread inside: more would fight over the cores and could change the last digits
-    with threadpool_limits(1):
-        for name, choice in zip(plan.candidate_names, plan.candidates, strict=True):
-            states = _random_states(plan, choice, task)
-            try:
-                scores = round_scores(choice, preparations, engine=plan.engine, states=states)
-            except Exception as error:  # a candidate that cannot be fitted must not end the rest
-                rounds_of = task.scheme or "the whole table"
-                warnings.warn(f"{name} failed in {rounds_of}: {error!r}", stacklevel=2)
-                failures[name] = f"{type(error).__name__}: {error}"
-            else:
-                answers[name] = answers_of(table, part, scores)
-    return Finished(task, answers, failures, time.perf_counter() - began)
-
-
-def _random_states(plan: Plan, choice: Choice, task: Task) -> list[int]:
-    """A random state for each round of a task, that no other candidate or scheme can move."""
-    scheme = plan.scheme(task.scheme).written(without=APPENDING) if task.scheme else "whole"
-    return [
-        int(generator(plan.seed, choice.written(), scheme, str(r)).integers(2**31))
-        for r in range(task.start, task.stop)
-    ]
-
-
-def round_scores(
-    choice: Choice, preparations: Preparations, *, engine: Engine, states: Sequence[int]
-) -> Floats:
-    """Answers of one candidate for every case in some rounds, shape (R, n, K).
-
-    By its fast path where there is one and `engine` is "fast"; rounds it does not cover, and
-    everything under "plain", by the plain adapter.
-    """
-    table, counts = preparations.table, preparations.counts
-    scaled = CANDIDATES[choice.key].scaled(choice.values())
-    found = (
-        exact_scores(choice, preparations, scaled=scaled, random_states=states)
-        if engine == "fast"
-        else None
-    )
-    if found is None:
-        return plain_scores(choice, table, counts, random_states=states)
-    scores, covered = found
-    left = np.flatnonzero(~covered).tolist()
-    if left:
-        scores[left] = plain_scores(
-            choice, table, counts[left], random_states=[states[r] for r in left]
-        )
-    return scores
-
-
-def plain_scores(
-    choice: Choice, table: Table, counts: Counts, *, random_states: Sequence[int]
-) -> Floats:
-    """Fit one candidate on each bag with the public classes, and answer for every case.
-
-    Parameters
-    ----------
-    choice : Choice
-    table : Table
-    counts : ndarray, shape (R, n)
-        How often each case is in each bag.
-    random_states : sequence of int, length R
-
-    Returns
-    -------
-    ndarray, shape (R, n, K)
-        Probabilities, or decision values where the candidate has no probabilities. A class the
-        bag lacks has probability 0, or a decision value below all others.
-    """
-    fixed = CANDIDATES[choice.key].fixed
-    if fixed is not None:
-        answers = fixed(table, choice.values())
-        return np.broadcast_to(answers, (len(counts), *answers.shape))
-    scores = np.zeros((len(counts), table.n_cases, table.n_classes))
-    for r, (bag, state) in enumerate(zip(counts, random_states, strict=True)):
-        scores[r] = _round_scores(choice, table, bag, state)
-    return scores
-
-
-def _round_scores(choice: Choice, table: Table, bag: Counts, state: int) -> Floats:
-    if choice.key == "qda":
-        bag = _of_spread_classes(table, bag)
-    rows = np.repeat(np.arange(table.n_cases), bag)
-    labels = table.labels[rows]
-    present, times = np.unique(labels, return_counts=True)
-    scores = np.zeros((table.n_cases, table.n_classes))
-    alike = nothing_varies(prepare(table, bag[None], scaled=False), bag[None])[0]
-    if len(present) == 1 or alike:
-        # one class only, or nothing to tell cases apart by: the classes' shares
-        scores[:, present] = times / len(rows)
-        return scores
-    settings: Settings = choice.values()
-    model = estimator(CANDIDATES[choice.key], settings, table, state)
-    with warnings.catch_warnings():
-        # collinear one-hot columns and the like are expected in small bags
-        warnings.simplefilter("ignore")
-        model.fit(table.features[rows], labels)
-        if hasattr(model, "predict_proba"):
-            scores[:, present] = model.predict_proba(table.features)
-            return scores
-        values = model.decision_function(table.features)
-    if values.ndim == 1:
-        values = np.column_stack([-values, values])
-    scores[:] = values.min() - 1
-    scores[:, present] = values
-    return scores
-
-
-def _of_spread_classes(table: Table, bag: Counts) -> Counts:
-    """The bag without classes whose cases are all alike once prepared: they have no covariance."""
-    while True:
-        features = prepare(table, bag[None], scaled=False).features[0]
-        inside = bag > 0
-        present = np.unique(table.labels[inside])
-        alone = [
-            k for k in present if len(np.unique(features[inside & (table.labels == k)], axis=0)) < 2
-        ]
-        if not alone or len(alone) == len(present):
-            return bag
-        # gaps are filled anew without them, so the others are looked at again
-        bag = np.where(np.isin(table.labels, alone), 0, bag).astype(np.uint8)
+    for name, found in candidates_in(table, plan, part, scheme=task.scheme, start=task.start):
+        if isinstance(found, Learned):
+            inner = None
+            if found.inner is not None and plan.cut_off:
+                inner = found.inner[:, :, table.classes.index(plan.cut_off.of_class)]
+            answers[name] = replace(
+                answers_of(table, part, found.scores), picked=found.picked, inner=inner
+            )
+        else:
+            failures[name] = found
+    return answers, failures

@@ -11,9 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from evalcore import closed_form, discriminants, nearest, trees
+from evalcore.choice import Choice
 from evalcore.logistic_rounds import logistic
 from evalcore.measures import Floats
-from evalcore.plan import Choice
 from evalcore.prepared import Prepared, blocks, nothing_varies, prepare
 from evalcore.rounds import Counts
 from evalcore.settings import Settings

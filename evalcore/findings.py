@@ -4,6 +4,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from evalcore import checks_candidates as candidates
+from evalcore import checks_evidence as of_evidence
 from evalcore import checks_rounds as rounds
 from evalcore import checks_table as of_table
 from evalcore.evaluation import Evaluation
@@ -46,6 +47,11 @@ CHECKS: dict[str, Check] = {
         ),
         Check("class_too_small", "too few units of a class", of_table.class_too_small),
         Check("wide_interval", "the interval leaves much open", candidates.wide_interval),
+        Check(
+            "interval_falls_short",
+            "the interval did not keep its word in simulations",
+            of_evidence.interval_falls_short,
+        ),
         Check("unstable_model", "the model varies from round to round", candidates.unstable_model),
         Check(
             "model_variance_unknown",

@@ -13,7 +13,7 @@ from evalcore.answers import HeldOut, Reduced
 from evalcore.figures import CountedBy, Interval
 from evalcore.measures import ALL_MEASURES, Floats
 from evalcore.plan import Plan
-from evalcore.schemes import LEAST_BLOCKS, SCHEMES
+from evalcore.schemes import ALL_SCHEMES, LEAST_BLOCKS
 from evalcore.table import Table
 
 
@@ -127,7 +127,7 @@ def clusters(
     Rows of a unit where rows are counted; blocks or groups that a scheme keeps together.
     """
     choice = plan.scheme(scheme)
-    registered = SCHEMES[choice.key]
+    registered = ALL_SCHEMES[choice.key]
     groups = registered.groups(table, choice.values())
     first_case = np.unique(table.units, return_index=True)[1]
     of_counted = groups.of_case[first_case] if counted_by == "unit" else groups.of_case

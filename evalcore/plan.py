@@ -3,129 +3,34 @@
 import dataclasses
 import hashlib
 import json
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
 import numpy as np
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import BETWEEN, Choice, choose, written_value
+from evalcore.cut_off import CutOffRule
 from evalcore.errors import PlanError
 from evalcore.figures import CountedBy
+from evalcore.limit import Limit
 from evalcore.measures import MEASURES
 from evalcore.profile import smallest_class
 from evalcore.rounds import Rounds
-from evalcore.schemes import SCHEMES, draw
-from evalcore.settings import Setting, Value
+from evalcore.schemes import ALL_SCHEMES, SCHEMES, draw
+from evalcore.settings import Value
 from evalcore.table import Roles, Table
 from evalcore.wording import Noun, capitalised, count, listed, quoted
 
 FORMAT = 1
 APPENDING = ("rounds", "repeats")  # settings that only append rounds, so they move no draw
 
-Registry = Mapping[str, Any]
+MOST_PERMUTATIONS = 9_999
+INNER_FOLDS = 5  # of a bag, where settings or a cut-off are learned
+CHANCE_ROUNDS = 20  # of the headline's rounds that every permuted table goes through
+
 Engine = Literal["fast", "plain"]
-
-
-@dataclass(frozen=True)
-class Choice:
-    """A scheme or candidate that was chosen, with a value for each of its settings."""
-
-    key: str
-    settings: tuple[tuple[str, Value], ...] = ()
-
-    def values(self) -> dict[str, Value]:
-        """The settings by key."""
-        return dict(self.settings)
-
-    def written(self, *, without: Iterable[str] = ()) -> str:
-        """As on the command line, all settings in order: ``bootstrap:rounds=200,...``."""
-        shown = [
-            f"{name}={_written(value)}"
-            for name, value in self.settings
-            if name not in without and value != ""
-        ]
-        return f"{self.key}:{','.join(shown)}" if shown else self.key
-
-
-def _written(value: Value) -> str:
-    if isinstance(value, bool):
-        return "yes" if value else "no"
-    return repr(value).removesuffix(".0") if isinstance(value, float) else str(value)
-
-
-def choose(registry: Registry, key: str, **values: Value) -> Choice:
-    """A choice from a registry with its defaults, some of them replaced.
-
-    Raises
-    ------
-    PlanError
-        Unknown key, unknown setting, or a value out of bounds; all that is allowed is named.
-    """
-    if key not in registry:
-        raise PlanError(f"There is no {key!r}; choose {listed(list(registry), last='or')}.")
-    settings: tuple[Setting, ...] = registry[key].settings
-    unknown = set(values) - {setting.key for setting in settings}
-    if unknown:
-        allowed = listed([f"`{setting.key}`" for setting in settings], last="or") or "no setting"
-        raise PlanError(f"{key!r} has no setting {min(unknown)!r}; it takes {allowed}.")
-    chosen = []
-    for setting in settings:
-        value = values.get(setting.key, setting.default)
-        if setting.kind == "number":
-            value = float(value)
-        setting.check(value)
-        chosen.append((setting.key, value))
-    return Choice(key, tuple(chosen))
-
-
-def choose_written(registry: Registry, text: str) -> Choice:
-    """A choice as written on the command line: ``KEY`` or ``KEY:name=value,name=value``."""
-    key, _, rest = text.partition(":")
-    values: dict[str, Value] = {}
-    settings = {s.key: s for s in registry[key].settings} if key in registry else {}
-    for item in filter(None, rest.split(",")):
-        name, equals, value = item.partition("=")
-        if not equals:
-            raise PlanError(f"{item!r} in {text!r} must be written name=value.")
-        values[name] = settings[name].read(value) if name in settings else value
-    return choose(registry, key, **values)
-
-
-@dataclass(frozen=True)
-class Limit:
-    """An acceptance limit: the least share that must be shown.
-
-    Attributes
-    ----------
-    measure : {"accuracy", "balanced_accuracy", "sensitivity"}
-    least : float
-        Share, strictly between 0 and 1.
-    of_class : str
-        For sensitivity, else empty.
-    confidence : float
-        One-sided.
-    set_on : str
-        Date it was set, as the user wrote it; empty if not stated.
-    """
-
-    measure: str
-    least: float
-    of_class: str = ""
-    confidence: float = 0.95
-    set_on: str = ""
-
-    def __post_init__(self) -> None:
-        if self.measure not in ("accuracy", "balanced_accuracy", "sensitivity"):
-            raise PlanError(
-                "An acceptance limit goes on accuracy, balanced_accuracy or sensitivity; got "
-                f"{self.measure!r}."
-            )
-        if not 0 < self.least < 1 or not 0.5 < self.confidence < 1:
-            raise PlanError(
-                "An acceptance limit must lie between 0 and 1 and its confidence between 0.5 and "
-                f"1; got {self.least:g} and {self.confidence:g}."
-            )
 
 
 @dataclass(frozen=True)
@@ -155,6 +60,12 @@ class Plan:
         Random seed.
     question : str
         What the judgement is for, in the user's words.
+    curve : Choice or None
+        The learning curve's scheme, whose rounds stand beside those of `schemes`.
+    cut_off : CutOffRule or None
+        How a cut-off on the scores is learned inside each bag; two classes only.
+    permutations : int
+        Times that labels are permuted between units for the chance check; 0 for none.
     engine : {"fast", "plain"}
         Whether rounds are carried out from counts where that gives the same answers, or one by
         one with scikit-learn's public classes, for anyone who doubts.
@@ -172,6 +83,9 @@ class Plan:
     seed: int = 1
     question: str = ""
     engine: Engine = "fast"
+    curve: Choice | None = None
+    cut_off: CutOffRule | None = None
+    permutations: int = 0
     format: int = field(default=FORMAT)
 
     def __post_init__(self) -> None:
@@ -183,6 +97,17 @@ class Plan:
             twice = [c.written() for at, c in enumerate(choices) if c in choices[:at]]
             if twice:
                 raise PlanError(f"The {what} {twice[0]!r} was chosen twice; once is enough.")
+        for choice in (*self.schemes, *((self.curve,) if self.curve else ())):
+            if choice.tuned:
+                raise PlanError(
+                    f"Settings of a scheme are not tuned; got the grid {choice.written()!r}. Give "
+                    "one value each, or choose the scheme several times."
+                )
+        if not 0 <= self.permutations <= MOST_PERMUTATIONS:
+            raise PlanError(
+                "The chance check takes between 0 and "
+                f"{count(MOST_PERMUTATIONS)} permutations; got {self.permutations}."
+            )
         if self.measure not in MEASURES:
             raise PlanError(
                 f"`measure` must be {listed(list(MEASURES), last='or')}; got {self.measure!r}."
@@ -207,9 +132,24 @@ class Plan:
         """Name of each candidate: its key, with settings where the key alone is ambiguous."""
         return _names(self.candidates)
 
+    @property
+    def all_schemes(self) -> dict[str, Choice]:
+        """Every scheme that has rounds by name, the learning curve last."""
+        found = dict(zip(self.scheme_names, self.schemes, strict=True))
+        return found | ({self.curve.key: self.curve} if self.curve else {})
+
     def scheme(self, name: str) -> Choice:
         """The scheme of a name."""
-        return self.schemes[self.scheme_names.index(name)]
+        return self.all_schemes[name]
+
+    def is_curve(self, scheme: str) -> bool:
+        """Whether a scheme is the learning curve's, whose small bags give no estimate."""
+        return self.curve is not None and scheme == self.curve.key
+
+    @property
+    def headline_scheme(self) -> str:
+        """Name of the scheme that gives the headline."""
+        return self.scheme_names[0]
 
     def candidate(self, name: str) -> Choice:
         """The candidate of a name."""
@@ -218,12 +158,12 @@ class Plan:
     def title(self, name: str) -> str:
         """What sentences call a candidate."""
         choice = self.candidate(name)
-        title = CANDIDATES[choice.key].named(choice.values())
-        alike = [c for c in self.candidates if CANDIDATES[c.key].named(c.values()) == title]
+        title = _title(choice)
+        alike = [c for c in self.candidates if _title(c) == title]
         differ = [
-            f"{name} {_written(value)}"
-            for name, value in choice.settings
-            if len({c.values()[name] for c in alike}) > 1
+            f"{setting} {BETWEEN.join(map(written_value, _several(choice, setting)))}"
+            for setting, _ in choice.settings
+            if len({_several(c, setting) for c in alike}) > 1
         ]
         return f"{title} ({', '.join(differ)})" if differ else title
 
@@ -236,6 +176,15 @@ class Plan:
             if not CANDIDATES[choice.key].baseline
         ]
         return self.about or (learned or list(self.candidate_names))[0]
+
+    @property
+    def choosing_measure(self) -> str:
+        """What settings are picked by, and what the chance check looks at.
+
+        The headline's measure; balanced accuracy in place of one class's sensitivity, which would
+        be best for naming that class always.
+        """
+        return "balanced_accuracy" if MEASURES[self.measure].per_class else self.measure
 
     def counted_by(self, table: Table) -> CountedBy:
         """How the headline counts on this table."""
@@ -255,12 +204,23 @@ class Plan:
     def check(self, table: Table) -> None:
         """Raise `PlanError` if this plan does not fit a table."""
         self.draw(table)
-        for name in (self.concern, *(limit.of_class for limit in self.limits)):
+        cut_off = self.cut_off.of_class if self.cut_off else ""
+        for name in (self.concern, cut_off, *(limit.of_class for limit in self.limits)):
             if name and name not in table.classes:
                 raise PlanError(
                     f"There is no class {quoted(name)}; the classes are "
                     f"{listed([quoted(c) for c in table.classes])}."
                 )
+        if self.cut_off and table.n_classes != 2:
+            raise PlanError(
+                f"A cut-off parts two classes; this table has {table.n_classes}. Leave the cut-off "
+                "out, or join classes in the file."
+            )
+        if self.permutations and len(table.mixed_units):
+            raise PlanError(
+                f"The chance check moves classes between {table.noun.plural}, so each needs one "
+                f"class; {quoted(table.unit_names[table.mixed_units[0]])} carries more than one."
+            )
         if any(limit.measure == "sensitivity" and not limit.of_class for limit in self.limits):
             raise PlanError("A limit on sensitivity needs a class: sensitivity:CLASS=VALUE.")
         if len(table.mixed_units) and self.answered_from == "all" and table.has_units:
@@ -282,12 +242,13 @@ class Plan:
             A scheme does not suit the table, or a bag is too small for a candidate.
         """
         drawn = {}
-        for name, choice in zip(self.scheme_names, self.schemes, strict=True):
+        for name, choice in self.all_schemes.items():
             stream = choice.written(without=APPENDING)
             drawn[name] = draw(
-                SCHEMES[choice.key], table, choice.values(), generator(self.seed, stream)
+                ALL_SCHEMES[choice.key], table, choice.values(), generator(self.seed, stream)
             )
-            self._check_neighbours(drawn[name])
+            if choice != self.curve:  # bags of the curve are small on purpose
+                self._check_neighbours(drawn[name])
         for choice in self.candidates:
             fixed = CANDIDATES[choice.key].fixed
             if fixed is not None:
@@ -297,7 +258,9 @@ class Plan:
     def _check_neighbours(self, rounds: Rounds) -> None:
         smallest = int(rounds.train.sum(axis=1, dtype=np.intp).min())
         for choice in self.candidates:
-            k = int(choice.values().get("k", 0)) if CANDIDATES[choice.key].neighbours else 0
+            if not CANDIDATES[choice.key].neighbours:
+                continue
+            k = max(int(option.values()["k"]) for option in choice.options)
             if k > smallest:
                 raise PlanError(
                     f"`k` must be between 1 and {count(smallest)}, the cases of the smallest bag; "
@@ -305,17 +268,30 @@ class Plan:
                 )
 
     def fits(self, table: Table) -> int:
-        """How many models will be fitted, those on all cases included."""
-        rounds = sum(SCHEMES[c.key].n_rounds(table, c.values()) for c in self.schemes)
-        return (rounds + 1) * len(self.candidates)
+        """How many models will be fitted, inner folds and permuted tables included."""
+        return sum(self._fits_of(table, choice) for choice in self.candidates)
 
     def seconds(self, table: Table) -> float:
         """A rough guess of the work in seconds of one core, before anything was measured."""
-        each = sum(
-            CANDIDATES[c.key].cost[0] + CANDIDATES[c.key].cost[1] * table.n_cases
-            for c in self.candidates
-        )
-        return each * self.fits(table) / len(self.candidates)
+        each = [(CANDIDATES[c.key].cost, self._fits_of(table, c)) for c in self.candidates]
+        return sum((cost[0] + cost[1] * table.n_cases) * fits for cost, fits in each)
+
+    def _fits_of(self, table: Table, choice: Choice) -> int:
+        """Models of one candidate: one a round, and those of inner folds where any are asked."""
+        rounds = {
+            name: ALL_SCHEMES[c.key].n_rounds(table, c.values())
+            for name, c in self.all_schemes.items()
+        }
+        outer = sum(rounds.values()) + 1 + self.permutations * CHANCE_ROUNDS
+        if choice.tuned:
+            return outer * (1 + INNER_FOLDS * len(choice.options))
+        learned = rounds[self.headline_scheme] + 1 if self.learns_cut_off(choice) else 0
+        return outer + INNER_FOLDS * learned
+
+    def learns_cut_off(self, choice: Choice) -> bool:
+        """Whether a candidate's cut-off is learned: its scores come from a fit to features."""
+        candidate = CANDIDATES[choice.key]
+        return self.cut_off is not None and not candidate.baseline and candidate.fixed is None
 
     def to_json(self) -> str:
         """The plan as JSON text; `from_json` gives back an equal plan."""
@@ -340,17 +316,39 @@ class Plan:
         roles["noun"] = Noun(**roles["noun"])
         roles["leave_out"] = tuple(roles["leave_out"])
         for part in ("schemes", "candidates"):
-            data[part] = tuple(
-                Choice(c["key"], tuple((name, value) for name, value in c["settings"]))
-                for c in data[part]
-            )
+            data[part] = tuple(map(_choice, data[part]))
         data["limits"] = tuple(Limit(**limit) for limit in data["limits"])
+        if data.get("curve"):
+            data["curve"] = _choice(data["curve"])
+        if data.get("cut_off"):
+            data["cut_off"] = CutOffRule(**data["cut_off"])
         return cls(roles=Roles(**roles), **data)
 
     @property
     def fingerprint(self) -> str:
         """sha256 of the JSON text, 64 hexadecimal digits."""
         return hashlib.sha256(self.to_json().encode()).hexdigest()
+
+
+def _choice(data: dict[str, Any]) -> Choice:
+    """A choice from JSON; records from before grids have none."""
+    return Choice(
+        data["key"],
+        tuple((name, value) for name, value in data["settings"]),
+        tuple((name, tuple(values)) for name, values in data.get("grid", ())),
+    )
+
+
+def _title(choice: Choice) -> str:
+    """What a candidate is called, apart from others of its kind."""
+    candidate = CANDIDATES[choice.key]
+    if not choice.tuned:
+        return candidate.named(choice.values())
+    return f"{candidate.title}, {listed([name for name, _ in choice.grid])} tuned"
+
+
+def _several(choice: Choice, setting: str) -> tuple[Value, ...]:
+    return dict(choice.grid).get(setting, (choice.values()[setting],))
 
 
 def _names(choices: Sequence[Choice]) -> tuple[str, ...]:

@@ -24,11 +24,12 @@ from typing import Any, Literal
 import numpy as np
 
 from evalcore.answers import Answers, Reduced, joined
-from evalcore.engine import WHOLE, Finished, Task, chunk_rounds, tasks
+from evalcore.engine import CHANCE, WHOLE, Finished, Task, chunk_rounds, tasks
 from evalcore.errors import EvalError, RecordError
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import CountedBy
 from evalcore.intake import make_table
+from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.sheet import read_sheet
@@ -164,17 +165,18 @@ class Record:
         with _undamaged(path), np.load(path) as stored:
             return {
                 name: Rounds(stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"])
-                for at, name in enumerate(self.plan.scheme_names)
+                for at, name in enumerate(self.plan.all_schemes)
             }
 
     @property
     def total(self) -> int:
-        """Rounds planned, the fit on all cases included."""
-        return 1 + sum(drawn.n_rounds for drawn in self.rounds.values())
+        """Rounds planned, the fit on all cases and permuted tables included."""
+        return sum(task.stop - task.start for task in self.tasks())
 
     def tasks(self) -> list[Task]:
         """All tasks, in the chunks this record was begun with."""
-        return tasks(self.rounds, size=int(self.about["chunk"]))
+        size = int(self.about["chunk"])
+        return tasks(self.rounds, size=size, permutations=self.plan.permutations)
 
     def unfinished(self) -> list[Task]:
         """Tasks that have no answers yet, in order."""
@@ -186,16 +188,22 @@ class Record:
 
     def _chunk(self, task: Task) -> Path:
         # scheme names hold characters that file systems forbid: their place in the plan does not
-        place = self.plan.scheme_names.index(task.scheme) if task.scheme else "whole"
+        names = {WHOLE: "whole", CHANCE: "chance"}
+        place = names.get(task.scheme) or list(self.plan.all_schemes).index(task.scheme)
         return self.folder / "chunks" / f"{place}-{task.start:05d}.npz"
 
     def add(self, finished: Finished) -> None:
         """Keep the answers of a finished task."""
         arrays: dict[str, Any] = {"failures": np.array(json.dumps(finished.failures))}
+        if finished.chance is not None:
+            arrays["chance"] = finished.chance
         for at, name in enumerate(self.plan.candidate_names):
             if name in finished.answers:
                 answers = finished.answers[name]
                 arrays[f"{at}-scores"] = answers.scores
+                for part in ("picked", "inner"):
+                    if getattr(answers, part) is not None:
+                        arrays[f"{at}-{part}"] = getattr(answers, part)
                 for way in _WAYS:
                     arrays[f"{at}-{way}-bag"] = answers.in_bag[way].confusion
                     arrays[f"{at}-{way}-auc"] = answers.in_bag[way].auc
@@ -216,6 +224,7 @@ class Record:
                             for way in _WAYS
                         },
                         {way: stored[f"{at}-{way}-all"] for way in _WAYS},
+                        *(stored.get(f"{at}-{part}") for part in ("picked", "inner")),
                     )
         return answers, failures
 
@@ -232,6 +241,8 @@ class Record:
             if not self._chunk(task).exists():
                 if task.scheme == WHOLE:
                     return None
+                continue
+            if task.scheme == CHANCE:
                 continue
             tasks_of = finished.setdefault(task.scheme, [])
             if not task.start or (tasks_of and tasks_of[-1].stop == task.start):
@@ -260,7 +271,18 @@ class Record:
             whole=whole,
             planned={name: drawn.n_rounds for name, drawn in self.rounds.items()},
             failures=failures,
+            permuted=self._permuted(),
         )
+
+    def _permuted(self) -> Floats:
+        """Figures of permuted tables as far as they have finished, shape (m, C)."""
+        found = [np.empty((0, len(self.plan.candidates)))]
+        for task in self.tasks():
+            path = self._chunk(task)
+            if task.scheme == CHANCE and path.exists():
+                with _undamaged(path), np.load(path) as stored:
+                    found.append(stored["chance"])
+        return np.concatenate(found)
 
     def status(self) -> Status:
         """How far it has come; a worker that is gone without a word shows as interrupted."""

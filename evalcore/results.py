@@ -14,12 +14,13 @@ from evalcore.per_case import cases
 from evalcore.record import Record, write
 from evalcore.sources import SOURCES
 from evalcore.together import round_tests
-from evalcore.verdict import verdicts
+from evalcore.verdict import verdicts, verdicts_at_cut_off
 
 COLUMNS = (
     "candidate", "scheme", "estimator", "measure", "class", "counted_by", "value", "low", "high",
     "level", "interval", "n", "rounds", "undefined_rounds",
 )  # fmt: skip
+HIGHEST, AT_CUT_OFF = "highest_score", "at_cut_off"  # which answers a verdict is about
 FINDING_COLUMNS = (
     "check", "severity", "subject", "title", "seen", "advice", "value", "threshold", "source",
 )  # fmt: skip
@@ -48,7 +49,7 @@ def results_csv(evaluation: Evaluation) -> str:
     An undefined value is ``nan``; `low`, `high`, `level` and `interval` are empty where no
     interval is offered.
     """
-    return _csv(COLUMNS, (_row(estimate) for estimate in evaluation.estimates))
+    return _csv(COLUMNS, map(_row, (*evaluation.estimates, *evaluation.beside.estimates)))
 
 
 def findings_csv(found: Iterable[Finding]) -> str:
@@ -115,20 +116,25 @@ def verdicts_csv(evaluation: Evaluation) -> str:
     """
     names = ("cautious", "present", "hopeful")
     header = [
-        "candidate", "measure", "class", "limit", "confidence", "set_on", "verdict", "value",
-        "at_least", "at_most", "n",
+        "candidate", "answers", "measure", "class", "limit", "confidence", "set_on", "verdict",
+        "value",        "at_least", "at_most", "n",
     ]  # fmt: skip
     for name in names:
         header += [f"{name}_rate", f"{name}_alone", f"{name}_together"]
     rows = []
-    for verdict in verdicts(evaluation, evaluation.about):
+    about = evaluation.about
+    given = [(HIGHEST, verdict) for verdict in verdicts(evaluation, about)]
+    given += [(AT_CUT_OFF, verdict) for verdict in verdicts_at_cut_off(evaluation, about)]
+    for answers, verdict in given:
         limit = verdict.limit
         row = [
-            evaluation.about, limit.measure, limit.of_class, repr(limit.least),
+            about, answers, limit.measure, limit.of_class, repr(limit.least),
             repr(limit.confidence), limit.set_on, verdict.word, repr(verdict.value),
             repr(verdict.at_least), repr(verdict.at_most), str(verdict.n),
         ]  # fmt: skip
-        found = {m.name: m for m in outlook(evaluation, evaluation.about, verdict).needed}
+        asked = answers == HIGHEST
+        needed = outlook(evaluation, about, verdict).needed if asked else ()
+        found = {m.name: m for m in needed}
         for name in names:
             more = found.get(name)
             row += (

@@ -182,6 +182,19 @@ def _forward_fit(table: Table, settings: Settings) -> None:
         )
 
 
+def _curve_fit(table: Table, settings: Settings) -> None:
+    units, noun = table.class_counts("unit"), table.noun
+    k, least = int(units.argmin()), draws.CURVE_FOLDS
+    sizes = len(draws.nested_sizes(groups_of(table), int(settings["sizes"])))
+    if units[k] < least or sizes < draws.LEAST_SIZES:
+        raise PlanError(
+            f"Class {quoted(table.classes[k])} has {noun.counted(int(units[k]))} of "
+            f"{count(table.n_units)}. A learning curve takes {draws.LEAST_SIZES} sizes, the "
+            f"largest about twice the smallest or more, each with 2 {noun.plural} of every class: "
+            f"{least} {noun.plural} of every class are needed, and 7 of each always do."
+        )
+
+
 STRATIFIED = Setting("stratified", "Keep every class's share in each round", "yes_no", True)
 _TEST_SHARE = Setting("test_share", "Share held out", "number", 0.3, 0.05, 0.9)
 _KEEP = Setting(
@@ -272,3 +285,18 @@ SCHEMES: dict[str, Scheme] = {
         ),
     )
 }
+
+LEARNING_CURVE = Scheme(  # never a headline: most of its bags are smaller than need be
+    "learning_curve",
+    "Learning curve",
+    "Learns from more and more {units}, and judges the same others at every size.",
+    (
+        Setting("sizes", "Sizes (fewer where two would be equal)", "whole", 6, 5, 12),
+        Setting("subsets", "Random subsets of each size, at least", "whole", 20, 20, 1000),
+    ),
+    lambda table, settings: draws.n_nested(groups_of(table), settings),
+    _curve_fit,
+    draws.nested_bags,
+)
+
+ALL_SCHEMES: dict[str, Scheme] = SCHEMES | {LEARNING_CURVE.key: LEARNING_CURVE}

@@ -24,6 +24,9 @@ class Setting:
         Bounds of a number, both included.
     choices : tuple of str
         For "choice"; a "column" is any column of the file, or none where it may be left empty.
+    smoother : {"", "low", "high"}
+        Which end of a number makes a candidate follow single cases less; taken among equals when
+        the setting is tuned.
     """
 
     key: str
@@ -33,6 +36,7 @@ class Setting:
     low: float = 0
     high: float = 0
     choices: tuple[str, ...] = ()
+    smoother: Literal["", "low", "high"] = ""
 
     def read(self, text: str) -> Value:
         """A value written as text, e.g. on the command line; raises `PlanError`."""

@@ -124,6 +124,15 @@ SOURCES: dict[str, Source] = {
         "BMC Med. Inform. Decis. Mak. 12:8",
         "10.1186/1472-6947-12-8",
     ),
+    "wilks1941": Source(
+        "Wilks 1941, Determination of sample sizes for setting tolerance limits, Ann. Math. Stat. "
+        "12:91-96",
+        "10.1214/aoms/1177731788",
+    ),
+    "vovk2005": Source(
+        "Vovk, Gammerman & Shafer 2005, Algorithmic Learning in a Random World, Springer",
+        "10.1007/b106715",
+    ),
     "own_model_variance": Source(
         "own construction: the model's own variability as a method-of-moments covariance between "
         "cases answered by one model; same idea as Nadeau & Bengio 2003, Mach. Learn. 52:239-281",
@@ -138,6 +147,13 @@ SOURCES: dict[str, Source] = {
     "own_leakage": Source(
         "own thresholds; the kinds of leakage as in Kapoor & Narayanan 2023, Patterns 4:100804",
         "10.1016/j.patter.2023.100804",
+        own=True,
+    ),
+    "own_learning_curve": Source(
+        "own construction: units resampled at all sizes of a learning curve at once, and a call "
+        "from the gain over the last doubling; the curve itself as in Figueroa et al. 2012, "
+        "BMC Med. Inform. Decis. Mak. 12:8",
+        "10.1186/1472-6947-12-8",
         own=True,
     ),
     "common_practice": Source("common practice, no source"),

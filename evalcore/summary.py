@@ -4,6 +4,7 @@ import dataclasses
 from dataclasses import dataclass
 from typing import Any
 
+from evalcore import evidence
 from evalcore.answer import (
     CAUTION,
     answer,
@@ -14,7 +15,8 @@ from evalcore.answer import (
     title,
 )
 from evalcore.candidates import CANDIDATES
-from evalcore.evaluation import ESTIMATORS, Evaluation
+from evalcore.estimated import ESTIMATORS
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.findings import findings
 from evalcore.intervals import METHODS
@@ -132,7 +134,7 @@ def design(evaluation: Evaluation) -> tuple[str, ...]:
         if table.has_units
         else f"n counts {table.noun.plural}.",
     }[evaluation.counted_by]
-    luck = best_sentence(evaluation)
+    last = (evidence.sentence(evaluation), best_sentence(evaluation))
     return (
         f"{capitalised(listed(schemes))}; the first gives the headline.{kept}",
         "Filling of gaps, scaling and the coding of text are learned anew inside every bag.",
@@ -140,7 +142,7 @@ def design(evaluation: Evaluation) -> tuple[str, ...]:
         "model in use is refitted on all of them.",
         f"Intervals are two-sided at {level(plan.level)} and say where the true share of this "
         "recipe may lie; limits are judged one-sided.",
-        *([luck] if luck else []),
+        *(said for said in last if said),
     )
 
 

@@ -54,7 +54,9 @@ def winner(table: Table, plan: Plan, parts: Sequence[Judged]) -> WinnersCorrecti
     )
 
 
-def winner_estimates(table: Table, plan: Plan, parts: Sequence[Judged]) -> Iterator[Estimate]:
+def winner_estimates(
+    table: Table, plan: Plan, parts: Sequence[Judged], *, estimator: str = ESTIMATOR
+) -> Iterator[Estimate]:
     """The corrected figures of the best candidate, with the interval at the corrected value."""
     found = winner(table, plan, parts)
     if found is None:
@@ -77,7 +79,7 @@ def winner_estimates(table: Table, plan: Plan, parts: Sequence[Judged]) -> Itera
             measure,
             part.candidate,
             part.scheme,
-            ESTIMATOR,
+            estimator,
             name,
             part.counted_by,
             n,

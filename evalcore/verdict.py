@@ -1,17 +1,18 @@
 """An acceptance limit against what the cases show: shown, not shown yet, shown to fall short."""
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 
 from evalcore.evaluation import Evaluation
-from evalcore.figures import Estimate, Interval
+from evalcore.figures import Interval
 from evalcore.intervals import with_model_variance
 from evalcore.judged import Judged, balanced_interval, offers_interval, share_interval
-from evalcore.plan import Limit
+from evalcore.limit import Limit
 from evalcore.sample_size import LEAST_UNITS, lower_bound, upper_bound
+from evalcore.table import Table
 
 Word = Literal["shown", "not shown yet", "shown to fall short"]
 
@@ -44,7 +45,30 @@ class Verdict:
 def verdicts(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
     """One verdict a limit for a candidate under the headline's scheme and counting."""
     part = evaluation.part(candidate, evaluation.scheme)
-    return tuple(_verdict(evaluation, part, limit) for limit in evaluation.plan.limits)
+    return tuple(
+        _verdict(evaluation.table, part, limit, corrected=corrected_rate(evaluation, limit))
+        for limit in evaluation.plan.limits
+    )
+
+
+def verdicts_at_cut_off(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
+    """The same of answers at the cut-off learned inside each bag; none where none is learned.
+
+    A cut-off that was chosen on these cases is never called *shown*: it was fitted to them.
+    """
+    found = evaluation.at_cut_off(candidate)
+    if found is None:
+        return ()
+    given = []
+    for limit in evaluation.plan.limits:
+        corrected = evaluation.corrected(limit.measure, limit.of_class, at_cut_off=True)
+        verdict = _verdict(
+            evaluation.table, found.part, limit, corrected=corrected.value if corrected else None
+        )
+        if found.rule.chosen_on_these_cases and verdict.word == "shown":
+            verdict = replace(verdict, word="not shown yet")
+        given.append(verdict)
+    return tuple(given)
 
 
 def overall(given: tuple[Verdict, ...]) -> Word | None:
@@ -66,44 +90,46 @@ def judge(value: float, at_least: float, at_most: float, *, limit: float, n: int
     return "not shown yet"
 
 
-def _verdict(evaluation: Evaluation, part: Judged, limit: Limit) -> Verdict:
+def _verdict(table: Table, part: Judged, limit: Limit, *, corrected: float | None) -> Verdict:
     level = 2 * limit.confidence - 1
-    table = evaluation.table
-    estimate = evaluation.estimate(
-        limit.measure, part.candidate, of_class=limit.of_class, scheme=part.scheme
-    )
-    rate, usable = _rate(evaluation, estimate), offers_interval(part)
+    k = table.classes.index(limit.of_class) if limit.of_class else None
+    value = part.pooled_value(limit.measure, k or 0)
+    rate, usable = _rate(value, corrected), offers_interval(part)
     at_least = at_most = math.nan
     if limit.measure == "balanced_accuracy":
         n = int(np.bincount(part.held.labels[~np.isnan(part.shares)]).min())
         if usable:
             bounds = balanced_interval(level, part)
             # moved down with the rate where that is corrected for the luck of being best
-            at_least, at_most = bounds.low - (estimate.value - rate), bounds.high
+            at_least, at_most = bounds.low - (value - rate), bounds.high
     else:
-        k = table.classes.index(limit.of_class) if limit.of_class else None
-        n = _units_behind(evaluation, part, k)
+        n = _units_behind(part, k)
         # exact bounds take whole units: rounded down for the lower, up for the upper
         if usable and not math.isnan(rate):
             whole = math.floor(rate * n + 1e-9)
             exact = lower_bound(whole, n, confidence=limit.confidence)
             at_least = min(_bounds(level, part, k, rate).low, exact)
-        if usable and not math.isnan(estimate.value):
-            whole = math.ceil(estimate.value * n - 1e-9)
+        if usable and not math.isnan(value):
+            whole = math.ceil(value * n - 1e-9)
             exact = upper_bound(whole, n, confidence=limit.confidence)
             at_most = max(share_interval(level, part, k, cautious=True).high, exact)
-    word = judge(estimate.value, at_least, at_most, limit=limit.least, n=n)
-    return Verdict(limit, word, estimate.value, at_least, at_most, n)
+    word = judge(value, at_least, at_most, limit=limit.least, n=n)
+    return Verdict(limit, word, value, at_least, at_most, n)
 
 
-def _rate(evaluation: Evaluation, estimate: Estimate) -> float:
+def _rate(value: float, corrected: float | None) -> float:
     """The rate a verdict starts from: where several were tried, no more than the best is worth."""
-    corrected = evaluation.corrected(estimate.measure, estimate.of_class)
     if corrected is None:
-        return estimate.value
-    if math.isnan(corrected.value):
+        return value
+    if math.isnan(corrected):
         return math.nan  # luck that cannot be told apart shows nothing
-    return min(estimate.value, corrected.value)
+    return min(value, corrected)
+
+
+def corrected_rate(evaluation: Evaluation, limit: Limit) -> float | None:
+    """What the best candidate is worth by a limit's measure; None if one was tried."""
+    corrected = evaluation.corrected(limit.measure, limit.of_class)
+    return None if corrected is None else corrected.value
 
 
 def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> Interval:
@@ -122,10 +148,10 @@ def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> In
 def starting_rate(evaluation: Evaluation, candidate: str, limit: Limit) -> float:
     """The rate the verdict on a limit starts from."""
     estimate = evaluation.estimate(limit.measure, candidate, of_class=limit.of_class)
-    return _rate(evaluation, estimate)
+    return _rate(estimate.value, corrected_rate(evaluation, limit))
 
 
-def _units_behind(evaluation: Evaluation, part: Judged, of_class: int | None) -> int:
+def _units_behind(part: Judged, of_class: int | None) -> int:
     known = ~np.isnan(part.shares)
     if of_class is not None:
         known &= part.held.labels == of_class

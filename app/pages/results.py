@@ -3,6 +3,7 @@
 import streamlit as st
 
 from app import charts, look, state
+from evalcore import evidence
 from evalcore.answer import (
     CAUTION,
     answer,
@@ -82,9 +83,9 @@ def how_sure(evaluation: Evaluation) -> None:
     st.header("How sure", anchor=False)
     measure = evaluation.plan.measure
     look.figure(charts.estimates_with_intervals(evaluation, measure), key="estimates")
-    luck = best_sentence(evaluation)
-    if luck:
-        look.soft(luck)
+    for said in (evidence.sentence(evaluation), best_sentence(evaluation)):
+        if said:
+            look.soft(said)
     if measure != "accuracy":
         look.figure(charts.estimates_with_intervals(evaluation, "accuracy"), key="share-right")
     bounds = {

@@ -19,7 +19,8 @@ from app.charts.style import Figure
 from app.print.lower import lowered
 from evalcore.answer import scheme_in_words
 from evalcore.errors import RecordError
-from evalcore.evaluation import ESTIMATORS, Evaluation
+from evalcore.estimated import ESTIMATORS
+from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.measures import MEASURES
 from evalcore.record import Record

@@ -30,11 +30,13 @@ from app.charts.style import LOOKS, candidate_look, short_title, shorten
 from evalcore.answer import scheme_in_words
 from evalcore.answers import joined
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.engine import run, tasks
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import Estimate, Interval
 from evalcore.intake import make_table
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet
 from evalcore.table import Roles, Table

@@ -13,11 +13,12 @@ import pytest
 from app.command import main
 from evalcore.candidates import CANDIDATES
 from evalcore.engine import run
-from evalcore.evaluation import ESTIMATORS, WINNER
+from evalcore.estimated import ESTIMATORS
 from evalcore.findings import CHECKS
 from evalcore.record import Record, Status
 from evalcore.results import COLUMNS, FINDING_COLUMNS
 from evalcore.schemes import SCHEMES
+from evalcore.together import ESTIMATOR as WINNER
 
 ROOT = Path(__file__).parents[2]
 DATA = ROOT / "tests" / "data"
@@ -475,7 +476,7 @@ class TestRefusing:
         def cannot(*_, **__):
             raise ValueError("no such model")
 
-        monkeypatch.setattr("evalcore.engine.round_scores", cannot)
+        monkeypatch.setattr("evalcore.tuning.round_scores", cannot)
         with pytest.warns(UserWarning, match="naive_bayes failed"):
             code = evaluate(
                 tmp_path / "record",

@@ -20,9 +20,11 @@ from app.print.lower import lowered
 from app.print.page import LOOKS, page
 from app.print.pdf import FIRST_FINDINGS, TEMPLATE, breakable, data, pdf
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.errors import RecordError
 from evalcore.figures import SEVERITIES
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.record import Record
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles, SetAside

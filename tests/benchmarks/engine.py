@@ -19,9 +19,10 @@ from threadpoolctl import threadpool_limits
 
 from evalcore.answers import answers_of
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import chunk_rounds, round_scores
+from evalcore.choice import Choice, choose
+from evalcore.engine import chunk_rounds
 from evalcore.exact_rounds import Preparations
-from evalcore.plan import Choice, choose
+from evalcore.fits import round_scores
 from evalcore.rounds import Rounds
 from evalcore.table import Column, Roles, Table
 

@@ -75,12 +75,14 @@ def table_from(name: str, roles: Roles) -> Table:
 def carried_out(table: Table, plan: Plan, *, jobs: int = 1) -> tuple[Evaluation, Any]:
     """An evaluation of all rounds of a plan, and its answers by scheme and candidate."""
     rounds = plan.draw(table)
-    finished = list(run(table, plan, rounds, todo=tasks(rounds), jobs=jobs))
+    todo = tasks(rounds, permutations=plan.permutations)
+    finished = list(run(table, plan, rounds, todo=todo, jobs=jobs))
     answers = {
         (scheme, name): joined([f.answers[name] for f in finished if f.task.scheme == scheme])
         for scheme in rounds
         for name in plan.candidate_names
     }
+    permuted = [f.chance for f in finished if f.chance is not None]
     evaluation = evaluate(
         table,
         plan,
@@ -89,5 +91,6 @@ def carried_out(table: Table, plan: Plan, *, jobs: int = 1) -> tuple[Evaluation,
         whole={name: finished[0].answers[name] for name in plan.candidate_names},
         planned={scheme: drawn.n_rounds for scheme, drawn in rounds.items()},
         failures={},
+        permuted=np.concatenate(permuted) if permuted else None,
     )
     return evaluation, answers

@@ -9,8 +9,10 @@ import pytest
 from evalcore.answer import answer, class_rate, limit_rows, measure_name, scheme_in_words, title
 from evalcore.answers import answers_of
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.evaluation import Evaluation, evaluate
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles, Table

@@ -8,9 +8,10 @@ import pytest
 from distributed import Client, LocalCluster
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.cluster import on_cluster
 from evalcore.errors import PlanError
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.record import Record
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles

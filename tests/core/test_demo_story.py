@@ -9,12 +9,14 @@ import pytest
 
 from evalcore.answer import title
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import plain_scores
+from evalcore.choice import choose
 from evalcore.evaluation import Evaluation
 from evalcore.findings import findings
+from evalcore.fits import plain_scores
 from evalcore.intake import make_table
+from evalcore.limit import Limit
 from evalcore.measures import predicted_class
-from evalcore.plan import Limit, Plan, choose
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet

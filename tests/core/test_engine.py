@@ -10,16 +10,18 @@ from sklearn.naive_bayes import GaussianNB
 from sklearn.neighbors import KNeighborsClassifier
 from statsmodels.stats.proportion import proportion_confint
 
-from evalcore import engine
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import CHUNK, WHOLE, Task, chunk_rounds, plain_scores, run, tasks, whole_rounds
+from evalcore.choice import choose
+from evalcore.engine import CHUNK, WHOLE, Task, chunk_rounds, run, tasks, whole_rounds
+from evalcore.fits import plain_scores
 from evalcore.intake import make_table, noun_from
 from evalcore.measures import predicted_class
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet
 from evalcore.table import Roles
+from evalcore.tuning import Learned
 
 from .checks import DATA, carried_out, cases, table_from, table_of
 
@@ -217,19 +219,21 @@ class TestDigits:
     def test_the_seed_moves_them(self):
         assert self.scores((SMALL_FOREST,)) != self.scores((SMALL_FOREST,), seed=2)
 
-    def test_settings_have_their_own_randomness(self):
-        plan = Plan(self.table.roles, (choose(SCHEMES, "bootstrap"),), (SMALL_FOREST, TREE))
-        states = [
-            engine._random_states(plan, choice, task)
-            for choice in plan.candidates
-            for task in (
-                Task(WHOLE, 0, 1),
-                Task("bootstrap", 0, CHUNK),
-                Task("bootstrap", CHUNK, 70),
-            )
-        ]
-        flat = [state for part in states for state in part]
-        assert len(set(flat)) == len(flat) == 2 * 71
+    def test_settings_have_their_own_randomness(self, monkeypatch):
+        states = []
+
+        def learned(choice, bags, given, **_):
+            states.extend(given)
+            shape = (len(given), self.table.n_cases, self.table.n_classes)
+            return Learned(np.zeros(shape), None, None)
+
+        monkeypatch.setattr("evalcore.pipeline.learn", learned)
+        bootstrap = choose(SCHEMES, "bootstrap", rounds=CHUNK + 20)
+        plan = Plan(self.table.roles, (bootstrap,), (SMALL_FOREST, TREE))
+        drawn = plan.draw(self.table)
+        for _ in run(self.table, plan, drawn, todo=tasks(drawn)):
+            pass
+        assert len(set(states)) == len(states) == 2 * (1 + CHUNK + 20)
 
 
 def test_tasks_are_whole_fits_and_then_chunks_of_each_scheme():

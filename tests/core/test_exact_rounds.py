@@ -4,11 +4,13 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from evalcore import engine
+from evalcore import fits
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import plain_scores, round_scores, run, tasks
+from evalcore.choice import choose
+from evalcore.engine import run, tasks
 from evalcore.exact_rounds import FAST, Preparations, exact_scores
-from evalcore.plan import Plan, choose
+from evalcore.fits import plain_scores, round_scores
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles
 
@@ -112,7 +114,7 @@ def test_the_fast_path_is_the_one_that_runs(key, monkeypatch):
     def never(*_, **__):
         raise AssertionError("the plain adapter was asked")
 
-    monkeypatch.setattr(engine, "plain_scores", never)
+    monkeypatch.setattr(fits, "plain_scores", never)
     for finished in run(table, plan, rounds, todo=tasks(rounds)):
         assert finished.failures == {}
 
@@ -126,7 +128,7 @@ def test_plain_switches_every_fast_path_off(key, monkeypatch):
     def never(*_, **__):
         raise AssertionError("a fast path was asked")
 
-    monkeypatch.setattr(engine, "exact_scores", never)
+    monkeypatch.setattr(fits, "exact_scores", never)
     for finished in run(table, plan, rounds, todo=tasks(rounds)):
         assert finished.failures == {}
 

@@ -9,14 +9,17 @@ import numpy as np
 import pytest
 from statsmodels.stats.proportion import proportion_confint
 
+from evalcore import evidence
 from evalcore.answers import answers_of
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.engine import whole_rounds
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import SEVERITIES
 from evalcore.findings import CHECKS, findings
 from evalcore.intake import make_table
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet
@@ -25,9 +28,22 @@ from evalcore.table import Column, Roles, Table
 from evalcore.wording import NBSP
 
 from .checks import table_of
+from .test_evidence import line
 
 CV, BOOTSTRAP = "cross_validation", "bootstrap"
-LOGISTIC = choose(CANDIDATES, "logistic")
+LOGISTIC, LDA = choose(CANDIDATES, "logistic"), choose(CANDIDATES, "lda")
+BALANCED = {"measure": "balanced_accuracy", "features": 1}
+LINES = (
+    line(**BALANCED, coverage=0.915),
+    line(**BALANCED, coverage=0.887, monte_carlo_error=0.01, n=70, smallest_class=33),
+    line(**BALANCED, n=200, smallest_class=100, coverage=0.912, monte_carlo_error=0.01),
+)
+
+
+@pytest.fixture(autouse=True)
+def studied(monkeypatch):
+    """What the coverage study came to: figures of the package's own table may change."""
+    monkeypatch.setattr(evidence, "lines", lambda: LINES)
 
 
 def a_plan(*schemes: str, **choices) -> Plan:
@@ -247,6 +263,11 @@ def wilson(right: int, n: int) -> tuple[float, float]:
     return proportion_confint(right, n, method="wilson")
 
 
+def simulated(n: int):
+    """As many cases, half of each class, judged by the candidate that `LINES` are about."""
+    return of_rounds({CV: halves(n)}, table=two_classes(n // 2), plan=a_plan(candidates=(LDA,)))
+
+
 RAISED = {
     "failed": (
         of_rounds(
@@ -293,6 +314,8 @@ RAISED = {
         steady(2, 10, measure="accuracy"),
         ("moderate", "logistic", wilson(18, 20)[1] - wilson(18, 20)[0], 0.2),
     ),
+    # 0.887 and 0.915 are short, even with 0.01 and 0.007 twice more; the lower one is named
+    "interval_falls_short": (simulated(60), ("moderate", "lda", 0.887, 0.93)),
     # q is half right or half wrong each time: [(4 x 1/2)^2 - 4 x 1/4] / (4 x 3) x 4/3 = 1/3,
     # against 1/2 x 1/2 / 4
     "unstable_model": (swinging(2), ("moderate", "logistic", 1 / 3, 1 / 16)),
@@ -346,6 +369,8 @@ QUIET = {
     "class_too_small": (two_classes(30), a_plan()),
     # 90 of 100 right: Wilson 0.826 to 0.945
     "wide_interval": steady(10, measure="accuracy"),
+    # 0.912 reaches 0.93 with 0.01 twice more
+    "interval_falls_short": simulated(200),
     "unstable_model": swinging(4),
     "model_variance_unknown": of_rounds({CV: halves(100, repeats=2)}),
     # 4 wrong of 100: less than three points, whatever the weight
@@ -642,3 +667,17 @@ def test_rounds_of_a_scheme_not_begun_are_missing_too():
     made = evaluated(table, plan, {CV: halves(100)}, planned={CV: 4, BOOTSTRAP: 200})
     finding = only("unfinished", table, plan, made)
     assert (finding.subject, finding.value, finding.threshold) == (BOOTSTRAP, 0, 200)
+
+
+class TestIntervalFallsShort:
+    def test_says_how_large_and_how_many_the_simulated_tables_were(self):
+        finding = only("interval_falls_short", *simulated(60))
+        assert "1,000 simulated tables (70 cases, about 33" in finding.seen.replace(NBSP, " ")
+        assert "held the true value in 88.7 %" in finding.title.replace(NBSP, " ")
+
+    def test_of_the_headline_s_measure_and_level_alone(self):
+        table, plan, made = simulated(60)
+        for changes in ({"measure": "accuracy"}, {"level": 0.9}):
+            other = dataclasses.replace(plan, **changes)
+            judged = dataclasses.replace(made, plan=other)
+            assert found("interval_falls_short", table, other, judged) == []

@@ -14,6 +14,7 @@ from sklearn.neighbors import KNeighborsClassifier
 from evalcore.answers import HeldOut, Reduced
 from evalcore.binomial import wilson
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.intervals import auc_score_type, with_model_variance
 from evalcore.judged import (
     Judged,
@@ -30,7 +31,7 @@ from evalcore.model_variance import (
     cluster_variance_by_repeat,
     model_variance,
 )
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 

@@ -7,10 +7,11 @@ from statsmodels.stats.proportion import proportion_confint
 from evalcore import binomial
 from evalcore.answers import Answers, Reduced
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.evaluation import evaluate
 from evalcore.intervals import auc_score_type
 from evalcore.other_intervals import beside, of_headline
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.resampled_t import corrected_resampled_t
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES

@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 
 from evalcore.further_cases import more_cases
+from evalcore.limit import Limit
 from evalcore.outlook import in_words, outlook
-from evalcore.plan import Limit
 from evalcore.verdict import verdicts
 from evalcore.wording import NBSP
 

@@ -4,9 +4,10 @@ import numpy as np
 import pytest
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.evaluation import Evaluation
 from evalcore.per_case import agreement_within_units, cases
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 
 from .checks import table_of

@@ -7,18 +7,10 @@ import numpy as np
 import pytest
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import Choice, choose, choose_written
 from evalcore.errors import PlanError
-from evalcore.plan import (
-    APPENDING,
-    Choice,
-    Limit,
-    Plan,
-    choose,
-    choose_written,
-    generator,
-    recommended_candidates,
-    recommended_schemes,
-)
+from evalcore.limit import Limit
+from evalcore.plan import APPENDING, Plan, generator, recommended_candidates, recommended_schemes
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles
 from evalcore.wording import Noun

@@ -12,12 +12,14 @@ import pytest
 from numpy.testing import assert_array_equal
 
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import WHOLE, Task, chunk_rounds, round_scores, run, tasks
+from evalcore.choice import choose
+from evalcore.engine import WHOLE, Task, chunk_rounds, run, tasks
 from evalcore.errors import EvalError, PlanError, RecordError, TableError
 from evalcore.estimates import by_case
 from evalcore.findings import findings
+from evalcore.fits import round_scores
 from evalcore.intake import make_table
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.record import NAME, SILENT, Record, Status, find, new_folder, write
 from evalcore.results import results_csv
 from evalcore.schemes import SCHEMES
@@ -310,7 +312,7 @@ def break_down(monkeypatch, key: str, at: int | None = None) -> None:
                 raise ValueError("this matrix is singular")
         return round_scores(choice, *given, **named)
 
-    monkeypatch.setattr("evalcore.engine.round_scores", scores)
+    monkeypatch.setattr("evalcore.tuning.round_scores", scores)
 
 
 class TestFailures:

@@ -8,9 +8,10 @@ import pytest
 from numpy.testing import assert_allclose
 
 from evalcore.candidates import CANDIDATES
-from evalcore.evaluation import ESTIMATORS
+from evalcore.choice import choose
+from evalcore.estimated import ESTIMATORS
 from evalcore.measures import MEASURES
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 from evalcore.sources import SOURCES
 from evalcore.table import Roles

@@ -9,9 +9,10 @@ import pytest
 from statsmodels.stats.proportion import proportion_confint
 
 from evalcore import results
+from evalcore.beside import Beside
 from evalcore.figures import Estimate, Finding, Interval
+from evalcore.limit import Limit
 from evalcore.outlook import outlook
-from evalcore.plan import Limit
 from evalcore.sources import SOURCES
 from evalcore.verdict import verdicts
 
@@ -51,7 +52,7 @@ def test_results_line_by_line():
         Estimate(np.float64(1), Interval(NAN, NAN, 0.95, "wilson"), "accuracy", "=cmd", "@x",
                  "apparent", "-b", "case", 5, 1, 0),
     )  # fmt: skip
-    assert results.results_csv(SimpleNamespace(estimates=estimates)) == (
+    assert results.results_csv(SimpleNamespace(estimates=estimates, beside=Beside())) == (
         "candidate,scheme,estimator,measure,class,counted_by,value,low,high,level,interval,n,"
         "rounds,undefined_rounds\n"
         'lda,cross_validation,held_out_by_case,sensitivity,"a, b",unit,0.6666666666666666,0.25,'
@@ -160,12 +161,12 @@ def test_cases_never_held_out_are_nan():
 def test_verdicts(found):
     text = results.verdicts_csv(found)
     assert header(text) == (
-        "candidate,measure,class,limit,confidence,set_on,verdict,value,at_least,at_most,n,"
+        "candidate,answers,measure,class,limit,confidence,set_on,verdict,value,at_least,at_most,n,"
         "cautious_rate,cautious_alone,cautious_together,present_rate,present_alone,"
         "present_together,hopeful_rate,hopeful_alone,hopeful_together"
     )
     accuracy, balanced = read(text)
-    fixed = {"candidate": "lda", "class": "", "confidence": "0.95"}
+    fixed = {"candidate": "lda", "answers": "highest_score", "class": "", "confidence": "0.95"}
     assert fixed.items() <= accuracy.items()
     assert {
         "measure": "accuracy", "limit": "0.8", "set_on": "2026-01-05", "verdict": "not shown yet",
@@ -188,7 +189,7 @@ def test_verdicts(found):
     # of a limit on no share of units nothing more is asked
     assert fixed.items() <= balanced.items()
     assert (balanced["measure"], balanced["set_on"]) == ("balanced_accuracy", "")
-    assert [balanced[name] for name in list(balanced)[11:]] == [""] * 9
+    assert [balanced[name] for name in list(balanced)[12:]] == [""] * 9
 
 
 def test_verdicts_say_never():
@@ -211,7 +212,7 @@ def test_numbers_and_other_text_stay(text):
 
 def test_names_from_a_file_get_one_too():
     text = results.results_csv(
-        SimpleNamespace(estimates=[
+        SimpleNamespace(beside=Beside(), estimates=[
             Estimate(0.5, None, "sensitivity", "lda", "cross_validation", "apparent",
                      '=HYPERLINK("x")', "case", 4, 1, 0)
         ])

@@ -9,10 +9,11 @@ from hypothesis import strategies as st
 from sklearn.model_selection import LeaveOneGroupOut, LeaveOneOut, TimeSeriesSplit
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.draws import held_out_sizes, time_stretches
 from evalcore.errors import PlanError
 from evalcore.groups import groups_of
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES, draw
 
 from .checks import exactly, table_of

@@ -4,10 +4,12 @@ import numpy as np
 import pytest
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.engine import run, tasks
 from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
-from evalcore.plan import Limit, Plan, choose, generator
+from evalcore.limit import Limit
+from evalcore.plan import Plan, generator
 from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior
 from evalcore.schemes import SCHEMES
 from evalcore.selection import stratified_bags, winners_correction

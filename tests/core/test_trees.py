@@ -16,9 +16,9 @@ from sklearn.tree import DecisionTreeClassifier
 
 from evalcore import trees
 from evalcore.candidates import CANDIDATES
-from evalcore.engine import plain_scores
+from evalcore.choice import choose
+from evalcore.fits import plain_scores
 from evalcore.intake import make_table
-from evalcore.plan import choose
 from evalcore.preparation import preparation
 from evalcore.sheet import read_sheet
 from evalcore.table import Roles

@@ -7,10 +7,12 @@ from scipy.stats import beta
 from evalcore.answers import Answers, Reduced
 from evalcore.binomial import wilson
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
 from evalcore.judged import share_interval
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.verdict import Verdict, judge, overall, verdicts

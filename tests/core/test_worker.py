@@ -10,8 +10,9 @@ from pathlib import Path
 import pytest
 
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.engine import CHUNK
-from evalcore.plan import Plan, choose
+from evalcore.plan import Plan
 from evalcore.record import Record, Status
 from evalcore.schemes import SCHEMES
 from evalcore.table import Roles

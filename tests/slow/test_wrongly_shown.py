@@ -13,8 +13,10 @@ import pytest
 
 from evalcore.answers import Answers, Reduced
 from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.evaluation import Evaluation, evaluate
-from evalcore.plan import Limit, Plan, choose
+from evalcore.limit import Limit
+from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
 from evalcore.verdict import verdicts

@@ -6,7 +6,7 @@ pipeline, reaches on 10,000 further cases. Rows are appended as each table is fi
 run skips what is there.
 
     python -m tests.studies.coverage --tables 1000 --out FILE [--cells quick|default|...] [--jobs 2]
-    python -m tests.studies.coverage --summarise FILE [--out SUMMARY]
+    python -m tests.studies.coverage --summarise FILE... [--out SUMMARY]
 """
 
 import argparse
@@ -22,11 +22,13 @@ import numpy as np
 
 from evalcore import measures
 from evalcore.candidates import CANDIDATES, estimator
+from evalcore.choice import choose_written
 from evalcore.comparison import PRACTICAL
 from evalcore.evaluation import Evaluation
 from evalcore.figures import CountedBy, Interval
 from evalcore.judged import auc_interval
-from evalcore.plan import Limit, Plan, choose_written, generator, recommended_schemes
+from evalcore.limit import Limit
+from evalcore.plan import Plan, generator, recommended_schemes
 from evalcore.profile import smallest_class
 from evalcore.table import Table
 from evalcore.together import ESTIMATOR as WINNER
@@ -204,9 +206,7 @@ def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
 
 
 def _parts(name: str, value: float, interval: Interval | None) -> Row:
-    ends = (
-        (interval.low, interval.high, interval.method) if interval else (math.nan, math.nan, "")
-    )
+    ends = (interval.low, interval.high, interval.method) if interval else (math.nan, math.nan, "")
     return {f"{name}/{p}": v for p, v in zip(PARTS, (value, *ends), strict=True)}
 
 
@@ -317,13 +317,14 @@ def main() -> None:
     parser.add_argument("--out", type=pathlib.Path, required="--summarise" not in sys.argv)
     parser.add_argument("--cells", choices=list(CELLS), default="default")
     parser.add_argument("--jobs", type=int, default=1)
-    parser.add_argument("--summarise", type=pathlib.Path)
+    parser.add_argument("--summarise", type=pathlib.Path, nargs="+")
     given = parser.parse_args()
     if given.summarise:
         from tests.studies.coverage_table import summary, write
 
+        rows = (row for path in given.summarise for row in finished(path))
         with given.out.open("w", encoding="utf-8") if given.out else sys.stdout as file:
-            write(summary(finished(given.summarise)), file)
+            write(summary(rows), file)
         return
     run(CELLS[given.cells], given.out, tables=given.tables, jobs=given.jobs)
 

@@ -1,0 +1,209 @@
+"""What a candidate is worth at the cut-off that each round learned inside its own bag."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from evalcore.answers import Answers, HeldOut, unit_means
+from evalcore.candidates import CANDIDATES
+from evalcore.cut_off import (
+    AtShare,
+    CutOffRule,
+    WithUndecided,
+    at_share,
+    calls,
+    learned,
+    learned_by_round,
+    with_undecided,
+)
+from evalcore.estimated import default_interval, n_behind
+from evalcore.figures import CountedBy, Estimate, Interval
+from evalcore.judged import Judged
+from evalcore.measures import Floats
+from evalcore.plan import Plan
+from evalcore.rounds import Rounds
+from evalcore.table import Table
+
+ESTIMATOR = "at_cut_off"
+SPREAD = 0.9  # share of rounds between the ends of a cut-off's spread
+
+
+@dataclass(frozen=True, eq=False)
+class AtCutOff:
+    """One candidate at its learned cut-off, under the headline's scheme and counting.
+
+    Attributes
+    ----------
+    part : Judged
+        Held-out answers at each round's cut-off; its scores are 1 for the class answered.
+    rule : CutOffRule
+    cut_offs : ndarray, shape (R,)
+        Learned in each round; nan, and the round left out of `part`, where it could not be.
+    on_all : float
+        Learned from inner scores of all cases: the one that goes to work.
+    learned_from : int
+        Units or cases of the class it was learned from.
+    at_shares : tuple of AtShare
+        At each end of the stated share in use, else at the table's share.
+    undecided : WithUndecided or None
+        None where nobody is left undecided, or scores are no probabilities.
+    """
+
+    part: Judged
+    rule: CutOffRule
+    cut_offs: Floats
+    on_all: float
+    learned_from: int
+    at_shares: tuple[AtShare, ...]
+    undecided: WithUndecided | None
+
+    @property
+    def undefined(self) -> int:
+        """Rounds in which no cut-off could be learned."""
+        return int(np.isnan(self.cut_offs).sum())
+
+    @property
+    def spread(self) -> Interval:
+        """Between which ends the cut-offs of nine rounds in ten fall; no confidence interval."""
+        known = self.cut_offs[~np.isnan(self.cut_offs)]
+        tail = (1 - SPREAD) / 2
+        # cut-offs that call all or none are infinite: ranks, not means between two
+        low, high = np.quantile(known, [tail, 1 - tail], method="inverted_cdf")
+        return Interval(float(low), float(high), SPREAD, "spread_of_rounds")
+
+
+def at_cut_off(
+    table: Table, plan: Plan, judged: Judged, given: Answers, whole: Answers
+) -> AtCutOff | None:
+    """A candidate's held-out answers at the cut-offs of their rounds; None if none was learned.
+
+    Costs and floors can be moved in the plan without a refit: inner scores are kept.
+
+    Parameters
+    ----------
+    table : Table
+        Of two classes.
+    plan : Plan
+    judged : Judged
+        The candidate under the headline's scheme.
+    given, whole : Answers
+        Its answers there, and those of the fit on all cases.
+    """
+    rule, way = plan.cut_off, judged.counted_by
+    if rule is None or given.inner is None or whole.inner is None:
+        return None
+    k = table.classes.index(rule.of_class)
+    positive = table.labels_by(way) == k
+    share = rule.share_used(float(positive.mean()))
+    inner = _counted(table, given.inner, way)
+    cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
+    on_all = learned(positive, _counted(table, whole.inner, way)[0], rule=rule, share=share)
+    part = replace(judged, held=_answered(judged.held, cut_offs, k))
+    rates = [part.pooled_value("sensitivity", at) for at in (k, 1 - k)]
+    shares = dict.fromkeys((rule.share_low or share, rule.share_high or share))
+    return AtCutOff(
+        part,
+        rule,
+        cut_offs,
+        on_all,
+        int(positive.sum()),
+        tuple(at_share(rates[0], rates[1], rule=rule, share=each) for each in shares),
+        _undecided(plan, judged, part, rule, cut_offs),
+    )
+
+
+def _counted(table: Table, inner: Floats, way: CountedBy) -> Floats:
+    """Inner scores of cases, or of units as the mean of their cases."""
+    return unit_means(table, inner[..., None])[..., 0] if way == "unit" else inner
+
+
+def _answered(held: HeldOut, cut_offs: Floats, k: int) -> HeldOut:
+    """Answers at the cut-offs as scores of 0 and 1; rounds without a cut-off are left out."""
+    rounds, known = held.rounds, ~np.isnan(cut_offs)
+    of_round = rounds.pairs[0]
+    called = calls(held.scores[:, k], cut_offs[of_round])[known[of_round]]
+    scores = np.empty((len(called), 2))
+    scores[:, k], scores[:, 1 - k] = called, 1 - called
+    kept = Rounds(rounds.train[known], rounds.test[known], rounds.repeat[known])
+    return HeldOut(held.labels, kept, scores)
+
+
+def _undecided(
+    plan: Plan, judged: Judged, part: Judged, rule: CutOffRule, cut_offs: Floats
+) -> WithUndecided | None:
+    """Answers whose larger probability is too low left to a person; decision values are none."""
+    candidate = CANDIDATES[plan.candidate(judged.candidate).key]
+    if not rule.undecided_below or not candidate.probabilities:
+        return None
+    kept = ~np.isnan(cut_offs)[judged.held.rounds.pairs[0]]
+    rounds = part.held.rounds
+    return with_undecided(
+        part.held.correct,
+        judged.held.scores.max(axis=1)[kept],
+        below=rule.undecided_below,
+        weights=1 / rounds.times_tested[rounds.pairs[1]],
+    )
+
+
+def cut_off_estimates(table: Table, plan: Plan, found: AtCutOff) -> Iterator[Estimate]:
+    """Every figure at a learned cut-off."""
+    part, n = found.part, n_behind(found.part, None)
+
+    def figure(
+        measure: str,
+        value: float,
+        *,
+        of_class: str = "",
+        interval: Interval | None = None,
+        estimator: str = ESTIMATOR,
+        behind: int = n,
+    ) -> Estimate:
+        return Estimate(
+            value,
+            interval,
+            measure,
+            part.candidate,
+            part.scheme,
+            estimator,
+            of_class,
+            part.counted_by,
+            behind,
+            part.held.rounds.n_rounds,
+            found.undefined,
+        )
+
+    yield figure(
+        "cut_off",
+        found.on_all,
+        of_class=found.rule.of_class,
+        interval=found.spread,
+        behind=found.learned_from,
+    )
+    for measure in ("accuracy", "balanced_accuracy"):
+        interval = default_interval(plan, part, measure, 0)
+        yield figure(measure, part.pooled_value(measure), interval=interval)
+    for k, name in enumerate(table.classes):
+        yield figure(
+            "sensitivity",
+            part.pooled_value("sensitivity", k),
+            of_class=name,
+            interval=default_interval(plan, part, "sensitivity", k),
+            behind=n_behind(part, k),
+        )
+    other = table.classes[1 - table.classes.index(found.rule.of_class)]
+    for at in found.at_shares:
+        where = f"{ESTIMATOR}_share_{at.share:.6g}"
+        values = (
+            ("precision", found.rule.of_class, at.right_when_called),
+            ("precision", other, at.right_when_not_called),
+            ("share_called", found.rule.of_class, at.called),
+            ("cost_per_case", "", at.cost),
+        )
+        for measure, name, value in values:
+            if measure != "cost_per_case" or found.rule.by == "cost":
+                yield figure(measure, value, of_class=name, estimator=where)
+    if found.undecided:
+        yield figure("share_undecided", found.undecided.sent)
+        for which in ("right_of_decided", "right_counting_undecided_wrong"):
+            yield figure("accuracy", getattr(found.undecided, which), estimator=which)

@@ -1,0 +1,217 @@
+"""The coverage study's table: hand-made raw rows, every share worked out as a fraction."""
+
+import csv
+import io
+import math
+import sys
+
+import pytest
+
+from evalcore import evidence
+from tests.studies import coverage
+from tests.studies.coverage_table import COLUMNS, summary, write
+
+ACCURACY = "default/held_out_by_case/accuracy"
+AUC = "default/mean_of_rounds/auc"
+
+
+def raw(table: int, candidate: str = "lda", **values: object) -> dict[str, object]:
+    """A row of the raw file; columns are written with two underscores for a stroke."""
+    cell = {"scenario": "gauss", "n": 60, "counted_by": "case", "smallest_class": 30}
+    named = {name.replace("__", "/"): value for name, value in values.items()}
+    return cell | {"candidate": candidate, "table": table} | named
+
+
+def figure(name: str, value: object, low: object, high: object, method: str = "wilson") -> dict:
+    return dict(zip((f"{name}/{p}" for p in coverage.PARTS), (value, low, high, method), strict=True))  # fmt: skip
+
+
+def only(lines, **wanted) -> dict:
+    (line,) = [x for x in lines if all(x[name] == value for name, value in wanted.items())]
+    return line
+
+
+class TestFigures:
+    ROWS = (
+        (0.84, 0.70, 0.90, "wilson"),
+        (0.82, 0.81, 0.91, "wilson"),  # begins above the truth
+        (0.80, 0.80, 0.90, "other"),  # ends are part of the interval
+        (0.78, 0.70, 0.80, "wilson"),
+        (0.86, math.nan, math.nan, ""),
+    )
+
+    @pytest.fixture
+    def line(self) -> dict:
+        made = [
+            raw(at, smallest_class=20 + at) | {"true/accuracy": 0.80} | figure(ACCURACY, *of)
+            for at, of in enumerate(self.ROWS)
+        ]
+        (line,) = summary(made)
+        return line
+
+    def test_coverage_is_of_tables_with_an_interval_and_the_others_are_counted(self, line):
+        assert line["coverage"] == 3 / 4
+        assert (line["tables"], line["without_interval"]) == (5, 1)
+
+    def test_its_error_is_of_two_successes_and_two_failures_more(self, line):
+        # (3 + 2)/(4 + 4) = 5/8: sqrt(5/8 x 3/8 / 8)
+        assert line["monte_carlo_error"] == pytest.approx(math.sqrt(15 / 512), rel=1e-12)
+
+    def test_bias_rmse_and_width(self, line):
+        # off by 4, 2, 0, -2 and 6 points
+        assert line["bias"] == pytest.approx(0.02, abs=1e-12)
+        assert line["rmse"] == pytest.approx(math.sqrt(0.0060 / 5), abs=1e-12)
+        assert line["width"] == pytest.approx((0.2 + 0.1 + 0.1 + 0.1) / 4, abs=1e-12)
+
+    def test_keys(self, line):
+        keys = ("scheme", "estimator", "measure", "interval", "smallest_class")
+        expected = ("default", "held_out_by_case", "accuracy", "other or wilson", 22)
+        assert tuple(line[key] for key in keys) == expected
+
+
+def test_an_error_where_every_table_agrees():
+    made = [raw(at) | {"true/accuracy": 0.5} | figure(ACCURACY, 0.5, 0.4, 0.6) for at in range(4)]
+    (line,) = summary(made)
+    assert line["coverage"] == 1
+    # (4 + 2)/(4 + 4) = 3/4: sqrt(3/4 x 1/4 / 8)
+    assert line["monte_carlo_error"] == pytest.approx(math.sqrt(3 / 128), rel=1e-12)
+
+
+def test_without_any_interval_there_is_no_coverage_but_a_bias():
+    made = [raw(at) | {"true/accuracy": 0.5} | figure(ACCURACY, 0.75, math.nan, math.nan, "") for at in range(2)]  # fmt: skip
+    (line,) = summary(made)
+    assert math.isnan(line["coverage"])
+    assert math.isnan(line["monte_carlo_error"])
+    assert math.isnan(line["width"])
+    assert (line["bias"], line["tables"], line["without_interval"]) == (0.25, 2, 2)
+
+
+@pytest.mark.parametrize(
+    ("scenario", "facts"), [("p50", (50, 2, 1)), ("three", (5, 3, 1)), ("units", (5, 2, 6))]
+)
+def test_what_tables_of_a_scenario_are_like(scenario, facts):
+    made = raw(0, scenario=scenario) | {"true/accuracy": 0.5} | figure(ACCURACY, 0.5, 0.4, 0.6)
+    (line,) = summary([made])
+    assert (line["features"], line["classes"], line["rows"]) == facts
+
+
+def test_a_scheme_that_was_not_carried_out_leaves_no_line():
+    made = [raw(0) | {"true/accuracy": 0.5} | figure(ACCURACY, "", "", "", "")]
+    assert list(summary(made)) == []
+
+
+def test_auc_of_two_schemes_only_where_there_were_two():
+    alone = figure(AUC, 0.7, 0.6, 0.8) | figure(AUC.replace("/auc", "_alone/auc"), 0.7, 0.65, 0.8)
+    second = figure("bootstrap/mean_of_rounds/auc", 0.7, 0.6, 0.8)
+    made = [raw(0) | {"true/auc": 0.7} | alone, raw(1) | {"true/auc": 0.5} | alone | second]
+    lines = list(summary(made))
+    both = only(lines, scheme="default", estimator="mean_of_rounds")
+    assert (both["tables"], both["coverage"]) == (1, 0)
+    one = only(lines, scheme="default", estimator="mean_of_rounds_alone")
+    assert (one["tables"], one["coverage"]) == (2, 1 / 2)
+
+
+def test_a_verdict_is_wrong_where_the_true_rate_itself_is_called_shown():
+    bounds = (0.79, 0.80, 0.81, math.nan, -math.inf)
+    made = [raw(at, at_least__accuracy=b, true__accuracy=0.80) for at, b in enumerate(bounds)]
+    (line,) = summary(made)
+    assert (line["estimator"], line["measure"]) == ("verdict", "accuracy")
+    # 0.80 and 0.81 reach it; without a bound nothing is called shown
+    assert (line["coverage"], line["tables"], line["without_interval"]) == (3 / 5, 5, 2)
+    # (3 + 2)/(5 + 4) = 5/9
+    assert line["monte_carlo_error"] == pytest.approx(math.sqrt(20 / 729), rel=1e-12)
+
+
+def test_the_best_has_figures_of_its_own():
+    made = raw(0, "best of all 8", at_least__accuracy=0.7) | {"true/accuracy": 0.8}
+    lines = list(summary([made | figure(ACCURACY, 0.8, 0.7, 0.9)]))
+    assert [line["estimator"] for line in lines] == ["winner_corrected", "verdict"]
+    assert {line["candidate"] for line in lines} == {"best of all 8"}
+
+
+def line_up(table: int, *false: int, low: float = -0.1) -> list[dict]:
+    """logistic against lda and tree, then the best; which of the two calls are false."""
+    others = [
+        raw(table, name, difference__call="better", difference__false=wrong)
+        | {"difference/true": 0.05, "difference/value": 0.0}
+        | {"difference/low": low, "difference/high": 0.1}
+        for name, wrong in zip(("lda", "tree"), false, strict=True)
+    ]
+    return [raw(table, "logistic"), *others, raw(table, "best of all 3")]
+
+
+class TestComparisons:
+    ROWS = (*line_up(0, 1, 0), *line_up(1, 1, 1), *line_up(2, 0, 0), *line_up(3, 0, 1, low=0.06))
+
+    def test_each_pair(self):
+        lines = list(summary(self.ROWS))
+        lda = only(lines, candidate="logistic against lda", estimator="comparison")
+        tree = only(lines, candidate="logistic against tree", estimator="comparison")
+        assert (lda["coverage"], tree["coverage"]) == (2 / 4, 2 / 4)
+        held = only(lines, candidate="logistic against lda", estimator="difference")
+        # -0.1 to 0.1 holds 0.05, 0.06 to 0.1 does not
+        assert (held["coverage"], held["bias"]) == (3 / 4, pytest.approx(-0.05, abs=1e-12))
+
+    def test_a_family_is_wrong_where_any_call_is(self):
+        family = only(summary(self.ROWS), candidate="all pairs")
+        assert (family["estimator"], family["measure"]) == ("comparison", "accuracy")
+        assert (family["coverage"], family["tables"], family["without_interval"]) == (1 / 4, 4, 0)
+
+    def test_line_ups_of_other_files_do_not_mix(self):
+        rows = [*self.ROWS, raw(0, "svm"), raw(1, "svm")]
+        assert list(summary(rows)) == list(summary(self.ROWS))
+
+    def test_without_an_interval_nothing_is_called(self):
+        lines = list(summary([*line_up(0, 0, 0), *line_up(1, 0, 0, low=math.nan)]))
+        family = only(lines, candidate="all pairs")
+        assert (family["coverage"], family["tables"], family["without_interval"]) == (1, 2, 1)
+
+
+def test_a_table_judged_twice_counts_once_and_stays_with_its_line_up():
+    # interrupted after two rows, gone on with another table, then judged again
+    rows = [*line_up(0, 1, 0)[:2], *line_up(1, 0, 0), *line_up(0, 0, 0)]
+    lines = list(summary(rows))
+    assert {line["candidate"] for line in lines} == {
+        "logistic against lda",
+        "logistic against tree",
+        "all pairs",
+    }
+    family = only(lines, candidate="all pairs")
+    assert (family["tables"], family["coverage"]) == (2, 1)
+
+
+def test_cells_stand_in_the_order_of_the_study_whatever_came_first():
+    def made(scenario: str, n: int) -> dict:
+        return raw(0, scenario=scenario, n=n, at_least__accuracy=0.5, true__accuracy=0.8)
+
+    rows = [made("units", 20), made("gauss", 120), made("imb", 30), made("gauss", 60)]
+    found = [(line["scenario"], line["n"]) for line in summary(rows)]
+    assert found == [("gauss", 60), ("gauss", 120), ("imb", 30), ("units", 20)]
+
+
+def test_written_with_four_digits():
+    made = [raw(at, smallest_class=20 + at, true__accuracy=0.8) | figure(ACCURACY, 0.8, 0.7, 0.9) for at in range(2)]  # fmt: skip
+    made += [raw(at, "svm", true__accuracy=0.8) | figure(ACCURACY, 0.8, math.nan, 0.9) for at in range(2)]  # fmt: skip
+    file = io.StringIO()
+    write(summary(made), file)
+    assert file.getvalue().partition("\n")[0] == ",".join(COLUMNS)
+    first, second = csv.DictReader(io.StringIO(file.getvalue()))
+    assert (first["coverage"], first["width"], first["smallest_class"]) == ("1.0000", "0.2000", "20.5")  # fmt: skip
+    assert (second["coverage"], second["smallest_class"]) == ("nan", "30")
+
+
+def test_several_files_become_what_the_package_reads(tmp_path, monkeypatch):
+    paths = []
+    for at in range(2):
+        path = tmp_path / f"raw{at}.csv"
+        with path.open("w", newline="") as file:
+            writer = csv.DictWriter(file, coverage.COLUMNS, restval="", lineterminator="\n")
+            writer.writeheader()
+            writer.writerow(raw(at, true__accuracy=0.8 - at / 2) | figure(ACCURACY, 0.8, 0.7, 0.9))
+        paths.append(str(path))
+    out = tmp_path / "small.csv"
+    monkeypatch.setattr(sys, "argv", ["coverage", "--summarise", *paths, "--out", str(out)])
+    coverage.main()
+    (line,) = evidence.read(out.read_text())
+    assert (line.tables, line.coverage, line.n, line.features) == (2, 0.5, 60, 5)
+    assert line.bias == 0.25  # of 0 and 0.5
