@@ -7,6 +7,7 @@ from pathlib import Path
 
 from app.columns import size_parser, statistic_parser
 from evalcore.answer import answer, limit_rows, title
+from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import Choice, choose_written
 from evalcore.cluster import on_cluster
@@ -158,6 +159,8 @@ def _evaluate(given: argparse.Namespace) -> None:
         print(f"{row.name}: {row.verdict.word}. {row.detail}")
         if row.further:
             print(row.further)
+    for sentence in beside_in_sentences(evaluation):
+        print(sentence)
     for finding in findings(record.table, plan, evaluation):
         print(f"{finding.severity}: {finding.title}")
     print(f"Record: {record.folder}")

@@ -3,7 +3,8 @@
 import math
 from dataclasses import dataclass
 
-from evalcore.evaluation import Evaluation
+from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
+from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Estimate
 from evalcore.limit import Limit
 from evalcore.measures import ALL_MEASURES, MEASURES
@@ -13,7 +14,7 @@ from evalcore.profile import majority
 from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
 from evalcore.schemes import LEAST_BLOCKS
 from evalcore.table import Table
-from evalcore.verdict import Verdict, starting_rate, verdicts
+from evalcore.verdict import Verdict, verdicts_in_use
 from evalcore.wording import (
     NBSP,
     capitalised,
@@ -28,6 +29,8 @@ from evalcore.wording import (
     quoted,
     with_interval,
 )
+
+WITH_CUT_OFF = " at the cut-off"
 
 LOSS_NAMES = {
     "brier": "squared distance of probabilities (Brier score, sum over classes)",
@@ -144,7 +147,8 @@ def answer(evaluation: Evaluation) -> str:
     concern = plan.concern_of(table)
     two = table.n_classes == 2 and concern
     mix = f"share of {class_name(concern)} {noun}" if two else "shares of classes"
-    whole = evaluation.estimate("accuracy", about)
+    whole = evaluation.estimate("accuracy", about, estimator=evaluation.in_use)
+    at = "" if evaluation.in_use == HIGHEST else WITH_CUT_OFF
     bounds = whole.interval
     stated = (
         _figure(whole, noun=noun).replace("(", f"({level(bounds.level)} interval ", 1)
@@ -153,7 +157,7 @@ def answer(evaluation: Evaluation) -> str:
     )
     k, share = majority(table, evaluation.counted_by)
     return (
-        f"On further {noun} obtained like these, with the same {mix}, {plan.title(about)} is "
+        f"On further {noun} obtained like these, with the same {mix}, {plan.title(about)}{at} is "
         f"expected to be right in {stated}; {listed(_by_class(evaluation, about))}. Always "
         f"answering {quoted(table.classes[k])} would be right in {percent(share, whole.n)}."
     )
@@ -162,7 +166,11 @@ def answer(evaluation: Evaluation) -> str:
 def _by_class(evaluation: Evaluation, candidate: str) -> list[str]:
     """Each class with its figure, the class of concern first; of many classes the worst three."""
     table, plan = evaluation.table, evaluation.plan
-    given = [evaluation.estimate("sensitivity", candidate, of_class=c) for c in table.classes]
+    by = evaluation.in_use if candidate == evaluation.about else HIGHEST
+    given = [
+        evaluation.estimate("sensitivity", candidate, estimator=by, of_class=c)
+        for c in table.classes
+    ]
     concern = plan.concern_of(table)
     if len(given) > 4:
         given = sorted(given, key=lambda e: e.value)[:3]
@@ -205,12 +213,14 @@ def title(evaluation: Evaluation) -> str:
     if missing:
         said = _of_ten(evaluation)
         return missing + said[:1].lower() + said[1:]
-    given = verdicts(evaluation, evaluation.about)
+    given = verdicts_in_use(evaluation, evaluation.about)
     table, plan = evaluation.table, evaluation.plan
     noun = table.noun_for(evaluation.counted_by).plural
     if given:
         return " ".join(
-            f"{capitalised(_short(table, plan, v.limit, noun))}: {v.word}." for v in given
+            f"{capitalised(_short(table, plan, v.limit, noun))}"
+            f"{WITH_CUT_OFF if v.at_cut_off else ''}: {v.word}."
+            for v in given
         )
     return _of_ten(evaluation)
 
@@ -239,12 +249,16 @@ def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
         return ()
     table, plan = evaluation.table, evaluation.plan
     rows = []
-    for verdict in verdicts(evaluation, candidate):
+    for verdict in verdicts_in_use(evaluation, candidate):
         limit = verdict.limit
-        estimate = evaluation.estimate(limit.measure, candidate, of_class=limit.of_class)
+        by = AT_CUT_OFF if verdict.at_cut_off else HIGHEST
+        estimate = evaluation.estimate(
+            limit.measure, candidate, estimator=by, of_class=limit.of_class
+        )
+        name = measure_name(table, plan, limit.measure, limit.of_class)
         rows.append(
             LimitRow(
-                capitalised(measure_name(table, plan, limit.measure, limit.of_class)),
+                capitalised(name) + (WITH_CUT_OFF if verdict.at_cut_off else ""),
                 f"{with_interval(estimate.value, estimate.interval, estimate.n)}, "
                 f"{n_equals(estimate.n)}",
                 verdict,
@@ -282,7 +296,7 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
         )
     if limit.measure == "balanced_accuracy":
         return f"{shows} It may be true; these are too few to show it."
-    misses = math.ceil((1 - starting_rate(evaluation, evaluation.about, limit)) * n - 1e-9)
+    misses = math.ceil((1 - verdict.rate) * n - 1e-9)
     needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
     with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)
     misses_made = f"{misses} miss{'' if misses == 1 else 'es'}"

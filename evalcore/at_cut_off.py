@@ -1,5 +1,6 @@
 """What a candidate is worth at the cut-off that each round learned inside its own bag."""
 
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
@@ -65,8 +66,13 @@ class AtCutOff:
 
     @property
     def spread(self) -> Interval:
-        """Between which ends the cut-offs of nine rounds in ten fall; no confidence interval."""
+        """Between which ends the cut-offs of nine rounds in ten fall; no confidence interval.
+
+        nan at both ends where none could be learned in any round.
+        """
         known = self.cut_offs[~np.isnan(self.cut_offs)]
+        if not len(known):
+            return Interval(math.nan, math.nan, SPREAD, "spread_of_rounds")
         tail = (1 - SPREAD) / 2
         # cut-offs that call all or none are infinite: ranks, not means between two
         low, high = np.quantile(known, [tail, 1 - tail], method="inverted_cdf")
@@ -74,11 +80,12 @@ class AtCutOff:
 
 
 def at_cut_off(
-    table: Table, plan: Plan, judged: Judged, given: Answers, whole: Answers
+    table: Table, plan: Plan, judged: Judged, *, given: Answers, whole: Answers
 ) -> AtCutOff | None:
     """A candidate's held-out answers at the cut-offs of their rounds; None if none was learned.
 
-    Costs and floors can be moved in the plan without a refit: inner scores are kept.
+    Costs and floors can be moved in the plan without a refit: inner scores are kept, of the
+    rule's class alone.
 
     Parameters
     ----------
@@ -109,7 +116,7 @@ def at_cut_off(
         on_all,
         int(positive.sum()),
         tuple(at_share(rates[0], rates[1], rule=rule, share=each) for each in shares),
-        _undecided(plan, judged, part, rule, cut_offs),
+        _undecided(plan, judged, part, rule=rule, cut_offs=cut_offs),
     )
 
 
@@ -130,7 +137,7 @@ def _answered(held: HeldOut, cut_offs: Floats, k: int) -> HeldOut:
 
 
 def _undecided(
-    plan: Plan, judged: Judged, part: Judged, rule: CutOffRule, cut_offs: Floats
+    plan: Plan, judged: Judged, part: Judged, *, rule: CutOffRule, cut_offs: Floats
 ) -> WithUndecided | None:
     """Answers whose larger probability is too low left to a person; decision values are none."""
     candidate = CANDIDATES[plan.candidate(judged.candidate).key]
@@ -169,7 +176,7 @@ def cut_off_estimates(table: Table, plan: Plan, found: AtCutOff) -> Iterator[Est
             of_class,
             part.counted_by,
             behind,
-            part.held.rounds.n_rounds,
+            len(found.cut_offs),
             found.undefined,
         )
 

@@ -13,6 +13,7 @@ from evalcore.chance_check import (
     chance_estimates,
     majority_estimates,
 )
+from evalcore.estimated import n_behind
 from evalcore.figures import Estimate, Interval
 from evalcore.judged import Judged
 from evalcore.learning_curve import CurveMeasure, LearningCurve, learning_curve
@@ -84,7 +85,8 @@ def beside(
     headline = [part for part in counted if part.scheme == plan.headline_scheme]
     figures: list[Estimate] = []
     settings = []
-    for part in counted:
+    # small bags of the curve say nothing about what is picked from all cases
+    for part in (p for p in counted if not plan.is_curve(p.scheme)):
         choice = plan.candidate(part.candidate)
         given = answers[part.scheme, part.candidate]
         found = picked(
@@ -96,11 +98,13 @@ def beside(
     cut_offs = []
     for part in headline:
         given = answers[part.scheme, part.candidate]
-        at = at_cut_off(table, plan, part, given, whole[part.candidate])
+        at = at_cut_off(table, plan, part, given=given, whole=whole[part.candidate])
         if at:
             cut_offs.append(at)
             figures += cut_off_estimates(table, plan, at)
-    corrected = winner_estimates(table, plan, [at.part for at in cut_offs], estimator=CORRECTED)
+    # without a cut-off in any round there is no answer to choose the best by
+    answered = [at.part for at in cut_offs if at.undefined < len(at.cut_offs)]
+    corrected = winner_estimates(table, plan, answered, estimator=CORRECTED)
     curves = tuple(_curves(table, plan, [p for p in counted if plan.is_curve(p.scheme)]))
     checks = chance_checks(plan, headline, permuted)
     figures += [*corrected, *_curve_estimates(curves), *chance_estimates(headline, checks)]
@@ -132,7 +136,8 @@ def _curve_estimates(curves: Sequence[Curve]) -> Iterator[Estimate]:
     """A figure for each size measured, and for each the curve is continued to."""
     for curve in curves:
         part, found = curve.part, curve.found
-        n, level = len(part.held.labels), found.gain.interval.level
+        n = n_behind(part, found.of_class if curve.of_class else None)
+        level = found.gain.interval.level
         points = [
             (f"learned_from_{size:.0f}", value, low, high, int(rounds))
             for size, value, low, high, rounds in zip(

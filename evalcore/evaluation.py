@@ -6,6 +6,7 @@ from functools import cached_property
 import numpy as np
 
 from evalcore.answers import Answers, held_out
+from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
 from evalcore.at_cut_off import AtCutOff
 from evalcore.beside import CORRECTED, Beside, beside
 from evalcore.candidates import CANDIDATES
@@ -19,6 +20,8 @@ from evalcore.rounds import Rounds
 from evalcore.table import Table
 from evalcore.together import ESTIMATOR as WINNER
 from evalcore.together import differences, winner_estimates
+
+HIGHEST = "held_out_by_case"  # the class with the highest score is answered
 
 
 @dataclass(frozen=True, eq=False)
@@ -112,6 +115,11 @@ class Evaluation:
         found = [at for at in self.beside.cut_offs if at.part.candidate == candidate]
         return found[0] if found else None
 
+    @property
+    def in_use(self) -> str:
+        """By which estimator the answer is given: at a learned cut-off where there is one."""
+        return AT_CUT_OFF if self.at_cut_off(self.about) else HIGHEST
+
     @cached_property
     def differences(self) -> tuple[Difference, ...]:
         """The candidate of the headline against all others, on the headline's rounds."""
@@ -146,7 +154,7 @@ class Evaluation:
     def _by_key(self) -> dict[tuple[str, ...], Estimate]:
         return {
             (e.measure, e.candidate, e.scheme, e.estimator, e.of_class, e.counted_by): e
-            for e in self.estimates
+            for e in (*self.estimates, *self.beside.estimates)
         }
 
 

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 
 from evalcore import checks_candidates as candidates
 from evalcore import checks_evidence as of_evidence
+from evalcore import checks_learned as learned
 from evalcore import checks_rounds as rounds
 from evalcore import checks_table as of_table
 from evalcore.evaluation import Evaluation
@@ -70,6 +71,18 @@ CHECKS: dict[str, Check] = {
         Check("memorises", "right on all it was trained on", candidates.memorises),
         Check("missing_values", "gaps in the table", of_table.missing_values),
         Check("share_of_classes", "the mix of classes is assumed", rounds.share_of_classes),
+        Check(
+            "cut_off_chosen_here", "a cut-off chosen on these cases", learned.cut_off_chosen_here
+        ),
+        Check("cut_off_calls_all", "too few units for a floor", learned.cut_off_calls_all),
+        Check("floor_not_delivered", "a floor is not delivered", learned.floor_not_delivered),
+        Check("not_told_from_chance", "chance does as well", learned.not_told_from_chance),
+        Check(
+            "permuted_off_chance", "permuted labels are off guessing", learned.permuted_off_chance
+        ),
+        Check("settings_unsteady", "rounds pick different settings", learned.settings_unsteady),
+        Check("grid_too_narrow", "a grid may end too early", learned.grid_too_narrow),
+        Check("still_rising", "more cases would help", learned.still_rising),
         Check("bags_as_expected", "what a bag holds", rounds.bags_as_expected),
     )
 }

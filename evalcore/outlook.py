@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 from evalcore.evaluation import Evaluation
 from evalcore.further_cases import MoreCases, Needed, more_cases
-from evalcore.verdict import Verdict, starting_rate
+from evalcore.verdict import Verdict
 from evalcore.wording import NBSP, class_name, count, level, percent
 
 CHANCE = 0.8
@@ -49,9 +49,10 @@ def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook
         or math.isnan(verdict.at_least)
     ):
         return Outlook(verdict, ())
-    part = evaluation.part(candidate, evaluation.scheme)
+    at = evaluation.at_cut_off(candidate) if verdict.at_cut_off else None
+    part = at.part if at else evaluation.part(candidate, evaluation.scheme)
     k = evaluation.table.classes.index(limit.of_class) if limit.of_class else None
-    rate = starting_rate(evaluation, candidate, limit)
+    rate = verdict.rate
     rates = {
         "cautious": (rate + verdict.at_least) / 2,
         "present": rate,

@@ -132,9 +132,7 @@ def verdicts_csv(evaluation: Evaluation) -> str:
             repr(limit.confidence), limit.set_on, verdict.word, repr(verdict.value),
             repr(verdict.at_least), repr(verdict.at_most), str(verdict.n),
         ]  # fmt: skip
-        asked = answers == HIGHEST
-        needed = outlook(evaluation, about, verdict).needed if asked else ()
-        found = {m.name: m for m in needed}
+        found = {m.name: m for m in outlook(evaluation, about, verdict).needed}
         for name in names:
             more = found.get(name)
             row += (

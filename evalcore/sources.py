@@ -133,6 +133,11 @@ SOURCES: dict[str, Source] = {
         "Vovk, Gammerman & Shafer 2005, Algorithmic Learning in a Random World, Springer",
         "10.1007/b106715",
     ),
+    "phipson_smyth2010": Source(
+        "Phipson & Smyth 2010, Permutation p-values should never be zero, Stat. Appl. Genet. Mol. "
+        "Biol. 9:39",
+        "10.2202/1544-6115.1585",
+    ),
     "own_model_variance": Source(
         "own construction: the model's own variability as a method-of-moments covariance between "
         "cases answered by one model; same idea as Nadeau & Bengio 2003, Mach. Learn. 52:239-281",

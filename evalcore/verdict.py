@@ -32,6 +32,11 @@ class Verdict:
         on whole units (none for balanced accuracy) and the interval with model variance.
     n : int
         Units of the class, or all.
+    rate : float
+        What the lower bound starts from: where several candidates were tried, no more than the
+        best is worth.
+    at_cut_off : bool
+        Whether it is about answers at a learned cut-off, not about the highest score.
     """
 
     limit: Limit
@@ -40,13 +45,15 @@ class Verdict:
     at_least: float
     at_most: float
     n: int
+    rate: float
+    at_cut_off: bool = False
 
 
 def verdicts(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
     """One verdict a limit for a candidate under the headline's scheme and counting."""
     part = evaluation.part(candidate, evaluation.scheme)
     return tuple(
-        _verdict(evaluation.table, part, limit, corrected=corrected_rate(evaluation, limit))
+        _verdict(evaluation.table, part, limit, corrected=_corrected(evaluation, limit))
         for limit in evaluation.plan.limits
     )
 
@@ -61,14 +68,17 @@ def verdicts_at_cut_off(evaluation: Evaluation, candidate: str) -> tuple[Verdict
         return ()
     given = []
     for limit in evaluation.plan.limits:
-        corrected = evaluation.corrected(limit.measure, limit.of_class, at_cut_off=True)
-        verdict = _verdict(
-            evaluation.table, found.part, limit, corrected=corrected.value if corrected else None
-        )
-        if found.rule.chosen_on_these_cases and verdict.word == "shown":
-            verdict = replace(verdict, word="not shown yet")
-        given.append(verdict)
+        corrected = _corrected(evaluation, limit, at_cut_off=True)
+        verdict = _verdict(evaluation.table, found.part, limit, corrected=corrected)
+        fitted = found.rule.chosen_on_these_cases and verdict.word == "shown"
+        word: Word = "not shown yet" if fitted else verdict.word
+        given.append(replace(verdict, word=word, at_cut_off=True))
     return tuple(given)
+
+
+def verdicts_in_use(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
+    """Of the answers that go to work: at the cut-off where one is learned, else as they are."""
+    return verdicts_at_cut_off(evaluation, candidate) or verdicts(evaluation, candidate)
 
 
 def overall(given: tuple[Verdict, ...]) -> Word | None:
@@ -97,7 +107,8 @@ def _verdict(table: Table, part: Judged, limit: Limit, *, corrected: float | Non
     rate, usable = _rate(value, corrected), offers_interval(part)
     at_least = at_most = math.nan
     if limit.measure == "balanced_accuracy":
-        n = int(np.bincount(part.held.labels[~np.isnan(part.shares)]).min())
+        known = part.held.labels[~np.isnan(part.shares)]
+        n = int(np.bincount(known, minlength=part.n_classes).min())
         if usable:
             bounds = balanced_interval(level, part)
             # moved down with the rate where that is corrected for the luck of being best
@@ -114,7 +125,7 @@ def _verdict(table: Table, part: Judged, limit: Limit, *, corrected: float | Non
             exact = upper_bound(whole, n, confidence=limit.confidence)
             at_most = max(share_interval(level, part, k, cautious=True).high, exact)
     word = judge(value, at_least, at_most, limit=limit.least, n=n)
-    return Verdict(limit, word, value, at_least, at_most, n)
+    return Verdict(limit, word, value, at_least, at_most, n, rate)
 
 
 def _rate(value: float, corrected: float | None) -> float:
@@ -126,10 +137,10 @@ def _rate(value: float, corrected: float | None) -> float:
     return min(value, corrected)
 
 
-def corrected_rate(evaluation: Evaluation, limit: Limit) -> float | None:
+def _corrected(evaluation: Evaluation, limit: Limit, *, at_cut_off: bool = False) -> float | None:
     """What the best candidate is worth by a limit's measure; None if one was tried."""
-    corrected = evaluation.corrected(limit.measure, limit.of_class)
-    return None if corrected is None else corrected.value
+    found = evaluation.corrected(limit.measure, limit.of_class, at_cut_off=at_cut_off)
+    return None if found is None else found.value
 
 
 def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> Interval:
@@ -143,12 +154,6 @@ def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> In
         return Interval(max(0.0, own.low - (value - rate)), own.high, level, own.method)
     tau2 = part.cautious_tau2(of_class)
     return with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
-
-
-def starting_rate(evaluation: Evaluation, candidate: str, limit: Limit) -> float:
-    """The rate the verdict on a limit starts from."""
-    estimate = evaluation.estimate(limit.measure, candidate, of_class=limit.of_class)
-    return _rate(estimate.value, corrected_rate(evaluation, limit))
 
 
 def _units_behind(part: Judged, of_class: int | None) -> int:

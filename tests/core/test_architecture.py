@@ -92,6 +92,7 @@ ORDER = (
     "outlook",
     "rehearsal",
     "answer",
+    "beside_answer",
     "checks_table",
     "checks_rounds",
     "checks_candidates",

@@ -33,18 +33,18 @@ def only(lines, **wanted) -> dict:
 
 class TestFigures:
     ROWS = (
-        (0.84, 0.70, 0.90, "wilson"),
-        (0.82, 0.81, 0.91, "wilson"),  # begins above the truth
-        (0.80, 0.80, 0.90, "other"),  # ends are part of the interval
-        (0.78, 0.70, 0.80, "wilson"),
-        (0.86, math.nan, math.nan, ""),
+        (20, 0.84, 0.70, 0.90, "wilson"),
+        (21, 0.82, 0.81, 0.91, "wilson"),  # begins above the truth
+        (22, 0.80, 0.80, 0.90, "other"),  # ends are part of the interval
+        (23, 0.78, 0.70, 0.80, "wilson"),
+        (30, 0.86, math.nan, math.nan, ""),
     )
 
     @pytest.fixture
     def line(self) -> dict:
         made = [
-            raw(at, smallest_class=20 + at) | {"true/accuracy": 0.80} | figure(ACCURACY, *of)
-            for at, of in enumerate(self.ROWS)
+            raw(at, smallest_class=size) | {"true/accuracy": 0.80} | figure(ACCURACY, *of)
+            for at, (size, *of) in enumerate(self.ROWS)
         ]
         (line,) = summary(made)
         return line
@@ -168,8 +168,8 @@ class TestComparisons:
 
 
 def test_a_table_judged_twice_counts_once_and_stays_with_its_line_up():
-    # interrupted after two rows, gone on with another table, then judged again
-    rows = [*line_up(0, 1, 0)[:2], *line_up(1, 0, 0), *line_up(0, 0, 0)]
+    # interrupted after two rows, gone on with another table and line-up, then judged again
+    rows = [*line_up(0, 1, 0)[:2], *line_up(1, 0, 0), raw(0, "svm"), *line_up(0, 0, 0)]
     lines = list(summary(rows))
     assert {line["candidate"] for line in lines} == {
         "logistic against lda",
@@ -184,14 +184,16 @@ def test_cells_stand_in_the_order_of_the_study_whatever_came_first():
     def made(scenario: str, n: int) -> dict:
         return raw(0, scenario=scenario, n=n, at_least__accuracy=0.5, true__accuracy=0.8)
 
-    rows = [made("units", 20), made("gauss", 120), made("imb", 30), made("gauss", 60)]
+    rows = [made("noise", 40), made("gauss", 120), made("p50", 60), made("gauss", 60)]
     found = [(line["scenario"], line["n"]) for line in summary(rows)]
-    assert found == [("gauss", 60), ("gauss", 120), ("imb", 30), ("units", 20)]
+    assert found == [("gauss", 60), ("gauss", 120), ("p50", 60), ("noise", 40)]
 
 
 def test_written_with_four_digits():
     made = [raw(at, smallest_class=20 + at, true__accuracy=0.8) | figure(ACCURACY, 0.8, 0.7, 0.9) for at in range(2)]  # fmt: skip
-    made += [raw(at, "svm", true__accuracy=0.8) | figure(ACCURACY, 0.8, math.nan, 0.9) for at in range(2)]  # fmt: skip
+    # one end alone is no interval
+    for at, ends in enumerate(((math.nan, 0.9), (0.7, math.nan))):
+        made.append(raw(at, "svm", true__accuracy=0.8) | figure(ACCURACY, 0.8, *ends))
     file = io.StringIO()
     write(summary(made), file)
     assert file.getvalue().partition("\n")[0] == ",".join(COLUMNS)

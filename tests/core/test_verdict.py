@@ -133,7 +133,7 @@ def test_a_class_never_held_out_is_not_shown(candidates):
 
 def test_overall():
     def words(*given):
-        return overall(tuple(Verdict(LIMIT, w, 0.9, 0.8, 1.0, 50) for w in given))
+        return overall(tuple(Verdict(LIMIT, w, 0.9, 0.8, 1.0, 50, 0.9) for w in given))
 
     assert words() is None
     assert words("shown", "shown") == "shown"

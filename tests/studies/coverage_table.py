@@ -112,8 +112,8 @@ def _comparisons(rows: Sequence[Raw]) -> Iterator[Line]:
         if _has(row, "difference/call"):
             by_pair.setdefault(f"{first} against {row['candidate']}", []).append(row)
             by_table.setdefault(str(row["table"]), []).append(row)
-        elif not str(row["candidate"]).startswith(BEST):
-            first = str(row["candidate"])  # the first of a line-up is compared with the others
+        else:
+            first = str(row["candidate"])  # begins a line-up, and is compared with the others
     for pair, those in by_pair.items():
         kept = _kept(those, "difference", truth="difference/true")
         yield _line(those, pair, {"estimator": "difference", "measure": "accuracy"} | kept)

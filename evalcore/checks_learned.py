@@ -1,0 +1,242 @@
+"""Doubts about what was learned or checked beside the estimates: cut-off, settings, chance."""
+
+import math
+from collections.abc import Iterator
+
+import numpy as np
+
+from evalcore.cut_off import least_units
+from evalcore.evaluation import Evaluation
+from evalcore.figures import Finding
+from evalcore.judged import share_interval
+from evalcore.plan import Plan
+from evalcore.table import Table
+from evalcore.wording import (
+    capitalised,
+    class_name,
+    count,
+    decimal,
+    level,
+    n_equals,
+    percent,
+    tenths,
+    with_interval,
+)
+
+SURE = 0.05  # p above which a figure is not told from chance
+OFF_CHANCE = 0.05  # points that permuted labels may be off what guessing gives
+HALF = 0.5
+
+
+def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """A fixed cut-off that was not set before these cases were seen."""
+    if evaluation is None or plan.cut_off is None or not plan.cut_off.chosen_on_these_cases:
+        return
+    yield Finding(
+        "cut_off_chosen_here",
+        "grave" if plan.limits else "moderate",
+        plan.cut_off.of_class,
+        f"The cut-off {decimal(plan.cut_off.at, 3)} was chosen on these cases",
+        "It was fixed without a date on which it was set, so it counts as picked by eye on the "
+        "cases it is judged on (dates stated: 0; threshold: 1). Its figures flatter it, and no "
+        "limit is called shown with it.",
+        "Let each round learn it (by costs or by a floor), or state when it was set if that was "
+        "before these cases were seen.",
+        0,
+        1,
+        "common_practice",
+    )
+
+
+def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Too few units of a class to learn a floor: the cut-off calls everything."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
+        return
+    needed = least_units(plan.cut_off.floor)
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or found.learned_from >= needed:
+        return
+    noun = table.noun_for(evaluation.counted_by)
+    name = class_name(plan.cut_off.of_class)
+    yield Finding(
+        "cut_off_calls_all",
+        "grave",
+        plan.cut_off.of_class,
+        f"{capitalised(count(found.learned_from))} {name} {noun.plural} cannot teach a floor of "
+        f"{level(plan.cut_off.floor)}; every {noun.singular} is called {name}",
+        f"A cut-off that finds {level(plan.cut_off.floor)} of further {noun.plural} of a class "
+        f"takes at least {needed} of them; there are {found.learned_from} (threshold: {needed}).",
+        f"Take a lower floor, or add {name} {noun.plural}.",
+        found.learned_from,
+        needed,
+        "wilks1941",
+    )
+
+
+def floor_not_delivered(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """The floor that was asked for is not reached on held-out cases."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None:
+        return
+    k = table.classes.index(plan.cut_off.of_class)
+    value, floor = found.part.pooled_value("sensitivity", k), plan.cut_off.floor
+    if math.isnan(value) or value >= floor:
+        return
+    bounds = share_interval(plan.level, found.part, k)
+    n = int((found.part.held.labels == k).sum())
+    yield Finding(
+        "floor_not_delivered",
+        "grave" if bounds.high < floor else "moderate",
+        plan.cut_off.of_class,
+        f"The cut-off for at least {level(floor)} finds {percent(value, n)} of "
+        f"{class_name(plan.cut_off.of_class)} on held-out cases",
+        f"Learned inside each bag, it finds {with_interval(value, bounds, n)}, {n_equals(n)}; the "
+        f"threshold is the floor, {level(floor)}, which "
+        f"{'lies above' if bounds.high < floor else 'is within'} the interval.",
+        "Ask for a higher floor than the one needed, or add cases of the class: scores of inner "
+        "models, fitted to four fifths of a bag, are not quite those of the model itself.",
+        value,
+        floor,
+        "vovk2005",
+    )
+
+
+def settings_unsteady(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Rounds pick different settings, so these cases hardly tell which is best."""
+    if evaluation is None:
+        return
+    for found in evaluation.beside.picked:
+        most = float(found.shares.max())
+        if found.scheme != plan.headline_scheme or most >= HALF:
+            continue
+        rounds = evaluation.rounds[found.scheme].n_rounds
+        yield Finding(
+            "settings_unsteady",
+            "note",
+            found.candidate,
+            f"No setting of {plan.title(found.candidate)} was picked in half of the rounds",
+            f"The most frequent, {found.options[int(found.shares.argmax())]}, was picked in "
+            f"{percent(most, rounds)} of {count(rounds)} rounds (threshold: {level(HALF)}). The "
+            "figures include this; the setting of the final model is partly luck.",
+            "Take the setting on other grounds, or leave out those that hardly differ.",
+            most,
+            HALF,
+            "common_practice",
+        )
+
+
+def grid_too_narrow(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Most rounds pick the end of a grid of numbers, so the best may lie beyond."""
+    if evaluation is None:
+        return
+    for found in evaluation.beside.picked:
+        grid = plan.candidate(found.candidate).grid
+        if found.scheme != plan.headline_scheme or len(grid) != 1:
+            continue
+        (name, values), rounds = grid[0], evaluation.rounds[found.scheme].n_rounds
+        numbers = [v for v in values if isinstance(v, int | float) and not isinstance(v, bool)]
+        if len(numbers) < 3 or len(numbers) < len(values):
+            continue
+        at = int(np.argmax(found.shares))
+        if numbers[at] not in (min(numbers), max(numbers)) or found.shares[at] <= HALF:
+            continue
+        yield Finding(
+            "grid_too_narrow",
+            "note",
+            found.candidate,
+            f"The grid of {plan.title(found.candidate)} may end too early at {found.options[at]}",
+            f"The end of the grid was picked in {percent(float(found.shares[at]), rounds)} of "
+            f"{count(rounds)} rounds (threshold: {level(HALF)}).",
+            f"Try values of `{name}` beyond it.",
+            float(found.shares[at]),
+            HALF,
+            "common_practice",
+        )
+
+
+def not_told_from_chance(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Permuted labels do as well too often."""
+    if evaluation is None:
+        return
+    for check in evaluation.beside.chance:
+        test = check.test
+        if check.best or math.isnan(test.p) or test.p <= SURE:
+            continue
+        short = 1 / (test.permutations + 1) > SURE
+        yield Finding(
+            "not_told_from_chance",
+            "moderate" if short and not test.at_least_as_good else "grave",
+            check.candidate,
+            f"{capitalised(plan.title(check.candidate))} is not told from chance: p "
+            f"{decimal(test.p, 3)}",
+            f"With labels permuted it did at least as well in {count(test.at_least_as_good)} of "
+            f"{count(test.permutations)} tables; p = (k + 1)/(m + 1) = {decimal(test.p, 3)} "
+            f"(threshold: {decimal(SURE)})."
+            + (" With so few permutations p cannot be lower." if short else ""),
+            "Permute more often, at least 199 times."
+            if short
+            else "Do not rely on it: look at the features, or for more cases.",
+            test.p,
+            SURE,
+            "phipson_smyth2010",
+        )
+
+
+def permuted_off_chance(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """Permuted labels that are answered better or worse than by guessing."""
+    guess = {"balanced_accuracy": 1 / table.n_classes, "auc": 0.5}.get(plan.choosing_measure)
+    if evaluation is None or guess is None:
+        return
+    for check in evaluation.beside.chance:
+        values = check.permuted[~np.isnan(check.permuted)]
+        if check.best or check.candidate != evaluation.about or len(values) < 2:
+            continue
+        mean = float(values.mean())
+        error = float(values.std(ddof=1)) / math.sqrt(len(values))
+        if abs(mean - guess) <= max(OFF_CHANCE, 3 * error):
+            continue
+        yield Finding(
+            "permuted_off_chance",
+            "grave",
+            check.candidate,
+            f"With permuted labels {plan.title(check.candidate)} is {tenths(abs(mean - guess))} "
+            f"{'above' if mean > guess else 'below'} guessing",
+            f"Over {count(len(values))} permuted tables its mean is {decimal(mean, 3)}, where "
+            f"{decimal(guess, 3)} is expected (threshold: {tenths(OFF_CHANCE)} and three standard "
+            "errors). Something lets held-out cases be known, or keeps them from being judged "
+            "fairly.",
+            "Look for rows of one unit under several names, for columns that tell the unit, and "
+            "name the column of the unit if rows repeat.",
+            mean,
+            guess,
+            "own_leakage",
+        )
+
+
+def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The learning curve still rises: more cases would give a better model."""
+    if evaluation is None:
+        return
+    for curve in evaluation.beside.curves:
+        found = curve.found
+        if curve.part.candidate != evaluation.about or found.call != "rising":
+            continue
+        yield Finding(
+            "still_rising",
+            "note",
+            curve.of_class or curve.part.candidate,
+            f"{capitalised(plan.title(curve.part.candidate))} still learns from more "
+            f"{table.noun_for(curve.part.counted_by).plural}",
+            f"{found.reason} (threshold: the lower end, {tenths(found.gain.interval.low)}, is "
+            "above 0.)",
+            "Add cases, and judge the model again.",
+            found.gain.interval.low,
+            0,
+            "own_learning_curve",
+        )
