@@ -49,6 +49,17 @@ def of_plan(plan: Plan) -> dict[str, Any]:
     return {PLAN + name: value for name, value in values.items()}
 
 
+def not_carried_over(plan: Plan) -> tuple[str, ...]:
+    """Choices of a plan that Settings has no widget for, in words."""
+    asked = (
+        ("tuned settings", any(choice.tuned for choice in plan.candidates)),
+        ("a cut-off", plan.cut_off is not None),
+        ("a learning curve", plan.curve is not None),
+        ("a chance check", plan.permutations > 0),
+    )
+    return tuple(words for words, there in asked if there)
+
+
 def setting(key: str, name: str) -> str:
     """Name of the value of a scheme's or a candidate's setting."""
     return f"{key}.{name}"

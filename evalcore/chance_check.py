@@ -111,12 +111,15 @@ def chance_estimates(parts: Sequence[Judged], checks: Sequence[ChanceCheck]) -> 
         middle = float(np.median(permuted)) if len(permuted) else np.nan
         estimator = BEST if check.best else ESTIMATOR
         part = by_name[check.candidate]
+        n = int((chance_rounds(part.held.rounds).times_tested > 0).sum())
         for name, value in (
             ("p", check.test.p),
             (check.measure, check.observed),
             (f"{check.measure}_permuted_median", middle),
         ):
-            yield _figure(part, estimator, name, value, check.test.permutations, lacking)
+            yield _figure(
+                part, estimator, name, value, n=n, rounds=check.test.permutations, lacking=lacking
+            )
 
 
 def majority_estimates(parts: Sequence[Judged]) -> Iterator[Estimate]:
@@ -124,19 +127,20 @@ def majority_estimates(parts: Sequence[Judged]) -> Iterator[Estimate]:
     for part in parts:
         if part.units is not None:
             continue  # rows of a unit are no independent trials
-        found = majority_of(part)
+        found, rounds = majority_of(part), part.held.rounds
+        first = rounds.repeat == rounds.repeat[0]
+        n = int(rounds.test_sizes[first].sum())
         for name, value in (
             ("p", found.p),
             ("accuracy", found.accuracy),
             ("majority_share", found.majority_share),
         ):
-            yield _figure(part, MAJORITY, name, value, 1, 0)
+            yield _figure(part, MAJORITY, name, value, n=n, rounds=int(first.sum()), lacking=0)
 
 
 def _figure(
-    part: Judged, estimator: str, name: str, value: float, rounds: int, lacking: int
+    part: Judged, estimator: str, name: str, value: float, *, n: int, rounds: int, lacking: int
 ) -> Estimate:
-    n = len(part.held.labels)
     return Estimate(
         value, None, name, part.candidate, part.scheme, estimator, "", part.counted_by, n, rounds,
         lacking,

@@ -3,7 +3,7 @@
 from collections.abc import Iterator
 
 from evalcore.evaluation import Evaluation
-from evalcore.evidence import LEAST, LEVEL, falling_short, size_in_words
+from evalcore.evidence import LEAST, LEVEL, falling_short, matching, size_in_words
 from evalcore.figures import Finding
 from evalcore.measures import ALL_MEASURES
 from evalcore.plan import Plan
@@ -18,13 +18,15 @@ def interval_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) ->
         return
     worst = min(short, key=lambda line: line.coverage)
     name, tables = evaluation.about, worst.tables - worst.without_interval
+    fell, kinds = (len({x.scenario for x in given}) for given in (short, matching(evaluation)))
     share, least = percent(worst.coverage, tables), percent(LEAST, 1)
     yield Finding(
         "interval_falls_short",
         "moderate",
         name,
-        f"On simulated tables like this one the {level(LEVEL)} interval held the true value in "
-        f"{share}, at least {least} is asked for",
+        f"On {count(fell)} of {count(kinds)} kinds of simulated tables like this one in size the "
+        f"{level(LEVEL)} interval held the true value in {share} at worst, {least} is asked "
+        "for",
         f"{count(tables)} simulated tables ({size_in_words([worst])}) judged by "
         f"{plan.title(name)} with the same scheme: the interval of "
         f"{ALL_MEASURES[worst.measure].trade} held the true value in {share}. The threshold is "

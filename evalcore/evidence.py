@@ -193,9 +193,15 @@ def like(given: Headline, among: Sequence[Line] | None = None) -> tuple[Line, ..
     return tuple(line for line in known if _same_figure(line, given) and _alike(line, given))
 
 
+def matching(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
+    """Lines like the headline's; none while rounds that it rests on are missing."""
+    given = headline(evaluation) if _complete(evaluation) else None
+    return like(given, among) if given else ()
+
+
 def falling_short(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
-    """Lines like the headline's in which the interval did not keep its word."""
-    return tuple(line for line in _matching(evaluation, among) if line.short)
+    """Those of them in which the interval did not keep its word."""
+    return tuple(line for line in matching(evaluation, among) if line.short)
 
 
 def sentence(evaluation: Evaluation, among: Sequence[Line] | None = None) -> str:
@@ -206,7 +212,7 @@ def sentence(evaluation: Evaluation, among: Sequence[Line] | None = None) -> str
     bounds = _estimate(evaluation).interval
     if not _complete(evaluation) or bounds is None or not bounds.defined:
         return ""
-    found = _matching(evaluation, among)
+    found = matching(evaluation, among)
     tables = sum(line.tables - line.without_interval for line in found)
     shares = [line.coverage for line in found if not math.isnan(line.coverage)]
     if not shares:
@@ -253,11 +259,6 @@ def _complete(evaluation: Evaluation) -> bool:
         and evaluation.rounds[name].n_rounds == evaluation.planned.get(name)
         for name in names
     )
-
-
-def _matching(evaluation: Evaluation, among: Sequence[Line] | None) -> tuple[Line, ...]:
-    given = headline(evaluation) if _complete(evaluation) else None
-    return like(given, among) if given else ()
 
 
 def _same_figure(line: Line, given: Headline) -> bool:

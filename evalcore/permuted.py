@@ -76,7 +76,7 @@ def permuted_figures(table: Table, plan: Plan, number: int) -> Floats:
     found: Floats = np.full(len(plan.candidates), np.nan)
     try:
         rng = generator(plan.seed, *keys, "rounds")
-        drawn = draw(SCHEMES[choice.key], mixed, choice.values(), rng)
+        drawn = draw(SCHEMES[choice.key], mixed, plan.chance_settings, rng)
     except PlanError:
         return found
     part = chance_rounds(drawn)

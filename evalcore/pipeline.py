@@ -47,7 +47,10 @@ def candidates_in(
                 engine=plan.engine,
                 measure=plan.choosing_measure,
                 counted_by=plan.counted_by(table),
-                keep_inner=plan.learns_cut_off(choice) and scheme in ("", plan.headline_scheme),
+                # permuted tables are judged by the highest score: no cut-off is learned there
+                keep_inner=plan.learns_cut_off(choice)
+                and scheme in ("", plan.headline_scheme)
+                and not keys,
             )
         except Exception as error:  # a candidate that cannot be fitted must not end the rest
             where = scheme or "the whole table"

@@ -3,6 +3,7 @@
 import dataclasses
 import hashlib
 import json
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any, Literal
@@ -186,6 +187,17 @@ class Plan:
         """
         return "balanced_accuracy" if MEASURES[self.measure].per_class else self.measure
 
+    @property
+    def chance_settings(self) -> dict[str, Value]:
+        """The headline scheme's settings, with no more rounds than the chance check looks at.
+
+        Whole repeats of them. Fewer rounds are the same first ones, as more only append.
+        """
+        values = self.scheme(self.headline_scheme).values()
+        most = math.ceil(CHANCE_ROUNDS / int(values.get("folds", 1)))
+        few = {name: min(int(values[name]), most) for name in APPENDING if name in values}
+        return values | few
+
     def counted_by(self, table: Table) -> CountedBy:
         """How the headline counts on this table."""
         return "unit" if table.has_units and self.answered_from == "all" else "case"
@@ -282,7 +294,9 @@ class Plan:
             name: ALL_SCHEMES[c.key].n_rounds(table, c.values())
             for name, c in self.all_schemes.items()
         }
-        outer = sum(rounds.values()) + 1 + self.permutations * CHANCE_ROUNDS
+        scheme = SCHEMES[self.scheme(self.headline_scheme).key]
+        of_chance = self.permutations * scheme.n_rounds(table, self.chance_settings)
+        outer = sum(rounds.values()) + 1 + of_chance
         if choice.tuned:
             return outer * (1 + INNER_FOLDS * len(choice.options))
         learned = rounds[self.headline_scheme] + 1 if self.learns_cut_off(choice) else 0

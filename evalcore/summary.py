@@ -14,6 +14,7 @@ from evalcore.answer import (
     scheme_in_words,
     title,
 )
+from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.estimated import ESTIMATORS
 from evalcore.evaluation import Evaluation
@@ -50,7 +51,7 @@ class Summary:
         Where the claim does not reach, what was not stated included.
     cautions : tuple of str
     design : tuple of str
-        How cases were held out, in sentences.
+        How cases were held out, and what was learned or checked beside, in sentences.
     balance : TableOfText
         Units and rows of each class.
     flow : tuple of (what, count)
@@ -98,7 +99,7 @@ def summary(record: Record, evaluation: Evaluation) -> Summary:
         ),
         does_not_hold=does_not_hold(evaluation),
         cautions=(CAUTION,),
-        design=design(evaluation),
+        design=(*design(evaluation), *beside_in_sentences(evaluation)),
         balance=balance(evaluation),
         flow=flow(evaluation),
         estimates=TableOfText(ESTIMATE_HEADER, tuple(estimate_rows(evaluation))),
@@ -242,6 +243,10 @@ def plan_lines(evaluation: Evaluation) -> tuple[tuple[str, str], ...]:
         )
         for limit in plan.limits
     ]
+    lines += [("learning curve", plan.curve.written())] if plan.curve else []
+    lines += [("cut-off", plan.cut_off.written())] if plan.cut_off else []
+    if plan.permutations:
+        lines.append(("chance check", f"{count(plan.permutations)} permutations of the labels"))
     return (*lines, ("random seed", str(plan.seed)))
 
 

@@ -13,6 +13,7 @@ from evalcore.answer import (
     scheme_in_words,
     title,
 )
+from evalcore.beside_answer import beside_in_sentences
 from evalcore.checks_candidates import why_632_misleads
 from evalcore.engine import chunk_rounds
 from evalcore.errors import EvalError
@@ -96,6 +97,15 @@ def how_sure(evaluation: Evaluation) -> None:
     look.figure(charts.per_class(evaluation, evaluation.about, bounds=bounds), key="classes")
 
 
+def beside(evaluation: Evaluation) -> None:
+    """What was asked for beside the estimates, in sentences."""
+    said = beside_in_sentences(evaluation)
+    if said:
+        st.header("Settings picked, cut-off, more cases, chance", anchor=False)
+        for sentence in said:
+            st.write(look.safe(sentence))
+
+
 def why_it_varies(evaluation: Evaluation) -> None:
     """Histograms of single rounds, and in-bag against out-of-bag scores."""
     st.header("Why it varies", anchor=False)
@@ -157,6 +167,7 @@ def show(record: Record, evaluation: Evaluation, *, live: bool) -> None:
     found = findings(evaluation.table, evaluation.plan, evaluation)
     look.findings(found, empty="No check raised a doubt.")
     how_sure(evaluation)
+    beside(evaluation)
     why_it_varies(evaluation)
     tables(evaluation)
     look.caution(CAUTION)

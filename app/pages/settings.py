@@ -323,6 +323,20 @@ def offer(table: Table, values: Values, place: Any) -> Plan | None:
     return plan
 
 
+def say_what_stays_behind() -> None:
+    """What the evaluation at hand was asked for that this page has no widget for."""
+    try:
+        record = state.record()
+        left = choices.not_carried_over(record.plan) if record else ()
+    except EvalError:
+        return
+    if left:
+        look.soft(
+            f"The evaluation at hand was asked on the command line for {listed(left)}. An "
+            "evaluation started here leaves that out."
+        )
+
+
 def main() -> None:
     """The page."""
     table = state.table()
@@ -333,6 +347,7 @@ def main() -> None:
             st.switch_page("pages/upload.py")
         return
     place, values = st.container(), Values()
+    say_what_stays_behind()
     ask_use(table, values)
     ask_schemes(table, values)
     ask_candidates(table, values)

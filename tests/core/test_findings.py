@@ -36,6 +36,7 @@ BALANCED = {"measure": "balanced_accuracy", "features": 1}
 LINES = (
     line(**BALANCED, coverage=0.915),
     line(**BALANCED, coverage=0.887, monte_carlo_error=0.01, n=70, smallest_class=33),
+    line(**BALANCED, scenario="sep"),
     line(**BALANCED, n=200, smallest_class=100, coverage=0.912, monte_carlo_error=0.01),
 )
 
@@ -673,7 +674,9 @@ class TestIntervalFallsShort:
     def test_says_how_large_and_how_many_the_simulated_tables_were(self):
         finding = only("interval_falls_short", *simulated(60))
         assert "1,000 simulated tables (70 cases, about 33" in finding.seen.replace(NBSP, " ")
-        assert "held the true value in 88.7 %" in finding.title.replace(NBSP, " ")
+        title = finding.title.replace(NBSP, " ")
+        assert title.startswith("On 1 of 2 kinds of simulated tables like this one in size the 95 %")
+        assert "held the true value in 88.7 %" in title
 
     def test_of_the_headline_s_measure_and_level_alone(self):
         table, plan, made = simulated(60)

@@ -382,7 +382,7 @@ class TestPlanted:
         assert curve.ahead[0].high == pytest.approx(high, abs=5e-3)
 
 
-class TestNoLaw:
+class TestCalls:
     def test_flat(self):
         """Every unit is answered alike at every size: errors are ties, gains exactly 0."""
         curve = curve_of(planted([0.2] * 6, steady=True))
@@ -395,6 +395,17 @@ class TestNoLaw:
             f"the 95{NBSP}% interval), less than the 2{NBSP}points that would matter. "
             f"{curve.law.reason}"
         )
+
+    def test_equal_errors_are_ties_in_whatever_order_they_are_added(self):
+        """The same shares, fifths, at every size, each time on other units."""
+        table = table_of([0, 1] * 50)
+        rounds = rounds_of(table, subsets=25)
+        round_at, case_at = rounds.pairs
+        turn, rank = np.divmod(rounds.repeat[round_at], 6)
+        right = turn < ((case_at // 2) * 7 + 11 * rank) % 50 % 6
+        curve = curve_of(part_of(rounds, table.labels, right), "balanced_accuracy")
+        assert_allclose(curve.values, curve.values[0], rtol=1e-14)
+        assert "15 of 15 pairs" in curve.law.reason
 
     def test_a_loss_is_flat_too(self):
         curve = curve_of(planted([0.1, 0.12, 0.15, 0.2, 0.25, 0.3]))
@@ -411,6 +422,14 @@ class TestNoLaw:
             f"Learning from 160{NBSP}units instead of 74 brought +2{NBSP}points, and anything from "
         )
         assert curve.reason.endswith(f" cannot be told. {curve.law.reason}")
+
+    def test_a_law_alone_is_no_rise_and_a_small_gain_alone_is_not_flat(self):
+        curve = curve_of(planted([0.29, 0.285, 0.28, 0.275, 0.27, 0.265]), resamples=60)
+        assert isinstance(curve.law, PowerLaw)
+        assert 0 < curve.gain.value < 0.02 < curve.gain.interval.high
+        assert curve.gain.interval.low < 0
+        assert curve.call == "cannot tell"
+        assert curve.reason.endswith(", so whether more would help cannot be told.")
 
     def test_never_rising_without_a_law(self):
         """The last doubling brings much, but before it the error rose."""

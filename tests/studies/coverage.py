@@ -73,7 +73,13 @@ DEFAULT = (
     *(Cell(*at, (*STEADY, "tree")) for at in LARGE),
     *(Cell("units", n, ("logistic", "lda", "nearest_neighbours:k=5")) for n in (10, 20, 40)),
 )
+TUNED = tuple(
+    Cell(*at, (grid,), 400, bootstrap=False)
+    for at in (("gauss", 60), ("imb", 60), ("noise", 40), ("xor", 100))
+    for grid in ("nearest_neighbours:k=1/5/15", "logistic:C=0.01/1/100")
+)
 SLOW = (
+    *TUNED,
     *(Cell(*at, ("svm",), 400) for at in SMALL),
     *(
         Cell(scenario, n, ("forest",), 400, bootstrap=False)
@@ -126,7 +132,7 @@ def judge(cell: Cell, number: int) -> list[Row]:
     found = carried_out(table, plan)[0]
     ways: list[CountedBy] = ["unit", "case"] if table.has_units else ["case"]
     further = further_cases(cell.scenario)
-    scores = {name: scores_of(table, plan, name, further) for name in found.candidates}
+    scores = {name: scores_of(found, name, further) for name in found.candidates}
     rows = []
     for way in ways:
         counted = found if way == found.counted_by else _counted_by_case(found)
@@ -145,10 +151,13 @@ def judge(cell: Cell, number: int) -> list[Row]:
     return rows
 
 
-def scores_of(table: Table, plan: Plan, name: str, further: Cases) -> measures.Floats:
+def scores_of(found: Evaluation, name: str, further: Cases) -> measures.Floats:
     """What the model fitted on this table answers for further cases, by the plain pipeline."""
-    choice = plan.candidate(name)
-    model = estimator(CANDIDATES[choice.key], choice.values(), table, plan.seed)
+    table, choice = found.table, found.plan.candidate(name)
+    for settings in found.beside.picked:
+        if settings.candidate == name:
+            choice = choice.options[settings.on_all]
+    model = estimator(CANDIDATES[choice.key], choice.values(), table, found.plan.seed)
     model.fit(table.features, table.labels)
     answer = getattr(model, "predict_proba", None) or model.decision_function
     scores: measures.Floats = answer(further.features)
