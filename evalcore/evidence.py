@@ -29,8 +29,8 @@ MANY_FEATURES = 0.5  # features a case from which a table is of a kind of its ow
 STUDIED = {"cross_validation": "default", "bootstrap": "bootstrap"}
 WORDS = ("verdict", "comparison")  # lines about what was said, not about an interval
 NONE_LIKE = (
-    "No simulated table resembles this one (candidate, scheme, level, number of cases, smallest "
-    "class, features), so whether the interval keeps its word here is not measured."
+    "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
+    "cases, smallest class, features), so whether the interval keeps its word here is not measured."
 )
 
 
@@ -146,7 +146,7 @@ def headline(evaluation: Evaluation) -> Headline | None:
     """What the headline rests on; None where the study holds nothing of its kind.
 
     That is: at another level, or under another scheme than the recommended cross-validation or
-    bootstrap. A learned cut-off does not matter: the headline is about answers without it.
+    bootstrap.
     """
     table, plan = evaluation.table, evaluation.plan
     used = plan.scheme(evaluation.scheme)
@@ -246,7 +246,8 @@ def _estimate(evaluation: Evaluation) -> Estimate:
     """The headline's figure; of sensitivity, which has several classes, the balanced one."""
     measure = evaluation.plan.measure
     measure = "balanced_accuracy" if measure == "sensitivity" else measure
-    estimator = "mean_of_rounds" if measure == "auc" else "held_out_by_case"
+    # at a learned cut-off where there is one: such figures were not studied, so no line is alike
+    estimator = "mean_of_rounds" if measure == "auc" else evaluation.in_use
     return evaluation.estimate(measure, evaluation.about, estimator=estimator)
 
 

@@ -15,7 +15,7 @@ from evalcore.errors import EvalError
 from evalcore.figures import Interval
 from evalcore.judged import Judged
 from evalcore.measures import Floats
-from evalcore.power_law import REACH, NoPowerLaw, PowerLaw, power_law
+from evalcore.power_law import REACH, NoPowerLaw, PowerLaw, power_law, power_laws
 from evalcore.rounds import Rounds
 from evalcore.selection import stratified_bags
 from evalcore.shares import quotient
@@ -244,7 +244,11 @@ def _law(sizes: Floats, values: Floats) -> PowerLaw | NoPowerLaw:
         return NoPowerLaw(f"At {lacking} of {len(values)} sizes there is no value.")
     # equal errors must be ties, though their sums were rounded in another order
     errors = np.round(1 - values, 12).tolist()
-    return power_law(np.rint(sizes).astype(np.intp).tolist(), errors)
+    return power_law(_whole(sizes), errors)
+
+
+def _whole(sizes: Floats) -> list[int]:
+    return [round(size) for size in sizes.tolist()]
 
 
 def _ahead(
@@ -253,14 +257,14 @@ def _ahead(
     """Predictions with their bands, and how many resamples have no law."""
     if isinstance(law, NoPowerLaw):
         return (), 0
-    fitted = [_law(sizes, values) for values in drawn]
-    laws = [found for found in fitted if isinstance(found, PowerLaw)]
+    fitted = power_laws(_whole(sizes), np.round(1 - drawn, 12))
+    known = ~np.isnan(fitted.c)
     furthest = math.floor(REACH * law.largest)
     ahead = []
     for at in sorted({min(n, furthest), furthest}):
-        band = percentile([1 - found.predict(at) for found in laws], level=level)
+        band = percentile(1 - fitted.predict(at)[known], level=level)
         ahead.append(Prediction(at, 1 - law.predict(at), band.low, band.high))
-    return tuple(ahead), len(fitted) - len(laws)
+    return tuple(ahead), int((~known).sum())
 
 
 def _gain(sizes: Floats, values: Floats, drawn: Floats, level: float) -> Gain:
@@ -287,11 +291,11 @@ def _reason(
     small, large = np.rint(sizes[[gain.start, -1]]).astype(int).tolist()
     learning = f"Learning from {noun.counted(large)} instead of {count(small)}"
     sure = f"{confidence(ends.level)} interval"
-    most = tenths(ends.high) if ends.high > 0 else "nothing"
+    most = f"{tenths(ends.high)} at most" if ends.high > 0 else "nothing"
     said = {
         "rising": f"{tenths(gain.value)} ({sure}: {tenths(ends.low)} to {tenths(ends.high)}), so "
         "the curve was still rising.",
-        "flat": f"{most} at most (upper end of the {sure}), less than the "
+        "flat": f"{most} (upper end of the {sure}), less than the "
         f"{points(WORTHWHILE, signed=False)} that would matter.",
         "cannot tell": f"{points(gain.value)}, and anything from {points(ends.low)} to "
         f"{points(ends.high)} fits ({sure}), so whether more would help cannot be told.",

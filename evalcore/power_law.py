@@ -8,6 +8,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from evalcore.errors import EvalError
 from evalcore.measures import Floats
@@ -157,17 +158,62 @@ def power_law(
     n, error, weight = _checked(sizes, errors, weights)
     if len(n) < LEAST_SIZES:
         return NoPowerLaw(f"A curve needs at least {LEAST_SIZES} sizes; there are {len(n)}.")
-    if _chance_of_falling(error) > LARGEST_CHANCE:
+    found = _fitted(n, error[None], weight)
+    if not found.falls[0]:
         return NoPowerLaw(
             "The error does not clearly fall as cases are added: it is no lower at the larger "
-            f"size in {_pairs_against(error)} of {math.comb(len(n), 2)} pairs of sizes. So no "
-            "curve is drawn beyond the points."
+            f"size in {_pairs_against(error[None])[0]} of {math.comb(len(n), 2)} pairs of sizes. "
+            "So no curve is drawn beyond the points."
         )
-    c = _best_speed(n, error, weight)
-    a, b, loss = _line(n**-c, error, weight)
-    if not b > 0:
+    a, b, c, loss = (float(part[0]) for part in (found.a, found.b, found.c, found.loss))
+    if math.isnan(c):
         return NoPowerLaw("The error falls, but no curve of this form falls with it.")
     return PowerLaw(a, b, c, int(n[0]), int(n[-1]), math.sqrt(loss / float(weight.sum())))
+
+
+@dataclass(frozen=True, eq=False)
+class PowerLaws:
+    """Curves fitted to many series of errors at the same sizes; nan where there is none.
+
+    Attributes
+    ----------
+    a, b, c, loss : ndarray, shape (B,)
+        As in `PowerLaw`; `loss` is the weighted sum of squared distances.
+    falls : ndarray of bool, shape (B,)
+        Whether the points clearly fall.
+    """
+
+    a: Floats
+    b: Floats
+    c: Floats
+    loss: Floats
+    falls: NDArray[np.bool_]
+
+    def predict(self, n: float) -> Floats:
+        """Error at n cases of each curve, shape (B,); how far is for the caller to bound."""
+        return np.asarray(self.a + self.b * n**-self.c)
+
+
+def power_laws(sizes: Sequence[int], errors: Floats) -> PowerLaws:
+    """`power_law` of many series at once, all sizes weighing the same.
+
+    Parameters
+    ----------
+    sizes : sequence of int, length m
+        At least four, rising.
+    errors : ndarray, shape (B, m)
+        >= 0; a series with nan has no curve.
+
+    Examples
+    --------
+    >>> sizes = [20, 40, 80, 160]
+    >>> falling = [0.05 + 0.8 * n**-0.6 for n in sizes]
+    >>> found = power_laws(sizes, np.array([falling, falling[::-1]]))
+    >>> found.c.round(4).tolist(), found.predict(320).round(4).tolist()
+    ([0.6, nan], [0.0751, nan])
+    """
+    n = np.asarray(sizes, dtype=np.float64)
+    return _fitted(n, np.asarray(errors, dtype=np.float64), np.ones(len(n)))
 
 
 def _checked(
@@ -196,49 +242,71 @@ def _checked(
     return n[order], error[order], weight[order]
 
 
-def _pairs_against(error: Floats) -> int:
-    """Pairs of sizes whose error is not lower at the larger one."""
-    later = np.triu(np.ones((len(error), len(error)), dtype=bool), k=1)
-    return int(((error[:, None] <= error[None, :]) & later).sum())
+def _fitted(n: Floats, error: Floats, weight: Floats) -> PowerLaws:
+    """Curves of errors of shape (B, m) at rising sizes."""
+    known = ~np.isnan(error).any(axis=1)
+    falls = known & (_chance_of_falling(len(n))[_pairs_against(error)] <= LARGEST_CHANCE)
+    fitted = np.full((4, len(error)), np.nan)
+    c = _best_speed(n, error[falls], weight)
+    a, b, loss = _line(_power(n, c), error[falls], weight)
+    fitted[:, falls] = np.where(b > 0, [a, b, c, loss], np.nan)
+    return PowerLaws(fitted[0], fitted[1], fitted[2], fitted[3], falls)
 
 
-def _chance_of_falling(error: Floats) -> float:
-    """Chance that a random order of different errors has no more pairs that do not fall.
+def _pairs_against(error: Floats) -> NDArray[np.intp]:
+    """Pairs of sizes whose error is not lower at the larger one, shape (B,)."""
+    m = error.shape[1]
+    later = np.triu(np.ones((m, m), dtype=bool), k=1)
+    return np.asarray(((error[:, :, None] <= error[:, None, :]) & later).sum(axis=(1, 2)))
+
+
+def _chance_of_falling(m: int) -> Floats:
+    """Chance that a random order of m different errors has at most k pairs that do not fall.
 
     The number of orders of m values with k pairs out of place is the product of
     1 + x + ... + x^(i-1), i = 1..m, at x^k. A tie counts as a pair that does not fall.
     """
     orders = np.ones(1)
-    for i in range(2, len(error) + 1):
+    for i in range(2, m + 1):
         orders = np.convolve(orders, np.full(i, 1 / i))  # divided at once: 100! is no float
-    return float(orders[: _pairs_against(error) + 1].sum())
+    return np.cumsum(orders)
 
 
-def _line(x: Floats, y: Floats, weight: Floats) -> tuple[float, float, float]:
-    """Weighted least squares of y = a + b x with a >= 0: a, b and the sum of squares."""
+def _power(n: Floats, c: Floats) -> Floats:
+    """n^-c, shape (B, m)."""
+    return np.asarray(n ** -np.atleast_1d(c)[:, None])
+
+
+def _line(x: Floats, y: Floats, weight: Floats) -> tuple[Floats, Floats, Floats]:
+    """Weighted least squares of y = a + b x with a >= 0: a, b and the sum of squares, (B,)."""
     share = weight / weight.sum()
-    middle_x, middle_y = float(share @ x), float(share @ y)
+    middle_x, middle_y = x @ share, y @ share
     # n^-c hardly varies where c is small: centred, nothing is lost to rounding
-    b = float(share @ ((x - middle_x) * (y - middle_y)) / (share @ (x - middle_x) ** 2))
+    from_x, from_y = x - middle_x[:, None], y - middle_y[:, None]
+    b = (from_x * from_y) @ share / (from_x**2 @ share)
     a = middle_y - b * middle_x
-    if a < 0:
-        a, b = 0.0, float((share * x) @ y / ((share * x) @ x))
-    return a, b, float(weight @ (y - a - b * x) ** 2)
+    through_zero = (x * y) @ share / (x * x @ share)
+    b = np.where(a < 0, through_zero, b)
+    a = np.maximum(a, 0.0)
+    return a, b, (y - a[:, None] - b[:, None] * x) ** 2 @ weight
 
 
-def _best_speed(n: Floats, error: Floats, weight: Floats) -> float:
-    """The c of least squares: best of a grid, then golden section between its neighbours."""
+def _best_speed(n: Floats, error: Floats, weight: Floats) -> Floats:
+    """The c of least squares: best of a grid, then golden section between its neighbours, (B,)."""
 
-    def loss(c: float) -> float:
-        return _line(n**-c, error, weight)[2]
+    def loss(c: Floats) -> Floats:
+        return _line(_power(n, c), error, weight)[2]
 
+    if not len(error):
+        return np.empty(0)
     grid = np.geomspace(SLOWEST, STEEPEST, 400)
-    best = int(np.argmin([loss(float(c)) for c in grid]))
-    low, high = float(grid[max(best - 1, 0)]), float(grid[min(best + 1, len(grid) - 1)])
+    best = np.array([loss(np.full(len(error), c)) for c in grid]).argmin(axis=0)
+    low, high = grid[np.maximum(best - 1, 0)], grid[np.minimum(best + 1, len(grid) - 1)]
     golden = (math.sqrt(5) - 1) / 2
     for _ in range(80):
         left, right = high - golden * (high - low), low + golden * (high - low)
-        low, high = (low, right) if loss(left) < loss(right) else (left, high)
+        lower = loss(left) < loss(right)
+        low, high = np.where(lower, low, left), np.where(lower, right, high)
     middle = (low + high) / 2
     # golden section never tries the ends themselves
-    return min((middle, float(grid[best])), key=loss)
+    return np.asarray(np.where(loss(middle) <= loss(grid[best]), middle, grid[best]))

@@ -10,6 +10,7 @@ from evalcore import evidence
 from evalcore.answer import best_sentence
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose, choose_written
+from evalcore.cut_off import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.evidence import Headline, Line, falling_short, headline, like, read, sentence
 from evalcore.plan import Plan, recommended_schemes
@@ -243,10 +244,19 @@ class TestSentence:
             "20 to 30 units of 6 rows, about 9 to 12 in the smallest class; 1 kind of data"
         )
 
+    def test_figures_at_a_learned_cut_off_were_not_studied(self, evaluation):
+        rule = CutOffRule("b", "floor", floor=0.8)
+        plan = dataclasses.replace(evaluation.plan, schemes=(CV,), cut_off=rule)
+        found = carried_out(evaluation.table, plan)[0]
+        assert headline(found) == asked(estimator="at_cut_off")
+        assert said(found, line()).startswith("No simulated table resembles this one (")
+        auc = planned(found, measure="auc")
+        assert headline(auc) == asked(measure="auc", estimator="mean_of_rounds_alone")
+
     def test_where_nothing_is_alike(self, evaluation):
         expected = (
-            "No simulated table resembles this one (candidate, scheme, level, number of cases, "
-            "smallest class, features), so whether the interval keeps its word here is not "
+            "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
+            "cases, smallest class, features), so whether the interval keeps its word here is not "
             "measured."
         )
         assert said(evaluation) == expected

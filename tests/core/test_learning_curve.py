@@ -391,7 +391,7 @@ class TestCalls:
         assert (curve.call, curve.ahead) == ("flat", ())
         assert (curve.gain.interval.low, curve.gain.interval.high) == (0.0, 0.0)
         assert curve.reason == (
-            f"Learning from 160{NBSP}units instead of 74 brought nothing at most (upper end of "
+            f"Learning from 160{NBSP}units instead of 74 brought nothing (upper end of "
             f"the 95{NBSP}% interval), less than the 2{NBSP}points that would matter. "
             f"{curve.law.reason}"
         )

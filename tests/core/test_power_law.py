@@ -9,7 +9,14 @@ from hypothesis import strategies as st
 from scipy import optimize
 
 from evalcore.errors import EvalError
-from evalcore.power_law import NoPowerLaw, PowerLaw, _chance_of_falling, power_law
+from evalcore.power_law import (
+    NoPowerLaw,
+    PowerLaw,
+    _chance_of_falling,
+    _pairs_against,
+    power_law,
+    power_laws,
+)
 
 from .checks import cases, exactly
 
@@ -137,7 +144,24 @@ class TestRefused:
         ]
         for order, own in list(zip(orders, against, strict=True))[:: max(1, len(orders) // 20)]:
             expected = sum(k <= own for k in against) / len(orders)
-            assert _chance_of_falling(order) == pytest.approx(expected, abs=1e-12)
+            assert _pairs_against(order[None])[0] == own
+            assert _chance_of_falling(m)[own] == pytest.approx(expected, abs=1e-12)
+
+    def test_many_at_once_are_fitted_as_one_by_one(self):
+        rng = np.random.default_rng(6)
+        errors = 0.1 + 2.0 * np.array(SIZES) ** -0.7 + rng.normal(0, 0.004, (40, len(SIZES)))
+        errors[3], errors[5, 0] = errors[3, ::-1], np.nan
+        together = power_laws(SIZES, errors)
+        for at, series in enumerate(errors):
+            alone = NoPowerLaw("nan") if at == 5 else power_law(SIZES, series)
+            if isinstance(alone, PowerLaw):
+                # the sum of squares is flat at its least: the curve is sharper than its parts
+                for n in (SIZES[0], SIZES[-1], 600):
+                    assert together.predict(n)[at] == pytest.approx(alone.predict(n), abs=1e-10)
+            else:
+                assert np.isnan(together.c[at])
+        assert np.isnan(together.c[[3, 5]]).all()
+        assert 30 < (~np.isnan(together.c)).sum() < 40
 
     def test_seldom_fitted_to_points_without_a_trend(self):
         rng = np.random.default_rng(5)
