@@ -675,7 +675,9 @@ class TestIntervalFallsShort:
         finding = only("interval_falls_short", *simulated(60))
         assert "1,000 simulated tables (70 cases, about 33" in finding.seen.replace(NBSP, " ")
         title = finding.title.replace(NBSP, " ")
-        assert title.startswith("On 1 of 2 kinds of simulated tables like this one in size the 95 %")
+        assert title.startswith(
+            "On 1 of 2 kinds of simulated tables like this one in size the 95 %"
+        )
         assert "held the true value in 88.7 %" in title
 
     def test_of_the_headline_s_measure_and_level_alone(self):

@@ -151,14 +151,18 @@ class TestPureNoise:
 
     def test_folds_over_repeated_rows_would_prefer_it(self):
         """The same rule with every copy taken for a case of its own, as a loop over rows does."""
-        memorised = []
-        for table, bags, seed in self.tables(10):
-            for bag in bags[:5]:
+        shares = []
+        for table, bags, seed in self.tables(20):
+            memorised = []
+            for bag in bags[:10]:
                 rows = np.repeat(np.arange(40), bag)
                 copied = table_of(table.labels[rows].tolist(), features=table.features[rows])
                 once = np.ones((1, len(rows)), dtype=np.uint8)
                 memorised.append(picks(copied, once, NEAR, seed=seed).picked[0] == 0)
-        assert np.mean(memorised) > 0.9
+            shares.append(np.mean(memorised))
+        error = np.std(shares, ddof=1) / np.sqrt(len(shares))
+        # about nine bags in ten, where a third would be fair
+        assert np.mean(shares) - 2 * error > 0.75
 
 
 def blurred(n, n_classes, *, shift, seed):
@@ -359,7 +363,7 @@ class TestTies:
         assert right.all()
         assert found.picked.tolist() == [smoothest] * 3
 
-    @pytest.mark.parametrize("values", itertools.permutations([np.nan, 0.5, 0.25]))
+    @pytest.mark.parametrize("values", [*itertools.permutations([np.nan, 0.5, 0.25])])
     def test_an_undefined_value_never_wins(self, values, monkeypatch):
         given_ = iter(values)
         monkeypatch.setattr(

@@ -8,6 +8,7 @@ from evalcore.answers import Answers, Reduced
 from evalcore.binomial import wilson
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
+from evalcore.cut_off import CutOffRule
 from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
 from evalcore.judged import share_interval
@@ -15,9 +16,10 @@ from evalcore.limit import Limit
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
-from evalcore.verdict import Verdict, judge, overall, verdicts
+from evalcore.verdict import Verdict, judge, overall, verdicts, verdicts_at_cut_off
 
 from .checks import table_of
+from .test_at_cut_off import scored
 
 LIMIT = Limit("accuracy", 0.8)
 
@@ -155,3 +157,98 @@ def test_without_a_correction_the_best_of_several_is_not_shown():
     found = evaluation(right, labels=[0] * 30 + [1] * 10, never=range(31, 40))
     assert np.isnan(found.corrected("accuracy").value)
     assert verdicts(found, "lda")[0].word == "not shown yet"
+
+
+class TestAtCutOff:
+    """Forty cases of each class, held out in halves in turn, twice; cut-offs of 0.25 throughout.
+
+    Inner scores are 0.2 for a and 0.3 for b; held out, cases that are right at the cut-off have
+    0.1 if they are of a and 0.4 if they are of b, the others the other way round. By the highest
+    score all are a.
+    """
+
+    LABELS = np.arange(80) // 40
+    COST = CutOffRule("b", "cost")
+    LIMITS = (LIMIT, Limit("balanced_accuracy", 0.8), Limit("sensitivity", 0.8, "b"))
+
+    def found(self, right, rule=COST, *, limits=LIMITS, measure="accuracy"):
+        """Candidates that are right at the cut-off as said, (candidates, repeats, n)."""
+        half = np.arange(80) % 2
+        inner = np.where(self.LABELS, 0.3, 0.2)
+        bags = [np.where(half == r % 2, np.nan, inner) for r in range(4)]
+        given = {}
+        for name, repeats in zip(("naive_bayes", "logistic"), right, strict=False):
+            score = [np.where(np.asarray(r) == (self.LABELS == 1), 0.4, 0.1) for r in repeats]
+            held = [np.where(half == r % 2, score[r // 2], np.nan) for r in range(4)]
+            given[name] = held, bags, inner
+        return scored(given, self.LABELS, rule, repeat=[0, 0, 1, 1], limits=limits, measure=measure)
+
+    def always(self, rule=COST):
+        return self.found(np.ones((1, 2, 80), dtype=bool), rule)
+
+    @staticmethod
+    def words(given):
+        return [verdict.word for verdict in given]
+
+    def test_answers_at_the_cut_off_are_judged(self):
+        found = self.always()
+        fall_short = ["shown to fall short"] * 3
+        assert self.words(verdicts(found, "naive_bayes")) == fall_short
+        at = verdicts_at_cut_off(found, "naive_bayes")
+        assert self.words(at) == ["shown"] * 3
+        assert [(v.value, v.n) for v in at] == [(1, 80), (1, 40), (1, 40)]
+        # all right, and nothing varies: of 80 and of 40 the exact bound, 0.05 to the 1/n
+        for verdict, n in ((at[0], 80), (at[2], 40)):
+            exact = 0.05 ** (1 / n)
+            assert verdict.at_least == pytest.approx(
+                min(exact, wilson(1, n, level=0.9).low), rel=1e-12
+            )
+            assert verdict.at_most == 1
+        none_right = self.found(np.zeros((1, 2, 80), dtype=bool))
+        assert self.words(verdicts_at_cut_off(none_right, "naive_bayes")) == fall_short
+
+    def test_none_without_a_cut_off(self):
+        found = evaluation(first(40, 40), labels=[0, 1] * 20)
+        assert verdicts_at_cut_off(found, "lda") == ()
+
+    def test_chosen_on_these_cases_it_is_never_shown(self):
+        chosen = verdicts_at_cut_off(self.always(CutOffRule("b", "fixed", at=0.25)), "naive_bayes")
+        dated = CutOffRule("b", "fixed", at=0.25, set_on="2026-01-15")
+        before = verdicts_at_cut_off(self.always(dated), "naive_bayes")
+        assert self.words(before) == ["shown"] * 3
+        assert self.words(chosen) == ["not shown yet"] * 3
+        # the bounds would do
+        assert [v.at_least for v in chosen] == [v.at_least for v in before]
+        assert min(v.at_least for v in chosen) > 0.8
+        assert overall(chosen) == "not shown yet"
+        # what falls short with a cut-off picked by eye falls short
+        high = CutOffRule("b", "fixed", at=0.5)
+        fall_short = verdicts_at_cut_off(self.always(high), "naive_bayes")
+        assert self.words(fall_short) == ["shown to fall short"] * 3
+
+    def test_of_several_it_starts_from_the_rate_corrected_at_the_cut_off(self):
+        rng = np.random.default_rng(3)
+        right = [[rng.random(80) < 0.9] * 2 for _ in range(2)]
+        found = self.found(right)
+        values = [v.pooled_value("accuracy") for v in (at.part for at in found.beside.cut_offs)]
+        best = ("naive_bayes", "logistic")[int(np.argmax(values))]
+        verdict = verdicts_at_cut_off(found, best)[0]
+        corrected = found.corrected("accuracy", at_cut_off=True).value
+        assert verdict.value == max(values)
+        # without correction for the cut-off it would start from 1/2, where all are called a
+        assert 0.5 < corrected < verdict.value
+        part, whole = found.at_cut_off(best).part, int(corrected * 80)
+        cautious = with_model_variance(corrected, 80, part.cautious_tau2(None), level=0.9)
+        exact = beta.ppf(0.05, whole, 80 - whole + 1)
+        assert verdict.at_least == pytest.approx(min(cautious.low, exact), rel=1e-12)
+        alone = self.found(right[int(np.argmax(values)) :][:1])
+        (one, *_) = verdicts_at_cut_off(alone, "naive_bayes")
+        assert one.value == verdict.value
+        assert one.at_least > verdict.at_least
+
+    def test_balanced_accuracy_of_a_class_never_held_out_has_nobody_behind_it(self):
+        limits = (Limit("balanced_accuracy", 0.8),)
+        right = np.ones((1, 2, 40), dtype=bool)
+        found = evaluation(right, labels=[0] * 30 + [1] * 10, limits=limits, never=range(30, 40))
+        (verdict,) = verdicts(found, "lda")
+        assert (verdict.word, verdict.n) == ("not shown yet", 0)
