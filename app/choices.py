@@ -1,6 +1,6 @@
 """Plans and roles to the values behind widgets, and back: the keys of all widgets in one place."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from evalcore.candidates import CANDIDATES
@@ -53,11 +53,19 @@ def not_carried_over(plan: Plan) -> tuple[str, ...]:
     """Choices of a plan that Settings has no widget for, in words."""
     asked = (
         ("tuned settings", any(choice.tuned for choice in plan.candidates)),
+        ("a scheme chosen twice", _twice(plan.schemes)),
+        ("a candidate chosen twice", _twice(plan.candidates)),
         ("a cut-off", plan.cut_off is not None),
         ("a learning curve", plan.curve is not None),
         ("a chance check", plan.permutations > 0),
+        ("every round fitted on its own", plan.engine == "plain"),
     )
     return tuple(words for words, there in asked if there)
+
+
+def _twice(chosen: Sequence[Choice]) -> bool:
+    """Whether one of them stands there more than once, with different settings."""
+    return len({choice.key for choice in chosen}) < len(chosen)
 
 
 def setting(key: str, name: str) -> str:

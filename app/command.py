@@ -11,7 +11,7 @@ from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import Choice, choose_written
 from evalcore.cluster import on_cluster
-from evalcore.cut_off import CutOffRule
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
 from evalcore.intake import make_table, noun_from

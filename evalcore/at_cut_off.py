@@ -10,7 +10,6 @@ from evalcore.answers import Answers, HeldOut, unit_means
 from evalcore.candidates import CANDIDATES
 from evalcore.cut_off import (
     AtShare,
-    CutOffRule,
     WithUndecided,
     at_share,
     calls,
@@ -18,6 +17,7 @@ from evalcore.cut_off import (
     learned_by_round,
     with_undecided,
 )
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.estimated import default_interval, n_behind
 from evalcore.figures import CountedBy, Estimate, Interval
 from evalcore.judged import Judged

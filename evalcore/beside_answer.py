@@ -5,11 +5,17 @@ from collections.abc import Iterator
 
 from evalcore.answer import measure_name
 from evalcore.at_cut_off import AtCutOff
+from evalcore.beside import Curve
 from evalcore.chance_check import ChanceCheck
+from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
+from evalcore.figures import Interval
 from evalcore.judged import share_interval
+from evalcore.measures import ALL_MEASURES
 from evalcore.picked import Picked
 from evalcore.wording import (
+    NBSP,
+    Noun,
     capitalised,
     class_name,
     count,
@@ -18,12 +24,19 @@ from evalcore.wording import (
     listed,
     n_equals,
     percent,
+    reading,
     with_interval,
 )
 
+P_DIGITS = 4  # with the most permutations allowed p is 1 in 10,000, and never 0
+
 
 def beside_in_sentences(evaluation: Evaluation) -> tuple[str, ...]:
-    """Everything that was asked for beside the estimates, about the candidate of the answer."""
+    """Everything that was asked for beside the estimates.
+
+    Settings picked of every candidate; all else of the candidate of the answer, and chance of the
+    best of all besides.
+    """
     return (
         *picked_sentences(evaluation),
         *cut_off_sentences(evaluation),
@@ -58,54 +71,81 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     if found is None:
         return
     yield _where(evaluation, found)
+    if found.undefined == len(found.cut_offs):
+        return  # there are no answers to speak of
     yield _rates(evaluation, found)
     yield from _in_use(evaluation, found)
     if found.undecided:
         kept, sent = found.undecided.right_of_decided, found.undecided.sent
-        noun, n = evaluation.table.noun_for(evaluation.counted_by), _n(found)
+        noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)
+        others = "" if math.isnan(kept) else f" Of the others {percent(kept, n)} are right;"
+        wrong = percent(found.undecided.right_counting_undecided_wrong, n)
+        counting = "counting those left undecided as wrong, "
         yield (
-            f"A probability below {decimal(found.rule.undecided_below)} is left to a person: "
-            f"{percent(sent, n)} of {noun.plural}. Of the others {percent(kept, n)} are right; "
-            "counting those left undecided as wrong, "
-            f"{percent(found.undecided.right_counting_undecided_wrong, n)} of all."
+            f"A probability below {reading(found.rule.undecided_below)} is left to a person: "
+            f"{percent(sent, n)} of {noun.plural}.{others} "
+            f"{counting if others else capitalised(counting)}{wrong} of all."
         )
 
 
-def _n(found: AtCutOff) -> int:
-    return len(found.part.held.labels)
-
-
 def _where(evaluation: Evaluation, found: AtCutOff) -> str:
-    rule, spread = found.rule, found.spread
-    noun = evaluation.table.noun_for(evaluation.counted_by)
+    rule, noun = found.rule, evaluation.table.noun_for(evaluation.counted_by)
     name = class_name(rule.of_class)
+    called = _called(found, noun)
     if rule.by == "fixed":
         how = f"set on {rule.set_on}" if rule.set_on else "chosen on these cases"
-        return f"A {noun.singular} is called {name} from {_cut(found.on_all)} up ({how})."
+        return f"{called} ({how})."
     by = (
-        f"a miss costs {rule.miss:g}, a false alarm {rule.alarm:g}"
+        f"a miss costs {reading(rule.miss)}, a false alarm {reading(rule.alarm)}"
         if rule.by == "cost"
         else f"at least {level(rule.floor)} of {name} {noun.plural} are to be found"
     )
+    learned = "" if math.isnan(found.on_all) else ", learned from held-out scores inside the bag"
+    return f"{called}{learned} ({by}); {_in_rounds(found)}."
+
+
+def _called(found: AtCutOff, noun: Noun) -> str:
+    """From which score on the model in use calls the class; ends without a number in words."""
+    name, cut_off = class_name(found.rule.of_class), found.on_all
+    if math.isnan(cut_off):
+        return f"No cut-off for {name} could be learned from all {noun.plural}"
+    if math.isinf(cut_off):
+        each = "Every" if cut_off < 0 else "No"
+        return f"{each} {noun.singular} is called {name}, whatever its score"
+    stated = found.rule.by == "fixed"
     return (
-        f"A {noun.singular} is called {name} from {_cut(found.on_all)} up, learned from held-out "
-        f"scores inside the bag ({by}); in {level(spread.level)} of rounds it fell between "
-        f"{_cut(spread.low)} and {_cut(spread.high)}."
+        f"A {noun.singular} is called {name} from "
+        f"{reading(cut_off) if stated else decimal(cut_off, 3)} up"
     )
 
 
-def _cut(value: float) -> str:
-    if math.isinf(value):
-        return "any score" if value < 0 else "no score"
-    return decimal(value, 3)
+def _in_rounds(found: AtCutOff) -> str:
+    """Where the cut-offs of rounds fell, and how many rounds have none."""
+    spread, rounds = found.spread, len(found.cut_offs)
+    if not spread.defined:
+        return f"it could be learned in none of {count(rounds)} rounds"
+    lacking = (
+        f", {count(found.undefined)} of {count(rounds)} left out in which it could not be learned"
+        if found.undefined
+        else ""
+    )
+    return (
+        f"in {level(spread.level)} of rounds it fell between {_end(spread.low)} and "
+        f"{_end(spread.high)}{lacking}"
+    )
+
+
+def _end(cut_off: float) -> str:
+    if math.isinf(cut_off):
+        return "calling all" if cut_off < 0 else "calling none"
+    return decimal(cut_off, 3)
 
 
 def _rates(evaluation: Evaluation, found: AtCutOff) -> str:
     parts = []
     for k, name in enumerate(evaluation.table.classes):
         bounds = share_interval(evaluation.plan.level, found.part, k)
-        value = found.part.pooled_value("sensitivity", k)
-        n = int((found.part.held.labels == k).sum())
+        value, n = found.part.pooled_value("sensitivity", k), n_behind(found.part, k)
         what = measure_name(evaluation.table, evaluation.plan, "sensitivity", name)
         parts.append(f"{what} {with_interval(value, bounds, n)}, {n_equals(n)}")
     return f"At it, held out: {'; '.join(parts)}."
@@ -113,35 +153,53 @@ def _rates(evaluation: Evaluation, found: AtCutOff) -> str:
 
 def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
     """What the answers are worth at the shares of the class in use."""
-    noun, n = evaluation.table.noun_for(evaluation.counted_by), _n(found)
-    name = class_name(found.rule.of_class)
-    stated = "" if found.rule.share_low else ", the share of this table"
+    noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)
+    name, stated = class_name(found.rule.of_class), bool(found.rule.share_low)
     for at in found.at_shares:
-        cost = (
-            f", at an expected cost of {decimal(at.cost, 3)} a {noun.singular}"
-            if found.rule.by == "cost"
-            else ""
-        )
+        # a share that was stated is repeated as it was, not rounded by the size of the table
+        share = level(at.share) if stated else percent(at.share, n)
+        said = [f"{percent(at.called, n)} are called {name}"]
+        if not math.isnan(at.right_when_called):
+            said.append(f", rightly in {percent(at.right_when_called, n)}")
+        if not math.isnan(at.right_when_not_called):
+            right = percent(at.right_when_not_called, n)
+            said.append(f"; of those not called {right} are not {name}")
+        if found.rule.by == "cost":
+            said.append(f"; the expected cost is {decimal(at.cost, 3)} a {noun.singular}")
         yield (
-            f"Where {percent(at.share, n)} of {noun.plural} are {name}{stated}: "
-            f"{percent(at.called, n)} are called {name}, rightly in "
-            f"{percent(at.right_when_called, n)}; of those not called "
-            f"{percent(at.right_when_not_called, n)} are none{cost}."
+            f"Where {share} of {noun.plural} are {name}"
+            f"{'' if stated else ', the share of this table'}: {''.join(said)}."
         )
 
 
 def curve_sentences(evaluation: Evaluation) -> Iterator[str]:
     """What more cases would bring the candidate of the answer."""
     for curve in evaluation.beside.curves:
-        if curve.part.candidate != evaluation.about:
-            continue
-        what = measure_name(evaluation.table, evaluation.plan, curve.found.measure, curve.of_class)
-        ahead = "".join(
-            f" Continued to {count(a.n)} {evaluation.table.noun_for(curve.part.counted_by).plural}:"
-            f" {percent(a.value, a.n)} ({percent(a.low, a.n)} to {percent(a.high, a.n)})."
-            for a in curve.found.ahead
+        if curve.part.candidate == evaluation.about:
+            what = measure_name(
+                evaluation.table, evaluation.plan, curve.found.measure, curve.of_class
+            )
+            ahead = _ahead(evaluation, curve)
+            yield f"Learning curve, {what}: {curve.found.call}. {curve.found.reason}{ahead}"
+
+
+def _ahead(evaluation: Evaluation, curve: Curve) -> str:
+    """Where the curve is continued to, as exact as the units that were judged allow."""
+    part, found = curve.part, curve.found
+    n = n_behind(part, found.of_class if curve.of_class else None)
+    # bags grow by what is kept together, also where rows are counted
+    noun, of_level = evaluation.table.noun, found.gain.interval.level
+    said = [
+        f" Continued to {noun.counted(a.n)}: "
+        f"{with_interval(a.value, Interval(a.low, a.high, of_level, 'resampled_units'), n)}."
+        for a in found.ahead
+    ]
+    if found.without_law:
+        said.append(
+            f" {count(found.without_law)} of {count(found.resamples)} resamples that no curve fits "
+            "are left out."
         )
-        yield f"Learning curve, {what}: {curve.found.call}. {curve.found.reason}{ahead}"
+    return "".join(said)
 
 
 def chance_sentences(evaluation: Evaluation) -> Iterator[str]:
@@ -158,8 +216,10 @@ def _chance(evaluation: Evaluation, check: ChanceCheck) -> str:
         if check.best
         else evaluation.plan.title(check.candidate)
     )
+    rounds = f"{count(check.rounds)} {'round' if check.rounds == 1 else 'rounds'}"
     return (
-        f"Chance check: with labels permuted, {whom} did at least as well in "
-        f"{count(test.at_least_as_good)} of {count(test.permutations)} tables: p = "
-        f"{decimal(test.p, 3)} ({check.rounds} rounds each, whole pipeline repeated)."
+        f"Chance check: with labels permuted, {whom} did at least as well by "
+        f"{ALL_MEASURES[check.measure].trade} in {count(test.at_least_as_good)} of "
+        f"{count(test.permutations)} tables: p{NBSP}={NBSP}{decimal(test.p, P_DIGITS)} ({rounds} "
+        "each, whole pipeline repeated)."
     )

@@ -5,13 +5,18 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from evalcore.answer import measure_name
+from evalcore.beside_answer import P_DIGITS
+from evalcore.candidates import CANDIDATES
 from evalcore.cut_off import least_units
+from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import share_interval
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
+    NBSP,
     capitalised,
     class_name,
     count,
@@ -19,6 +24,7 @@ from evalcore.wording import (
     level,
     n_equals,
     percent,
+    reading,
     tenths,
     with_interval,
 )
@@ -36,7 +42,7 @@ def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> 
         "cut_off_chosen_here",
         "grave" if plan.limits else "moderate",
         plan.cut_off.of_class,
-        f"The cut-off {decimal(plan.cut_off.at, 3)} was chosen on these cases",
+        f"The cut-off {reading(plan.cut_off.at)} was chosen on these cases",
         "It was fixed without a date on which it was set, so it counts as picked by eye on the "
         "cases it is judged on (dates stated: 0; threshold: 1). Its figures flatter it, and no "
         "limit is called shown with it.",
@@ -86,17 +92,19 @@ def floor_not_delivered(
     value, floor = found.part.pooled_value("sensitivity", k), plan.cut_off.floor
     if math.isnan(value) or value >= floor:
         return
-    bounds = share_interval(plan.level, found.part, k)
-    n = int((found.part.held.labels == k).sum())
+    bounds, n = share_interval(plan.level, found.part, k), n_behind(found.part, k)
+    named = f"{class_name(plan.cut_off.of_class)} {table.noun_for(evaluation.counted_by).plural}"
+    where = "lies above" if bounds.high < floor else "is within"
     yield Finding(
         "floor_not_delivered",
         "grave" if bounds.high < floor else "moderate",
         plan.cut_off.of_class,
-        f"The cut-off for at least {level(floor)} finds {percent(value, n)} of "
-        f"{class_name(plan.cut_off.of_class)} on held-out cases",
+        # in points, for a share just short of the floor would be rounded up to it
+        f"The cut-off for at least {level(floor)} of {named} finds {tenths(floor - value)} less "
+        "while they are held out",
         f"Learned inside each bag, it finds {with_interval(value, bounds, n)}, {n_equals(n)}; the "
-        f"threshold is the floor, {level(floor)}, which "
-        f"{'lies above' if bounds.high < floor else 'is within'} the interval.",
+        f"threshold is the floor, {level(floor)}"
+        f"{f', which {where} the interval' if bounds.defined else ''}.",
         "Ask for a higher floor than the one needed, or add cases of the class: scores of inner "
         "models, fitted to four fifths of a bag, are not quite those of the model itself.",
         value,
@@ -118,8 +126,9 @@ def settings_unsteady(_: Table, plan: Plan, evaluation: Evaluation | None) -> It
             "settings_unsteady",
             "note",
             found.candidate,
-            f"No setting of {plan.title(found.candidate)} was picked in half of the rounds",
-            f"The most frequent, {found.options[int(found.shares.argmax())]}, was picked in "
+            f"No setting of {plan.title(found.candidate)} was picked in half of the rounds, the "
+            f"most frequent in {percent(most, rounds)}",
+            f"That is {found.options[int(found.shares.argmax())]}, picked in "
             f"{percent(most, rounds)} of {count(rounds)} rounds (threshold: {level(HALF)}). The "
             "figures include this; the setting of the final model is partly luck.",
             "Take the setting on other grounds, or leave out those that hardly differ.",
@@ -130,7 +139,10 @@ def settings_unsteady(_: Table, plan: Plan, evaluation: Evaluation | None) -> It
 
 
 def grid_too_narrow(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Most rounds pick the end of a grid of numbers, so the best may lie beyond."""
+    """Most rounds pick the end of a grid of three numbers or more, so the best may lie beyond.
+
+    Not where the setting allows nothing beyond it.
+    """
     if evaluation is None:
         return
     for found in evaluation.beside.picked:
@@ -138,11 +150,15 @@ def grid_too_narrow(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iter
         if found.scheme != plan.headline_scheme or len(grid) != 1:
             continue
         (name, values), rounds = grid[0], evaluation.rounds[found.scheme].n_rounds
+        settings = CANDIDATES[plan.candidate(found.candidate).key].settings
+        bounds = next((setting.low, setting.high) for setting in settings if setting.key == name)
         numbers = [v for v in values if isinstance(v, int | float) and not isinstance(v, bool)]
         if len(numbers) < 3 or len(numbers) < len(values):
             continue
         at = int(np.argmax(found.shares))
-        if numbers[at] not in (min(numbers), max(numbers)) or found.shares[at] <= HALF:
+        if numbers[at] not in {min(numbers), max(numbers)} - {*bounds}:
+            continue
+        if found.shares[at] <= HALF:
             continue
         yield Finding(
             "grid_too_narrow",
@@ -166,17 +182,22 @@ def not_told_from_chance(_: Table, plan: Plan, evaluation: Evaluation | None) ->
         test = check.test
         if check.best or math.isnan(test.p) or test.p <= SURE:
             continue
-        short = 1 / (test.permutations + 1) > SURE
+        least, p = 1 / (test.permutations + 1), decimal(test.p, P_DIGITS)
+        short = least > SURE
         yield Finding(
             "not_told_from_chance",
             "moderate" if short and not test.at_least_as_good else "grave",
             check.candidate,
-            f"{capitalised(plan.title(check.candidate))} is not told from chance: p "
-            f"{decimal(test.p, 3)}",
+            f"{capitalised(plan.title(check.candidate))} is not told from chance: "
+            f"p{NBSP}={NBSP}{p}",
             f"With labels permuted it did at least as well in {count(test.at_least_as_good)} of "
-            f"{count(test.permutations)} tables; p = (k + 1)/(m + 1) = {decimal(test.p, 3)} "
+            f"{count(test.permutations)} tables; p{NBSP}={NBSP}(k + 1)/(m + 1){NBSP}={NBSP}{p} "
             f"(threshold: {decimal(SURE)})."
-            + (" With so few permutations p cannot be lower." if short else ""),
+            + (
+                f" With so few tables p cannot be below {decimal(least, P_DIGITS)}."
+                if short
+                else ""
+            ),
             "Permute more often, at least 199 times."
             if short
             else "Do not rely on it: look at the features, or for more cases.",
@@ -227,16 +248,17 @@ def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
         found = curve.found
         if curve.part.candidate != evaluation.about or found.call != "rising":
             continue
+        noun, ends = table.noun, found.gain.interval
         yield Finding(
             "still_rising",
             "note",
             curve.of_class or curve.part.candidate,
             f"{capitalised(plan.title(curve.part.candidate))} still learns from more "
-            f"{table.noun_for(curve.part.counted_by).plural}",
-            f"{found.reason} (threshold: the lower end, {tenths(found.gain.interval.low)}, is "
-            "above 0.)",
-            "Add cases, and judge the model again.",
-            found.gain.interval.low,
+            f"{noun.plural}: {tenths(found.gain.value)} over the last doubling",
+            f"{capitalised(measure_name(table, plan, found.measure, curve.of_class))}: "
+            f"{found.reason} The lower end, {tenths(ends.low)}, is above the threshold, 0.",
+            f"Add {noun.plural}, and judge the model again.",
+            ends.low,
             0,
             "own_learning_curve",
         )

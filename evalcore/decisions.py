@@ -16,7 +16,7 @@ from evalcore.errors import EvalError
 from evalcore.shares import Floats, by_group, group_sums, quotient
 
 
-def _within(name: str, value: ArrayLike, *, below_one: bool = False) -> Floats:
+def within(name: str, value: ArrayLike, *, below_one: bool = False) -> Floats:
     given = np.asarray(value, dtype=np.float64)
     fits = (given >= 0) & ((given < 1) if below_one else (given <= 1))
     if not fits.all():
@@ -84,7 +84,7 @@ def predictive_values(
     >>> round(float(positive), 3), round(float(negative), 3)
     (0.078, 0.998)
     """
-    p = _within("share", share)
+    p = within("share", share)
     found = np.asarray(sensitivity, dtype=np.float64)
     passed = np.asarray(specificity, dtype=np.float64)
     right, wrong = found * p, (1 - passed) * (1 - p)
@@ -167,10 +167,10 @@ def best_cut_off(
     at = int(np.argmax(cleared * n1 - missed * n0))
     sensitivity, specificity = (n1 - missed[at]) / n1, cleared[at] / n0
     index = float(youden(sensitivity, specificity))
-    return CutOff(_threshold(values, at), index, float(sensitivity), float(specificity))
+    return CutOff(mid_point(values, at), index, float(sensitivity), float(specificity))
 
 
-def _threshold(values: Floats, below: int) -> float:
+def mid_point(values: Floats, below: int) -> float:
     """A cut-off with so many of the distinct values below it: half way, or the end."""
     if below in (0, len(values)):
         return -math.inf if below == 0 else math.inf
@@ -211,7 +211,7 @@ def net_benefit(
     >>> round(float(net_benefit(6, 204, n=810, threshold=0.005)), 8)
     0.00614182
     """
-    t = _within("threshold", threshold, below_one=True)
+    t = within("threshold", threshold, below_one=True)
     gain, harm = quotient(true_positives, n), quotient(false_positives, n)
     return np.asarray(gain - harm * t / (1 - t))
 

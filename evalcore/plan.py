@@ -12,7 +12,7 @@ import numpy as np
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import BETWEEN, Choice, choose, written_value
-from evalcore.cut_off import CutOffRule
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.errors import PlanError
 from evalcore.figures import CountedBy
 from evalcore.limit import Limit

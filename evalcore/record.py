@@ -261,7 +261,7 @@ class Record:
                     parts.setdefault((scheme, candidate), []).append(given)
         if set(failures) == set(self.plan.candidate_names):
             raise RecordError(f"No candidate could be fitted: {next(iter(failures.values()))}")
-        if not rounds:
+        if all(map(self.plan.is_curve, rounds)):  # none, or only small bags that give no estimate
             return None
         return evaluate(
             self.table,

@@ -36,6 +36,7 @@ ORDER = (
     "ranking",
     "row_ranking",
     "measures",
+    "cut_off_rule",
     "cut_off",
     "preparation",
     "prepared",

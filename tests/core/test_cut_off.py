@@ -15,7 +15,6 @@ from scipy.stats import beta, norm
 from sklearn import metrics
 
 from evalcore.cut_off import (
-    CutOffRule,
     at_share,
     calls,
     cost_per_case,
@@ -24,6 +23,7 @@ from evalcore.cut_off import (
     least_units,
     with_undecided,
 )
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.errors import EvalError, PlanError
 
 from .checks import exactly
@@ -145,6 +145,16 @@ class TestByCost:
             expected = learned(positive, score, rule=plain, share=0.4)
             assert learned(positive, score, rule=dear, share=0.4) == expected
 
+    @pytest.mark.parametrize("factor", [1, 1_000_000])
+    @pytest.mark.parametrize("twentieths", range(1, 20))
+    def test_ties_are_found_through_rounding(self, twentieths, factor):
+        # a case of each class at every score, a miss as dear in all as an alarm: all four tie
+        rule = CutOffRule(
+            "failing", "cost", miss=factor * (20 - twentieths), alarm=factor * twentieths
+        )
+        score = [0.25, 0.25, 0.5, 0.5, 0.75, 0.75]
+        assert learned([0, 1] * 3, score, rule=rule, share=twentieths / 20) == 0.375
+
     def test_the_middle_of_ties_moves_less_and_costs_less_than_the_lowest(self):
         rng = np.random.default_rng(11)
         positive = np.arange(40) < 10
@@ -255,6 +265,12 @@ class TestUndefined:
         message = "A cut-off is learned from finite scores; got an infinite one."
         with pytest.raises(EvalError, match=exactly(message)):
             learned([0, 1], [0.5, math.inf], rule=COST, share=0.5)
+
+    def test_a_share_that_weighs_nothing(self):
+        for share, shown in ((math.nan, "nan"), (1.5, "1.5")):
+            message = f"`share` must be from 0 to 1; got {shown}."
+            with pytest.raises(EvalError, match=exactly(message)):
+                learned([0, 1], [0.2, 0.5], rule=COST, share=share)
 
     def test_rounds_hold_only_their_own_cases(self):
         rng = np.random.default_rng(3)

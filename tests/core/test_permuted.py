@@ -1,0 +1,284 @@
+"""Permuted tables: what is moved, which rounds they go through, and their figures by hand."""
+
+from collections import Counter
+from fractions import Fraction
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from numpy.testing import assert_array_equal
+from sklearn.metrics import balanced_accuracy_score, roc_auc_score
+from sklearn.naive_bayes import GaussianNB
+
+from evalcore.answers import HeldOut
+from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose, choose_written
+from evalcore.engine import CHANCE, PERMUTATIONS, run, tasks
+from evalcore.permuted import chance_figure, chance_rounds, permuted_figures, permuted_table
+from evalcore.pipeline import candidates_in
+from evalcore.plan import Plan
+from evalcore.rounds import Rounds
+from evalcore.schemes import SCHEMES
+
+from .checks import table_of
+
+BAYES = choose(CANDIDATES, "naive_bayes")
+CROSS = choose(SCHEMES, "cross_validation", folds=5, repeats=6)
+
+
+def noise(n=20, *, seed=1, units=None, entries=None):
+    rng = np.random.default_rng(seed)
+    labels = np.arange(n) % 2 if units is None else np.asarray(units) % 2
+    return table_of(labels.tolist(), features=rng.normal(size=(n, 2)), units=units, entries=entries)
+
+
+def figures(table, plan) -> np.ndarray:
+    """All permuted figures of a plan, as its tasks give them."""
+    drawn = plan.draw(table)
+    todo = [t for t in tasks(drawn, permutations=plan.permutations) if t.scheme == CHANCE]
+    return np.concatenate([f.chance for f in run(table, plan, drawn, todo=todo)])
+
+
+@pytest.fixture
+def seen(monkeypatch):
+    """Every permuted table and its rounds, as the candidates get them."""
+    found = []
+
+    def watched(table, plan, part, **named):
+        found.append((table, part))
+        return candidates_in(table, plan, part, **named)
+
+    monkeypatch.setattr("evalcore.permuted.candidates_in", watched)
+    return found
+
+
+class TestTable:
+    @given(st.lists(st.tuples(st.integers(0, 2), st.integers(1, 4)), min_size=2), st.integers(0))
+    def test_classes_move_between_units_whole(self, units, seed):
+        classes = [0, 1, *(k for k, _ in units)]
+        rows = [1, 2, *(size for _, size in units)]
+        of_row = np.repeat(np.arange(len(classes)), rows)
+        table = table_of(np.array(classes)[of_row].tolist(), units=of_row.tolist())
+        mixed = permuted_table(table, np.random.default_rng(seed))
+        of_unit = [set(mixed.labels[of_row == unit].tolist()) for unit in range(len(classes))]
+        assert all(len(of) == 1 for of in of_unit)
+        # as many units of each class as before, though not as many rows
+        assert Counter(of.pop() for of in of_unit) == Counter(classes)
+        assert_array_equal(mixed.features, table.features)
+        assert_array_equal(mixed.units, table.units)
+        assert mixed.classes == table.classes
+        assert_array_equal(np.sort(mixed.unit_labels), np.sort(table.unit_labels))
+
+    def test_every_arrangement_is_as_likely(self):
+        table = table_of([0, 0, 1, 1])
+        rng = np.random.default_rng(2)
+        times = Counter(tuple(permuted_table(table, rng).labels.tolist()) for _ in range(1200))
+        assert len(times) == 6
+        # 200 each, standard deviation sqrt(1200 x 1/6 x 5/6) = 12.9
+        assert all(abs(number - 200) < 4 * 12.9 for number in times.values())
+
+
+class TestRounds:
+    @pytest.mark.parametrize(
+        ("scheme", "number"),
+        [
+            # whole repeats that hold twenty rounds; all where there are no more; one repeat
+            ("cross_validation:folds=5,repeats=20", 20),
+            ("cross_validation:folds=3,repeats=20", 21),
+            ("cross_validation:folds=8,repeats=5", 24),
+            ("cross_validation:folds=4,repeats=2", 8),
+            ("cross_validation:folds=24,repeats=3,stratified=no", 24),
+            ("bootstrap:rounds=50", 20),
+            ("bootstrap:rounds=7", 7),
+            ("random_subsampling:rounds=21", 20),
+            ("holdout", 1),
+            ("leave_one_out", 24),
+            ("leave_block_out:column=site", 3),
+            ("forward_in_time:column=day,parts=2", 2),
+        ],
+    )
+    def test_how_many(self, scheme, number, seen):
+        day = [str(at) for at in range(24)]
+        table = noise(24, entries={"site": ["p", "q", "r"] * 8, "day": day})
+        plan = Plan(table.roles, (choose_written(SCHEMES, scheme),), (BAYES,), permutations=1)
+        (drawn,) = plan.draw(table).values()
+        assert chance_rounds(drawn).n_rounds == number
+        permuted_figures(table, plan, 0)
+        assert seen[0][1].n_rounds == number
+        assert plan.fits(table) == drawn.n_rounds + 1 + number
+
+    def test_drawn_anew_and_stratified_for_the_permuted_labels(self, seen):
+        table = noise(20)
+        plan = Plan(table.roles, (CROSS,), (BAYES,), permutations=4)
+        figures(table, plan)
+        assert len(seen) == 4
+        for mixed, part in seen:
+            assert_array_equal(part.test.sum(axis=1), np.full(20, 4))
+            for k in (0, 1):
+                # two of each class in every part, by the labels as they stand now
+                assert_array_equal(part.test[:, mixed.labels == k].sum(axis=1), np.full(20, 2))
+        as_before = [(part.test[:, table.labels == 0].sum(axis=1) == 2).all() for _, part in seen]
+        assert not all(as_before)
+        for at, (mixed, part) in enumerate(seen):
+            for other, other_part in seen[:at]:
+                assert (mixed.labels != other.labels).any()
+                assert (part.test != other_part.test).any()
+
+    def test_bags_keep_each_class_of_the_permuted_labels(self, seen):
+        table = noise(20)
+        bootstrap = choose(SCHEMES, "bootstrap", rounds=30)
+        figures(table, Plan(table.roles, (bootstrap,), (BAYES,), permutations=3))
+        for mixed, part in seen:
+            assert_array_equal(part.train[:, mixed.labels == 0].sum(axis=1), np.full(20, 10))
+
+    def test_units_stay_together(self, seen):
+        units = np.repeat(np.arange(12), 3)
+        table = noise(36, units=units.tolist())
+        figures(table, Plan(table.roles, (CROSS,), (BAYES,), permutations=2))
+        for mixed, part in seen:
+            for unit in range(12):
+                rows = units == unit
+                assert len(set(mixed.labels[rows].tolist())) == 1
+                assert (np.ptp(part.test[:, rows], axis=1) == 0).all()
+
+
+class TestFigure:
+    rounds = Rounds(
+        np.array([[0, 1, 1, 1], [1, 0, 0, 1], [1, 0, 1, 0]], dtype=np.uint8),
+        np.array([[1, 0, 0, 0], [0, 1, 1, 0], [0, 1, 0, 1]], dtype=np.uint8),
+        np.arange(3),
+    )
+
+    def test_held_out_by_case(self):
+        """Case 1 is held out twice and right once; the others once each."""
+        labels = np.array([0, 0, 1, 1])
+        answered = [0, 0, 1, 1, 0]
+        held = HeldOut(labels, self.rounds, np.eye(2)[answered])
+        first = (Fraction(1) + Fraction(1, 2)) / 2
+        second = (Fraction(1) + Fraction(0)) / 2
+        assert chance_figure(held, "balanced_accuracy") == float((first + second) / 2)
+        assert chance_figure(held, "accuracy") == float(
+            (Fraction(1) + Fraction(1, 2) + Fraction(1) + Fraction(0)) / 4
+        )
+
+    def test_auc_is_the_mean_of_rounds(self):
+        labels = np.array([0, 0, 1, 1])
+        score = np.array([0.3, 0.6, 0.4, 0.2, 0.9])
+        held = HeldOut(labels, self.rounds, np.column_stack([1 - score, score]))
+        # round 0 judges one class only; in round 1 the pair is wrong, in round 2 right
+        assert chance_figure(held, "auc") == (0 + 1) / 2
+
+    def test_without_a_class_held_out_it_is_undefined(self):
+        held = HeldOut(np.array([0, 0, 0, 0]), self.rounds, np.eye(2)[[0, 0, 0, 0, 0]])
+        assert np.isnan(chance_figure(held, "balanced_accuracy"))
+        assert np.isnan(chance_figure(held, "auc"))
+
+    @pytest.mark.parametrize("measure", ["balanced_accuracy", "auc", "sensitivity"])
+    def test_against_a_loop_by_hand(self, measure, seen):
+        table = noise(30, seed=3)
+        plan = Plan(table.roles, (CROSS,), (BAYES,), permutations=3, measure=measure)
+        found = figures(table, plan)
+        for (mixed, part), figure in zip(seen, found[:, 0], strict=True):
+            right, auc = np.zeros((part.n_rounds, 30)), []
+            for r, (bag, out) in enumerate(zip(part.train > 0, part.test > 0, strict=True)):
+                model = GaussianNB().fit(mixed.features[bag], mixed.labels[bag])
+                right[r, out] = model.predict(mixed.features[out]) == mixed.labels[out]
+                scores = model.predict_proba(mixed.features[out])[:, 1]
+                auc.append(roc_auc_score(mixed.labels[out], scores))
+            shares = right.sum(axis=0) / part.test.sum(axis=0)
+            # one class's share found would be best for naming it always: balanced then
+            by_hand = np.mean([shares[mixed.labels == k].mean() for k in (0, 1)])
+            expected = np.mean(auc) if measure == "auc" else by_hand
+            assert figure == pytest.approx(expected, rel=1e-12)
+
+    def test_by_unit(self, seen):
+        units = np.repeat(np.arange(15), 2)
+        table = noise(30, seed=4, units=units.tolist())
+        once = choose(SCHEMES, "cross_validation", folds=5, repeats=1)
+        found = figures(table, Plan(table.roles, (once,), (BAYES,), permutations=2))
+        for (mixed, part), figure in zip(seen, found[:, 0], strict=True):
+            answers = np.zeros(15)
+            for bag, out in zip(part.train > 0, part.test > 0, strict=True):
+                model = GaussianNB().fit(mixed.features[bag], mixed.labels[bag])
+                mean = model.predict_proba(mixed.features).reshape(15, 2, 2).mean(axis=1)
+                answers[np.unique(units[out])] = mean.argmax(axis=1)[np.unique(units[out])]
+            expected = balanced_accuracy_score(mixed.unit_labels, answers)
+            assert figure == pytest.approx(expected, rel=1e-12)
+
+
+class TestDigits:
+    table = noise(24, seed=6)
+    grid = choose(CANDIDATES, "nearest_neighbours", k=(1, 5))
+
+    def figures(self, number, *candidates, **changes):
+        plan = Plan(self.table.roles, (CROSS,), candidates, permutations=number, **changes)
+        return figures(self.table, plan)
+
+    def test_more_permutations_only_append(self):
+        few, many = self.figures(3, self.grid, BAYES), self.figures(7, self.grid, BAYES)
+        assert (few.shape, many.shape) == ((3, 2), (7, 2))
+        assert few.tobytes() == many[:3].tobytes()
+        assert PERMUTATIONS == 5  # so that the seven stand in two tasks
+        assert len({row.tobytes() for row in many}) > 1
+
+    def test_candidates_beside_move_nothing(self):
+        alone = self.figures(3, self.grid)
+        beside = self.figures(3, BAYES, self.grid, choose(CANDIDATES, "lda"))
+        assert beside[:, 1].tobytes() == alone[:, 0].tobytes()
+
+    def test_further_rounds_move_nothing(self):
+        """They look at the first rounds only, and more of them are appended."""
+        plan = Plan(self.table.roles, (choose(SCHEMES, "cross_validation", repeats=4),), (BAYES,))
+        more = Plan(self.table.roles, (choose(SCHEMES, "cross_validation", repeats=9),), (BAYES,))
+        few, many = (permuted_figures(self.table, each, 2) for each in (plan, more))
+        assert few.tobytes() == many.tobytes()
+
+    def test_the_seed_moves_them(self):
+        assert self.figures(4, BAYES, seed=1).tobytes() != self.figures(4, BAYES, seed=2).tobytes()
+
+    def test_settings_are_picked_anew(self):
+        """In each permuted table, by the same rule: some table picks otherwise than another."""
+        picked = []
+
+        def watched(table, plan, part, **named):
+            for name, learned in candidates_in(table, plan, part, **named):
+                picked.append(tuple(learned.picked))
+                yield name, learned
+
+        with pytest.MonkeyPatch.context() as patch:
+            patch.setattr("evalcore.permuted.candidates_in", watched)
+            self.figures(4, self.grid)
+        assert [len(each) for each in picked] == [20] * 4
+        assert len(set(picked)) == 4
+
+
+class TestUndefined:
+    def test_a_candidate_that_fails_has_none(self, monkeypatch):
+        from evalcore.fits import round_scores
+
+        def scores(choice, *given_, **named):
+            if choice.key == "lda":
+                raise ValueError("this matrix is singular")
+            return round_scores(choice, *given_, **named)
+
+        monkeypatch.setattr("evalcore.tuning.round_scores", scores)
+        table = noise(20)
+        plan = Plan(table.roles, (CROSS,), (choose(CANDIDATES, "lda"), BAYES), permutations=2)
+        with pytest.warns(UserWarning, match="lda failed"):
+            found = figures(table, plan)
+        assert np.isnan(found[:, 0]).all()
+        assert not np.isnan(found[:, 1]).any()
+
+    def test_where_the_scheme_does_not_suit_there_is_none(self):
+        """Two of a class in two sites: permuted, both may stand in one, and none can be left out."""
+        site = ["p"] * 6 + ["q"] * 6
+        labels = [1, 0, 0, 0, 0, 0, 1, 0, 0, 0, 0, 0]
+        rng = np.random.default_rng(1)
+        table = table_of(labels, features=rng.normal(size=(12, 2)), entries={"site": site})
+        scheme = choose(SCHEMES, "bootstrap", rounds=4, keep="site")
+        plan = Plan(table.roles, (scheme,), (BAYES,), permutations=60)
+        found = figures(table, plan)
+        alone = np.isnan(found[:, 0])
+        # 5 of 11 partners stand in the same site: 27.3 of 60 expected, standard deviation 3.9
+        assert abs(alone.sum() - 60 * 5 / 11) < 4 * 3.9
