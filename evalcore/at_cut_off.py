@@ -44,7 +44,7 @@ class AtCutOff:
     on_all : float
         Learned from inner scores of all cases: the one that goes to work.
     learned_from : int
-        Units or cases of the class it was learned from.
+        Units or cases of the class it was learned from; 0 for a fixed one.
     at_shares : tuple of AtShare
         At each end of the stated share in use, else at the table's share.
     undecided : WithUndecided or None
@@ -82,7 +82,7 @@ class AtCutOff:
 def at_cut_off(
     table: Table, plan: Plan, judged: Judged, *, given: Answers, whole: Answers
 ) -> AtCutOff | None:
-    """A candidate's held-out answers at the cut-offs of their rounds; None if none was learned.
+    """A candidate's held-out answers at the cut-offs of their rounds; None if it has none.
 
     Costs and floors can be moved in the plan without a refit: inner scores are kept, of the
     rule's class alone.
@@ -98,14 +98,20 @@ def at_cut_off(
         Its answers there, and those of the fit on all cases.
     """
     rule, way = plan.cut_off, judged.counted_by
-    if rule is None or given.inner is None or whole.inner is None:
+    if rule is None or not plan.has_cut_off(plan.candidate(judged.candidate)):
         return None
     k = table.classes.index(rule.of_class)
     positive = table.labels_by(way) == k
     share = rule.share_used(float(positive.mean()))
-    inner = _counted(table, given.inner, way)
-    cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
-    on_all = learned(positive, _counted(table, whole.inner, way)[0], rule=rule, share=share)
+    if rule.by == "fixed":
+        cut_offs, on_all, behind = np.full(len(given.on_all[way]), rule.at), rule.at, 0
+    elif given.inner is None or whole.inner is None:
+        return None  # carried out under another rule
+    else:
+        inner = _counted(table, given.inner, way)
+        cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
+        on_all = learned(positive, _counted(table, whole.inner, way)[0], rule=rule, share=share)
+        behind = int(positive.sum())
     part = replace(judged, held=_answered(judged.held, cut_offs, k))
     rates = [part.pooled_value("sensitivity", at) for at in (k, 1 - k)]
     shares = dict.fromkeys((rule.share_low or share, rule.share_high or share))
@@ -114,7 +120,7 @@ def at_cut_off(
         rule,
         cut_offs,
         on_all,
-        int(positive.sum()),
+        behind,
         tuple(at_share(rates[0], rates[1], rule=rule, share=each) for each in shares),
         _undecided(plan, judged, part, rule=rule, cut_offs=cut_offs),
     )

@@ -7,6 +7,7 @@ import numpy as np
 
 from evalcore.answers import Answers
 from evalcore.at_cut_off import AtCutOff, at_cut_off, cut_off_estimates
+from evalcore.candidates import CANDIDATES
 from evalcore.chance_check import (
     ChanceCheck,
     chance_checks,
@@ -120,6 +121,8 @@ def _curves(table: Table, plan: Plan, parts: Sequence[Judged]) -> Iterator[Curve
     wanted: list[tuple[CurveMeasure, str]] = [(measure, "")]
     wanted += [("sensitivity", concern)] if concern else []
     for part in learned(plan, parts):
+        if CANDIDATES[plan.candidate(part.candidate).key].fixed is not None:
+            continue  # answers that stand in the table learn nothing
         for of_measure, name in wanted:
             found = learning_curve(
                 part,

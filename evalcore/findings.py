@@ -53,6 +53,11 @@ CHECKS: dict[str, Check] = {
             "the interval did not keep its word in simulations",
             of_evidence.interval_falls_short,
         ),
+        Check(
+            "verdict_falls_short",
+            "verdicts like this were wrong too often",
+            of_evidence.verdict_falls_short,
+        ),
         Check("unstable_model", "the model varies from round to round", candidates.unstable_model),
         Check(
             "model_variance_unknown",

@@ -302,10 +302,14 @@ class Plan:
         learned = rounds[self.headline_scheme] + 1 if self.learns_cut_off(choice) else 0
         return outer + INNER_FOLDS * learned
 
-    def learns_cut_off(self, choice: Choice) -> bool:
-        """Whether a candidate's cut-off is learned: its scores come from a fit to features."""
+    def has_cut_off(self, choice: Choice) -> bool:
+        """Whether a candidate answers at a cut-off: its scores come from a fit to features."""
         candidate = CANDIDATES[choice.key]
         return self.cut_off is not None and not candidate.baseline and candidate.fixed is None
+
+    def learns_cut_off(self, choice: Choice) -> bool:
+        """Whether that cut-off is learned inside each bag, which takes inner folds."""
+        return self.has_cut_off(choice) and self.cut_off is not None and self.cut_off.by != "fixed"
 
     def to_json(self) -> str:
         """The plan as JSON text; `from_json` gives back an equal plan."""
