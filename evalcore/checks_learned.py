@@ -256,7 +256,7 @@ def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
             f"{capitalised(plan.title(curve.part.candidate))} still learns from more "
             f"{noun.plural}: {tenths(found.gain.value)} over the last doubling",
             f"{capitalised(measure_name(table, plan, found.measure, curve.of_class))}: "
-            f"{found.reason} The lower end, {tenths(ends.low)}, is above the threshold, 0.",
+            f"{found.reason} The threshold for the lower end is 0.",
             f"Add {noun.plural}, and judge the model again.",
             ends.low,
             0,

@@ -87,9 +87,11 @@ def paired_difference(
     With d the difference of a case's mean held-out correctness, t = mean(d) / sqrt(var(d)/n +
     tau2_d + s) on n - 1 degrees of freedom. tau2_d is `model_variance` of the differences and s
     its standard error over the rounds (own construction). Without tau2_d unstable candidates look
-    different far too often; without s they still do where tau2_d comes out too small by chance,
-    at some cost in power. That 5 % is kept has been seen on simulated answers, not yet on fitted
-    models. Every case weighs the same. Both count as 0 where no case is held out twice.
+    different far too often; without s they still do somewhat where tau2_d comes out too small by
+    chance. s costs power: for six candidates fitted to labels that no feature tells, pairs were
+    called different in 1 to 2 % with it and in 6 % without, where 5 % is allowed; on 60 cases of
+    two classes with signal in 14 % and 24 % (own simulation, 150 tables each). Every case weighs
+    the same. Both count as 0 where no case is held out twice.
 
     Parameters
     ----------

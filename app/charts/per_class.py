@@ -16,8 +16,8 @@ from app.charts.style import (
     text_alternative,
 )
 from app.charts.tracks import Bound, TrackRow, track_chart
-from evalcore.answer import class_rate
-from evalcore.evaluation import Evaluation
+from evalcore.answer import WITH_CUT_OFF, class_rate
+from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Estimate
 from evalcore.wording import capitalised, class_name, level, listed, n_equals, percent, percent_down
 
@@ -43,7 +43,11 @@ def per_class(
         One row a class, in the order of the table.
     """
     classes, plan = evaluation.table.classes, evaluation.plan
-    found = [evaluation.estimate("sensitivity", candidate, of_class=k) for k in classes]
+    by = evaluation.in_use if candidate == evaluation.about else HIGHEST
+    found = [
+        evaluation.estimate("sensitivity", candidate, estimator=by, of_class=k) for k in classes
+    ]
+    at = "" if by == HIGHEST else WITH_CUT_OFF
     least, cautious = _limits(evaluation), dict(bounds or {})
     title = _title(evaluation, found, least, cautious)
     said = [_spoken(evaluation, e, least, cautious) for e in found]
@@ -53,7 +57,7 @@ def per_class(
     needed = [*(e.value for e in found), *ends, *least.values(), *cautious.values()]
     return Figure(
         title=title,
-        caption=caption(evaluation, evaluation.scheme, plan.title(candidate), block, at_least),
+        caption=caption(evaluation, evaluation.scheme, plan.title(candidate) + at, block, at_least),
         chart=track_chart(
             [_track(evaluation, e, least, cautious) for e in found],
             [],

@@ -22,7 +22,7 @@ from evalcore.findings import findings
 from evalcore.record import Record, Status
 from evalcore.schemes import SCHEMES
 from evalcore.summary import ESTIMATE_HEADER, estimate_rows
-from evalcore.verdict import verdicts
+from evalcore.verdict import verdicts_in_use
 from evalcore.wording import count, duration, n_equals, with_interval
 
 PROGRESS_EVERY, FIGURES_EVERY = 1.0, 3.0
@@ -91,7 +91,7 @@ def how_sure(evaluation: Evaluation) -> None:
         look.figure(charts.estimates_with_intervals(evaluation, "accuracy"), key="share-right")
     bounds = {
         v.limit.of_class: v.at_least
-        for v in verdicts(evaluation, evaluation.about)
+        for v in verdicts_in_use(evaluation, evaluation.about)
         if v.limit.of_class
     }
     look.figure(charts.per_class(evaluation, evaluation.about, bounds=bounds), key="classes")

@@ -432,6 +432,71 @@ REFUSED = {
         "An acceptance limit must lie between 0 and 1 and its confidence between 0.5 and 1; got "
         "90 and 0.95.",
     ),
+    "value of a grid out of bounds": (
+        "iris.csv",
+        ["--label", "class", "--candidate", "nearest_neighbours:k=1/0"],
+        "`k` must be between 1 and 200; got 0.",
+    ),
+    "value of a grid of another kind": (
+        "iris.csv",
+        ["--label", "class", "--candidate", "nearest_neighbours:k=1/few"],
+        "`k` must be a whole number; got 'few'.",
+    ),
+    "grid of one value": (
+        "iris.csv",
+        ["--label", "class", "--candidate", "nearest_neighbours:k=5/5"],
+        "A grid of `k` needs different values; got 5 and 5.",
+    ),
+    "grid on a scheme": (
+        "iris.csv",
+        [*ONE, "--scheme", "cross_validation:folds=4/5"],
+        "Settings of a scheme are not tuned; got the grid "
+        "'cross_validation:folds=4/5,repeats=20,stratified=yes'. Give one value each, or choose "
+        "the scheme several times.",
+    ),
+    "cut-off of an unknown class": (
+        "iris.csv",
+        [*ONE, "--cut-off", "rose:miss=10"],
+        "There is no class ‘rose’; the classes are ‘setosa’, ‘versicolor’ and ‘virginica’.",
+    ),
+    "cut-off with three classes": (
+        "iris.csv",
+        [*ONE, "--cut-off", "setosa:miss=10"],
+        "A cut-off parts two classes; this table has 3. Leave the cut-off out, or join classes in "
+        "the file.",
+    ),
+    "cut-off without a rule": (
+        "iris.csv",
+        [*ONE, "--cut-off", "setosa:share=0.1"],
+        "A cut-off takes costs (`miss`, `alarm`), a `floor` or a fixed `at`, exactly one of the "
+        "three; got none in 'setosa:share=0.1'.",
+    ),
+    "cut-off by two rules": (
+        "iris.csv",
+        [*ONE, "--cut-off", "setosa:miss=2,floor=0.9"],
+        "A cut-off takes costs (`miss`, `alarm`), a `floor` or a fixed `at`, exactly one of the "
+        "three; got `miss` and `floor` in 'setosa:miss=2,floor=0.9'.",
+    ),
+    "cut-off of no class": (
+        "iris.csv",
+        [*ONE, "--cut-off", "miss=10"],
+        "A cut-off is written CLASS:name=value,...; got 'miss=10'.",
+    ),
+    "chance check below 0": (
+        "iris.csv",
+        [*ONE, "--chance-check", "-1"],
+        "The chance check takes between 0 and 9,999 permutations; got -1.",
+    ),
+    "unknown setting of the learning curve": (
+        "iris.csv",
+        [*ONE, "--learning-curve", "steps=6"],
+        "'learning_curve' has no setting 'steps'; it takes `sizes` or `subsets`.",
+    ),
+    "too few sizes of the learning curve": (
+        "iris.csv",
+        [*ONE, "--learning-curve", "sizes=4"],
+        "`sizes` must be between 5 and 12; got 4.",
+    ),
     "answer about nobody": (
         "iris.csv",
         [*ONE, "--about", "svm"],
