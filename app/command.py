@@ -143,6 +143,11 @@ def _summary(given: argparse.Namespace) -> None:
 def _evaluate(given: argparse.Namespace) -> None:
     if given.jobs is not None and given.jobs < 1:
         raise PlanError(f"`jobs` must be at least 1; got {given.jobs}.")
+    if given.jobs is not None and given.cluster:
+        raise PlanError(
+            f"`jobs` counts processes on this machine and a cluster has its own; got {given.jobs} "
+            f"and the cluster {given.cluster!r}. Give one of the two."
+        )
     data, plan = _read(given.file), _plan(given)
     record = _record(given.out, data, given.file.name, plan)
     if given.cluster:

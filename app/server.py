@@ -94,7 +94,7 @@ def serve(*, port: int, records: Path | None, browser: bool) -> None:
     if browser and _has_display():
         threading.Thread(target=_open, args=(address, free), daemon=True).start()
     config = CONFIG | {"server.port": free} | {f"theme.{k}": v for k, v in THEME.items()}
-    st.App(Path(__file__).with_name("main.py")).run(config=config)
+    st.App(Path(__file__).parent / "pages" / "main.py").run(config=config)
 
 
 def _free_port(first: int) -> int:

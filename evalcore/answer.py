@@ -186,7 +186,8 @@ def best_sentence(evaluation: Evaluation) -> str:
         return ""
     plan = evaluation.plan
     selected = evaluation.estimate(best.measure, best.candidate)
-    starts = plan.limits and best.candidate == evaluation.about
+    # at a cut-off verdicts start from what its own correction says
+    starts = plan.limits and (best.candidate, evaluation.in_use) == (evaluation.about, HIGHEST)
     start = "; verdicts start there" if starts else ""
     tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
     return (
@@ -227,7 +228,7 @@ def title(evaluation: Evaluation) -> str:
 
 def _of_ten(evaluation: Evaluation) -> str:
     noun = evaluation.table.noun_for(evaluation.counted_by).plural
-    estimate = evaluation.estimate("accuracy", evaluation.about)
+    estimate = evaluation.estimate("accuracy", evaluation.about, estimator=evaluation.in_use)
     if estimate.interval is not None and estimate.interval.low >= NEARLY_ALL:
         return f"Right on nearly all further {noun} like these."
     of_ten = min(9, round(10 * estimate.value))

@@ -130,7 +130,7 @@ def _curves(table: Table, plan: Plan, parts: Sequence[Judged]) -> Iterator[Curve
                 of_class=table.classes.index(name) if name else 0,
                 level=plan.level,
                 rng=generator(plan.seed, "learning curve", part.candidate, of_measure),
-                noun=table.noun_for(part.counted_by),
+                noun=table.noun,
             )
             yield Curve(part, name, found)
 

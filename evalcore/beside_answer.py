@@ -25,6 +25,7 @@ from evalcore.wording import (
     n_equals,
     percent,
     reading,
+    score,
     with_interval,
 )
 
@@ -115,7 +116,7 @@ def _called(found: AtCutOff, noun: Noun) -> str:
     stated = found.rule.by == "fixed"
     return (
         f"A {noun.singular} is called {name} from "
-        f"{reading(cut_off) if stated else decimal(cut_off, 3)} up"
+        f"{reading(cut_off) if stated else score(cut_off)} up"
     )
 
 
@@ -138,7 +139,7 @@ def _in_rounds(found: AtCutOff) -> str:
 def _end(cut_off: float) -> str:
     if math.isinf(cut_off):
         return "calling all" if cut_off < 0 else "calling none"
-    return decimal(cut_off, 3)
+    return score(cut_off)
 
 
 def _rates(evaluation: Evaluation, found: AtCutOff) -> str:

@@ -55,28 +55,43 @@ def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> 
 
 
 def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Too few units of a class to learn a floor: the cut-off calls everything."""
+    """Too few units of a class to learn a floor, in all or in the bags: then all are called it."""
     if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
         return
-    needed = least_units(plan.cut_off.floor)
+    rule, needed = plan.cut_off, least_units(plan.cut_off.floor)
     found = evaluation.at_cut_off(evaluation.about)
-    if found is None or found.learned_from >= needed:
+    if found is None:
         return
-    noun = table.noun_for(evaluation.counted_by)
-    name = class_name(plan.cut_off.of_class)
-    yield Finding(
-        "cut_off_calls_all",
-        "grave",
-        plan.cut_off.of_class,
-        f"{capitalised(count(found.learned_from))} {name} {noun.plural} cannot teach a floor of "
-        f"{level(plan.cut_off.floor)}; every {noun.singular} is called {name}",
-        f"A cut-off that finds {level(plan.cut_off.floor)} of further {noun.plural} of a class "
-        f"takes at least {needed} of them; there are {found.learned_from} (threshold: {needed}).",
-        f"Take a lower floor, or add {name} {noun.plural}.",
-        found.learned_from,
-        needed,
-        "wilks1941",
+    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
+    enough, share = found.learned_from >= needed, float(np.isneginf(found.cut_offs).mean())
+    if enough and share <= HALF:
+        return
+    every = f"every {noun.singular} is called {name}"
+    takes = (
+        f"A cut-off that finds {level(rule.floor)} of further {noun.plural} of a class takes at "
+        f"least {needed} of them; there are {found.learned_from}"
     )
+    if enough:
+        title = (
+            f"In {percent(share, len(found.cut_offs))} of rounds the bag holds too few {name} "
+            f"{noun.plural} for a floor of {level(rule.floor)}; {every} there"
+        )
+        seen = (
+            f"{takes} in all and fewer in a bag (threshold: {level(HALF)} of rounds). Held-out "
+            "figures are not those of the cut-off that goes to work."
+        )
+    else:
+        title = (
+            f"{capitalised(count(found.learned_from))} {name} {noun.plural} cannot teach a floor "
+            f"of {level(rule.floor)}; {every}"
+        )
+        seen = f"{takes} (threshold: {needed})."
+    advice = f"Take a lower floor, or add {name} {noun.plural}."
+    value, threshold = (share, HALF) if enough else (found.learned_from, needed)
+    yield Finding(
+        "cut_off_calls_all", "grave", rule.of_class, title, seen, advice, value, threshold,
+        "wilks1941",
+    )  # fmt: skip
 
 
 def floor_not_delivered(

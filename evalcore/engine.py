@@ -24,7 +24,6 @@ CHUNK = 50  # most rounds finished together
 LARGE = 5_000  # cases from which a single round takes long enough to be reported
 WHOLE = ""  # the scheme name of the fits on all cases
 CHANCE = "chance check"  # the scheme name of permuted tables; no scheme is named with a blank
-PERMUTATIONS = 5  # permuted tables finished together
 
 
 @dataclass(frozen=True)
@@ -73,8 +72,8 @@ def tasks(rounds: dict[str, Rounds], *, size: int = 0, permutations: int = 0) ->
             for start in range(0, drawn.n_rounds, step)
         ]
     return todo + [
-        Task(CHANCE, start, min(start + PERMUTATIONS, permutations))
-        for start in range(0, permutations, PERMUTATIONS)
+        Task(CHANCE, number, number + 1)  # each goes through many rounds of its own
+        for number in range(permutations)
     ]
 
 

@@ -7,6 +7,7 @@ import numpy as np
 from evalcore.answers import HeldOut, held_out
 from evalcore.errors import PlanError
 from evalcore.estimates import mean_of_rounds, pooled_confusion
+from evalcore.groups import Groups
 from evalcore.measures import ALL_MEASURES, Floats
 from evalcore.pipeline import candidates_in
 from evalcore.plan import CHANCE_ROUNDS, Plan, generator
@@ -15,16 +16,56 @@ from evalcore.schemes import SCHEMES, draw
 from evalcore.table import Table
 from evalcore.tuning import Learned
 
+ATTEMPTS = 200  # permuted tables looked at for one that the scheme suits
 
-def permuted_table(table: Table, rng: np.random.Generator) -> Table:
+
+def permuted_table(table: Table, rng: np.random.Generator, groups: Groups | None = None) -> Table:
     """The table with classes dealt anew to its units; all cases of a unit get the same.
+
+    Where the scheme keeps coarser groups together, units of a group may resemble each other, and
+    dealing freely would take that for a finding: whole groups trade their class if each is of
+    one, else units trade within their group.
 
     Parameters
     ----------
     table : Table
         No unit carries more than one class.
+    rng : Generator
+    groups : Groups, optional
+        What the scheme keeps together; the units themselves if left out.
     """
-    return replace(table, labels=rng.permutation(table.unit_labels)[table.units])
+    of_unit = table.unit_labels
+    if groups is None or groups.number == table.n_units:
+        return replace(table, labels=rng.permutation(of_unit)[table.units])
+    if ((groups.counts > 0).sum(axis=1) == 1).all():
+        return replace(table, labels=rng.permutation(groups.labels)[groups.of_case])
+    first_case = np.unique(table.units, return_index=True)[1]
+    group = groups.of_case[first_case]
+    dealt = of_unit.copy()
+    for number in range(groups.number):
+        inside = np.flatnonzero(group == number)
+        dealt[inside] = rng.permutation(of_unit[inside])
+    return replace(table, labels=dealt[table.units])
+
+
+def _suitable(table: Table, plan: Plan, keys: tuple[str, ...]) -> tuple[Table, Rounds] | None:
+    """A permuted table that the headline's scheme suits, and its rounds; None if none is found.
+
+    Labels that do not suit (a class missing from the earliest units, say) are dealt again: the
+    labels as they came suit too, so they are compared with their like.
+    """
+    choice = plan.scheme(plan.headline_scheme)
+    scheme = SCHEMES[choice.key]
+    groups = scheme.groups(table, choice.values())
+    for attempt in range(ATTEMPTS):
+        rng = generator(plan.seed, *keys, "labels", str(attempt))
+        mixed = permuted_table(table, rng, groups)
+        try:
+            rounds = generator(plan.seed, *keys, "rounds")
+            return mixed, draw(scheme, mixed, plan.chance_settings, rounds)
+        except PlanError:
+            continue
+    return None
 
 
 def chance_rounds(rounds: Rounds) -> Rounds:
@@ -67,19 +108,15 @@ def permuted_figures(table: Table, plan: Plan, number: int) -> Floats:
     """The figure of each candidate on one permuted table, shape (C,).
 
     Rounds are drawn anew, because they are stratified by class; settings are tuned anew inside
-    every bag. nan for a candidate that could not be fitted, and for all where the scheme does not
-    suit the permuted table.
+    every bag. nan for a candidate that could not be fitted, and for all where the scheme suits
+    none of many permuted tables.
     """
     keys = ("chance check", str(number))
-    mixed = permuted_table(table, generator(plan.seed, *keys, "labels"))
-    choice = plan.scheme(plan.headline_scheme)
     found: Floats = np.full(len(plan.candidates), np.nan)
-    try:
-        rng = generator(plan.seed, *keys, "rounds")
-        drawn = draw(SCHEMES[choice.key], mixed, plan.chance_settings, rng)
-    except PlanError:
+    suitable = _suitable(table, plan, keys)
+    if suitable is None:
         return found
-    part = chance_rounds(drawn)
+    mixed, part = suitable[0], chance_rounds(suitable[1])
     answered = candidates_in(mixed, plan, part, scheme=plan.headline_scheme, start=0, keys=keys)
     for at, (_, learned) in enumerate(answered):
         if isinstance(learned, Learned):

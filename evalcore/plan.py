@@ -198,14 +198,19 @@ class Plan:
         few = {name: min(int(values[name]), most) for name in APPENDING if name in values}
         return values | few
 
+    def chance_rounds(self, table: Table) -> int:
+        """Rounds that every permuted table goes through."""
+        scheme = ALL_SCHEMES[self.scheme(self.headline_scheme).key]
+        return scheme.n_rounds(table, self.chance_settings)
+
     def counted_by(self, table: Table) -> CountedBy:
         """How the headline counts on this table."""
         return "unit" if table.has_units and self.answered_from == "all" else "case"
 
     def concern_of(self, table: Table) -> str:
         """The class whose misses matter most; empty where none stands out."""
-        if self.concern:
-            return self.concern
+        if self.concern or self.cut_off:
+            return self.concern or (self.cut_off.of_class if self.cut_off else "")
         with_limit = [limit.of_class for limit in self.limits if limit.of_class]
         if table.n_classes == 2:
             equal = len(set(table.units_holding.tolist())) == 1
@@ -294,8 +299,7 @@ class Plan:
             name: ALL_SCHEMES[c.key].n_rounds(table, c.values())
             for name, c in self.all_schemes.items()
         }
-        scheme = SCHEMES[self.scheme(self.headline_scheme).key]
-        of_chance = self.permutations * scheme.n_rounds(table, self.chance_settings)
+        of_chance = self.permutations * self.chance_rounds(table)
         outer = sum(rounds.values()) + 1 + of_chance
         if choice.tuned:
             return outer * (1 + INNER_FOLDS * len(choice.options))

@@ -12,7 +12,9 @@ import re
 import secrets
 import threading
 import time
+import tokenize
 import zipfile
+import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import asdict, dataclass
@@ -24,7 +26,7 @@ from typing import Any, Literal
 import numpy as np
 
 from evalcore.answers import Answers, Reduced, joined
-from evalcore.engine import CHANCE, WHOLE, Finished, Task, chunk_rounds, tasks
+from evalcore.engine import CHANCE, WHOLE, Finished, Task, chunk_rounds, tasks, whole_rounds
 from evalcore.errors import EvalError, RecordError
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.figures import CountedBy
@@ -39,7 +41,14 @@ State = Literal["waiting", "running", "finished", "cancelled", "failed", "interr
 NAME = re.compile(r"[0-9]{8}-[0-9]{6}-[0-9a-f]{6}")
 SILENT = 30.0  # seconds without a sign of life after which a running worker counts as gone
 PACKAGES = ("withheld", "scikit-learn", "numpy", "scipy", "pandas")
+ABOUT = {"name": str, "table": str, "plan": str, "chunk": int, "begun": str, "versions": dict}
 _WAYS: tuple[CountedBy, CountedBy] = ("unit", "case")
+# what reading a cut or garbled file raises; a runtime error is an archive that claims to be
+# encrypted or newer, or JSON nested without end; a token error is a garbled array header
+_DAMAGE = (
+    *(OSError, EOFError, RuntimeError, KeyError, TypeError, ValueError),
+    *(zipfile.BadZipFile, zlib.error, tokenize.TokenError),
+)
 
 
 @dataclass(frozen=True)
@@ -78,15 +87,18 @@ class Record:
     Raises
     ------
     RecordError
-        The folder holds no record, or its file no longer reads as it did.
+        The folder holds no record, or one of its files is missing or damaged: each file is read
+        when it is asked for, and the sentence names it.
     """
 
     def __init__(self, folder: Path) -> None:
         self.folder = folder
         if not (folder / "about.json").is_file():
             raise RecordError(f"There is no record in {folder.name!r}.")
-        with _undamaged(folder / "about.json"):
-            self.about: dict[str, Any] = json.loads((folder / "about.json").read_text("utf-8"))
+        with _undamaged(folder, "about.json") as path:
+            self.about: dict[str, Any] = json.loads(path.read_text("utf-8"))
+            if not all(isinstance(self.about[key], kind) for key, kind in ABOUT.items()):
+                raise TypeError("An entry is not of its kind.")
 
     @classmethod
     def create(cls, folder: Path, data: bytes, name: str, plan: Plan) -> "Record":
@@ -139,18 +151,20 @@ class Record:
     @cached_property
     def plan(self) -> Plan:
         """The plan as stored."""
-        with _undamaged(self.folder / "plan.json"):
-            return Plan.from_json((self.folder / "plan.json").read_text("utf-8"))
+        with _undamaged(self.folder, "plan.json") as path:
+            return Plan.from_json(path.read_text("utf-8"))
 
     @cached_property
     def source(self) -> bytes:
         """The file as it came."""
-        return (self.folder / "source.csv").read_bytes()
+        with _undamaged(self.folder, "source.csv") as path:
+            return path.read_bytes()
 
     @cached_property
     def table(self) -> Table:
         """The table, read again from the source and held against its fingerprint."""
-        table = make_table(read_sheet(self.source, self.about["name"]), self.plan.roles)
+        with _undamaged(self.folder, "source.csv"):
+            table = make_table(read_sheet(self.source, self.about["name"]), self.plan.roles)
         if table.fingerprint != self.about["table"]:
             raise RecordError(
                 f"The table of record {self.name!r} reads differently now than when it was "
@@ -161,8 +175,7 @@ class Record:
     @cached_property
     def rounds(self) -> dict[str, Rounds]:
         """The rounds as drawn, by scheme name."""
-        path = self.folder / "rounds.npz"
-        with _undamaged(path), np.load(path) as stored:
+        with self._stored("rounds.npz") as stored:
             return {
                 name: Rounds(stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"])
                 for at, name in enumerate(self.plan.all_schemes)
@@ -171,7 +184,7 @@ class Record:
     @property
     def total(self) -> int:
         """Rounds planned, the fit on all cases and permuted tables included."""
-        return sum(task.stop - task.start for task in self.tasks())
+        return sum(map(self.rounds_in, self.tasks()))
 
     def tasks(self) -> list[Task]:
         """All tasks, in the chunks this record was begun with."""
@@ -184,13 +197,24 @@ class Record:
 
     def done(self) -> int:
         """Rounds finished."""
-        return self.total - sum(task.stop - task.start for task in self.unfinished())
+        return self.total - sum(map(self.rounds_in, self.unfinished()))
+
+    def rounds_in(self, task: Task) -> int:
+        """Rounds of a task; a permuted table goes through several."""
+        of_each = self.plan.chance_rounds(self.table) if task.scheme == CHANCE else 1
+        return (task.stop - task.start) * of_each
 
     def _chunk(self, task: Task) -> Path:
         # scheme names hold characters that file systems forbid: their place in the plan does not
         names = {WHOLE: "whole", CHANCE: "chance"}
         place = names.get(task.scheme) or list(self.plan.all_schemes).index(task.scheme)
         return self.folder / "chunks" / f"{place}-{task.start:05d}.npz"
+
+    @contextmanager
+    def _stored(self, name: str) -> Iterator[Any]:
+        """Arrays of a file; opened here, since a damaged one would be left open."""
+        with _undamaged(self.folder, name) as path, path.open("rb") as file, np.load(file) as found:
+            yield found
 
     def add(self, finished: Finished) -> None:
         """Keep the answers of a finished task."""
@@ -212,21 +236,33 @@ class Record:
             np.savez(place, **arrays)
 
     def _read(self, task: Task) -> tuple[dict[str, Answers], dict[str, str]]:
-        answers, path = {}, self._chunk(task)
-        with _undamaged(path), np.load(path) as stored:
-            failures = json.loads(str(stored["failures"]))
-            for at, name in enumerate(self.plan.candidate_names):
-                if f"{at}-scores" in stored:
-                    answers[name] = Answers(
-                        stored[f"{at}-scores"],
-                        {
-                            way: Reduced(stored[f"{at}-{way}-bag"], stored[f"{at}-{way}-auc"])
-                            for way in _WAYS
-                        },
-                        {way: stored[f"{at}-{way}-all"] for way in _WAYS},
-                        *(stored.get(f"{at}-{part}") for part in ("picked", "inner")),
-                    )
+        answers, plan, rounds = {}, self.plan, self._rounds_of(task)
+        # inner scores are kept where the cut-off of the headline or of the final model is learned
+        kept = task.scheme in (WHOLE, plan.headline_scheme)
+        with self._stored(f"chunks/{self._chunk(task).name}") as stored:
+            failures = dict(json.loads(str(stored["failures"])))
+            for at, name in enumerate(plan.candidate_names):
+                if name in failures:
+                    continue
+                choice = plan.candidate(name)
+                answers[name] = Answers(
+                    stored[f"{at}-scores"],
+                    {
+                        way: Reduced(stored[f"{at}-{way}-bag"], stored[f"{at}-{way}-auc"])
+                        for way in _WAYS
+                    },
+                    {way: stored[f"{at}-{way}-all"] for way in _WAYS},
+                    stored[f"{at}-picked"] if choice.tuned else None,
+                    stored[f"{at}-inner"] if kept and plan.learns_cut_off(choice) else None,
+                )
+                if not _are_of(answers[name], rounds, n_classes=self.table.n_classes):
+                    raise ValueError(f"The answers of {name!r} are not of these rounds.")
         return answers, failures
+
+    def _rounds_of(self, task: Task) -> Rounds:
+        if task.scheme == WHOLE:
+            return whole_rounds(self.table.n_cases)
+        return self.rounds[task.scheme].part(slice(task.start, task.stop))
 
     def evaluation(self) -> Evaluation | None:
         """All figures as far as rounds have finished; None before the first of a scheme has.
@@ -280,16 +316,16 @@ class Record:
         for task in self.tasks():
             path = self._chunk(task)
             if task.scheme == CHANCE and path.exists():
-                with _undamaged(path), np.load(path) as stored:
-                    found.append(stored["chance"])
+                with self._stored(f"chunks/{path.name}") as stored:
+                    shape = task.stop - task.start, len(self.plan.candidates)
+                    found.append(stored["chance"].reshape(shape))  # refuses any other size
         return np.concatenate(found)
 
     def status(self) -> Status:
         """How far it has come; a worker that is gone without a word shows as interrupted."""
-        path = self.folder / "status.json"
-        if not path.exists():
+        if not (self.folder / "status.json").exists():
             return Status("interrupted", self.done(), self.total)
-        with _undamaged(path):
+        with _undamaged(self.folder, "status.json") as path:
             status = Status(**json.loads(path.read_text("utf-8")))
         beat = self.folder / "alive"
         silent = not beat.exists() or time.time() - beat.stat().st_mtime > SILENT
@@ -343,17 +379,30 @@ def _beside(path: Path) -> Iterator[Path]:
 
 
 @contextmanager
-def _undamaged(path: Path) -> Iterator[None]:
-    """Turn what a damaged file raises into a sentence."""
+def _undamaged(folder: Path, name: str) -> Iterator[Path]:
+    """The place of a record's file; what its damage raises is turned into a sentence."""
     try:
-        yield
-    except (OSError, KeyError, TypeError, ValueError, zipfile.BadZipFile) as error:
-        if isinstance(error, EvalError):
-            raise
+        yield folder / name
+    except RecordError:  # of another file, read in between
+        raise
+    except EvalError as error:
         raise RecordError(
-            f"The file {path.name!r} of record {path.parent.name!r} is missing or damaged; "
-            "evaluate the table again."
+            f"The file {name!r} of record {folder.name!r} cannot be used. {error}"
         ) from error
+    except _DAMAGE as error:
+        raise RecordError(
+            f"The file {name!r} of record {folder.name!r} is missing or damaged; evaluate the "
+            "table again."
+        ) from error
+
+
+def _are_of(answers: Answers, rounds: Rounds, *, n_classes: int) -> bool:
+    """Whether answers are as many as some rounds give: a chunk of other rounds is no use."""
+    r, k = rounds.n_rounds, n_classes
+    return answers.scores.shape == (rounds.test_sizes.sum(), k) and all(
+        (part.confusion.shape, part.auc.shape, on_all.shape) == ((r, k, k), (r,), (r, k, k))
+        for part, on_all in ((answers.in_bag[way], answers.on_all[way]) for way in _WAYS)
+    )
 
 
 def write(path: Path, data: bytes) -> None:

@@ -175,8 +175,9 @@ def learn(
         scores = round_scores(choice, bags.prepared, engine=engine, states=states)
         return Learned(scores, None, None)
     inner_states = [states[r] for r in bags.inner.of_bag]
+    pairs = bags.inner.rounds.pairs
     tried = [
-        round_scores(option, bags.inner_prepared, engine=engine, states=inner_states)
+        round_scores(option, bags.inner_prepared, engine=engine, states=inner_states)[pairs]
         for option in options
     ]
     picked = np.zeros(len(states), dtype=np.intp)
@@ -198,9 +199,9 @@ def learn(
 def _inner_values(
     bags: SharedBags, scores: Floats, *, measure: str, counted_by: CountedBy
 ) -> Floats:
-    """A measure of each bag's inner held-out answers, shape (R,); nan where there are none."""
+    """A measure of each bag's inner held-out answers, (T, K) to (R,); nan where there are none."""
     inner = bags.inner
-    held = held_out(bags.table, inner.rounds, scores[inner.rounds.pairs], counted_by=counted_by)
+    held = held_out(bags.table, inner.rounds, scores, counted_by=counted_by)
     function = ALL_MEASURES[measure].from_confusion
     if function is None:
         return _mean_by(held.auc, inner.of_bag, inner.n_bags)
@@ -268,5 +269,5 @@ def _inner_held_out(bags: SharedBags, tried: Sequence[Floats], picked: NDArray[n
     of_option = picked[inner.of_bag]
     for at, scores in enumerate(tried):
         here = of_option[row] == at
-        found[inner.of_bag[row[here]], case[here]] = scores[row[here], case[here]]
+        found[inner.of_bag[row[here]], case[here]] = scores[here]
     return found

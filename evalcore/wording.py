@@ -159,6 +159,18 @@ def decimal(value: float, digits: int = 2) -> str:
     return f"{value:.{digits}f}".replace("-", DASH)
 
 
+def score(value: float) -> str:
+    """A score or cut-off, with as many digits as keep it from looking like 0 or 1.
+
+    >>> score(0.3042), score(0.99971), score(-1.2)
+    ('0.304', '0.9997', '–1.200')
+    """
+    digits = 3
+    while digits < 12 and 0 < value < 1 and float(f"{value:.{digits}f}") in (0.0, 1.0):
+        digits += 1
+    return decimal(value, digits)
+
+
 def reading(value: float) -> str:
     """A reading as it might stand in the user's file, six digits at most.
 

@@ -42,6 +42,8 @@ def fill(
     ending : Event, optional
         Once set, nothing is said any more: whoever set it has the last word.
     """
+    # read by processes started for rounds: a file of the user's in the working folder is no module
+    os.environ["PYTHONSAFEPATH"] = "1"
     todo, rounds = record.unfinished(), record.rounds
     done, began = record.done(), time.monotonic()
     at_first = done
@@ -61,7 +63,7 @@ def fill(
             jobs = (os.cpu_count() or 1) if worth else None
         for finished in run(record.table, record.plan, rounds, todo=now, jobs=jobs or 1):
             record.add(finished)
-            done += finished.task.stop - finished.task.start
+            done += record.rounds_in(finished.task)
             seconds = _seconds_left(done - at_first, record.total - done, began)
             say(Status("running", done, record.total, seconds, process=os.getpid()))
     write_results(record)
@@ -117,7 +119,15 @@ def main(folder: str, parent: str) -> None:
                 "The evaluation stopped on an error that was not foreseen; the record's log has it."
             )
         )
-        record.set_status(Status("failed", record.done(), record.total, message=message))
+        record.set_status(_failed(record, message))
+
+
+def _failed(record: Record, message: str) -> Status:
+    """The status of a failure; nothing is counted where the record itself cannot be read."""
+    try:
+        return Status("failed", record.done(), record.total, message=message)
+    except EvalError:
+        return Status("failed", 0, 0, message=message)
 
 
 if __name__ == "__main__":

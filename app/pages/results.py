@@ -33,13 +33,17 @@ def nothing_yet() -> None:
     look.page("Results")
     st.write("No evaluation yet. Choose a table and settings, then Evaluate.")
     if st.button("Go to Settings", type="primary"):
-        st.switch_page("pages/settings.py")
+        st.switch_page("settings.py")
 
 
 def progress(record: Record) -> None:
     """How far it has come, with a button to cancel; leaves the live page once it has ended."""
     state.notice_ended()
-    status = record.status()
+    try:
+        status = record.status()
+    except EvalError as error:
+        st.error(look.safe(str(error)))
+        return
     if status.state not in state.LIVE:
         st.rerun()
     left = f", {duration(status.seconds_left)} left" if status.seconds_left else ""
@@ -162,7 +166,7 @@ def show(record: Record, evaluation: Evaluation, *, live: bool) -> None:
             "results."
         )
     if not live and st.button("Summary (PDF)", type="primary"):
-        st.switch_page("pages/summary.py")
+        st.switch_page("summary.py")
     st.header("What to weigh before relying on this", anchor=False)
     found = findings(evaluation.table, evaluation.plan, evaluation)
     look.findings(found, empty="No check raised a doubt.")
@@ -177,17 +181,21 @@ def figures(record: Record, *, live: bool) -> None:
     """The figures as far as they have come."""
     try:
         evaluation = state.evaluation(record, record.status().done)
+        first = "" if evaluation else _first_figures(record)
     except EvalError as error:
         st.error(look.safe(str(error)))
         return
     if evaluation is None:
         look.page("Results")
-        scheme = next(iter(record.rounds.values()))
-        first = min(chunk_rounds(record.table.n_cases), scheme.n_rounds)
-        soon = f"First figures after {count(first)} rounds."
-        st.write(soon if live else "No round has finished yet.")
+        st.write(first if live else "No round has finished yet.")
         return
     show(record, evaluation, live=live)
+
+
+def _first_figures(record: Record) -> str:
+    scheme = next(iter(record.rounds.values()))
+    first = min(chunk_rounds(record.table.n_cases), scheme.n_rounds)
+    return f"First figures after {count(first)} rounds."
 
 
 def main() -> None:

@@ -296,7 +296,7 @@ def evaluate(plan: Plan) -> None:
     except EvalError as error:
         st.error(look.safe(str(error)))
     else:
-        st.switch_page("pages/results.py")
+        st.switch_page("results.py")
 
 
 def offer(table: Table, values: Values, place: Any) -> Plan | None:
@@ -344,7 +344,7 @@ def main() -> None:
     if table is None:
         st.write("No table yet: choose one first, and the column that holds the class.")
         if st.button("Go to Upload", type="primary"):
-            st.switch_page("pages/upload.py")
+            st.switch_page("upload.py")
         return
     place, values = st.container(), Values()
     say_what_stays_behind()

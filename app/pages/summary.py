@@ -60,7 +60,7 @@ def main() -> None:
         look.page("Summary")
         st.write("No evaluation yet. Choose a table and settings, then Evaluate.")
         if st.button("Go to Settings", type="primary"):
-            st.switch_page("pages/settings.py")
+            st.switch_page("settings.py")
     look.caution(CAUTION)
 
 

@@ -231,7 +231,7 @@ def main() -> None:
     show_table(table)
     preview(sheet)
     if st.button("Go on to Settings", type="primary"):
-        st.switch_page("pages/settings.py")
+        st.switch_page("settings.py")
 
 
 main()

@@ -55,7 +55,8 @@ def build_in_child(record_folder: Path, out: Path) -> tuple[Path, Path]:
 
 def own_environment() -> dict[str, str]:
     """The child's, so that it finds the same `app` from any folder and writes UTF-8."""
-    paths = [str(ROOT), *filter(None, [os.environ.get("PYTHONPATH")])]
+    # an empty entry would stand for the working folder, and whatever lies in it
+    paths = [str(ROOT), *filter(None, os.environ.get("PYTHONPATH", "").split(os.pathsep))]
     return {**os.environ, "PYTHONPATH": os.pathsep.join(paths), "PYTHONIOENCODING": "utf-8"}
 
 

@@ -60,7 +60,7 @@ def records(tmp_path, monkeypatch) -> Path:
 @pytest.fixture
 def app() -> AppTest:
     """A visitor who has just come."""
-    return checked(AppTest.from_file(str(ROOT / "app" / "main.py"), default_timeout=60).run())
+    return checked(AppTest.from_file(str(ROOT / "app" / "pages" / "main.py"), default_timeout=60).run())
 
 
 def checked(at: AppTest) -> AppTest:
@@ -70,7 +70,7 @@ def checked(at: AppTest) -> AppTest:
 
 
 def go(at: AppTest, page: str) -> AppTest:
-    return checked(at.switch_page(f"pages/{page}.py").run())
+    return checked(at.switch_page(f"{page}.py").run())
 
 
 def press(at: AppTest, label: str) -> AppTest:
@@ -443,7 +443,7 @@ def results(kept) -> AppTest:
     """The results of that record, opened by their address; only to look at."""
     with pytest.MonkeyPatch.context() as patch:
         patch.setenv("WITHHELD_RECORDS", str(kept))
-        at = AppTest.from_file(str(ROOT / "app" / "main.py"), default_timeout=60)
+        at = AppTest.from_file(str(ROOT / "app" / "pages" / "main.py"), default_timeout=60)
         return visit(checked(at.run()), Record(*kept.iterdir()), "results")
 
 

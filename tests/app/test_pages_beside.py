@@ -22,6 +22,7 @@ from evalcore.record import Record, new_folder
 from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.summary import Summary, summary
 from evalcore.table import Roles
+from evalcore.wording import percent
 from evalcore.worker import fill
 
 from .test_command_beside import small_table
@@ -38,7 +39,7 @@ BARE = Plan(
 ASKED = replace(
     BARE,
     candidates=(*BARE.candidates, choose(CANDIDATES, "nearest_neighbours", k=(1, 5))),
-    cut_off=CutOffRule.read("failing:miss=3,share=0.1-0.3,undecided=0.6"),
+    cut_off=CutOffRule.read("failing:miss=8,share=0.1-0.3,undecided=0.6"),
     curve=choose(ALL_SCHEMES, "learning_curve"),
     permutations=5,
 )
@@ -66,7 +67,7 @@ def opened(record: Record, page_: str) -> AppTest:
     """A page of a record, opened by its address; it throws nothing."""
     with pytest.MonkeyPatch.context() as patch:
         patch.setenv("WITHHELD_RECORDS", str(record.folder.parent))
-        at = AppTest.from_file(str(ROOT / "app" / "main.py"), default_timeout=60)
+        at = AppTest.from_file(str(ROOT / "app" / "pages" / "main.py"), default_timeout=60)
         return visit(checked(at.run()), record, page_)
 
 
@@ -115,16 +116,25 @@ class TestResults:
         for row in rows:
             assert spaced(row.figure) in texts(results)
 
-    def test_the_answer_gives_the_figures_at_the_cut_off(self, asked):
+    @pytest.mark.parametrize(
+        ("measure", "of_class", "words"),
+        [
+            ("accuracy", "", "is expected to be right in {} ("),
+            ("sensitivity", "failing", "failing cases found {} ("),
+            ("sensitivity", "good", "good cases passed {} ("),
+        ],
+    )
+    def test_the_answer_gives_the_figures_at_the_cut_off(self, asked, measure, of_class, words):
         evaluation = asked.evaluation()
-        given = [
-            evaluation.estimate("sensitivity", "lda", estimator=by, of_class="failing").value
-            for by in ("at_cut_off", "held_out_by_case")
-        ]
-        assert given[0] != given[1]
-        found, highest = (f"failing cases found {100 * value:.0f} % (" for value in given)
-        assert found in spaced(answer(evaluation))
-        assert found != highest
+        at_cut_off, highest = (
+            words.format(percent(estimate.value, estimate.n))
+            for estimate in (
+                evaluation.estimate(measure, "lda", estimator=by, of_class=of_class)
+                for by in ("at_cut_off", "held_out_by_case")
+            )
+        )
+        assert at_cut_off != highest
+        assert at_cut_off in answer(evaluation)
 
     def test_of_a_record_without_any_no_such_header(self, bare):
         page_ = opened(bare, "results")
@@ -188,7 +198,7 @@ class TestSummary:
     def test_carries_the_plan_s_lines(self, said):
         plan = dict(said.plan)
         assert spaced(plan["learning curve"]) == "learning_curve:sizes=6,subsets=20"
-        assert plan["cut-off"] == "failing:miss=3,alarm=1,share=0.1-0.3,undecided=0.6"
+        assert plan["cut-off"] == "failing:miss=8,alarm=1,share=0.1-0.3,undecided=0.6"
         assert plan["chance check"] == "5 permutations of the labels"
         assert ("candidate", "nearest neighbours [nearest_neighbours:k=1/5,scaling=standard]") in (
             said.plan

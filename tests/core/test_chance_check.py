@@ -1,6 +1,7 @@
 """The chance check: p-values counted by hand, and what they do with noise and with a signal."""
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -44,7 +45,7 @@ def p_by_hand(observed, permuted):
 
 
 class TestInAnEvaluation:
-    table = a_table(shift=0.55)
+    table = a_table(shift=0.3)
     plan = Plan(
         table.roles,
         (CROSS, choose(SCHEMES, "bootstrap", rounds=22)),
@@ -233,6 +234,40 @@ class TestGivenFigures:
         assert always.accuracy == always.majority_share
 
 
+class TestDealtAgain:
+    """Twelve cases in four stretches of time, four of class b: one of the first three."""
+
+    labels = (1, 0, 0, 0, 1, 0, 0, 1, 0, 0, 1, 0)
+    table = table_of(
+        list(labels),
+        features=np.random.default_rng(8).normal(size=(12, 2)),
+        entries={"day": [str(at) for at in range(12)]},
+    )
+    plan = Plan(
+        table.roles,
+        (choose(SCHEMES, "forward_in_time", column="day", parts=3),),
+        (BAYES, LDA),
+        permutations=30,
+    )
+
+    def test_no_figure_is_lacking(self):
+        evaluation, _ = carried_out(self.table, self.plan)
+        assert not any(np.isnan(check.permuted).any() for check in evaluation.beside.chance)
+
+    def test_where_it_is_of_no_avail_tables_are_counted_and_count_against_it(self, monkeypatch):
+        monkeypatch.setattr("evalcore.permuted.ATTEMPTS", 1)
+        evaluation, _ = carried_out(self.table, self.plan)
+        rows = [e for e in evaluation.beside.estimates if e.estimator in (ESTIMATOR, BEST)]
+        lacking = np.isnan(evaluation.beside.chance[0].permuted)
+        assert 0 < lacking.sum() < 30
+        for check in evaluation.beside.chance:
+            # no candidate can be judged on such a table, and none is left out of those counted
+            assert np.isnan(check.permuted).tolist() == lacking.tolist()
+            assert check.test.p == p_by_hand(check.observed, check.permuted.tolist())
+            assert check.test.p >= (lacking.sum() + 1) / 31
+        assert {(e.rounds, e.undefined_rounds) for e in rows} == {(30, lacking.sum())}
+
+
 class TestSimulated:
     """Tables made anew: p is about uniform without a signal, and as small as can be with one."""
 
@@ -263,3 +298,44 @@ class TestSimulated:
         for seed in range(3):
             found = self.p_of(seed, shift=4.0, candidates=(BAYES, LDA))
             assert found == [1 / 20] * 3
+
+
+class TestKeptTogether:
+    """Twelve producers of five lots: half of them, by chance, are of class b.
+
+    The features are partly the producer's own, and have nothing to do with its class.
+    """
+
+    @staticmethod
+    def p_of(seed):
+        rng = np.random.default_rng([12, seed])
+        producer = np.repeat(np.arange(12), 5)
+        labels = rng.permutation(np.arange(12) % 2)[producer]
+        features = 2 * rng.normal(size=(12, 2))[producer] + rng.normal(size=(60, 2))
+        names = [f"P{at:02d}" for at in producer]
+        table = table_of(labels.tolist(), features=features, entries={"producer": names})
+        kept = choose(SCHEMES, "cross_validation", folds=3, repeats=1, keep="producer")
+        # few rounds make ties of balanced accuracy likely, and ties make p too large
+        plan = Plan(table.roles, (kept,), (LDA,), seed=seed, measure="auc", permutations=19)
+        evaluation, _ = carried_out(table, plan)
+        (check,) = evaluation.beside.chance
+        return check.test.p
+
+    @pytest.mark.parametrize("tables", [150, pytest.param(2000, marks=pytest.mark.slow)])
+    def test_p_keeps_its_word(self, tables):
+        p = np.array([self.p_of(seed) for seed in range(tables)])
+        # as often as it says, since m + 1 = 20 divides each level
+        for level in (0.05, 0.25, 0.5, 0.75):
+            spread = np.sqrt(level * (1 - level) / tables)
+            assert abs((p <= level + 1e-9).mean() - level) < 2.5 * spread
+
+    def test_dealt_freely_it_would_not(self, monkeypatch):
+        """Lots of one producer get different classes then, so that its part helps nobody."""
+
+        def freely(table, rng, _):
+            return replace(table, labels=rng.permutation(table.labels))
+
+        monkeypatch.setattr("evalcore.permuted.permuted_table", freely)
+        tables = 40
+        p = np.array([self.p_of(seed) for seed in range(tables)])
+        assert (p <= 0.05 + 1e-9).mean() > 0.05 + 2.5 * np.sqrt(0.05 * 0.95 / tables)

@@ -45,11 +45,36 @@ class TestCutOffs:
         given = alone(cut_off=CutOffRule("b", "cost", miss=10))
         assert found("cut_off_chosen_here", *given) == []
 
-    def test_nineteen_of_twenty_take_nineteen(self):
-        rule = CutOffRule("b", "floor", floor=0.95)
-        finding = only("cut_off_calls_all", *as_given(at_floor(0, of_class=18, rule=rule)))
-        assert (finding.value, finding.threshold) == (18, 19)
-        assert found("cut_off_calls_all", *as_given(at_floor(0, of_class=19, rule=rule))) == []
+    @pytest.mark.parametrize(
+        ("floor", "of_class", "expected"),
+        [
+            # nine for 9 of 10 and nineteen for 19 of 20, in all
+            (0.9, 8, (8, 9)),
+            (0.95, 18, (18, 19)),
+            # and in the bags, each half of all: eight and nine of seventeen
+            (0.9, 9, (1, 0.5)),
+            (0.9, 16, (1, 0.5)),
+            (0.9, 17, None),
+            (0.9, 18, None),
+            (0.95, 36, (1, 0.5)),
+            (0.95, 38, None),
+        ],
+    )
+    def test_too_few_in_all_or_in_the_bags(self, floor, of_class, expected):
+        rule = CutOffRule("b", "floor", floor=floor)
+        given = as_given(at_floor(0, of_class=of_class, rule=rule))
+        numbers = [(f.value, f.threshold) for f in found("cut_off_calls_all", *given)]
+        assert numbers == ([expected] if expected else [])
+
+    def test_too_few_in_the_bags_says_that_held_out_figures_are_of_something_else(self):
+        finding = only("cut_off_calls_all", *as_given(at_floor(0, of_class=9, rule=FLOOR)))
+        assert finding.severity == "grave"
+        assert finding.title.replace(NBSP, " ") == (
+            "In 100 % of rounds the bag holds too few b cases for a floor of 90 %; every case is "
+            "called b there"
+        )
+        assert "there are 9 in all and fewer in a bag (threshold: 50" in finding.seen
+        assert finding.seen.endswith("not those of the cut-off that goes to work.")
 
     @pytest.mark.parametrize("check", ["cut_off_calls_all", "floor_not_delivered"])
     def test_a_floor_is_asked_of_a_floor_alone(self, check):
@@ -144,6 +169,7 @@ class TestChance:
             (0, 4, "moderate", 1 / 5),  # the least that four tables can give
             (1, 4, "grave", 2 / 5),
             (0, 18, "moderate", 1 / 19),
+            (1, 19, "grave", 2 / 20),  # nineteen are enough for 0.05
             (1, 199, None, 2 / 200),
             (9, 199, None, 10 / 200),
             (10, 199, "grave", 11 / 200),
@@ -190,6 +216,8 @@ class TestChance:
     def test_few_that_scatter_may_be_off_by_chance(self):
         # mean 0.6, standard error 0.3 sqrt(4/3)/2 = 0.173
         assert found("permuted_off_chance", *permuted(0.3, 0.9, 0.3, 0.9)) == []
+        # 0.06 sqrt(4/3)/2 = 0.0346: three of them are 0.104, a little more than the 0.1 seen
+        assert found("permuted_off_chance", *permuted(0.54, 0.66, 0.54, 0.66)) == []
         # 0.02 sqrt(4/3)/2 = 0.0115: three of them are 0.035
         assert len(found("permuted_off_chance", *permuted(0.58, 0.62, 0.58, 0.62))) == 1
         assert found("permuted_off_chance", *permuted(0.9)) == []

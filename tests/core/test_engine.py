@@ -1,6 +1,11 @@
 """Fits and their answers: known figures of real tables, and digits that nothing else can move."""
 
 import dataclasses
+import json
+import os
+import pathlib
+import subprocess
+import sys
 
 import numpy as np
 import pytest
@@ -305,3 +310,75 @@ def test_a_candidate_that_fails_does_not_end_the_others(monkeypatch):
         assert part.failures == {"lda": "ArithmeticError: no luck today"}
         assert set(part.answers) == {"majority"}
         assert part.seconds > 0
+
+
+# one task in a process that has loaded nothing of scikit-learn yet; its thread pools are looked at
+# from inside the fit, where a pool that was loaded on the way counts too
+LOOKING = """
+import dataclasses, json
+import numpy as np
+from threadpoolctl import threadpool_info
+from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
+from evalcore.engine import Task, carry_out
+from evalcore.plan import Plan
+from evalcore.schemes import SCHEMES
+from tests.core.checks import table_of
+
+seen = []
+
+def watched(settings, state):
+    model = logistic.model(settings, state)
+    fit = model.fit
+    def looking(x, y):
+        seen.append(threadpool_info())
+        fitted = fit(x, y)
+        seen.append(threadpool_info())
+        return fitted
+    model.fit = looking
+    return model
+
+logistic = CANDIDATES["logistic"]
+CANDIDATES["logistic"] = dataclasses.replace(logistic, model=watched)
+# so large that two threads of a linear algebra library give other last digits than one
+rng = np.random.default_rng(5)
+labels = rng.integers(0, 2, 600)
+features = rng.normal(size=(600, 100)) + 0.3 * labels[:, None]
+table = table_of(labels.tolist(), features=features)
+choices = (choose(SCHEMES, "holdout"),), (choose(CANDIDATES, "logistic"),)
+plan = Plan(table.roles, *choices, engine="plain")
+rounds = plan.draw(table)
+before = threadpool_info()
+done = carry_out(table, plan, rounds, Task("holdout", 0, 1))
+print(json.dumps([before, seen, done.answers["logistic"].scores.tobytes().hex()]))
+"""
+THREADS = ("OMP_", "OPENBLAS_", "GOTO_", "MKL_", "BLIS_", "VECLIB_", "NUMEXPR_", "KMP_")
+
+
+def in_a_fresh_process(**given):
+    """Thread pools before the task, those during its fit, and the digits."""
+    root = str(pathlib.Path(__file__).parents[2])
+    # tasks carried out by other tests leave some behind
+    without = {name: value for name, value in os.environ.items() if not name.startswith(THREADS)}
+    done = subprocess.run(
+        [sys.executable, "-c", LOOKING],
+        env=without | {"PYTHONPATH": root} | given,
+        capture_output=True,
+        text=True,
+        check=True,
+    )
+    return json.loads(done.stdout)
+
+
+@pytest.mark.skipif((os.cpu_count() or 1) < 2, reason="one core has one thread anyway")
+def test_one_thread_inside_and_the_same_digits_whatever_is_set_outside():
+    before, during, digits = in_a_fresh_process()
+    assert max(pool["num_threads"] for pool in before) > 1
+    assert len(during) == 2
+    for pools in during:
+        loaded = {pool["filepath"] for pool in pools} - {pool["filepath"] for pool in before}
+        assert {pool["user_api"] for pool in pools if pool["filepath"] in loaded} >= {"openmp"}
+        assert {pool["filepath"]: pool["num_threads"] for pool in pools} == {
+            pool["filepath"]: 1 for pool in pools
+        }
+    assert in_a_fresh_process(OMP_NUM_THREADS="2")[2] == digits

@@ -1,5 +1,6 @@
 """Permuted tables: what is moved, which rounds they go through, and their figures by hand."""
 
+import itertools
 from collections import Counter
 from fractions import Fraction
 
@@ -8,13 +9,15 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_array_equal
+from scipy.stats import chisquare
 from sklearn.metrics import balanced_accuracy_score, roc_auc_score
 from sklearn.naive_bayes import GaussianNB
 
 from evalcore.answers import HeldOut
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose, choose_written
-from evalcore.engine import CHANCE, PERMUTATIONS, run, tasks
+from evalcore.engine import CHANCE, Task, run, tasks
+from evalcore.groups import groups_of
 from evalcore.permuted import chance_figure, chance_rounds, permuted_figures, permuted_table
 from evalcore.pipeline import candidates_in
 from evalcore.plan import Plan
@@ -53,6 +56,26 @@ def seen(monkeypatch):
     return found
 
 
+@pytest.fixture
+def unanswered(monkeypatch):
+    """The same, and no candidate answers: where many tables are looked at."""
+    found = []
+
+    def watched(table, plan, part, **named):
+        found.append((table, part))
+        return iter(())
+
+    monkeypatch.setattr("evalcore.permuted.candidates_in", watched)
+    return found
+
+
+def in_time(labels, *, sites=""):
+    """One case a day of these classes, with features that say nothing."""
+    features = np.random.default_rng(1).normal(size=(len(labels), 2))
+    entries = {"day": [str(at) for at in range(len(labels))]}
+    return table_of(labels, features=features, entries=entries | ({"site": sites} if sites else {}))
+
+
 class TestTable:
     @given(st.lists(st.tuples(st.integers(0, 2), st.integers(1, 4)), min_size=2), st.integers(0))
     def test_classes_move_between_units_whole(self, units, seed):
@@ -77,6 +100,126 @@ class TestTable:
         assert len(times) == 6
         # 200 each, standard deviation sqrt(1200 x 1/6 x 5/6) = 12.9
         assert all(abs(number - 200) < 4 * 12.9 for number in times.values())
+
+
+def in_sites(classes, sites, *, twice=()):
+    """Units of these classes in these sites; further rows of the units `twice` stand at the end."""
+    units = [*range(len(classes)), *twice]
+    entries = {"site": [sites[unit] for unit in units]}
+    return table_of([classes[unit] for unit in units], units=units, entries=entries)
+
+
+def dealt(table, number=1, *, seed=3):
+    """How often classes of units came up, of so many tables dealt to the sites."""
+    rng, sites = np.random.default_rng(seed), groups_of(table, "site")
+    found = Counter()
+    for _ in range(number):
+        mixed = permuted_table(table, rng, sites)
+        # all rows of a unit got the same
+        assert_array_equal(mixed.labels, mixed.labels[: mixed.n_units][mixed.units])
+        found[tuple(mixed.labels[: mixed.n_units].tolist())] += 1
+    return found
+
+
+def by_site(classes, sites):
+    """How many units of each class stand in each site."""
+    return {site: Counter(k for k, s in zip(classes, sites, strict=True) if s == site)
+            for site in sites}  # fmt: skip
+
+
+class TestKeptTogether:
+    @given(st.lists(st.tuples(st.integers(0, 2), st.integers(1, 4)), min_size=2, max_size=8),
+           st.integers(0))  # fmt: skip
+    def test_whole_groups_trade_their_class(self, given_, seed):
+        of_site = [0, 1, *(k for k, _ in given_)]
+        site = np.repeat(np.arange(len(of_site)), [2, 1, *(size for _, size in given_)])
+        classes, names = np.array(of_site)[site].tolist(), [f"s{at}" for at in site]
+        # sites stand in turn, so that neighbouring rows are of different ones
+        order = np.argsort(np.concatenate([np.arange((site == s).sum()) for s in set(site)]))
+        classes, names = [classes[at] for at in order], [names[at] for at in order]
+        table = in_sites(classes, names, twice=[0, 2])
+        (mixed,) = dealt(table, seed=seed)
+        now = by_site(mixed, names)
+        assert all(len(of) == 1 for of in now.values())
+        # as many sites of each class as before, though not as many units
+        assert Counter(k for of in now.values() for k in of) == Counter(of_site)
+
+    @given(st.lists(st.tuples(st.integers(0, 2), st.sampled_from("pqr")), min_size=1, max_size=12),
+           st.integers(0))  # fmt: skip
+    def test_units_of_mixed_groups_trade_within(self, given_, seed):
+        classes = [0, 1, *(k for k, _ in given_)]
+        sites = ["p", "p", *(site for _, site in given_)]
+        (mixed,) = dealt(in_sites(classes, sites, twice=[1]), seed=seed)
+        assert by_site(mixed, sites) == by_site(classes, sites)
+
+    @pytest.mark.parametrize(
+        ("classes", "sites", "number"),
+        [
+            # four whole sites of the classes 0, 0, 1, 2: 4!/2!
+            ((0, 0, 0, 1, 1, 1, 2), "ppqrrrs", 12),
+            ((0, 1, 1), "pqq", 2),
+            # 4!/(2! 2!) in p, 2! in q, and one alone in r
+            ((0, 1, 0, 1, 1, 0, 1), "pqpppqr", 12),
+            # one mixed site is enough: the others may not trade with it, nor with each other
+            ((0, 0, 1, 1, 0, 0, 1), "ppqqrrr", 3),
+        ],
+    )
+    def test_every_arrangement_is_as_likely(self, classes, sites, number):
+        before = by_site(classes, sites)
+        if all(len(of) == 1 for of in before.values()):
+            of_site = [k for of in before.values() for k in of]
+            possible = {
+                tuple(dict(zip(before, now, strict=True))[site] for site in sites)
+                for now in itertools.permutations(of_site)
+            }
+        else:
+            every = set(itertools.permutations(classes))
+            possible = {now for now in every if by_site(now, sites) == before}
+        assert len(possible) == number
+        found = dealt(in_sites(classes, sites, twice=[0, 2]), 100 * number)
+        assert set(found) == possible
+        assert chisquare(list(found.values())).pvalue > 0.001
+
+    def test_groups_that_are_the_units_trade_freely(self):
+        classes, names = [0, 0, 0, 1, 1, 2], "pqrstu"
+        table = in_sites(classes, names, twice=[0, 3])
+        alone = permuted_table(table, np.random.default_rng(5))
+        sites = groups_of(table, "site")
+        as_sites = permuted_table(table, np.random.default_rng(5), sites)
+        assert_array_equal(as_sites.labels, alone.labels)
+        assert len(dealt(table, 600)) == 60  # 6!/(3! 2!)
+
+    @pytest.mark.parametrize(
+        ("scheme", "together"),
+        [
+            ("cross_validation:folds=3,repeats=2,keep=site", True),
+            ("bootstrap:rounds=4,keep=site", True),
+            ("random_subsampling:rounds=4,keep=site", True),
+            ("holdout:keep=site", True),
+            ("leave_block_out:column=site", True),
+            ("cross_validation:folds=3,repeats=2", False),
+            ("leave_one_out", False),
+            # time is no group: what was measured on one day may be of two classes
+            ("forward_in_time:column=day,parts=2", False),
+        ],
+    )
+    def test_together_is_what_the_scheme_keeps(self, scheme, together, unanswered):
+        sites = "ppqqrrssttuu"
+        classes = [0, 0, 1, 1] * 3
+        rng = np.random.default_rng(1)
+        table = table_of(
+            classes,
+            features=rng.normal(size=(12, 2)),
+            entries={"site": sites, "day": [str(at // 3) for at in range(12)]},
+        )
+        plan = Plan(table.roles, (choose_written(SCHEMES, scheme),), (BAYES,), permutations=1)
+        for number in range(20):
+            permuted_figures(table, plan, number)
+        mixed = [table.labels.tolist() for table, _ in unanswered]
+        assert len(mixed) == 20
+        assert any(labels != classes for labels in mixed)
+        whole = [max(map(len, by_site(labels, sites).values())) == 1 for labels in mixed]
+        assert all(whole) if together else not all(whole)
 
 
 class TestRounds:
@@ -104,6 +247,7 @@ class TestRounds:
         plan = Plan(table.roles, (choose_written(SCHEMES, scheme),), (BAYES,), permutations=1)
         (drawn,) = plan.draw(table).values()
         assert chance_rounds(drawn).n_rounds == number
+        assert plan.chance_rounds(table) == number
         permuted_figures(table, plan, 0)
         assert seen[0][1].n_rounds == number
         assert plan.fits(table) == drawn.n_rounds + 1 + number
@@ -219,8 +363,10 @@ class TestDigits:
         few, many = self.figures(3, self.grid, BAYES), self.figures(7, self.grid, BAYES)
         assert (few.shape, many.shape) == ((3, 2), (7, 2))
         assert few.tobytes() == many[:3].tobytes()
-        assert PERMUTATIONS == 5  # so that the seven stand in two tasks
         assert len({row.tobytes() for row in many}) > 1
+        # each table is a task of its own
+        alone = [Task(CHANCE, number, number + 1) for number in range(7)]
+        assert tasks({}, permutations=7)[1:] == alone
 
     def test_candidates_beside_move_nothing(self):
         alone = self.figures(3, self.grid)
@@ -270,15 +416,94 @@ class TestUndefined:
         assert np.isnan(found[:, 0]).all()
         assert not np.isnan(found[:, 1]).any()
 
-    def test_where_the_scheme_does_not_suit_there_is_none(self):
-        """Two of a class in two sites: permuted, both may stand in one, and none can be left out."""
-        site = ["p"] * 6 + ["q"] * 6
-        labels = [1, 0, 0, 0, 0, 0, 1, 0, 0, 0, 0, 0]
-        rng = np.random.default_rng(1)
-        table = table_of(labels, features=rng.normal(size=(12, 2)), entries={"site": site})
-        scheme = choose(SCHEMES, "bootstrap", rounds=4, keep="site")
-        plan = Plan(table.roles, (scheme,), (BAYES,), permutations=60)
-        found = figures(table, plan)
-        alone = np.isnan(found[:, 0])
-        # 5 of 11 partners stand in the same site: 27.3 of 60 expected, standard deviation 3.9
-        assert abs(alone.sum() - 60 * 5 / 11) < 4 * 3.9
+    @pytest.mark.parametrize(
+        ("scheme", "labels"),
+        [
+            # both of class b may be dealt to the first four, which are learned from only
+            ("forward_in_time:column=day,parts=2", [1, 0, 0, 0, 0, 0, 1, 0, 0, 0, 0, 0]),
+            # all of four bags may hold both sites
+            ("bootstrap:rounds=4,keep=site", [1, 0, 0, 0, 0, 0, 1, 0, 0, 0, 0, 0]),
+        ],
+    )
+    def test_where_a_class_is_never_held_out_there_is_none(self, scheme, labels, seen):
+        table = in_time(labels, sites="pppppp" + "qqqqqq")
+        plan = Plan(table.roles, (choose_written(SCHEMES, scheme),), (BAYES,), permutations=50)
+        found = figures(table, plan)[:, 0]
+        held_out = [set(mixed.labels[part.test.any(axis=0)].tolist()) for mixed, part in seen]
+        assert np.isnan(found).tolist() == [classes != {0, 1} for classes in held_out]
+        assert 0 < np.isnan(found).sum() < 25
+
+
+class TestDealtAgain:
+    """Labels that do not suit the scheme, where the labels as they came do."""
+
+    labels = (1, 0, 0, 0, 1, 0, 0, 1, 0, 0, 1, 0)
+    forward = choose(SCHEMES, "forward_in_time", column="day", parts=3)
+
+    @staticmethod
+    def suits(labels) -> bool:
+        """Whether both classes are among the first quarter, which is learned from."""
+        return set(labels[:3]) == {0, 1}
+
+    def figures(self, number):
+        table = in_time(self.labels)
+        return figures(table, Plan(table.roles, (self.forward,), (BAYES,), permutations=number))
+
+    @pytest.mark.parametrize("scheme", ["leave_block_out:column=site", "bootstrap:keep=site"])
+    def test_two_sites_in_turn(self, scheme, seen):
+        """Two of a class, one a site: if they traded freely, both would stand in one in 30 of 66."""
+        table = in_time([1, 0, 0, 0, 0, 0, 1, 0, 0, 0, 0, 0], sites="pppppp" + "qqqqqq")
+        plan = Plan(table.roles, (choose_written(SCHEMES, scheme),), (BAYES,), permutations=30)
+        assert not np.isnan(figures(table, plan)).any()
+        assert all(mixed.labels[:6].sum() == mixed.labels[6:].sum() == 1 for mixed, _ in seen)
+        assert len({mixed.labels.tobytes() for mixed, _ in seen}) > 15  # of 36
+
+    def test_forward_in_time(self, seen):
+        assert not np.isnan(self.figures(40)).any()
+        assert all(self.suits(mixed.labels.tolist()) for mixed, _ in seen)
+
+    def test_every_arrangement_that_suits_is_as_likely(self, unanswered):
+        placed = itertools.combinations(range(12), 4)
+        early = Counter(sum(at < 3 for at in places) for places in placed)
+        assert early == {0: 126, 1: 252, 2: 108, 3: 9}
+        table = in_time(self.labels)
+        plan = Plan(table.roles, (self.forward,), (BAYES,), permutations=1)
+        for number in range(600):
+            permuted_figures(table, plan, number)
+        found = Counter(int(mixed.labels[:3].sum()) for mixed, _ in unanswered)
+        assert sorted(found) == [1, 2]
+        assert chisquare([found[1], found[2]], [600 * 252 / 360, 600 * 108 / 360]).pvalue > 0.001
+        of_case = sum(mixed.labels[3:] for mixed, _ in unanswered)
+        # the nine later cases are alike
+        assert chisquare(of_case).pvalue > 0.001
+
+    def test_attempts_come_to_an_end(self, monkeypatch):
+        found, lacking = [], []
+        for attempts in (200, 2, 1):
+            monkeypatch.setattr("evalcore.permuted.ATTEMPTS", attempts)
+            found.append(self.figures(60)[:, 0])
+            lacking.append(np.isnan(found[-1]))
+        # 126 + 9 of 495 arrangements do not suit: 16.4 of 60 expected, standard deviation 3.5;
+        # and in two turns 4.5, standard deviation 2.0
+        assert abs(lacking[2].sum() - 60 * 135 / 495) < 3 * 3.5
+        assert abs(lacking[1].sum() - 60 * (135 / 495) ** 2) < 3 * 2.0
+        assert lacking[0].sum() == 0 < lacking[1].sum() < lacking[2].sum()
+        # the first arrangement that suits is taken, however many might be looked at
+        for some, none in zip(found[1:], lacking[1:], strict=True):
+            assert some[~none].tobytes() == found[0][~none].tobytes()
+
+    def test_it_ends_where_none_suits(self, monkeypatch, unanswered):
+        """All labels of a class stand in one block: no arrangement can do without it."""
+        table = in_time([1, 1, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0], sites="pp" + "q" * 10)
+        block = choose(SCHEMES, "leave_block_out", column="site")
+        plan = Plan(table.roles, (block,), (BAYES, choose(CANDIDATES, "lda")), permutations=1)
+        looked_at = []
+
+        def counted(*given_):
+            looked_at.append(permuted_table(*given_))
+            return looked_at[-1]
+
+        monkeypatch.setattr("evalcore.permuted.permuted_table", counted)
+        assert np.isnan(permuted_figures(table, plan, 0)).tolist() == [True, True]
+        assert len(looked_at) == 200
+        assert unanswered == []

@@ -5,6 +5,7 @@ import dataclasses
 import io
 import json
 import re
+import shutil
 import warnings
 
 import numpy as np
@@ -13,6 +14,7 @@ from numpy.testing import assert_array_equal
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.engine import WHOLE, Task, chunk_rounds, run, tasks
 from evalcore.errors import EvalError, PlanError, RecordError, TableError
 from evalcore.estimates import by_case
@@ -425,6 +427,207 @@ class TestStatus:
         assert record.cancelled()
         record.clear_cancel()
         assert not record.cancelled()
+
+
+def two_classes() -> bytes:
+    """Thirty cases of two classes, one reading each."""
+    rng = np.random.default_rng(41)
+    lines = [
+        f"{rng.normal(case % 3 > 0):.4f},{'sound' if case % 3 else 'foul'}" for case in range(30)
+    ]
+    return ("reading,class\n" + "\n".join(lines) + "\n").encode()
+
+
+@pytest.fixture(scope="module")
+def complete(tmp_path_factory) -> Record:
+    """A small finished record in which every kind of array is kept."""
+    plan = Plan(
+        Roles("class"),
+        (choose(SCHEMES, "cross_validation", folds=3, repeats=1),),
+        (
+            choose(CANDIDATES, "majority"),
+            choose(CANDIDATES, "nearest_neighbours", k=(1, 3)),
+            choose(CANDIDATES, "naive_bayes"),
+        ),
+        cut_off=CutOffRule("foul", "cost", miss=4.0),
+        permutations=2,
+    )
+    folder = new_folder(tmp_path_factory.mktemp("complete"))
+    record = Record.create(folder, two_classes(), "readings.csv", plan)
+    fill(record, jobs=1)
+    return record
+
+
+READERS = {
+    "find": lambda folder: find(folder.parent, folder.name),
+    "record": Record,
+    "plan": lambda folder: Record(folder).plan,
+    "source": lambda folder: Record(folder).source,
+    "table": lambda folder: Record(folder).table,
+    "rounds": lambda folder: Record(folder).rounds,
+    "status": lambda folder: Record(folder).status(),
+    "evaluation": lambda folder: Record(folder).evaluation(),
+}
+CHUNKS = ("chunks/whole-00000.npz", "chunks/0-00000.npz", "chunks/chance-00000.npz")
+# who needs which file; nobody else may be troubled by it
+NEEDED_BY = {
+    "about.json": set(READERS),
+    "plan.json": {"plan", "table", "rounds", "evaluation"},
+    "rounds.npz": {"rounds", "evaluation"},
+    "status.json": {"status"},
+    "source.csv": {"table", "evaluation"},
+} | {name: {"evaluation"} for name in CHUNKS}
+
+
+def refusals(folder) -> dict[str, str]:
+    """What each reader that refuses a record says; any error but a RecordError passes through."""
+    said = {}
+    for name, read in READERS.items():
+        try:
+            read(folder)
+        except RecordError as error:
+            said[name] = str(error)
+    return said
+
+
+def damaged(name: str, folder) -> str:
+    return (
+        f"The file '{name}' of record '{folder.name}' is missing or damaged; evaluate the table "
+        "again."
+    )
+
+
+def of_that_file(said: dict[str, str], name: str, folder) -> bool:
+    """Whether all that is said is sentences that name the file and the record."""
+    start = f"The file '{name}' of record '{folder.name}' "
+    return all(
+        message.startswith(start) and message.endswith(".") and "\n" not in message
+        for message in said.values()
+    )
+
+
+class TestDamagedFiles:
+    @pytest.fixture
+    def folder(self, complete, tmp_path):
+        """A copy that may be damaged, beside one that is left alone."""
+        for name in ("20260504-101200-0a1b2c", "20260504-101200-ffffff"):
+            shutil.copytree(complete.folder, tmp_path / name)
+        yield tmp_path / "20260504-101200-0a1b2c"
+        assert refusals(tmp_path / "20260504-101200-ffffff") == {}
+
+    def test_whole_it_is_read_by_all(self, folder, complete):
+        assert refusals(folder) == {}
+        assert results_csv(Record(folder).evaluation()) == (
+            complete.folder / "results.csv"
+        ).read_text("utf-8")
+
+    @pytest.mark.parametrize("name", NEEDED_BY)
+    @pytest.mark.parametrize("left", ["nothing", "a_half", "garbage"])
+    def test_whoever_needs_the_file_names_it(self, folder, name, left):
+        path = folder / name
+        whole = path.read_bytes()
+        half = whole[: len(whole) // 2]
+        kept = {"nothing": b"", "a_half": half, "garbage": bytes(range(256)) * 9}
+        path.write_bytes(kept[left])
+        said = refusals(folder)
+        assert of_that_file(said, name, folder)
+        assert set(said) == NEEDED_BY[name]
+        # those that know what a file should hold say more than that it is damaged
+        if name not in ("plan.json", "source.csv"):
+            assert set(said.values()) == {damaged(name, folder)}
+
+    @pytest.mark.parametrize("name", ["plan.json", "rounds.npz", "source.csv"])
+    def test_a_missing_file_is_named(self, folder, name):
+        (folder / name).unlink()
+        missed_by = NEEDED_BY[name] | ({"source"} if name == "source.csv" else set())
+        assert refusals(folder) == dict.fromkeys(missed_by, damaged(name, folder))
+
+    @pytest.mark.parametrize("name", ["rounds.npz", *CHUNKS])
+    def test_an_archive_that_lacks_any_array_is_named(self, folder, name):
+        path = folder / name
+        with np.load(path) as stored:
+            arrays = dict(stored)
+        unread = {"failures"} if "chance" in name else set()
+        for lacking in arrays.keys() - unread:
+            np.savez(path, **{key: array for key, array in arrays.items() if key != lacking})
+            assert refusals(folder) == dict.fromkeys(NEEDED_BY[name], damaged(name, folder)), (
+                lacking
+            )
+
+    @pytest.mark.parametrize("name", CHUNKS)
+    def test_a_chunk_of_other_rounds_is_named(self, folder, name):
+        path = folder / name
+        with np.load(path) as stored:
+            arrays = dict(stored)
+        counted = {key for key in arrays if key.endswith(("scores", "bag", "auc", "all", "chance"))}
+        assert len(counted) == (1 if "chance" in name else 3 * 7)
+        for key in counted:
+            more = np.concatenate([arrays[key], np.zeros((1, *arrays[key].shape[1:]))])
+            np.savez(path, **arrays | {key: more})
+            assert refusals(folder) == {"evaluation": damaged(name, folder)}, key
+
+    @pytest.mark.parametrize("text", ["[]", "3", "null", "{}", "[" * 100_000])
+    @pytest.mark.parametrize("name", ["about.json", "plan.json", "status.json"])
+    def test_json_that_is_something_else_is_named(self, folder, name, text):
+        (folder / name).write_text(text)
+        said = refusals(folder)
+        assert set(said) == NEEDED_BY[name]
+        assert of_that_file(said, name, folder)
+
+    @pytest.mark.parametrize(
+        ("entry", "value"),
+        [("name", None), ("table", 3), ("chunk", "ten"), ("chunk", 1e400), ("versions", [])],
+    )
+    def test_an_entry_of_another_kind_is_named(self, folder, entry, value):
+        path = folder / "about.json"
+        path.write_text(json.dumps(json.loads(path.read_text()) | {entry: value}))
+        assert refusals(folder) == dict.fromkeys(READERS, damaged("about.json", folder))
+
+    def test_a_plan_of_a_newer_format_says_so(self, folder):
+        path = folder / "plan.json"
+        path.write_text(json.dumps(json.loads(path.read_text()) | {"format": 9}))
+        message = (
+            f"The file 'plan.json' of record '{folder.name}' cannot be used. This plan is of "
+            "format 9; this version reads format 1."
+        )
+        assert refusals(folder) == dict.fromkeys(NEEDED_BY["plan.json"], message)
+
+    @pytest.mark.parametrize("name", ["rounds.npz", *CHUNKS])
+    def test_bytes_changed_anywhere_are_noticed_or_harmless(self, folder, name):
+        rng = np.random.default_rng(17)
+        path = folder / name
+        whole = path.read_bytes()
+        figures, said = results_csv(Record(folder).evaluation()), []
+        for _ in range(60):
+            changed = bytearray(whole)
+            for at in rng.integers(len(whole), size=rng.choice([1, 3, 30])):
+                changed[at] = rng.integers(256)
+            path.write_bytes(changed)
+            try:
+                assert results_csv(Record(folder).evaluation()) == figures
+            except RecordError as error:
+                said.append(str(error))
+        assert len(said) > 30
+        assert set(said) == {damaged(name, folder)}
+
+    @pytest.mark.parametrize("kind", ["encrypted", "newer", "unknown_compression"])
+    def test_an_archive_of_a_kind_that_is_not_read_is_named(self, folder, kind):
+        # places in an entry of the directory at the end, by the published layout of ZIP files
+        at, value = {"encrypted": (8, 1), "newer": (6, 99), "unknown_compression": (10, 77)}[kind]
+        path = folder / "rounds.npz"
+        changed = bytearray(path.read_bytes())
+        changed[changed.index(b"PK\x01\x02") + at] = value
+        path.write_bytes(changed)
+        assert refusals(folder) == dict.fromkeys(
+            NEEDED_BY["rounds.npz"], damaged("rounds.npz", folder)
+        )
+
+    def test_without_the_damaged_chunk_it_goes_on_to_the_same_figures(self, folder, complete):
+        (folder / CHUNKS[1]).unlink()
+        fill(Record(folder), jobs=1)
+        assert (folder / "results.csv").read_bytes() == (
+            complete.folder / "results.csv"
+        ).read_bytes()
 
 
 def test_writing_replaces_a_file_in_one_step(tmp_path, monkeypatch):

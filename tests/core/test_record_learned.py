@@ -4,6 +4,7 @@ import csv
 import io
 import json
 import random
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -22,7 +23,8 @@ from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.table import Roles
 from evalcore.worker import fill
 
-M = 7  # permutations, in two tasks
+M = 7  # permutations, each a task of its own
+OF_EACH = 20  # rounds of each: four whole repeats of five folds, of the eleven
 FILES = (
     "results.csv", "findings.csv", "comparison.csv", "verdicts.csv", "intervals.csv", "cases.csv",
 )  # fmt: skip
@@ -94,10 +96,10 @@ class TestWhatIsKept:
         names = {path.name for path in (filled.folder / "chunks").iterdir()}
         later = {f"2-{start:05d}.npz" for start in range(0, curve, 50)}
         assert names == later | {
-            "whole-00000.npz", "0-00000.npz", "0-00050.npz", "1-00000.npz", "chance-00000.npz",
-            "chance-00005.npz",
+            "whole-00000.npz", "0-00000.npz", "0-00050.npz", "1-00000.npz",
+            *(f"chance-0000{number}.npz" for number in range(M)),
         }  # fmt: skip
-        total = 1 + 55 + 6 + curve + M
+        total = 1 + 55 + 6 + curve + M * OF_EACH
         assert filled.status() == Status("finished", total, total)
 
     def test_picks_inner_scores_and_permuted_figures(self, filled):
@@ -118,7 +120,7 @@ class TestWhatIsKept:
                 # of the headline's scheme only
                 assert not [key for key in kept if key.endswith("inner")]
         with np.load(filled.folder / "chunks" / "chance-00005.npz") as kept:
-            assert kept["chance"].shape == (2, 3)
+            assert kept["chance"].shape == (1, 3)
             assert_array_equal(kept["chance"][0], permuted_figures(table, PLAN, 5))
 
     def test_results_hold_everything_asked_for(self, filled):
@@ -159,7 +161,7 @@ class TestResumed:
     def test_only_what_was_missing_is_carried_out(self, filled, tmp_path, monkeypatch):
         record = a_record(tmp_path)
         for path in (filled.folder / "chunks").iterdir():
-            if path.name not in ("0-00050.npz", "chance-00000.npz"):
+            if path.name not in ("0-00050.npz", "chance-00003.npz"):
                 (record.folder / "chunks" / path.name).write_bytes(path.read_bytes())
         carried_out = []
 
@@ -169,7 +171,7 @@ class TestResumed:
 
         monkeypatch.setattr("evalcore.worker.run", watched)
         fill(record, jobs=1)
-        assert carried_out == [Task("cross_validation", 50, 55), Task(CHANCE, 0, 5)]
+        assert carried_out == [Task("cross_validation", 50, 55), Task(CHANCE, 3, 4)]
         for name in FILES:
             assert (record.folder / name).read_bytes() == (filled.folder / name).read_bytes()
 
@@ -204,7 +206,7 @@ class TestPartOfIt:
         cross = ("whole-00000.npz", "0-00000.npz", "0-00050.npz")
         complete = p_values(filled.evaluation())
         assert {m for _, m in complete.values()} == {M}
-        record = self.so_far(filled, tmp_path, *cross, "chance-00005.npz")
+        record = self.so_far(filled, tmp_path, *cross, "chance-00005.npz", "chance-00006.npz")
         evaluation = record.evaluation()
         figures = np.array([permuted_figures(record.table, PLAN, number) for number in (5, 6)])
         for check in evaluation.beside.chance:
@@ -212,6 +214,47 @@ class TestPartOfIt:
                 at = PLAN.candidate_names.index(check.candidate)
                 k = sum(value >= check.observed - 1e-12 for value in figures[:, at].tolist())
                 assert p_values(evaluation)[check.candidate] == ((k + 1) / 3, 2)
+
+    def test_a_permuted_table_is_done_with_all_its_rounds(self, filled, tmp_path):
+        curve = filled.rounds["learning_curve"].n_rounds
+        total = 1 + 55 + 6 + curve + M * OF_EACH
+        came = [("whole-00000.npz", 1), ("0-00050.npz", 5)]
+        came += [(f"chance-0000{number}.npz", OF_EACH) for number in (4, 0)]
+        record, done = a_record(tmp_path), 0
+        assert (record.done(), record.total) == (0, total)
+        for name, rounds in came:
+            (record.folder / "chunks" / name).write_bytes(
+                (filled.folder / "chunks" / name).read_bytes()
+            )
+            done += rounds
+            assert (record.done(), record.total) == (done, total)
+            # the worker is gone without a word
+            (record.folder / "status.json").unlink(missing_ok=True)
+            assert record.status() == Status("interrupted", done, total)
+
+    def test_time_left_is_told_in_the_same_rounds(self, filled, tmp_path, monkeypatch):
+        """Every round takes a quarter of a second here, in whatever task it stands."""
+        left = {"0-00050.npz": 5} | {f"chance-0000{at}.npz": OF_EACH for at in (1, 2, 6)}
+        names = [path.name for path in (filled.folder / "chunks").iterdir()]
+        record = self.so_far(filled, tmp_path, *(name for name in names if name not in left))
+        total, at_first = record.total, record.total - sum(left.values())
+        now = [1000.0]
+
+        def timed(table, plan, rounds, *, todo, jobs):
+            for finished in run(table, plan, rounds, todo=todo, jobs=jobs):
+                now[0] += 0.25 * (OF_EACH if finished.task.scheme == CHANCE else 5)
+                yield finished
+
+        monkeypatch.setattr("evalcore.worker.run", timed)
+        monkeypatch.setattr("evalcore.worker.time", SimpleNamespace(monotonic=lambda: now[0]))
+        told = []
+        fill(record, jobs=1, tell=told.append)
+        # what had finished before it went on took none of this time
+        done = [at_first + more for more in (0, 5, 25, 45, 65)]
+        assert [(s.state, s.done, s.total) for s in told] == [
+            *(("running", here, total) for here in done), ("finished", total, total),
+        ]  # fmt: skip
+        assert [s.seconds_left for s in told] == [None, 15.0, 10.0, 5.0, 0.0, None]
 
     def test_a_record_from_before_still_gives_its_figures(self, filled, tmp_path):
         """Neither the plan nor the chunks of older records know of any of this."""

@@ -521,8 +521,12 @@ class TestDigits:
         candidates = (TUNED[0], UNTUNED[0], UNTUNED[2])
         plan = everything(self.table, candidates, schemes=BOTH[:1], **BESIDE)
         once = self.digits(self.finished(plan))
-        # all cases, two chunks of bags, two of the curve: three candidates; two of permuted tables
-        assert len(once) == 5 * 3 + 7
+        # all cases, two chunks of bags, two of the curve: three candidates each; six permuted
+        # tables, each a task of its own; and every task says what it has of these
+        assert len(once) == 5 * 3 + (5 + 6)
+        assert (
+            sum(given_ is not None for (_, name), given_ in once.items() if name == "chance") == 6
+        )
         assert self.digits(self.finished(plan, backwards=True)) == once
         assert self.digits(self.finished(plan, jobs=2)) == once
 

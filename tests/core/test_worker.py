@@ -258,3 +258,95 @@ def test_an_error_nobody_foresaw_is_told_in_a_sentence_and_logged(tmp_path, work
             "The evaluation stopped on an error that was not foreseen; the record's log has it."
         ),
     )
+
+
+def test_a_record_that_cannot_be_read_is_told_in_the_status(tmp_path, worker):
+    record = a_record(tmp_path)
+    (record.folder / "rounds.npz").write_bytes(b"")
+    assert worker(record).wait(60) == 0
+    assert record.status() == Status(
+        "failed",
+        0,
+        0,
+        message=(
+            "The file 'rounds.npz' of record 'record' is missing or damaged; evaluate the table "
+            "again."
+        ),
+    )
+
+
+# modules the worker needs, ours, the standard library's and others'
+OURS = ("evalcore", "app")
+OTHERS = ("json", "threading", "tokenize", "numpy", "scipy", "sklearn", "joblib", "threadpoolctl")
+# says that it was imported, and would end whoever imports it
+DECOY = """
+from pathlib import Path
+Path(__file__).with_suffix(".imported").touch()
+raise SystemExit("a file of the user's was taken for a module")
+"""
+
+
+def lay_decoys(folder, names) -> None:
+    for name in names:
+        (folder / f"{name}.py").write_text(DECOY)
+
+
+def taken(folder) -> list[str]:
+    """Decoys that somebody imported."""
+    return [path.name for path in folder.glob("*.imported")]
+
+
+@pytest.mark.parametrize(
+    ("place", "names"),
+    [("working folder", (*OURS, *OTHERS)), ("PYTHONPATH", OURS)],
+)
+def test_started_by_the_dashboard_it_imports_none_of_the_users_files(
+    uninterrupted, tmp_path, monkeypatch, place, names
+):
+    from app import state
+
+    processes = []
+    # what belongs to a visit in the browser; the process is started as for one
+    monkeypatch.setattr(state, "remember", lambda record: None)
+    monkeypatch.setattr(state, "_processes", lambda: processes)
+    # a test before this one may have set it
+    monkeypatch.delenv("PYTHONSAFEPATH", raising=False)
+    if place == "PYTHONPATH":
+        monkeypatch.setenv("PYTHONPATH", str(tmp_path))
+    else:
+        monkeypatch.delenv("PYTHONPATH", raising=False)
+        monkeypatch.chdir(tmp_path)
+    lay_decoys(tmp_path, names)
+    record = a_record(tmp_path)
+    state.go_on(record)
+    try:
+        assert processes[0].wait(60) == 0
+    finally:
+        processes[0].kill()
+        processes[0].wait()
+    assert taken(tmp_path) == []
+    assert log(record) == ""
+    assert record.status() == Status("finished", TOTAL, TOTAL)
+    assert figures(record) == figures(uninterrupted)
+
+
+def test_nor_do_the_processes_that_it_starts(uninterrupted, tmp_path):
+    lay_decoys(tmp_path, (*OURS, *OTHERS))
+    record = a_record(tmp_path)
+    script = (
+        "import sys; from pathlib import Path\n"
+        "from evalcore.record import Record; from evalcore.worker import fill\n"
+        "fill(Record(Path(sys.argv[1])), jobs=2)\n"
+    )
+    unsafe = {name: value for name, value in os.environ.items() if name != "PYTHONSAFEPATH"}
+    done = subprocess.run(
+        [sys.executable, "-P", "-c", script, record.folder],
+        cwd=tmp_path,
+        env=unsafe | {"PYTHONPATH": str(ROOT)},
+        capture_output=True,
+        text=True,
+        timeout=60,
+    )
+    assert taken(tmp_path) == []
+    assert (done.returncode, done.stderr) == (0, "")
+    assert figures(record) == figures(uninterrupted)

@@ -1,0 +1,58 @@
+"""The packaged table's main figures as README has them: ``python -m tests.studies.evidence_in_words``."""
+
+from collections.abc import Iterable, Iterator, Sequence
+
+import numpy as np
+
+from evalcore.evidence import Line, lines
+from tests.studies.mechanisms import TITLES
+
+ROWS = (  # what README says, estimator, measure
+    ("accuracy", "held_out_by_case", "accuracy"),
+    ("balanced accuracy", "held_out_by_case", "balanced_accuracy"),
+    ("the smallest class’s share right", "held_out_by_case", "sensitivity"),
+    ("AUC", "mean_of_rounds", "auc"),
+    ("accuracy of the best of several, corrected", "winner_corrected", "accuracy"),
+    ("verdict: a limit equal to the true rate is not called *shown*", "verdict", ""),
+    ("comparison: no false call", "comparison", "accuracy"),
+)
+NO_SHORT = "none"
+
+
+def table(known: Sequence[Line]) -> str:
+    """A Markdown table: least, mean and most over all cells of the default scheme."""
+    head = "| of the default scheme, in % of tables | least | mean | most | cells | too low in |\n"
+    return head + "|---|---|---|---|---|---|\n" + "".join(_rows(known))
+
+
+def _rows(known: Sequence[Line]) -> Iterator[str]:
+    for title, estimator, measure in ROWS:
+        found = [
+            line
+            for line in known
+            if line.scheme == "default"
+            and line.estimator == estimator
+            and measure in ("", line.measure)
+            and not np.isnan(line.coverage)
+        ]
+        shares = 100 * np.array([line.coverage for line in found])
+        short = [line for line in found if line.short]
+        yield (
+            f"| {title} | {shares.min():.1f} | {shares.mean():.1f} | {shares.max():.1f} | "
+            f"{len(found)} | {len(short) or NO_SHORT} |\n"
+        )
+
+
+def too_low(known: Iterable[Line]) -> str:
+    """The cells of the default scheme that fell short, a line each, worst first."""
+    found = [line for line in known if line.scheme == "default" and line.short]
+    return "".join(
+        f"- {line.candidate}, {line.measure} ({line.estimator}), {line.n} "
+        f"{'units' if line.counted_by == 'unit' else 'cases'}, {TITLES[line.scenario]}: "
+        f"{100 * line.coverage:.1f} % ± {100 * line.monte_carlo_error:.1f}\n"
+        for line in sorted(found, key=lambda line: line.coverage)
+    )
+
+
+if __name__ == "__main__":
+    print(table(lines()), too_low(lines()), sep="\n")
