@@ -235,6 +235,10 @@ def test_a_server_stopped_half_way_leaves_what_had_finished(page, dashboard):
 def test_an_address_of_no_record_says_so(page, dashboard):
     page.goto(f"{dashboard.address}/results?record=../x")
     see(page, "This address names no record kept here.")
+    # a visit may begin at any page of a server just started: it is one dashboard all the same
+    expect(page.get_by_test_id("stTopNavLinkContainer").first).to_be_visible()
+    expect(page.get_by_test_id("stSidebarNav")).to_have_count(0)
+    assert page.title() == "Withheld"
 
 
 HOSTILE = ["<b>bold</b>", "www.a.example", ":smile: http://b.example", "# [c](http://c.example)"]
