@@ -139,7 +139,7 @@ def carry_out(table: Table, plan: Plan, rounds: dict[str, Rounds], task: Task) -
     began = time.perf_counter()
     for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
         # the limit below reaches only what is loaded already; this is read on loading
-        os.environ.setdefault(name, "1")
+        os.environ[name] = "1"
     # one thread inside: more would fight over the cores and could change the last digits
     with threadpool_limits(1):
         if task.scheme == CHANCE:

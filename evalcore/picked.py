@@ -4,6 +4,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from evalcore.answers import Answers
 from evalcore.choice import Choice
@@ -23,8 +24,8 @@ class Picked:
     candidate, scheme : str
     options : tuple of str
         What differs between them, as written: ``k=5``.
-    shares : ndarray, shape (O,)
-        Share of rounds that picked each.
+    by_round : ndarray of int, shape (R,)
+        Place of the option that each round picked.
     on_all : int
         Place of the option picked from all cases: that of the final model.
     """
@@ -32,8 +33,14 @@ class Picked:
     candidate: str
     scheme: str
     options: tuple[str, ...]
-    shares: Floats
+    by_round: NDArray[np.intp]
     on_all: int
+
+    @property
+    def shares(self) -> Floats:
+        """Share of rounds that picked each option, shape (O,)."""
+        times = np.bincount(self.by_round, minlength=len(self.options))
+        return np.asarray(times / len(self.by_round))
 
 
 def picked(
@@ -44,8 +51,7 @@ def picked(
         return None
     names = [name for name, _ in choice.grid]
     options = tuple(option.written_settings(names) for option in choice.options)
-    times = np.bincount(given.picked, minlength=len(options))
-    return Picked(candidate, scheme, options, times / len(given.picked), int(whole.picked[0]))
+    return Picked(candidate, scheme, options, given.picked, int(whole.picked[0]))
 
 
 def picked_estimates(found: Picked, part: Judged) -> Iterator[Estimate]:

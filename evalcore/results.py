@@ -39,6 +39,7 @@ def write_results(record: Record) -> None:
         ("intervals", intervals_csv(evaluation)),
         ("cases", cases_csv(evaluation)),
         ("verdicts", verdicts_csv(evaluation)),
+        ("learned", learned_csv(evaluation)),
     ):
         write(record.folder / f"{name}.csv", text.encode())
 
@@ -146,6 +147,23 @@ def verdicts_csv(evaluation: Evaluation) -> str:
 
 def _needed(needed: Needed) -> str:
     return str(needed.cases) if needed.cases is not None else needed.outcome
+
+
+def learned_csv(evaluation: Evaluation) -> str:
+    """What each round learned inside its bag: the option picked, the cut-off; a row each."""
+    rows = []
+    for found in evaluation.beside.picked:
+        rows += [
+            (found.candidate, found.scheme, str(at), "picked", found.options[option])
+            for at, option in enumerate(found.by_round.tolist())
+        ]
+    for at_cut_off in evaluation.beside.cut_offs:
+        part = at_cut_off.part
+        rows += [
+            (part.candidate, part.scheme, str(at), "cut_off", repr(cut_off))
+            for at, cut_off in enumerate(at_cut_off.cut_offs.tolist())
+        ]
+    return _csv(("candidate", "scheme", "round", "what", "value"), rows)
 
 
 def cases_csv(evaluation: Evaluation) -> str:

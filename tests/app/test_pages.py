@@ -60,7 +60,9 @@ def records(tmp_path, monkeypatch) -> Path:
 @pytest.fixture
 def app() -> AppTest:
     """A visitor who has just come."""
-    return checked(AppTest.from_file(str(ROOT / "app" / "pages" / "main.py"), default_timeout=60).run())
+    return checked(
+        AppTest.from_file(str(ROOT / "app" / "pages" / "main.py"), default_timeout=60).run()
+    )
 
 
 def checked(at: AppTest) -> AppTest:

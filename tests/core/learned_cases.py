@@ -64,7 +64,9 @@ def picks(choice: Choice, *shares: float, scheme: str = "cross_validation") -> P
     names = [name for name, _ in choice.grid]
     options = tuple(option.written_settings(names) for option in choice.options)
     assert len(options) == len(shares)
-    return Picked(choice.key, scheme, options, np.array(shares), len(options) - 1)
+    # of 10,000 rounds, so that shares with two digits more than a percent are whole numbers
+    by_round = np.repeat(np.arange(len(shares)), np.rint(10_000 * np.array(shares)).astype(int))
+    return Picked(choice.key, scheme, options, by_round, len(options) - 1)
 
 
 def checked(given: Given, observed: float, permuted: object, **changes: object) -> ChanceCheck:

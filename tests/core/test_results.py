@@ -13,6 +13,7 @@ from evalcore.beside import Beside
 from evalcore.figures import Estimate, Finding, Interval
 from evalcore.limit import Limit
 from evalcore.outlook import outlook
+from evalcore.picked import Picked
 from evalcore.sources import SOURCES
 from evalcore.verdict import verdicts
 
@@ -218,3 +219,21 @@ def test_names_from_a_file_get_one_too():
         ])
     )  # fmt: skip
     assert read(text)[0]["class"] == '\'=HYPERLINK("x")'
+
+
+def test_what_each_round_learned():
+    picked = Picked("svm", "bootstrap", ("C=1", "C=10"), np.array([1, 0, 1]), 1)
+    part = SimpleNamespace(candidate="lda", scheme="cross_validation")
+    cut_off = SimpleNamespace(part=part, cut_offs=np.array([0.25, NAN]))
+    text = results.learned_csv(
+        SimpleNamespace(beside=SimpleNamespace(picked=(picked,), cut_offs=(cut_off,)))
+    )
+    assert text == (
+        "candidate,scheme,round,what,value\n"
+        "svm,bootstrap,0,picked,C=10\n"
+        "svm,bootstrap,1,picked,C=1\n"
+        "svm,bootstrap,2,picked,C=10\n"
+        "lda,cross_validation,0,cut_off,0.25\n"
+        "lda,cross_validation,1,cut_off,nan\n"
+    )
+    assert picked.shares.tolist() == [1 / 3, 2 / 3]
