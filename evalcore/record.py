@@ -10,13 +10,7 @@ import json
 import os
 import re
 import secrets
-import threading
 import time
-import tokenize
-import zipfile
-import zlib
-from collections.abc import Iterator
-from contextlib import contextmanager
 from dataclasses import asdict, dataclass
 from functools import cached_property
 from importlib.metadata import PackageNotFoundError, version
@@ -25,11 +19,12 @@ from typing import Any, Literal
 
 import numpy as np
 
-from evalcore.answers import Answers, Reduced, joined
+from evalcore.answers import Answers, joined
+from evalcore.chunks import answers_in, arrays_of
 from evalcore.engine import CHANCE, WHOLE, Finished, Task, chunk_rounds, tasks, whole_rounds
-from evalcore.errors import EvalError, RecordError
+from evalcore.errors import RecordError
 from evalcore.evaluation import Evaluation, evaluate
-from evalcore.figures import CountedBy
+from evalcore.files import beside, stored, undamaged, write
 from evalcore.intake import make_table
 from evalcore.measures import Floats
 from evalcore.plan import Plan
@@ -42,13 +37,6 @@ NAME = re.compile(r"[0-9]{8}-[0-9]{6}-[0-9a-f]{6}")
 SILENT = 30.0  # seconds without a sign of life after which a running worker counts as gone
 PACKAGES = ("withheld", "scikit-learn", "numpy", "scipy", "pandas")
 ABOUT = {"name": str, "table": str, "plan": str, "chunk": int, "begun": str, "versions": dict}
-_WAYS: tuple[CountedBy, CountedBy] = ("unit", "case")
-# what reading a cut or garbled file raises; a runtime error is an archive that claims to be
-# encrypted or newer, or JSON nested without end; a token error is a garbled array header
-_DAMAGE = (
-    *(OSError, EOFError, RuntimeError, KeyError, TypeError, ValueError),
-    *(zipfile.BadZipFile, zlib.error, tokenize.TokenError),
-)
 
 
 @dataclass(frozen=True)
@@ -95,7 +83,7 @@ class Record:
         self.folder = folder
         if not (folder / "about.json").is_file():
             raise RecordError(f"There is no record in {folder.name!r}.")
-        with _undamaged(folder, "about.json") as path:
+        with undamaged(folder, "about.json") as path:
             self.about: dict[str, Any] = json.loads(path.read_text("utf-8"))
             if not all(isinstance(self.about[key], kind) for key, kind in ABOUT.items()):
                 raise TypeError("An entry is not of its kind.")
@@ -128,7 +116,7 @@ class Record:
                 f"{at}-test": drawn.test,
                 f"{at}-repeat": drawn.repeat,
             }
-        with _beside(folder / "rounds.npz") as place:
+        with beside(folder / "rounds.npz") as place:
             np.savez_compressed(place, **arrays)
         about = {
             "name": name,
@@ -151,19 +139,19 @@ class Record:
     @cached_property
     def plan(self) -> Plan:
         """The plan as stored."""
-        with _undamaged(self.folder, "plan.json") as path:
+        with undamaged(self.folder, "plan.json") as path:
             return Plan.from_json(path.read_text("utf-8"))
 
     @cached_property
     def source(self) -> bytes:
         """The file as it came."""
-        with _undamaged(self.folder, "source.csv") as path:
+        with undamaged(self.folder, "source.csv") as path:
             return path.read_bytes()
 
     @cached_property
     def table(self) -> Table:
         """The table, read again from the source and held against its fingerprint."""
-        with _undamaged(self.folder, "source.csv"):
+        with undamaged(self.folder, "source.csv"):
             table = make_table(read_sheet(self.source, self.about["name"]), self.plan.roles)
         if table.fingerprint != self.about["table"]:
             raise RecordError(
@@ -175,9 +163,9 @@ class Record:
     @cached_property
     def rounds(self) -> dict[str, Rounds]:
         """The rounds as drawn, by scheme name."""
-        with self._stored("rounds.npz") as stored:
+        with stored(self.folder, "rounds.npz") as found:
             return {
-                name: Rounds(stored[f"{at}-train"], stored[f"{at}-test"], stored[f"{at}-repeat"])
+                name: Rounds(found[f"{at}-train"], found[f"{at}-test"], found[f"{at}-repeat"])
                 for at, name in enumerate(self.plan.all_schemes)
             }
 
@@ -210,54 +198,17 @@ class Record:
         place = names.get(task.scheme) or list(self.plan.all_schemes).index(task.scheme)
         return self.folder / "chunks" / f"{place}-{task.start:05d}.npz"
 
-    @contextmanager
-    def _stored(self, name: str) -> Iterator[Any]:
-        """Arrays of a file; opened here, since a damaged one would be left open."""
-        with _undamaged(self.folder, name) as path, path.open("rb") as file, np.load(file) as found:
-            yield found
-
     def add(self, finished: Finished) -> None:
         """Keep the answers of a finished task."""
-        arrays: dict[str, Any] = {"failures": np.array(json.dumps(finished.failures))}
-        if finished.chance is not None:
-            arrays["chance"] = finished.chance
-        for at, name in enumerate(self.plan.candidate_names):
-            if name in finished.answers:
-                answers = finished.answers[name]
-                arrays[f"{at}-scores"] = answers.scores
-                for part in ("picked", "inner"):
-                    if getattr(answers, part) is not None:
-                        arrays[f"{at}-{part}"] = getattr(answers, part)
-                for way in _WAYS:
-                    arrays[f"{at}-{way}-bag"] = answers.in_bag[way].confusion
-                    arrays[f"{at}-{way}-auc"] = answers.in_bag[way].auc
-                    arrays[f"{at}-{way}-all"] = answers.on_all[way]
-        with _beside(self._chunk(finished.task)) as place:
-            np.savez(place, **arrays)
+        with beside(self._chunk(finished.task)) as place:
+            np.savez(place, **arrays_of(finished, self.plan.candidate_names))
 
     def _read(self, task: Task) -> tuple[dict[str, Answers], dict[str, str]]:
-        answers, plan, rounds = {}, self.plan, self._rounds_of(task)
-        # inner scores are kept where the cut-off of the headline or of the final model is learned
-        kept = task.scheme in (WHOLE, plan.headline_scheme)
-        with self._stored(f"chunks/{self._chunk(task).name}") as stored:
-            failures = dict(json.loads(str(stored["failures"])))
-            for at, name in enumerate(plan.candidate_names):
-                if name in failures:
-                    continue
-                choice = plan.candidate(name)
-                answers[name] = Answers(
-                    stored[f"{at}-scores"],
-                    {
-                        way: Reduced(stored[f"{at}-{way}-bag"], stored[f"{at}-{way}-auc"])
-                        for way in _WAYS
-                    },
-                    {way: stored[f"{at}-{way}-all"] for way in _WAYS},
-                    stored[f"{at}-picked"] if choice.tuned else None,
-                    stored[f"{at}-inner"] if kept and plan.learns_cut_off(choice) else None,
-                )
-                if not _are_of(answers[name], rounds, n_classes=self.table.n_classes):
-                    raise ValueError(f"The answers of {name!r} are not of these rounds.")
-        return answers, failures
+        name = f"chunks/{self._chunk(task).name}"
+        with stored(self.folder, name) as found:
+            return answers_in(
+                found, self.plan, self._rounds_of(task), scheme=task.scheme, of=self.table
+            )
 
     def _rounds_of(self, task: Task) -> Rounds:
         if task.scheme == WHOLE:
@@ -316,16 +267,16 @@ class Record:
         for task in self.tasks():
             path = self._chunk(task)
             if task.scheme == CHANCE and path.exists():
-                with self._stored(f"chunks/{path.name}") as stored:
+                with stored(self.folder, f"chunks/{path.name}") as arrays:
                     shape = task.stop - task.start, len(self.plan.candidates)
-                    found.append(stored["chance"].reshape(shape))  # refuses any other size
+                    found.append(arrays["chance"].reshape(shape))  # refuses any other size
         return np.concatenate(found)
 
     def status(self) -> Status:
         """How far it has come; a worker that is gone without a word shows as interrupted."""
         if not (self.folder / "status.json").exists():
             return Status("interrupted", self.done(), self.total)
-        with _undamaged(self.folder, "status.json") as path:
+        with undamaged(self.folder, "status.json") as path:
             status = Status(**json.loads(path.read_text("utf-8")))
         beat = self.folder / "alive"
         silent = not beat.exists() or time.time() - beat.stat().st_mtime > SILENT
@@ -368,47 +319,6 @@ def find(root: Path, name: str) -> Record:
             "20260504-101200-0a1b2c."
         )
     return Record(root / name)
-
-
-@contextmanager
-def _beside(path: Path) -> Iterator[Path]:
-    """A place beside the path that takes its name once it is complete."""
-    place = path.with_name(f".{path.stem}-{os.getpid()}-{threading.get_ident()}{path.suffix}")
-    yield place
-    os.replace(place, path)
-
-
-@contextmanager
-def _undamaged(folder: Path, name: str) -> Iterator[Path]:
-    """The place of a record's file; what its damage raises is turned into a sentence."""
-    try:
-        yield folder / name
-    except RecordError:  # of another file, read in between
-        raise
-    except EvalError as error:
-        raise RecordError(
-            f"The file {name!r} of record {folder.name!r} cannot be used. {error}"
-        ) from error
-    except _DAMAGE as error:
-        raise RecordError(
-            f"The file {name!r} of record {folder.name!r} is missing or damaged; evaluate the "
-            "table again."
-        ) from error
-
-
-def _are_of(answers: Answers, rounds: Rounds, *, n_classes: int) -> bool:
-    """Whether answers are as many as some rounds give: a chunk of other rounds is no use."""
-    r, k = rounds.n_rounds, n_classes
-    return answers.scores.shape == (rounds.test_sizes.sum(), k) and all(
-        (part.confusion.shape, part.auc.shape, on_all.shape) == ((r, k, k), (r,), (r, k, k))
-        for part, on_all in ((answers.in_bag[way], answers.on_all[way]) for way in _WAYS)
-    )
-
-
-def write(path: Path, data: bytes) -> None:
-    """Write a file in one step: a reader meets the old one or the new one, never half of it."""
-    with _beside(path) as place:
-        place.write_bytes(data)
 
 
 def _lives(process: int) -> bool:

@@ -6,12 +6,13 @@ from collections.abc import Iterable, Sequence
 
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate, Finding
+from evalcore.files import write
 from evalcore.findings import findings
 from evalcore.further_cases import Needed
 from evalcore.other_intervals import of_headline
 from evalcore.outlook import outlook
 from evalcore.per_case import cases
-from evalcore.record import Record, write
+from evalcore.record import Record
 from evalcore.sources import SOURCES
 from evalcore.together import round_tests
 from evalcore.verdict import verdicts, verdicts_at_cut_off

@@ -8,7 +8,8 @@ from app.print.content import content
 from app.print.page import page
 from app.print.pdf import pdf
 from evalcore.errors import EvalError
-from evalcore.record import Record, write
+from evalcore.files import write
+from evalcore.record import Record
 
 PDF, HTML = "summary.pdf", "summary.html"
 

@@ -100,6 +100,8 @@ ORDER = (
     "checks_learned",
     "checks_evidence",
     "findings",
+    "files",
+    "chunks",
     "record",
     "results",
     "worker",

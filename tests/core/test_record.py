@@ -18,11 +18,12 @@ from evalcore.cut_off_rule import CutOffRule
 from evalcore.engine import WHOLE, Task, chunk_rounds, run, tasks
 from evalcore.errors import EvalError, PlanError, RecordError, TableError
 from evalcore.estimates import by_case
+from evalcore.files import write
 from evalcore.findings import findings
 from evalcore.fits import round_scores
 from evalcore.intake import make_table
 from evalcore.plan import Plan
-from evalcore.record import NAME, SILENT, Record, Status, find, new_folder, write
+from evalcore.record import NAME, SILENT, Record, Status, find, new_folder
 from evalcore.results import results_csv
 from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet
