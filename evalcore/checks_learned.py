@@ -13,6 +13,7 @@ from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import share_interval
+from evalcore.permuted import arrangements
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
@@ -220,6 +221,29 @@ def not_told_from_chance(_: Table, plan: Plan, evaluation: Evaluation | None) ->
             SURE,
             "phipson_smyth2010",
         )
+
+
+def few_arrangements(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """So few ways to deal the labels that no candidate could be told from chance."""
+    if evaluation is None or not evaluation.beside.chance:
+        return
+    ways, needed = round(min(arrangements(table, plan), 1e6)), round(1 / SURE)
+    if ways >= needed:
+        return
+    yield Finding(
+        "few_arrangements",
+        "moderate",
+        "",
+        f"There are only {count(ways)} ways to deal the labels, so the chance check can hardly "
+        "tell anything",
+        f"What the scheme keeps together trades labels as a whole, or within itself: that leaves "
+        f"{count(ways)} different arrangements (threshold: {needed}), and p cannot be expected "
+        f"below {decimal(1 / ways)}, however good a candidate is.",
+        "Read nothing into its p. It takes more of what is kept together.",
+        ways,
+        needed,
+        "elementary",
+    )
 
 
 def permuted_off_chance(

@@ -82,6 +82,7 @@ CHECKS: dict[str, Check] = {
         Check("cut_off_calls_all", "too few units for a floor", learned.cut_off_calls_all),
         Check("floor_not_delivered", "a floor is not delivered", learned.floor_not_delivered),
         Check("not_told_from_chance", "chance does as well", learned.not_told_from_chance),
+        Check("few_arrangements", "few ways to deal the labels", learned.few_arrangements),
         Check(
             "permuted_off_chance", "permuted labels are off guessing", learned.permuted_off_chance
         ),

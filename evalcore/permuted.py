@@ -1,5 +1,6 @@
 """The chance check's permuted tables: labels moved between units, judged by the same pipeline."""
 
+import math
 from dataclasses import replace
 
 import numpy as np
@@ -16,6 +17,7 @@ from evalcore.schemes import SCHEMES, draw
 from evalcore.table import Table
 from evalcore.tuning import Learned
 
+LARGEST_LOG = 700.0  # whose exponential is still a float
 ATTEMPTS = 200  # permuted tables looked at for one that the scheme suits
 
 
@@ -46,6 +48,20 @@ def permuted_table(table: Table, rng: np.random.Generator, groups: Groups | None
         inside = np.flatnonzero(group == number)
         dealt[inside] = rng.permutation(of_unit[inside])
     return replace(table, labels=dealt[table.units])
+
+
+def arrangements(table: Table, plan: Plan) -> float:
+    """How many different ways there are to deal the labels; infinite beyond what a float holds.
+
+    By whole groups n! / (n1! n2! ...) with the groups of each class; within groups the product of
+    the same over each group's units. p cannot be expected below one over their number.
+    """
+    choice = plan.scheme(plan.headline_scheme)
+    groups = SCHEMES[choice.key].groups(table, choice.values())
+    pure = ((groups.counts > 0).sum(axis=1) == 1).all()
+    parts = [np.bincount(groups.labels).tolist()] if pure else groups.counts.tolist()
+    ways = sum(math.lgamma(sum(p) + 1) - sum(math.lgamma(n + 1) for n in p) for p in parts)
+    return math.exp(ways) if ways < LARGEST_LOG else math.inf
 
 
 def _suitable(table: Table, plan: Plan, keys: tuple[str, ...]) -> tuple[Table, Rounds] | None:
@@ -109,7 +125,8 @@ def permuted_figures(table: Table, plan: Plan, number: int) -> Floats:
 
     Rounds are drawn anew, because they are stratified by class; settings are tuned anew inside
     every bag. nan for a candidate that could not be fitted, and for all where the scheme suits
-    none of many permuted tables.
+    none of many permuted tables or the rounds leave the figure undefined (a class is never held
+    out).
     """
     keys = ("chance check", str(number))
     found: Floats = np.full(len(plan.candidates), np.nan)

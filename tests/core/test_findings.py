@@ -297,6 +297,12 @@ def permuted(*values: float, **choices):
     return chance(alone(**choices), 0.9, values)
 
 
+def dealt(labels: list[int]):
+    """A chance check of so few units."""
+    given = of_rounds({CV: halves(len(labels))}, table=table_of(labels))
+    return chance(given, 0.9, [0.5] * 39)
+
+
 def rising(low: float, call: str, **choices):
     """A curve with this lower end of its gain."""
     given = alone(**choices)
@@ -400,6 +406,8 @@ RAISED = {
     "not_told_from_chance": (permuted(0.9, *[0.5] * 18), ("grave", "logistic", 0.1, 0.05)),
     # 6 points above 1/2; standard error 0.01 sqrt(20/19)/sqrt(20) = 0.0023
     "permuted_off_chance": (permuted(*[0.55, 0.57] * 10), ("grave", "logistic", 0.56, 0.5)),
+    # 5!/(2! 3!) ways
+    "few_arrangements": (dealt([0, 0, 1, 1, 1]), ("moderate", "", 10, 20)),
     "settings_unsteady": (
         picked(K, 0.25, 0.375, 0.375),
         ("note", "nearest_neighbours", 0.375, 0.5),
@@ -455,6 +463,8 @@ QUIET = {
     # (0 + 1)/(19 + 1)
     "not_told_from_chance": permuted(*[0.5] * 19),
     "permuted_off_chance": permuted(*[0.53, 0.55] * 10),
+    # 6!/(3! 3!) = 20 ways
+    "few_arrangements": dealt([0, 0, 0, 1, 1, 1]),
     "settings_unsteady": picked(K, 0.25, 0.25, 0.5),
     "grid_too_narrow": picked(K, 0.25, 0.25, 0.5),
     "still_rising": rising(-0.01, "cannot tell"),

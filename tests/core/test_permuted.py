@@ -18,7 +18,13 @@ from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose, choose_written
 from evalcore.engine import CHANCE, Task, run, tasks
 from evalcore.groups import groups_of
-from evalcore.permuted import chance_figure, chance_rounds, permuted_figures, permuted_table
+from evalcore.permuted import (
+    arrangements,
+    chance_figure,
+    chance_rounds,
+    permuted_figures,
+    permuted_table,
+)
 from evalcore.pipeline import candidates_in
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
@@ -135,7 +141,8 @@ class TestKeptTogether:
         site = np.repeat(np.arange(len(of_site)), [2, 1, *(size for _, size in given_)])
         classes, names = np.array(of_site)[site].tolist(), [f"s{at}" for at in site]
         # sites stand in turn, so that neighbouring rows are of different ones
-        order = np.argsort(np.concatenate([np.arange((site == s).sum()) for s in set(site)]))
+        turn = np.concatenate([np.arange((site == at).sum()) for at in range(len(of_site))])
+        order = np.argsort(turn, kind="stable")
         classes, names = [classes[at] for at in order], [names[at] for at in order]
         table = in_sites(classes, names, twice=[0, 2])
         (mixed,) = dealt(table, seed=seed)
@@ -181,7 +188,7 @@ class TestKeptTogether:
         assert chisquare(list(found.values())).pvalue > 0.001
 
     def test_groups_that_are_the_units_trade_freely(self):
-        classes, names = [0, 0, 0, 1, 1, 2], "pqrstu"
+        classes, names = [0, 0, 0, 1, 1, 2], "utsrqp"  # sites stand in another order than units
         table = in_sites(classes, names, twice=[0, 3])
         alone = permuted_table(table, np.random.default_rng(5))
         sites = groups_of(table, "site")
@@ -507,3 +514,24 @@ class TestDealtAgain:
         assert np.isnan(permuted_figures(table, plan, 0)).tolist() == [True, True]
         assert len(looked_at) == 200
         assert unanswered == []
+
+
+class TestArrangements:
+    def test_of_units_against_enumeration(self):
+        table = table_of([0, 1, 1, 0, 1, 2])
+        plan = Plan(table.roles, (choose(SCHEMES, "bootstrap"),), (BAYES,))
+        found = {tuple(order) for order in itertools.permutations(table.labels.tolist())}
+        assert arrangements(table, plan) == pytest.approx(len(found), rel=1e-9)
+
+    def test_of_groups_and_within_them(self):
+        pure = table_of([0, 0, 1, 1, 1, 0], entries={"site": ["a", "a", "b", "b", "c", "d"]})
+        mixed = table_of([0, 1, 1, 0, 1, 1], entries={"site": ["a", "a", "a", "b", "b", "c"]})
+        for table, ways in ((pure, 6), (mixed, 3 * 2)):
+            scheme = choose(SCHEMES, "bootstrap", keep="site")
+            plan = Plan(table.roles, (scheme,), (BAYES,))
+            assert arrangements(table, plan) == pytest.approx(ways, rel=1e-9)
+
+    def test_more_than_a_float_holds(self):
+        table = table_of([0, 1] * 600)
+        plan = Plan(table.roles, (choose(SCHEMES, "bootstrap"),), (BAYES,))
+        assert arrangements(table, plan) == np.inf

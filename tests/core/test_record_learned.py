@@ -232,23 +232,28 @@ class TestPartOfIt:
             (record.folder / "status.json").unlink(missing_ok=True)
             assert record.status() == Status("interrupted", done, total)
 
-    def test_time_left_is_told_in_the_same_rounds(self, filled, tmp_path, monkeypatch):
+    @pytest.mark.parametrize(("jobs", "handed"), [(1, [4]), (None, [1, 3])])
+    def test_time_left_is_told_in_the_same_rounds(
+        self, jobs, handed, filled, tmp_path, monkeypatch
+    ):
         """Every round takes a quarter of a second here, in whatever task it stands."""
         left = {"0-00050.npz": 5} | {f"chance-0000{at}.npz": OF_EACH for at in (1, 2, 6)}
         names = [path.name for path in (filled.folder / "chunks").iterdir()]
         record = self.so_far(filled, tmp_path, *(name for name in names if name not in left))
         total, at_first = record.total, record.total - sum(left.values())
-        now = [1000.0]
+        now, told, tasks_of = [1000.0], [], []
 
         def timed(table, plan, rounds, *, todo, jobs):
-            for finished in run(table, plan, rounds, todo=todo, jobs=jobs):
+            tasks_of.append(len(todo))
+            for finished in run(table, plan, rounds, todo=todo, jobs=1):
                 now[0] += 0.25 * (OF_EACH if finished.task.scheme == CHANCE else 5)
                 yield finished
 
         monkeypatch.setattr("evalcore.worker.run", timed)
         monkeypatch.setattr("evalcore.worker.time", SimpleNamespace(monotonic=lambda: now[0]))
-        told = []
-        fill(record, jobs=1, tell=told.append)
+        fill(record, jobs=jobs, tell=told.append)
+        # 15 seconds left after the first task are worth processes for all others
+        assert tasks_of == handed
         # what had finished before it went on took none of this time
         done = [at_first + more for more in (0, 5, 25, 45, 65)]
         assert [(s.state, s.done, s.total) for s in told] == [
