@@ -80,13 +80,11 @@ TUNED = tuple(
     for at in (("gauss", 60), ("imb", 60), ("noise", 40), ("xor", 100))
     for grid in ("nearest_neighbours:k=1/5/15", "logistic:C=0.01/1/100")
 )
+SLOW_ON = (("gauss", 60), ("imb", 60), ("xor", 100))
 SLOW = (
     *TUNED,
-    *(Cell(*at, ("svm",), 400) for at in SMALL),
-    *(
-        Cell(scenario, n, ("forest",), 400, bootstrap=False)
-        for scenario, n in (("gauss", 60), ("xor", 100), ("imb", 60))
-    ),
+    *(Cell(*at, ("svm",), 400) for at in SLOW_ON),
+    *(Cell(*at, ("forest",), 400, bootstrap=False) for at in SLOW_ON),
 )
 CELLS = {"quick": QUICK, "default": DEFAULT, "slow": SLOW}
 
