@@ -210,18 +210,24 @@ def _plan(given: argparse.Namespace) -> Plan:
         seed=given.seed,
         question=given.question,
         engine=given.engine,
-        curve=_curve(given.learning_curve),
+        curve=_curve(given.learning_curve, (schemes or recommended_schemes(table))[0]),
         cut_off=CutOffRule.read(given.cut_off) if given.cut_off else None,
         permutations=given.chance_check,
     )
 
 
-def _curve(text: str | None) -> Choice | None:
-    """The learning curve's scheme with the settings given; None where it was not asked for."""
+def _curve(text: str | None, headline: Choice) -> Choice | None:
+    """The learning curve's scheme with the settings given; None where it was not asked for.
+
+    It keeps together what the headline's scheme does.
+    """
     if text is None:
         return None
-    key = LEARNING_CURVE.key
-    return choose_written({key: LEARNING_CURVE}, f"{key}:{text}")
+    keep = headline.values().get("keep", "")
+    kept = f",keep={keep}" if keep and "keep=" not in text else ""
+    return choose_written(
+        {LEARNING_CURVE.key: LEARNING_CURVE}, f"{LEARNING_CURVE.key}:{text}{kept}"
+    )
 
 
 def _about(text: str, candidates: Sequence[Choice]) -> str:

@@ -229,6 +229,8 @@ def title(evaluation: Evaluation) -> str:
 def _of_ten(evaluation: Evaluation) -> str:
     noun = evaluation.table.noun_for(evaluation.counted_by).plural
     estimate = evaluation.estimate("accuracy", evaluation.about, estimator=evaluation.in_use)
+    if math.isnan(estimate.value):
+        return f"How often it is right on further {noun} cannot be told."
     if estimate.interval is not None and estimate.interval.low >= NEARLY_ALL:
         return f"Right on nearly all further {noun} like these."
     of_ten = min(9, round(10 * estimate.value))
@@ -270,6 +272,11 @@ def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
     return tuple(rows)
 
 
+def _chosen_here(evaluation: Evaluation, verdict: Verdict) -> bool:
+    rule = evaluation.plan.cut_off
+    return verdict.at_cut_off and rule is not None and rule.chosen_on_these_cases
+
+
 def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
     table, limit, n = evaluation.table, verdict.limit, verdict.n
     noun = table.noun_for(evaluation.counted_by)
@@ -294,6 +301,10 @@ def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
         return (
             f"{given}; {n} {units} are too few for a verdict (at least {LEAST_UNITS} are "
             f"needed): even {n} of {n} right could mean {percent(wrong, n)}."
+        )
+    if _chosen_here(evaluation, verdict):
+        return (
+            f"{shows} The cut-off was chosen on these {noun.plural}, so nothing is shown with it."
         )
     if limit.measure == "balanced_accuracy":
         return f"{shows} It may be true; these are too few to show it."

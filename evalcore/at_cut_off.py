@@ -5,6 +5,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from evalcore.answers import Answers, HeldOut, unit_means
 from evalcore.candidates import CANDIDATES
@@ -44,7 +45,8 @@ class AtCutOff:
     on_all : float
         Learned from inner scores of all cases: the one that goes to work.
     learned_from : int
-        Units or cases of the class it was learned from; 0 for a fixed one.
+        Units or cases of the class it was learned from, or what they come in where they depend on
+        each other; 0 for a fixed one.
     at_shares : tuple of AtShare
         At each end of the stated share in use, else at the table's share.
     undecided : WithUndecided or None
@@ -111,7 +113,7 @@ def at_cut_off(
         inner = _counted(table, given.inner, way)
         cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
         on_all = learned(positive, _counted(table, whole.inner, way)[0], rule=rule, share=share)
-        behind = int(positive.sum())
+        behind = _independent(judged, positive)
     part = replace(judged, held=_answered(judged.held, cut_offs, k))
     rates = [part.pooled_value("sensitivity", at) for at in (k, 1 - k)]
     shares = dict.fromkeys((rule.share_low or share, rule.share_high or share))
@@ -124,6 +126,13 @@ def at_cut_off(
         tuple(at_share(rates[0], rates[1], rule=rule, share=each) for each in shares),
         _undecided(plan, judged, part, rule=rule, cut_offs=cut_offs),
     )
+
+
+def _independent(judged: Judged, positive: NDArray[np.bool_]) -> int:
+    """How many of the class are independent."""
+    if judged.units is None:
+        return int(positive.sum())
+    return len(np.unique(judged.units[positive]))
 
 
 def _counted(table: Table, inner: Floats, way: CountedBy) -> Floats:
@@ -145,15 +154,15 @@ def _answered(held: HeldOut, cut_offs: Floats, k: int) -> HeldOut:
 def _undecided(
     plan: Plan, judged: Judged, part: Judged, *, rule: CutOffRule, cut_offs: Floats
 ) -> WithUndecided | None:
-    """Answers whose larger probability is too low left to a person; decision values are none."""
+    """Answers whose own probability is too low left to a person; decision values are none."""
     candidate = CANDIDATES[plan.candidate(judged.candidate).key]
     if not rule.undecided_below or not candidate.probabilities:
         return None
     kept = ~np.isnan(cut_offs)[judged.held.rounds.pairs[0]]
-    rounds = part.held.rounds
+    rounds, scores = part.held.rounds, judged.held.scores[kept]
     return with_undecided(
         part.held.correct,
-        judged.held.scores.max(axis=1)[kept],
+        scores[np.arange(len(scores)), part.held.predicted],  # of the class that is answered
         below=rule.undecided_below,
         weights=1 / rounds.times_tested[rounds.pairs[1]],
     )

@@ -6,12 +6,13 @@ from collections.abc import Iterator
 from evalcore.answer import measure_name
 from evalcore.at_cut_off import AtCutOff
 from evalcore.beside import Curve
-from evalcore.chance_check import ChanceCheck
+from evalcore.chance_check import ChanceCheck, majority_of
 from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
 from evalcore.judged import share_interval
 from evalcore.measures import ALL_MEASURES
+from evalcore.permuted import dealt_among, kept_together
 from evalcore.picked import Picked
 from evalcore.wording import (
     NBSP,
@@ -70,6 +71,9 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     """The cut-off of the candidate of the answer, and what it gives on cases never seen."""
     found = evaluation.at_cut_off(evaluation.about)
     if found is None:
+        if evaluation.plan.cut_off:
+            title = capitalised(evaluation.plan.title(evaluation.about))
+            yield f"{title} learns nothing from features, so it has no cut-off."
         return
     yield _where(evaluation, found)
     if found.undefined == len(found.cut_offs):
@@ -83,8 +87,8 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
         wrong = percent(found.undecided.right_counting_undecided_wrong, n)
         counting = "counting those left undecided as wrong, "
         yield (
-            f"A probability below {reading(found.rule.undecided_below)} is left to a person: "
-            f"{percent(sent, n)} of {noun.plural}.{others} "
+            f"An answer with a probability below {reading(found.rule.undecided_below)} is left to "
+            f"a person: {percent(sent, n)} of {noun.plural}.{others} "
             f"{counting if others else capitalised(counting)}{wrong} of all."
         )
 
@@ -130,6 +134,8 @@ def _in_rounds(found: AtCutOff) -> str:
         if found.undefined
         else ""
     )
+    if spread.low == spread.high:
+        return f"in {level(spread.level)} of rounds or more: {_end(spread.low)}{lacking}"
     return (
         f"in {level(spread.level)} of rounds it fell between {_end(spread.low)} and "
         f"{_end(spread.high)}{lacking}"
@@ -149,7 +155,7 @@ def _rates(evaluation: Evaluation, found: AtCutOff) -> str:
         value, n = found.part.pooled_value("sensitivity", k), n_behind(found.part, k)
         what = measure_name(evaluation.table, evaluation.plan, "sensitivity", name)
         parts.append(f"{what} {with_interval(value, bounds, n)}, {n_equals(n)}")
-    return f"At it, held out: {'; '.join(parts)}."
+    return f"Held out, each round at its own cut-off: {'; '.join(parts)}."
 
 
 def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
@@ -181,7 +187,8 @@ def curve_sentences(evaluation: Evaluation) -> Iterator[str]:
                 evaluation.table, evaluation.plan, curve.found.measure, curve.of_class
             )
             ahead = _ahead(evaluation, curve)
-            yield f"Learning curve, {what}: {curve.found.call}. {curve.found.reason}{ahead}"
+            by = " (by the highest score)" if evaluation.plan.cut_off else ""
+            yield f"Learning curve, {what}{by}: {curve.found.call}. {curve.found.reason}{ahead}"
 
 
 def _ahead(evaluation: Evaluation, curve: Curve) -> str:
@@ -208,6 +215,8 @@ def chance_sentences(evaluation: Evaluation) -> Iterator[str]:
     for check in evaluation.beside.chance:
         if check.best or check.candidate == evaluation.about:
             yield _chance(evaluation, check)
+    if evaluation.beside.chance:
+        yield from _majority(evaluation)
 
 
 def _chance(evaluation: Evaluation, check: ChanceCheck) -> str:
@@ -218,9 +227,32 @@ def _chance(evaluation: Evaluation, check: ChanceCheck) -> str:
         else evaluation.plan.title(check.candidate)
     )
     rounds = f"{count(check.rounds)} {'round' if check.rounds == 1 else 'rounds'}"
+    groups = kept_together(evaluation.table, evaluation.plan)
+    within = {
+        "units": "",
+        "groups": " between what is kept together",
+        "within groups": " within what is kept together, so what that alone tells counts as chance",
+    }[dealt_among(evaluation.table, groups)]
     return (
-        f"Chance check: with labels permuted, {whom} did at least as well by "
-        f"{ALL_MEASURES[check.measure].trade} in {count(test.at_least_as_good)} of "
-        f"{count(test.permutations)} tables: p{NBSP}={NBSP}{decimal(test.p, P_DIGITS)} ({rounds} "
-        "each, whole pipeline repeated)."
+        f"Chance check, by the highest score: with labels permuted{within}, {whom} did at "
+        f"least as well by {ALL_MEASURES[check.measure].trade} in "
+        f"{count(test.at_least_as_good)} of {count(test.permutations)} tables: "
+        f"p{NBSP}={NBSP}{decimal(test.p, P_DIGITS)} ({rounds} each, whole pipeline repeated)."
+    )
+
+
+def _majority(evaluation: Evaluation) -> Iterator[str]:
+    """One answer a unit against the majority share."""
+    part = evaluation.part(evaluation.about, evaluation.scheme)
+    if part.units is not None:
+        return  # rows of a unit are no independent trials
+    found = majority_of(part)
+    if math.isnan(found.p):
+        return
+    n = int((part.held.rounds.times_tested > 0).sum())
+    yield (
+        f"Against always giving the most frequent answer, on one answer each: "
+        f"{percent(found.accuracy, n)} against {percent(found.majority_share, n)}, "
+        f"p{NBSP}={NBSP}{decimal(found.p, P_DIGITS)} (exact binomial test; it leaves out that "
+        "models vary)."
     )

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from evalcore import intervals
 from evalcore.estimates import MEMORISES, mean_of_rounds
-from evalcore.evaluation import Evaluation
+from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import plus_632
 from evalcore.per_case import agreement_within_units
@@ -56,7 +56,8 @@ def not_better_than_majority(
     largest, share = majority(table, evaluation.counted_by)
     always = quoted(table.classes[largest])
     for name in _learned(evaluation):
-        estimate = evaluation.estimate("accuracy", name)
+        by = evaluation.in_use if name == evaluation.about else HIGHEST
+        estimate = evaluation.estimate("accuracy", name, estimator=by)
         bounds = estimate.interval
         if bounds is None or not bounds.low <= share:
             continue
@@ -167,7 +168,7 @@ def wide_interval(table: Table, plan: Plan, evaluation: Evaluation | None) -> It
     if evaluation is None:
         return
     name = evaluation.about
-    estimator = "mean_of_rounds" if plan.measure == "auc" else "held_out_by_case"
+    estimator = "mean_of_rounds" if plan.measure == "auc" else evaluation.in_use
     measure = "balanced_accuracy" if plan.measure == "sensitivity" else plan.measure
     estimate = evaluation.estimate(measure, name, estimator=estimator)
     bounds = estimate.interval

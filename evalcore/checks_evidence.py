@@ -3,7 +3,7 @@
 from collections.abc import Iterator
 from dataclasses import replace
 
-from evalcore.evaluation import Evaluation
+from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.evidence import (
     LEAST,
     LEVEL,
@@ -55,8 +55,8 @@ def interval_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) ->
 def verdict_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
     """A limit is shown by a rule that was wrong too often on simulated tables like this one."""
     given = headline(evaluation) if evaluation else None
-    if evaluation is None or given is None:
-        return
+    if evaluation is None or given is None or evaluation.in_use != HIGHEST:
+        return  # no verdict at a learned cut-off was simulated
     for verdict in verdicts(evaluation, evaluation.about):
         measure = verdict.limit.measure
         wanted = replace(given, estimator="verdict", measure=measure)

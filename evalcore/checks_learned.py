@@ -13,7 +13,7 @@ from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import share_interval
-from evalcore.permuted import arrangements
+from evalcore.permuted import arrangements, dealt_among, kept_together
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
@@ -25,6 +25,7 @@ from evalcore.wording import (
     level,
     n_equals,
     percent,
+    quoted,
     reading,
     tenths,
     with_interval,
@@ -33,6 +34,7 @@ from evalcore.wording import (
 SURE = 0.05  # p above which a figure is not told from chance
 OFF_CHANCE = 0.05  # points that permuted labels may be off what guessing gives
 HALF = 0.5
+BY_COLUMN = {"leave_block_out": "leaves out each entry of", "forward_in_time": "goes by"}
 
 
 def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -56,43 +58,58 @@ def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> 
 
 
 def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Too few units of a class to learn a floor, in all or in the bags: then all are called it."""
+    """A cut-off that calls every case its class, so that nothing is told apart."""
+    if evaluation is None or plan.cut_off is None:
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or not len(found.part.held.labels):
+        return
+    rule, k = plan.cut_off, table.classes.index(plan.cut_off.of_class)
+    called = found.part.held.confusion[:, :, k].sum(axis=1)
+    every = called == found.part.held.rounds.test_sizes
+    share = float(every.mean()) if len(every) else 0.0
+    if share <= HALF:
+        return
+    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
+    yield Finding(
+        "cut_off_calls_all",
+        "grave",
+        rule.of_class,
+        f"In {percent(share, len(every))} of rounds every {noun.singular} is called {name}",
+        f"So held-out figures are those of a constant answer there ({count(int(every.sum()))} of "
+        f"{count(len(every))} rounds; threshold: {level(HALF)}).",
+        f"Take other costs or a lower floor, or add {name} {noun.plural}: a cut-off that is "
+        "learned needs scores that tell the classes apart, and a floor enough of its class in "
+        "every bag.",
+        share,
+        HALF,
+        "common_practice",
+    )
+
+
+def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Too few independent units of a class to learn a floor."""
     if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
         return
     rule, needed = plan.cut_off, least_units(plan.cut_off.floor)
     found = evaluation.at_cut_off(evaluation.about)
-    if found is None:
+    if found is None or found.learned_from >= needed:
         return
-    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
-    enough, share = found.learned_from >= needed, float(np.isneginf(found.cut_offs).mean())
-    if enough and share <= HALF:
-        return
-    every = f"every {noun.singular} is called {name}"
-    takes = (
-        f"A cut-off that finds {level(rule.floor)} of further {noun.plural} of a class takes at "
-        f"least {needed} of them; there are {found.learned_from}"
-    )
-    if enough:
-        title = (
-            f"In {percent(share, len(found.cut_offs))} of rounds the bag holds too few {name} "
-            f"{noun.plural} for a floor of {level(rule.floor)}; {every} there"
-        )
-        seen = (
-            f"{takes} in all and fewer in a bag (threshold: {level(HALF)} of rounds). Held-out "
-            "figures are not those of the cut-off that goes to work."
-        )
-    else:
-        title = (
-            f"{capitalised(count(found.learned_from))} {name} {noun.plural} cannot teach a floor "
-            f"of {level(rule.floor)}; {every}"
-        )
-        seen = f"{takes} (threshold: {needed})."
-    advice = f"Take a lower floor, or add {name} {noun.plural}."
-    value, threshold = (share, HALF) if enough else (found.learned_from, needed)
+    name, noun = class_name(rule.of_class), table.noun_for(evaluation.counted_by)
+    what = noun.plural if found.part.units is None else f"independent {table.noun.plural}"
     yield Finding(
-        "cut_off_calls_all", "grave", rule.of_class, title, seen, advice, value, threshold,
+        "floor_from_few",
+        "grave",
+        rule.of_class,
+        f"{capitalised(count(found.learned_from))} {name} {what} cannot teach a floor of "
+        f"{level(rule.floor)}",
+        f"A cut-off that finds {level(rule.floor)} of further {what} of a class takes at least "
+        f"{needed} of them; there are {found.learned_from} (threshold: {needed}).",
+        f"Take a lower floor, or add {name} {table.noun.plural}.",
+        found.learned_from,
+        needed,
         "wilks1941",
-    )  # fmt: skip
+    )
 
 
 def floor_not_delivered(
@@ -126,6 +143,31 @@ def floor_not_delivered(
         value,
         floor,
         "vovk2005",
+    )
+
+
+def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The cut-off that goes to work lies outside those that were judged."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by == "fixed":
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or math.isnan(found.on_all) or not found.spread.defined:
+        return
+    low, high = found.spread.low, found.spread.high
+    if low <= found.on_all <= high:
+        return
+    yield Finding(
+        "cut_off_apart",
+        "moderate",
+        plan.cut_off.of_class,
+        "The cut-off that goes to work lies apart from those that were judged",
+        f"Learned from all cases it is {decimal(found.on_all, 3)}; in {level(found.spread.level)} "
+        f"of rounds it fell between {decimal(low, 3)} and {decimal(high, 3)} (threshold: these "
+        "ends). Held-out figures are those of the rounds’ cut-offs.",
+        "Expect other rates than those reported: more cases of the class make cut-offs steadier.",
+        found.on_all,
+        high if found.on_all > high else low,
+        "common_practice",
     )
 
 
@@ -190,10 +232,13 @@ def grid_too_narrow(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iter
         )
 
 
-def not_told_from_chance(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+def not_told_from_chance(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
     """Permuted labels do as well too often."""
-    if evaluation is None:
+    if evaluation is None or not evaluation.beside.chance:
         return
+    within = dealt_among(table, kept_together(table, plan)) == "within groups"
     for check in evaluation.beside.chance:
         test = check.test
         if check.best or math.isnan(test.p) or test.p <= SURE:
@@ -202,13 +247,13 @@ def not_told_from_chance(_: Table, plan: Plan, evaluation: Evaluation | None) ->
         short = least > SURE
         yield Finding(
             "not_told_from_chance",
-            "moderate" if short and not test.at_least_as_good else "grave",
+            "moderate" if within or (short and not test.at_least_as_good) else "grave",
             check.candidate,
-            f"{capitalised(plan.title(check.candidate))} is not told from chance: "
-            f"p{NBSP}={NBSP}{p}",
-            f"With labels permuted it did at least as well in {count(test.at_least_as_good)} of "
-            f"{count(test.permutations)} tables; p{NBSP}={NBSP}(k + 1)/(m + 1){NBSP}={NBSP}{p} "
-            f"(threshold: {decimal(SURE)})."
+            f"{capitalised(plan.title(check.candidate))} is not told from "
+            f"{'what is kept together alone' if within else 'chance'}: p{NBSP}={NBSP}{p}",
+            f"With labels permuted{' within what is kept together' if within else ''} it did at "
+            f"least as well in {count(test.at_least_as_good)} of {count(test.permutations)} tables; "
+            f"p{NBSP}={NBSP}(k + 1)/(m + 1){NBSP}={NBSP}{p} (threshold: {decimal(SURE)})."
             + (
                 f" With so few tables p cannot be below {decimal(least, P_DIGITS)}."
                 if short
@@ -251,8 +296,10 @@ def permuted_off_chance(
 ) -> Iterator[Finding]:
     """Permuted labels that are answered better or worse than by guessing."""
     guess = {"balanced_accuracy": 1 / table.n_classes, "auc": 0.5}.get(plan.choosing_measure)
-    if evaluation is None or guess is None:
+    if evaluation is None or guess is None or not evaluation.beside.chance:
         return
+    if dealt_among(table, kept_together(table, plan)) == "within groups":
+        return  # what groups tell of the classes stays, so guessing is no yardstick
     for check in evaluation.beside.chance:
         values = check.permuted[~np.isnan(check.permuted)]
         if check.best or check.candidate != evaluation.about or len(values) < 2:
@@ -277,6 +324,27 @@ def permuted_off_chance(
             guess,
             "own_leakage",
         )
+
+
+def curve_deals_units(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The curve deals single units where the headline leaves whole blocks out, or goes by time."""
+    key = plan.scheme(plan.headline_scheme).key
+    if evaluation is None or not evaluation.beside.curves or key not in BY_COLUMN:
+        return
+    column = quoted(str(plan.scheme(plan.headline_scheme).values()["column"]))
+    yield Finding(
+        "curve_deals_units",
+        "moderate",
+        "",
+        f"The learning curve says nothing about a {column} never seen",
+        f"The headline {BY_COLUMN[key]} {column}; the curve deals single {table.noun.plural}, so "
+        f"the same {column} is learned from and judged (held out by {column}: 0; threshold: 1). "
+        "It can rise by what a new one would not bring.",
+        f"Read it as about further {table.noun.plural} of the same {column} only.",
+        0,
+        1,
+        "own_learning_curve",
+    )
 
 
 def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:

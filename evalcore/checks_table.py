@@ -142,11 +142,14 @@ def copies_left(table: Table, _: Plan, __: Evaluation | None) -> Iterator[Findin
         )
 
 
-def units_not_kept_together(table: Table, _: Plan, __: Evaluation | None) -> Iterator[Finding]:
+def units_not_kept_together(table: Table, plan: Plan, _: Evaluation | None) -> Iterator[Finding]:
     """A column that names what rows have in common was not given as the unit."""
     if table.has_units:
         return
+    kept = {choice.values().get("keep", "") for choice in plan.schemes}
     for column, names, spelled in table.repeating:
+        if kept == {column}:
+            continue
         rows = table.n_cases / names
         yield Finding(
             "units_not_kept_together",

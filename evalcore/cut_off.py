@@ -42,10 +42,12 @@ def learned(positive: ArrayLike, scores: ArrayLike, *, rule: CutOffRule, share: 
     By cost: the least `cost_per_case` among the mid-points between neighbouring scores and both
     ends; of several equally cheap ones the middle, the lower of two: it moves less from sample to
     sample than the lowest, and cost less on further cases where we simulated both. By floor: the
-    j-th smallest of the class's m scores, j = floor((m + 1)(1 - floor)). A further score,
-    exchangeable with them, falls below it with a chance of at most j / (m + 1) (Wilks 1941; Vovk,
-    Gammerman & Shafer 2005). That holds on average over samples, and only as far as the model to
-    be used scores like those that gave the scores.
+    j-th smallest of the class's m scores, j = (m + 1)(1 - floor), between two of them where j is
+    no whole number. A further score, exchangeable with them, falls below the j-th with a chance of
+    j / (m + 1) (Wilks 1941; Vovk, Gammerman & Shafer 2005), and between two with one in between:
+    so bags and the whole table cut at one level, whatever m (our own choice). That holds on
+    average over samples, and only as far as the model to be used scores like those that gave the
+    scores.
 
     Parameters
     ----------
@@ -89,15 +91,17 @@ def learned(positive: ArrayLike, scores: ArrayLike, *, rule: CutOffRule, share: 
     if is_positive.all() or not is_positive.any():
         return math.nan
     if rule.by == "floor":
-        ranked = np.sort(score[is_positive])
-        j = _rank(len(ranked), rule.floor)
-        return float(ranked[j - 1]) if j else -math.inf
+        return _at_floor(np.sort(score[is_positive]), rule.floor)
     return _cheapest(is_positive, score, rule=rule, share=share)
 
 
-def _rank(m: int, floor: float) -> int:
+def _at_floor(ranked: Floats, floor: float) -> float:
+    """The score at rank (m + 1)(1 - floor), counted from 1; -infinity below the first."""
     # 10 (1 - 0.9) is 1, but not in binary fractions; next to a floor of 0 it must not pass m
-    return min(m, math.floor((m + 1) * (1 - floor) + 1e-9))
+    rank = min(float(len(ranked)), round((len(ranked) + 1) * (1 - floor), 9))
+    if rank < 1:
+        return -math.inf
+    return float(np.interp(rank, np.arange(1, len(ranked) + 1), ranked))
 
 
 def _cheapest(

@@ -206,5 +206,7 @@ def _check_date(text: str) -> None:
         known = date.fromisoformat(text).isoformat() == text
     except ValueError:
         known = False
+    if known and text > date.today().isoformat():
+        raise PlanError(f"`set_on` must be a date that has been; got {text}.")
     if not known:
         raise PlanError(f"`set_on` must be a date as YYYY-MM-DD; got {text!r}.")

@@ -79,7 +79,9 @@ CHECKS: dict[str, Check] = {
         Check(
             "cut_off_chosen_here", "a cut-off chosen on these cases", learned.cut_off_chosen_here
         ),
-        Check("cut_off_calls_all", "too few units for a floor", learned.cut_off_calls_all),
+        Check("cut_off_calls_all", "a cut-off calls everything", learned.cut_off_calls_all),
+        Check("floor_from_few", "too few units for a floor", learned.floor_from_few),
+        Check("cut_off_apart", "the cut-off in use was not judged", learned.cut_off_apart),
         Check("floor_not_delivered", "a floor is not delivered", learned.floor_not_delivered),
         Check("not_told_from_chance", "chance does as well", learned.not_told_from_chance),
         Check("few_arrangements", "few ways to deal the labels", learned.few_arrangements),
@@ -88,6 +90,7 @@ CHECKS: dict[str, Check] = {
         ),
         Check("settings_unsteady", "rounds pick different settings", learned.settings_unsteady),
         Check("grid_too_narrow", "a grid may end too early", learned.grid_too_narrow),
+        Check("curve_deals_units", "a curve of single units", learned.curve_deals_units),
         Check("still_rising", "more cases would help", learned.still_rising),
         Check("bags_as_expected", "what a bag holds", rounds.bags_as_expected),
     )

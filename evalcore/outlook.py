@@ -42,9 +42,11 @@ def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook
     verdict : Verdict
         Of this candidate.
     """
-    limit = verdict.limit
+    limit, rule = verdict.limit, evaluation.plan.cut_off
+    fitted = verdict.at_cut_off and rule is not None and rule.chosen_on_these_cases
     if (
         verdict.word == "shown"
+        or fitted  # further units cannot mend that
         or limit.measure == "balanced_accuracy"
         or math.isnan(verdict.at_least)
     ):

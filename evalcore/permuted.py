@@ -2,6 +2,7 @@
 
 import math
 from dataclasses import replace
+from typing import Literal
 
 import numpy as np
 
@@ -17,8 +18,23 @@ from evalcore.schemes import SCHEMES, draw
 from evalcore.table import Table
 from evalcore.tuning import Learned
 
+Dealt = Literal["units", "groups", "within groups"]
 LARGEST_LOG = 700.0  # whose exponential is still a float
 ATTEMPTS = 200  # permuted tables looked at for one that the scheme suits
+
+
+def dealt_among(table: Table, groups: Groups) -> Dealt:
+    """What trades labels: units freely, whole groups, or units within their group."""
+    if groups.number == table.n_units:
+        return "units"
+    pure = ((groups.counts > 0).sum(axis=1) == 1).all()
+    return "groups" if pure else "within groups"
+
+
+def kept_together(table: Table, plan: Plan) -> Groups:
+    """What the headline's scheme keeps together."""
+    choice = plan.scheme(plan.headline_scheme)
+    return SCHEMES[choice.key].groups(table, choice.values())
 
 
 def permuted_table(table: Table, rng: np.random.Generator, groups: Groups | None = None) -> Table:
@@ -37,9 +53,10 @@ def permuted_table(table: Table, rng: np.random.Generator, groups: Groups | None
         What the scheme keeps together; the units themselves if left out.
     """
     of_unit = table.unit_labels
-    if groups is None or groups.number == table.n_units:
+    among = "units" if groups is None else dealt_among(table, groups)
+    if groups is None or among == "units":
         return replace(table, labels=rng.permutation(of_unit)[table.units])
-    if ((groups.counts > 0).sum(axis=1) == 1).all():
+    if among == "groups":
         return replace(table, labels=rng.permutation(groups.labels)[groups.of_case])
     first_case = np.unique(table.units, return_index=True)[1]
     group = groups.of_case[first_case]
@@ -56,10 +73,9 @@ def arrangements(table: Table, plan: Plan) -> float:
     By whole groups n! / (n1! n2! ...) with the groups of each class; within groups the product of
     the same over each group's units. p cannot be expected below one over their number.
     """
-    choice = plan.scheme(plan.headline_scheme)
-    groups = SCHEMES[choice.key].groups(table, choice.values())
-    pure = ((groups.counts > 0).sum(axis=1) == 1).all()
-    parts = [np.bincount(groups.labels).tolist()] if pure else groups.counts.tolist()
+    groups = kept_together(table, plan)
+    within = dealt_among(table, groups) == "within groups"
+    parts = groups.counts.tolist() if within else [np.bincount(groups.labels).tolist()]
     ways = sum(math.lgamma(sum(p) + 1) - sum(math.lgamma(n + 1) for n in p) for p in parts)
     return math.exp(ways) if ways < LARGEST_LOG else math.inf
 
@@ -71,8 +87,7 @@ def _suitable(table: Table, plan: Plan, keys: tuple[str, ...]) -> tuple[Table, R
     labels as they came suit too, so they are compared with their like.
     """
     choice = plan.scheme(plan.headline_scheme)
-    scheme = SCHEMES[choice.key]
-    groups = scheme.groups(table, choice.values())
+    scheme, groups = SCHEMES[choice.key], kept_together(table, plan)
     for attempt in range(ATTEMPTS):
         rng = generator(plan.seed, *keys, "labels", str(attempt))
         mixed = permuted_table(table, rng, groups)

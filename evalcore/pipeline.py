@@ -3,6 +3,7 @@
 import warnings
 from collections.abc import Iterator, Sequence
 
+from evalcore.groups import groups_of
 from evalcore.plan import APPENDING, Plan, generator
 from evalcore.rounds import Rounds
 from evalcore.schemes import ALL_SCHEMES
@@ -35,7 +36,7 @@ def candidates_in(
         choice = plan.scheme(scheme or plan.headline_scheme)
         groups = ALL_SCHEMES[choice.key].groups(table, choice.values())
         rngs = [generator(plan.seed, *keys, "inner folds", stream, r) for r in places]
-        return inner_rounds(groups, part.train, rngs=rngs)
+        return inner_rounds(groups, groups_of(table), part.train, rngs=rngs)
 
     bags = SharedBags(table, part.train, inner)
     for name, choice in zip(plan.candidate_names, plan.candidates, strict=True):

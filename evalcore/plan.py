@@ -104,6 +104,12 @@ class Plan:
                     f"Settings of a scheme are not tuned; got the grid {choice.written()!r}. Give "
                     "one value each, or choose the scheme several times."
                 )
+        keeps = self.schemes[0].values().get("keep", "")
+        if self.curve and self.curve.values()["keep"] != keeps:
+            raise PlanError(
+                "The learning curve must keep together what the first scheme keeps together, or it "
+                f"judges something else; got {self.curve.values()['keep']!r} and {keeps!r}."
+            )
         if not 0 <= self.permutations <= MOST_PERMUTATIONS:
             raise PlanError(
                 "The chance check takes between 0 and "
@@ -233,6 +239,13 @@ class Plan:
                 f"A cut-off parts two classes; this table has {table.n_classes}. Leave the cut-off "
                 "out, or join classes in the file."
             )
+        if self.cut_off and self.cut_off.undecided_below:
+            about = CANDIDATES[self.candidate(self.about_name).key]
+            if not about.probabilities:
+                raise PlanError(
+                    f"`undecided` goes by probabilities, and {about.title} gives none; leave it "
+                    "out, or let the answer be about another candidate."
+                )
         if self.permutations and len(table.mixed_units):
             raise PlanError(
                 f"The chance check moves classes between {table.noun.plural}, so each needs one "

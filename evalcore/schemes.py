@@ -17,7 +17,7 @@ from evalcore.profile import smallest_class
 from evalcore.rounds import Rounds
 from evalcore.settings import Setting, Settings
 from evalcore.table import Table
-from evalcore.wording import count, quoted
+from evalcore.wording import Noun, count, quoted
 
 LEAST_BLOCKS = 5  # no interval is offered over fewer blocks
 
@@ -183,15 +183,19 @@ def _forward_fit(table: Table, settings: Settings) -> None:
 
 
 def _curve_fit(table: Table, settings: Settings) -> None:
-    units, noun = table.class_counts("unit"), table.noun
-    k, least = int(units.argmin()), draws.CURVE_FOLDS
-    sizes = len(draws.nested_sizes(groups_of(table), int(settings["sizes"])))
-    if units[k] < least or sizes < draws.LEAST_SIZES:
+    keep = str(settings["keep"])
+    groups = groups_of(table, keep)
+    noun = Noun(f"entry of {quoted(keep)}", f"entries of {quoted(keep)}") if keep else table.noun
+    number = np.bincount(groups.labels, minlength=table.n_classes)
+    k, least = int(number.argmin()), draws.CURVE_FOLDS
+    if number[k] < least or len(draws.nested_sizes(groups, int(settings["sizes"]))) < (
+        draws.LEAST_SIZES
+    ):
         raise PlanError(
-            f"Class {quoted(table.classes[k])} has {noun.counted(int(units[k]))} of "
-            f"{count(table.n_units)}. A learning curve takes {draws.LEAST_SIZES} sizes, the "
-            f"largest about twice the smallest or more, each with 2 {noun.plural} of every class: "
-            f"{least} {noun.plural} of every class are needed, and 7 of each always do."
+            f"Class {quoted(table.classes[k])} has {noun.counted(int(number[k]))} of "
+            f"{count(groups.number)}. A learning curve takes {draws.LEAST_SIZES} sizes, the "
+            f"largest about twice the smallest or more, each with 2 {noun.plural} of every class; "
+            f"7 of each always do, and fewer than {least} never."
         )
 
 
@@ -293,8 +297,9 @@ LEARNING_CURVE = Scheme(  # never a headline: most of its bags are smaller than 
     (
         Setting("sizes", "Sizes (fewer where two would be equal)", "whole", 6, 5, 12),
         Setting("subsets", "Random subsets of each size, at least", "whole", 20, 20, 1000),
+        _KEEP,
     ),
-    lambda table, settings: draws.n_nested(groups_of(table), settings),
+    lambda table, settings: draws.n_nested(groups_of(table, str(settings["keep"])), settings),
     _curve_fit,
     draws.nested_bags,
 )

@@ -47,16 +47,20 @@ class Inner:
         return self.rounds.repeat
 
 
-def inner_rounds(groups: Groups, counts: Counts, *, rngs: Sequence[np.random.Generator]) -> Inner:
+def inner_rounds(
+    groups: Groups, units: Groups, counts: Counts, *, rngs: Sequence[np.random.Generator]
+) -> Inner:
     """Cut each bag into folds of groups, class by class; a group's copies stay together.
 
-    Five folds, fewer where the rarest class of a bag has fewer groups in it, but at least two;
-    none where the bag holds one group only.
+    Five folds, fewer where the rarest class of a bag has fewer groups in it, but at least two.
+    Where a bag holds one group only its units are divided; none where that is one unit.
 
     Parameters
     ----------
     groups : Groups
         What is kept together.
+    units : Groups
+        The table's units: the same, or finer.
     counts : ndarray of uint8, shape (R, n)
         How often each case is in each bag.
     rngs : sequence of Generator, length R
@@ -69,13 +73,15 @@ def inner_rounds(groups: Groups, counts: Counts, *, rngs: Sequence[np.random.Gen
     >>> from types import SimpleNamespace
     >>> alone = SimpleNamespace(of_case=np.arange(4), labels=np.array([0, 0, 1, 1]), number=4)
     >>> bags = np.array([[3, 1, 1, 1]], dtype=np.uint8)
-    >>> found = inner_rounds(alone, bags, rngs=[np.random.default_rng(1)])
+    >>> found = inner_rounds(alone, alone, bags, rngs=[np.random.default_rng(1)])
     >>> sorted(found.rounds.train[:, 0].tolist())
     [0, 3]
     """
     train, test, of_bag = [], [], []
     for at, (bag, rng) in enumerate(zip(counts, rngs, strict=True)):
-        fold = _folds(groups, np.unique(groups.of_case[bag > 0]), rng)[groups.of_case]
+        several = len(np.unique(groups.of_case[bag > 0])) > 1
+        divided = groups if several else units
+        fold = _folds(divided, np.unique(divided.of_case[bag > 0]), rng)[divided.of_case]
         for number in range(int(fold.max()) + 1 if fold.max() > 0 else 0):
             out = fold == number
             train.append(np.where(out, 0, bag).astype(np.uint8))
