@@ -27,6 +27,7 @@ from evalcore.wording import (
     percent,
     quoted,
     reading,
+    score,
     tenths,
     with_interval,
 )
@@ -161,8 +162,8 @@ def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterat
         "moderate",
         plan.cut_off.of_class,
         "The cut-off that goes to work lies apart from those that were judged",
-        f"Learned from all cases it is {decimal(found.on_all, 3)}; in {level(found.spread.level)} "
-        f"of rounds it fell between {decimal(low, 3)} and {decimal(high, 3)} (threshold: these "
+        f"Learned from all cases it is {score(found.on_all)}; in {level(found.spread.level)} "
+        f"of rounds it fell between {score(low)} and {score(high)} (threshold: these "
         "ends). Held-out figures are those of the rounds’ cut-offs.",
         "Expect other rates than those reported: more cases of the class make cut-offs steadier.",
         found.on_all,
@@ -252,8 +253,8 @@ def not_told_from_chance(
             f"{capitalised(plan.title(check.candidate))} is not told from "
             f"{'what is kept together alone' if within else 'chance'}: p{NBSP}={NBSP}{p}",
             f"With labels permuted{' within what is kept together' if within else ''} it did at "
-            f"least as well in {count(test.at_least_as_good)} of {count(test.permutations)} tables; "
-            f"p{NBSP}={NBSP}(k + 1)/(m + 1){NBSP}={NBSP}{p} (threshold: {decimal(SURE)})."
+            f"least as well in {count(test.at_least_as_good)} of {count(test.permutations)} "
+            f"tables; p{NBSP}={NBSP}(k + 1)/(m + 1){NBSP}={NBSP}{p} (threshold: {decimal(SURE)})."
             + (
                 f" With so few tables p cannot be below {decimal(least, P_DIGITS)}."
                 if short

@@ -183,7 +183,7 @@ def _forward_fit(table: Table, settings: Settings) -> None:
 
 
 def _curve_fit(table: Table, settings: Settings) -> None:
-    keep = str(settings["keep"])
+    keep = str(settings.get("keep", ""))
     groups = groups_of(table, keep)
     noun = Noun(f"entry of {quoted(keep)}", f"entries of {quoted(keep)}") if keep else table.noun
     number = np.bincount(groups.labels, minlength=table.n_classes)
@@ -299,7 +299,9 @@ LEARNING_CURVE = Scheme(  # never a headline: most of its bags are smaller than 
         Setting("subsets", "Random subsets of each size, at least", "whole", 20, 20, 1000),
         _KEEP,
     ),
-    lambda table, settings: draws.n_nested(groups_of(table, str(settings["keep"])), settings),
+    lambda table, settings: draws.n_nested(
+        groups_of(table, str(settings.get("keep", ""))), settings
+    ),
     _curve_fit,
     draws.nested_bags,
 )
