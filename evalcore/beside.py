@@ -16,6 +16,7 @@ from evalcore.chance_check import (
 )
 from evalcore.estimated import n_behind
 from evalcore.figures import Estimate, Interval
+from evalcore.groups import noun_of
 from evalcore.judged import Judged
 from evalcore.learning_curve import CurveMeasure, LearningCurve, learning_curve
 from evalcore.measures import Floats
@@ -130,7 +131,7 @@ def _curves(table: Table, plan: Plan, parts: Sequence[Judged]) -> Iterator[Curve
                 of_class=table.classes.index(name) if name else 0,
                 level=plan.level,
                 rng=generator(plan.seed, "learning curve", part.candidate, of_measure),
-                noun=table.noun,
+                noun=noun_of(table, plan.keep),
             )
             yield Curve(part, name, found)
 

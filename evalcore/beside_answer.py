@@ -10,6 +10,7 @@ from evalcore.chance_check import ChanceCheck, majority_of
 from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
+from evalcore.groups import noun_of
 from evalcore.judged import share_interval
 from evalcore.measures import ALL_MEASURES
 from evalcore.permuted import dealt_among, kept_together
@@ -71,8 +72,9 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     """The cut-off of the candidate of the answer, and what it gives on cases never seen."""
     found = evaluation.at_cut_off(evaluation.about)
     if found is None:
-        if evaluation.plan.cut_off:
-            title = capitalised(evaluation.plan.title(evaluation.about))
+        plan = evaluation.plan
+        if plan.cut_off and not plan.has_cut_off(plan.candidate(evaluation.about)):
+            title = capitalised(plan.title(evaluation.about))
             yield f"{title} learns nothing from features, so it has no cut-off."
         return
     yield _where(evaluation, found)
@@ -135,14 +137,15 @@ def _in_rounds(found: AtCutOff) -> str:
         else ""
     )
     if spread.low == spread.high:
-        return f"in {level(spread.level)} of rounds or more: {_end(spread.low)}{lacking}"
+        return f"in {level(spread.level)} of rounds or more: {place(spread.low)}{lacking}"
     return (
-        f"in {level(spread.level)} of rounds it fell between {_end(spread.low)} and "
-        f"{_end(spread.high)}{lacking}"
+        f"in {level(spread.level)} of rounds it fell between {place(spread.low)} and "
+        f"{place(spread.high)}{lacking}"
     )
 
 
-def _end(cut_off: float) -> str:
+def place(cut_off: float) -> str:
+    """Where a cut-off lies; in words where it calls all or none."""
     if math.isinf(cut_off):
         return "calling all" if cut_off < 0 else "calling none"
     return score(cut_off)
@@ -196,7 +199,7 @@ def _ahead(evaluation: Evaluation, curve: Curve) -> str:
     part, found = curve.part, curve.found
     n = n_behind(part, found.of_class if curve.of_class else None)
     # bags grow by what is kept together, also where rows are counted
-    noun, of_level = evaluation.table.noun, found.gain.interval.level
+    noun, of_level = noun_of(evaluation.table, evaluation.plan.keep), found.gain.interval.level
     said = [
         f" Continued to {noun.counted(a.n)}: "
         f"{with_interval(a.value, Interval(a.low, a.high, of_level, 'resampled_units'), n)}."
@@ -242,17 +245,25 @@ def _chance(evaluation: Evaluation, check: ChanceCheck) -> str:
 
 
 def _majority(evaluation: Evaluation) -> Iterator[str]:
-    """One answer a unit against the majority share."""
+    """One answer a unit, of the first repeat, against the majority share."""
+    if evaluation.is_baseline(evaluation.about):
+        return
     part = evaluation.part(evaluation.about, evaluation.scheme)
     if part.units is not None:
         return  # rows of a unit are no independent trials
     found = majority_of(part)
     if math.isnan(found.p):
         return
-    n = int((part.held.rounds.times_tested > 0).sum())
+    rounds = part.held.rounds
+    n = int(rounds.test_sizes[rounds.repeat == rounds.repeat[0]].sum())
+    least = 1 / 10**P_DIGITS
+    is_p = (
+        f"<{NBSP}{decimal(least, P_DIGITS)}"
+        if found.p < least
+        else (f"={NBSP}{decimal(found.p, P_DIGITS)}")
+    )
     yield (
-        f"Against always giving the most frequent answer, on one answer each: "
-        f"{percent(found.accuracy, n)} against {percent(found.majority_share, n)}, "
-        f"p{NBSP}={NBSP}{decimal(found.p, P_DIGITS)} (exact binomial test; it leaves out that "
-        "models vary)."
+        "Against always giving the most frequent answer, by the highest score and on one answer "
+        f"each: {percent(found.accuracy, n)} against {percent(found.majority_share, n)}, "
+        f"p{NBSP}{is_p} (exact binomial test; it leaves out that models vary)."
     )

@@ -6,12 +6,13 @@ from collections.abc import Iterator
 import numpy as np
 
 from evalcore.answer import measure_name
-from evalcore.beside_answer import P_DIGITS
+from evalcore.beside_answer import P_DIGITS, place
 from evalcore.candidates import CANDIDATES
 from evalcore.cut_off import least_units
 from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
+from evalcore.groups import noun_of
 from evalcore.judged import share_interval
 from evalcore.permuted import arrangements, dealt_among, kept_together
 from evalcore.plan import Plan
@@ -27,7 +28,6 @@ from evalcore.wording import (
     percent,
     quoted,
     reading,
-    score,
     tenths,
     with_interval,
 )
@@ -161,10 +161,11 @@ def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterat
         "cut_off_apart",
         "moderate",
         plan.cut_off.of_class,
-        "The cut-off that goes to work lies apart from those that were judged",
-        f"Learned from all cases it is {score(found.on_all)}; in {level(found.spread.level)} "
-        f"of rounds it fell between {score(low)} and {score(high)} (threshold: these "
-        "ends). Held-out figures are those of the rounds’ cut-offs.",
+        f"The cut-off that goes to work, {place(found.on_all)}, lies apart from those that were "
+        "judged",
+        f"Learned from all cases it is {place(found.on_all)}; in {level(found.spread.level)} of "
+        f"rounds it fell between {place(low)} and {place(high)} (threshold: these ends). Held-out "
+        "figures are those of the rounds’ cut-offs.",
         "Expect other rates than those reported: more cases of the class make cut-offs steadier.",
         found.on_all,
         high if found.on_all > high else low,
@@ -273,9 +274,10 @@ def few_arrangements(table: Table, plan: Plan, evaluation: Evaluation | None) ->
     """So few ways to deal the labels that no candidate could be told from chance."""
     if evaluation is None or not evaluation.beside.chance:
         return
-    ways, needed = round(min(arrangements(table, plan), 1e6)), round(1 / SURE)
-    if ways >= needed:
+    found, needed = arrangements(table, plan), math.ceil(1 / SURE)
+    if found >= needed:
         return
+    ways = int(found)
     yield Finding(
         "few_arrangements",
         "moderate",
@@ -337,7 +339,8 @@ def curve_deals_units(table: Table, plan: Plan, evaluation: Evaluation | None) -
         "curve_deals_units",
         "moderate",
         "",
-        f"The learning curve says nothing about a {column} never seen",
+        f"The learning curve leaves out 0 entries of {column} as a whole, so it says nothing about "
+        "one never seen",
         f"The headline {BY_COLUMN[key]} {column}; the curve deals single {table.noun.plural}, so "
         f"the same {column} is learned from and judged (held out by {column}: 0; threshold: 1). "
         "It can rise by what a new one would not bring.",
@@ -356,7 +359,7 @@ def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
         found = curve.found
         if curve.part.candidate != evaluation.about or found.call != "rising":
             continue
-        noun, ends = table.noun, found.gain.interval
+        noun, ends = noun_of(table, plan.keep), found.gain.interval
         yield Finding(
             "still_rising",
             "note",

@@ -249,7 +249,7 @@ def with_undecided(
     ----------
     right : array_like of bool, shape (T,)
     top : array_like, shape (T,)
-        The larger class probability.
+        Probability of the class that was answered.
     below : float
         Undecided if it is below this; 0 for no case.
     weights : array_like, shape (T,), optional

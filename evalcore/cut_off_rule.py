@@ -46,8 +46,8 @@ class CutOffRule:
         By fixed: the date, YYYY-MM-DD, on which it was set, before these cases were seen; empty
         if it was chosen on them. Nothing here can check it.
     undecided_below : float
-        A case whose larger class probability is below this is left to a person; above 0.5 and
-        below 1, or 0 for no case.
+        An answer whose own probability is below this is left to a person; above 0.5 and below 1,
+        or 0 for no case.
 
     Raises
     ------

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from evalcore.errors import PlanError
 from evalcore.intake import MISSING
 from evalcore.table import Table
-from evalcore.wording import quoted
+from evalcore.wording import Noun, quoted
 
 _DATE = re.compile(
     r"(\d{4})-(\d{1,2})(?:-(\d{1,2})(?:[T ](\d{1,2}):(\d{2})(?::(\d{2}))?)?)?", re.ASCII
@@ -86,6 +86,19 @@ def groups_of(table: Table, column: str = "") -> Groups:
     units = np.zeros_like(counts)
     np.add.at(units, (of_unit, table.unit_labels), 1)
     return Groups(of_case, names, counts, np.asarray(units.argmax(axis=1)))
+
+
+def noun_of(table: Table, column: str = "") -> Noun:
+    """What groups are called: entries of the column that names them, or as units are.
+
+    >>> from types import SimpleNamespace
+    >>> lots = SimpleNamespace(noun=Noun("lot", "lots"))
+    >>> noun_of(lots).plural, noun_of(lots, "site").plural
+    ('lots', 'entries of ‘site’')
+    """
+    if not column:
+        return table.noun
+    return Noun(f"entry of {quoted(column)}", f"entries of {quoted(column)}")
 
 
 def order_of(table: Table, column: str) -> NDArray[np.float64]:

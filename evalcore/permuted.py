@@ -77,7 +77,7 @@ def arrangements(table: Table, plan: Plan) -> float:
     within = dealt_among(table, groups) == "within groups"
     parts = groups.counts.tolist() if within else [np.bincount(groups.labels).tolist()]
     ways = sum(math.lgamma(sum(p) + 1) - sum(math.lgamma(n + 1) for n in p) for p in parts)
-    return math.exp(ways) if ways < LARGEST_LOG else math.inf
+    return float(round(math.exp(ways))) if ways < LARGEST_LOG else math.inf
 
 
 def _suitable(table: Table, plan: Plan, keys: tuple[str, ...]) -> tuple[Table, Rounds] | None:

@@ -104,11 +104,11 @@ class Plan:
                     f"Settings of a scheme are not tuned; got the grid {choice.written()!r}. Give "
                     "one value each, or choose the scheme several times."
                 )
-        keeps = self.schemes[0].values().get("keep", "")
-        if self.curve and self.curve.values()["keep"] != keeps:
+        of_curve = self.curve.values().get("keep", "") if self.curve else self.keep
+        if of_curve != self.keep:
             raise PlanError(
                 "The learning curve must keep together what the first scheme keeps together, or it "
-                f"judges something else; got {self.curve.values()['keep']!r} and {keeps!r}."
+                f"judges something else; got {of_curve!r} and {self.keep!r}."
             )
         if not 0 <= self.permutations <= MOST_PERMUTATIONS:
             raise PlanError(
@@ -157,6 +157,11 @@ class Plan:
     def headline_scheme(self) -> str:
         """Name of the scheme that gives the headline."""
         return self.scheme_names[0]
+
+    @property
+    def keep(self) -> str:
+        """The column by which the headline's scheme keeps units together; empty if by none."""
+        return str(self.schemes[0].values().get("keep", ""))
 
     def candidate(self, name: str) -> Choice:
         """The candidate of a name."""
@@ -243,8 +248,8 @@ class Plan:
             about = CANDIDATES[self.candidate(self.about_name).key]
             if not about.probabilities:
                 raise PlanError(
-                    f"`undecided` goes by probabilities, and {about.title} gives none; leave it "
-                    "out, or let the answer be about another candidate."
+                    f"`undecided` goes by probabilities, and there are none from {about.title}; "
+                    "leave it out, or let the answer be about another candidate."
                 )
         if self.permutations and len(table.mixed_units):
             raise PlanError(

@@ -12,12 +12,12 @@ import numpy as np
 
 from evalcore import draws
 from evalcore.errors import PlanError
-from evalcore.groups import Groups, groups_of
+from evalcore.groups import Groups, groups_of, noun_of
 from evalcore.profile import smallest_class
 from evalcore.rounds import Rounds
 from evalcore.settings import Setting, Settings
 from evalcore.table import Table
-from evalcore.wording import Noun, count, quoted
+from evalcore.wording import count, quoted
 
 LEAST_BLOCKS = 5  # no interval is offered over fewer blocks
 
@@ -184,8 +184,7 @@ def _forward_fit(table: Table, settings: Settings) -> None:
 
 def _curve_fit(table: Table, settings: Settings) -> None:
     keep = str(settings.get("keep", ""))
-    groups = groups_of(table, keep)
-    noun = Noun(f"entry of {quoted(keep)}", f"entries of {quoted(keep)}") if keep else table.noun
+    groups, noun = groups_of(table, keep), noun_of(table, keep)
     number = np.bincount(groups.labels, minlength=table.n_classes)
     k, least = int(number.argmin()), draws.CURVE_FOLDS
     if number[k] < least or len(draws.nested_sizes(groups, int(settings["sizes"]))) < (

@@ -490,7 +490,7 @@ REFUSED = {
     "unknown setting of the learning curve": (
         "iris.csv",
         [*ONE, "--learning-curve", "steps=6"],
-        "'learning_curve' has no setting 'steps'; it takes `sizes` or `subsets`.",
+        "'learning_curve' has no setting 'steps'; it takes `sizes`, `subsets` or `keep`.",
     ),
     "too few sizes of the learning curve": (
         "iris.csv",

@@ -246,14 +246,15 @@ class TestSaying:
         begins = (
             "Nearest neighbours, k tuned: picked inside the bag k=1 in ",
             "A case is called failing from 0.",
-            "At it, held out: failing cases found (sensitivity) ",
+            "Held out, each round at its own cut-off: failing cases found (sensitivity) ",
             "Where 10 % of cases are failing: ",
             "Where 30 % of cases are failing: ",
-            "A probability below 0.6 is left to a person: ",
-            "Learning curve, mean of the classes’ shares right (balanced accuracy): ",
-            "Learning curve, failing cases found (sensitivity): ",
-            "Chance check: with labels permuted, linear discriminant did at least as well by ",
-            "Chance check: with labels permuted, the best of all candidates, chosen anew on each, ",
+            "An answer with a probability below 0.6 is left to a person: ",
+            "Learning curve, mean of the classes’ shares right (balanced accuracy) (by the highest score): ",
+            "Learning curve, failing cases found (sensitivity) (by the highest score): ",
+            "Chance check, by the highest score: with labels permuted, linear discriminant did at ",
+            "Chance check, by the highest score: with labels permuted, the best of all candidates, ",
+            "Against always giving the most frequent answer, by the highest score and on one ",
         )
         first = next(at for at, line in enumerate(lines) if line.startswith(begins[0]))
         for line, begin in zip(lines[first:], begins, strict=False):
@@ -272,8 +273,8 @@ class TestSaying:
         assert said.out == ""
         assert said.err.replace("\u00a0", " ") == (
             "Class ‘good’ has 4 cases of 12. A learning curve takes 4 sizes, the largest about "
-            "twice the smallest or more, each with 2 cases of every class: 5 cases of every class "
-            "are needed, and 7 of each always do.\n"
+            "twice the smallest or more, each with 2 cases of every class; 7 of each always do, "
+            "and fewer than 5 never.\n"
         )
         assert evaluate(out, tmp_path / "tiny.csv", *arguments) == 0
 
@@ -281,6 +282,187 @@ class TestSaying:
         out = tmp_path / "record"
         assert evaluate(out, table, *FEW, "--candidate", "majority", "--chance-check", "0") == 0
         assert beside(out) == {}
+
+
+def with_sites(table: Path, path: Path, *, name: str = "site", mixed: bool = False) -> Path:
+    """The small table, two lots a site: of one class, or one of each as far as they go."""
+    header, *lines = table.read_text("utf-8").splitlines()
+    # forty good lots stand first: 0 and 40, 1 and 41 share a site where mixed
+    site = [at % 40 if mixed else at // 2 for at in range(len(lines))]
+    rows = [f"{line},s{number}" for line, number in zip(lines, site, strict=True)]
+    path.write_text("\n".join([f"{header},{name}", *rows]), "utf-8")
+    return path
+
+
+KEPT = ("--label", "verdict", "--leave-out", "site", "--candidate", "lda", "--jobs", "1")
+OF_SITES = ("--scheme", "cross_validation:folds=4,repeats=2,keep=site")
+
+
+class TestKeptTogether:
+    @pytest.mark.parametrize(
+        ("schemes", "written", "keep"),
+        [
+            (["bootstrap:rounds=9,keep=site"], [], "site"),
+            (["bootstrap:rounds=9,keep=site"], ["sizes=5"], "site"),
+            (["bootstrap:rounds=9,keep=site"], ["subsets=30,keep=site"], "site"),
+            (["holdout:keep=site", "bootstrap:rounds=9"], [], "site"),
+            (["holdout", "bootstrap:rounds=9,keep=site"], [], ""),
+            (["leave_block_out:column=site"], [], ""),
+            ([], [], ""),
+        ],
+    )
+    def test_the_curve_keeps_what_the_headline_does(
+        self, table, tmp_path, monkeypatch, schemes, written, keep
+    ):
+        plans = []
+        monkeypatch.setattr("app.command.fill", lambda record, **_: plans.append(record.plan))
+        chosen = [part for scheme in schemes for part in ("--scheme", scheme)]
+        file = with_sites(table, tmp_path / "sites.csv")
+        arguments = (*KEPT, *chosen, "--learning-curve", *written)
+        assert evaluate(tmp_path / "record", file, *arguments) == 0
+        (plan,) = plans
+        given = {
+            "sizes": 5 if written == ["sizes=5"] else 6,
+            "subsets": 30 if written and "30" in written[0] else 20,
+        }
+        assert plan.curve == choose(ALL_SCHEMES, "learning_curve", **given, keep=keep)
+
+    def test_a_column_of_two_words(self, table, tmp_path, monkeypatch):
+        plans = []
+        monkeypatch.setattr("app.command.fill", lambda record, **_: plans.append(record.plan))
+        file = with_sites(table, tmp_path / "sites.csv", name="where from: a/b")
+        arguments = ("--scheme", "holdout:keep=where from: a/b", "--learning-curve")
+        assert evaluate(tmp_path / "record", file, *FEW[:2], *arguments) == 0
+        assert plans[0].curve.values()["keep"] == "where from: a/b"
+
+    @pytest.mark.parametrize(
+        ("scheme", "written", "got"),
+        [
+            ("holdout", "keep=site", "'site' and ''"),
+            ("holdout:keep=site", "keep=verdict", "'verdict' and 'site'"),
+            ("holdout:keep=site", "keep=", "'' and 'site'"),
+        ],
+    )
+    def test_nothing_else_is_kept(self, table, tmp_path, capsys, scheme, written, got):
+        file = with_sites(table, tmp_path / "sites.csv")
+        out = tmp_path / "record"
+        assert evaluate(out, file, *KEPT, "--scheme", scheme, "--learning-curve", written) == 1
+        assert capsys.readouterr().err == (
+            "The learning curve must keep together what the first scheme keeps together, or it "
+            f"judges something else; got {got}.\n"
+        )
+        assert not out.exists()
+
+    def test_sizes_and_sentences_count_sites(self, table, tmp_path, capsys):
+        out, file = tmp_path / "record", with_sites(table, tmp_path / "sites.csv")
+        arguments = (*KEPT, *OF_SITES, "--learning-curve", "--chance-check", "5")
+        assert evaluate(out, file, *arguments) == 0
+        said = capsys.readouterr().out.replace("\u00a0", " ")
+        found = beside(out)
+        # thirty sites, twenty good: four fifths are learned from at most, and none of a class
+        # under two
+        sizes = [int(row["estimator"].split("_")[-1]) for row in found["learned_from_N"]]
+        assert (min(sizes), max(sizes)) == (6, 24)
+        ahead = {int(row["estimator"].split("_")[-1]) for row in found["continued_to_N"]}
+        assert ahead == {30, 48}
+        assert " Continued to 30 entries of ‘site’: " in said
+        assert "Learning from 24 entries of ‘site’ instead of " in said
+        drawn = Record(out).rounds["learning_curve"]
+        assert (drawn.train[:, ::2] == drawn.train[:, 1::2]).all()
+        assert (drawn.test[:, ::2] == drawn.test[:, 1::2]).all()
+        assert "with labels permuted between what is kept together, linear discriminant " in said
+        # lots of a site are no independent trials
+        assert "majority_test" not in found
+        assert "Against always giving" not in said
+
+    def test_labels_trade_within_sites_that_hold_both(self, table, tmp_path, capsys):
+        file = with_sites(table, tmp_path / "sites.csv", mixed=True)
+        arguments = (*KEPT, *OF_SITES, "--chance-check", "5")
+        assert evaluate(tmp_path / "record", file, *arguments) == 0
+        assert (
+            "with labels permuted within what is kept together, so what that alone tells counts "
+            "as chance, linear discriminant "
+        ) in capsys.readouterr().out
+
+    def test_too_few_sites_of_a_class(self, table, tmp_path, capsys):
+        lines = table.read_text("utf-8").splitlines()
+        (tmp_path / "few.csv").write_text("\n".join(lines[: 1 + 40 + 8]), "utf-8")
+        file = with_sites(tmp_path / "few.csv", tmp_path / "sites.csv")
+        assert evaluate(tmp_path / "record", file, *KEPT, *OF_SITES, "--learning-curve") == 1
+        assert capsys.readouterr().err.replace("\u00a0", " ") == (
+            "Class ‘failing’ has 4 entries of ‘site’ of 24. A learning curve takes 4 sizes, the "
+            "largest about twice the smallest or more, each with 2 entries of ‘site’ of every "
+            "class; 7 of each always do, and fewer than 5 never.\n"
+        )
+
+
+class TestReadme:
+    """What README's section on all this promises, tried."""
+
+    def test_what_stays_by_the_highest_score(self, asked, table, tmp_path):
+        """Picking, comparing, the learning curve and the chance check, whatever the cut-off."""
+        out = tmp_path / "record"
+        arguments = (*FEW, *CANDIDATES, "--learning-curve", *ASKED[2:])
+        assert ASKED[0] == "--cut-off"
+        assert evaluate(out, table, *arguments) == 0
+        with_, without = beside(asked), beside(out)
+        assert {key for key in with_ if with_[key] == without.get(key)} == {
+            "picked_in_rounds", "picked_on_all", "learned_from_N", "continued_to_N",
+            "chance_check", "chance_check_best", "majority_test",
+        }  # fmt: skip
+        assert set(with_) - set(without) == {
+            "at_cut_off", "at_cut_off_share_S", "right_of_decided",
+            "right_counting_undecided_wrong", "winner_corrected_at_cut_off",
+        }  # fmt: skip
+        assert (asked / "comparison.csv").read_bytes() == (out / "comparison.csv").read_bytes()
+        # and the verdicts by the highest score are those there are without one
+        highest = rows_of(asked, "verdicts.csv")[:2]
+        assert rows_of(out, "verdicts.csv") == highest
+
+    @pytest.mark.parametrize(
+        ("measure", "of_curve"),
+        [
+            ("accuracy", "accuracy"),
+            ("balanced_accuracy", "balanced_accuracy"),
+            ("auc", "balanced_accuracy"),
+            ("sensitivity", "balanced_accuracy"),
+        ],
+    )
+    def test_the_curve_is_of_two_measures_and_the_class_of_concern(
+        self, table, tmp_path, measure, of_curve
+    ):
+        arguments = (*FEW, "--candidate", "lda", "--measure", measure, "--concern", "good")
+        assert evaluate(tmp_path / "record", table, *arguments, "--learning-curve") == 0
+        found = {(r["measure"], r["class"]) for r in beside(tmp_path / "record")["learned_from_N"]}
+        assert found == {(of_curve, ""), ("sensitivity", "good")}
+
+    @pytest.mark.parametrize(
+        "arguments",
+        [
+            ("--chance-chek", "5"),
+            ("--chance-check", "many"),
+            ("--seed", "1.5"),
+            ("--chance-check",),
+        ],
+    )
+    def test_a_misspelt_option_or_no_number_is_answered_by_the_usage_and_2(
+        self, table, tmp_path, capsys, arguments
+    ):
+        with pytest.raises(SystemExit, match=r"\A2\Z"):
+            evaluate(tmp_path / "record", table, *FEW, *arguments)
+        said = capsys.readouterr()
+        assert said.out == ""
+        assert said.err.startswith("usage: withheld")
+        assert not (tmp_path / "record").exists()
+
+    def test_undecided_needs_probabilities(self, table, tmp_path, capsys):
+        arguments = (*FEW, "--candidate", "svm", "--cut-off", "failing:miss=3,undecided=0.7")
+        assert evaluate(tmp_path / "record", table, *arguments) == 1
+        assert capsys.readouterr().err == (
+            "`undecided` goes by probabilities, and there are none from support vectors (SVM); "
+            "leave it "
+            "out, or let the answer be about another candidate.\n"
+        )
 
 
 class TestEngine:

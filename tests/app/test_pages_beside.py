@@ -91,10 +91,10 @@ class TestResults:
         assert not results.error
         assert HEADER in [header.value for header in results.header]
         sentences = beside_in_sentences(asked.evaluation())
-        assert len(sentences) == 10
+        assert len(sentences) == 11
         shown = [m.value for m in results.markdown]
         first = shown.index(look_safe(sentences[0]))
-        assert shown[first : first + 10] == [look_safe(sentence) for sentence in sentences]
+        assert shown[first : first + 11] == [look_safe(sentence) for sentence in sentences]
 
     def test_between_how_sure_and_why_it_varies(self, results):
         headers = [header.value for header in results.header]
@@ -190,7 +190,7 @@ class TestSettings:
 class TestSummary:
     def test_carries_the_sentences(self, said, asked):
         sentences = beside_in_sentences(asked.evaluation())
-        assert said.design[-10:] == sentences
+        assert said.design[-11:] == sentences
         assert said.title == title(asked.evaluation())
         assert "at the cut-off" in said.title
         assert [name.endswith(" at the cut-off") for name, *_ in said.limits] == [True, True]
@@ -206,7 +206,7 @@ class TestSummary:
 
     def test_stands_on_paper_and_on_the_page(self, printed, said):
         text = html.unescape(page(printed)).replace("\u200b", "")
-        for sentence in said.design[-10:]:
+        for sentence in said.design[-11:]:
             assert sentence in text
         for line in ("learning_curve:sizes=6,subsets=20", "5 permutations of the labels"):
             assert line in text

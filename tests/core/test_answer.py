@@ -10,6 +10,7 @@ from evalcore.answer import answer, class_rate, limit_rows, measure_name, scheme
 from evalcore.answers import answers_of
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.limit import Limit
 from evalcore.plan import Plan
@@ -18,7 +19,9 @@ from evalcore.schemes import SCHEMES
 from evalcore.table import Roles, Table
 from evalcore.wording import NBSP, Noun
 
+from . import test_verdict
 from .checks import table_of
+from .test_at_cut_off import scored
 
 LOTS = Roles("verdict", "lot", noun=Noun("lot", "lots"))
 RAW_FLOAT = re.compile(r"\d\.\d{3}|nan|inf|e-\d|array|np\.")
@@ -176,6 +179,18 @@ class TestTitle:
         )
         assert title(made) == expected
 
+    def test_says_that_it_cannot_be_told(self):
+        # no bag could learn a cut-off, so there is no answer at one
+        held = np.array([[0.1, np.nan] * 4, [np.nan, 0.9] * 4])
+        given = {"naive_bayes": (held, np.full((2, 8), np.nan), np.linspace(0, 1, 8))}
+        made = scored(given, [0, 0, 0, 0, 1, 1, 1, 1], CutOffRule("b", "cost"))
+        assert np.isnan(made.estimate("accuracy", "naive_bayes", estimator="at_cut_off").value)
+        assert title(made) == "How often it is right on further cases cannot be told."
+        begun = dataclasses.replace(made, planned={"cross_validation": 4})
+        assert title(begun) == (
+            "So far, 2 of 4 rounds: how often it is right on further cases cannot be told."
+        )
+
     def test_says_the_verdicts_if_there_are_limits(self):
         limits = (
             Limit("sensitivity", 0.9, "failing"),
@@ -239,6 +254,29 @@ class TestLimits:
         (row,) = self.rows(Limit("balanced_accuracy", 0.9))
         assert row.verdict.word == "not shown yet"
         assert spaced(row.detail).endswith("It may be true; these are too few to show it.")
+
+    def test_with_a_cut_off_chosen_on_these_cases_nothing_is_shown(self):
+        given = test_verdict.TestAtCutOff()
+        for set_on in ("", "2026-01-15"):
+            found = given.always(CutOffRule("b", "fixed", at=0.25, set_on=set_on))
+            rows = limit_rows(found, "naive_bayes")
+            assert len(rows) == 3
+            said = "The cut-off was chosen on these cases, so nothing is shown with it."
+            for row in rows:
+                assert row.verdict.word == ("shown" if set_on else "not shown yet")
+                assert row.detail.endswith(f" {said}") == (not set_on)
+                # nor would further cases mend it
+                assert row.further == ""
+        # 0.05 to the 1/80 and Wilson's lower end at 90 %, 80/(80 + 1.645^2) = 0.9673
+        chosen = given.always(CutOffRule("b", "fixed", at=0.25))
+        assert spaced(limit_rows(chosen, "naive_bayes")[0].detail) == (
+            f"Limit 80 %; these cases show at least 96 %. {said}"
+        )
+        # what falls short falls short with it, and is said as ever
+        high = given.always(CutOffRule("b", "fixed", at=0.5))
+        details = [row.detail for row in limit_rows(high, "naive_bayes")]
+        assert all("show at most" in detail for detail in details)
+        assert not any(said in detail for detail in details)
 
     def test_no_limit_no_row(self):
         assert self.rows() == ()

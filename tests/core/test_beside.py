@@ -18,6 +18,7 @@ from evalcore.plan import Plan, generator
 from evalcore.results import results_csv
 from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.selection import stratified_bags
+from evalcore.tuning import Inner, inner_rounds
 from evalcore.verdict import verdicts_at_cut_off
 
 from .checks import carried_out, table_of
@@ -151,10 +152,17 @@ class TestTheBestAtItsCutOff:
 
 
 class TestNothingToLearnFrom:
-    """Two sites, each learned from alone: there is nothing to divide inside a bag."""
+    """Two sites, each learned from alone, as if each were one unit: nothing to divide inside."""
 
     @pytest.mark.parametrize("learners", [1, 2])
-    def test_is_counted_and_ends_nothing(self, learners):
+    def test_is_counted_and_ends_nothing(self, learners, monkeypatch):
+        def of_one_unit(groups, units, counts, *, rngs):
+            if len(counts) == 1:
+                return inner_rounds(groups, units, counts, rngs=rngs)
+            none = np.zeros((0, counts.shape[1]), dtype=np.uint8)
+            return Inner(Rounds(none, none.copy(), np.zeros(0, dtype=np.intp)), len(counts))
+
+        monkeypatch.setattr("evalcore.pipeline.inner_rounds", of_one_unit)
         limits = (Limit("accuracy", 0.5), Limit("balanced_accuracy", 0.5))
         asked = plan(cut_off=RULE, limits=(*limits, Limit("sensitivity", 0.5, "b")))
         candidates = asked.candidates[2:3] + (choose(CANDIDATES, "lda"),) * (learners - 1)
@@ -163,7 +171,7 @@ class TestNothingToLearnFrom:
         assert len(found.beside.cut_offs) == learners
         for e in found.beside.estimates:
             assert (e.rounds, e.undefined_rounds) == (2, 2)
-            # all cases are two sites, so from them one can be learned
+            # from all cases together one is learned
             assert math.isnan(e.value) == (e.measure != "cut_off")
         given = verdicts_at_cut_off(found, "naive_bayes")
         assert [(verdict.word, verdict.n) for verdict in given] == [("not shown yet", 0)] * 3

@@ -4,20 +4,25 @@ import ast
 import math
 import pathlib
 import re
+from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy.stats import binom
 
 from evalcore.beside import Beside
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
+from evalcore.checks_learned import still_rising
 from evalcore.choice import choose
 from evalcore.cut_off import AtShare, WithUndecided
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
+from evalcore.judged import clusters
 from evalcore.learning_curve import Gain, Prediction
+from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.table import Roles
 from evalcore.wording import NBSP, Noun
 
@@ -31,9 +36,13 @@ FLOOR = CutOffRule("b", "floor", floor=0.9)
 SHARES = (AtShare(0.08, 0.6, 0.97, 0.4117, 0.25),)
 # 14 of 20 found and 60 of 60 passed; Wilson (statsmodels) 0.481 to 0.855 and 0.940 to 1
 RATES = (
-    "At it, held out: a cases passed (specificity) 100 % (94–100 %), n = 60; b cases found "
-    "(sensitivity) 70 % (48–85 %), n = 20."
+    "Held out, each round at its own cut-off: a cases passed (specificity) 100 % (94–100 %), "
+    "n = 60; b cases found (sensitivity) 70 % (48–85 %), n = 20."
 )
+AGAINST = (
+    "Against always giving the most frequent answer, by the highest score and on one answer each: "
+)
+LEAVES_OUT = "(exact binomial test; it leaves out that models vary)."
 
 
 def said(evaluation: Evaluation) -> list[str]:
@@ -80,7 +89,7 @@ def test_in_the_order_of_the_page():
         made.beside, curves=(a_curve(given, 0.03),), chance=(checked(given, 0.9, [0.5] * 19),)
     )
     begins = [s.split(" ")[0] for s in said(replace(made, beside=everything))]
-    assert begins == ["A", "At", "Where", "Learning", "Chance"]
+    assert begins == ["A", "Held", "Where", "Learning", "Chance", "Against"]
 
 
 class TestPicked:
@@ -163,11 +172,20 @@ class TestWhere:
             ),
             # one in twenty-one falls outside each end: the second and the twentieth
             ((0.0, *[0.2] * 10, *[0.7] * 9, 1.0), "it fell between 0.200 and 0.700."),
+            # both ends are one value, whether or not a round in twenty-one has another
+            ((0.3, 0.3, 0.3), "or more: 0.300."),
+            ((0.0, *[0.2] * 19, 1.0), "or more: 0.200."),
+            ((-INF, -INF), "or more: calling all."),
+            ((INF, INF), "or more: calling none."),
+            (
+                (NAN, 0.3, 0.3),
+                "or more: 0.300, 1 of 3 left out in which it could not be learned.",
+            ),
         ],
     )
     def test_between_which_ends(self, cut_offs, says):
         sentence = at(COST, *cut_offs)[0]
-        assert sentence.endswith(f"in 90 % of rounds {says}")
+        assert sentence.endswith(f"; in 90 % of rounds {says}")
 
     def test_learned_in_no_round(self):
         ends = "it could be learned in none of 3 rounds."
@@ -179,6 +197,28 @@ class TestWhere:
             f"No cut-off for b could be learned from all cases (a miss costs 10, a false alarm 1); "
             f"{ends}"
         ]
+
+    @pytest.mark.parametrize("rule", [COST, FLOOR, CutOffRule("b", "fixed", at=0.35)])
+    @pytest.mark.parametrize(
+        ("key", "title"), [("majority", "Majority class"), ("present_practice", "Present practice")]
+    )
+    def test_a_candidate_that_cannot_have_one(self, rule, key, title):
+        made = bare()
+        candidates = (choose(CANDIDATES, key), *made.plan.candidates)
+        plan = replace(made.plan, candidates=candidates, about=key, cut_off=rule)
+        assert said(replace(made, plan=plan)) == [
+            f"{title} learns nothing from features, so it has no cut-off."
+        ]
+        assert said(replace(made, plan=replace(plan, cut_off=None))) == []
+        # that of another is not that of the answer
+        other = at_floor(6, others=60, rule=FLOOR)
+        plan = replace(other.plan, candidates=(candidates[0], *other.plan.candidates), about=key)
+        assert len(said(replace(other, plan=plan))) == 1
+
+    def test_one_that_could_have_had_one_is_not_said_to_learn_nothing(self):
+        """Naive Bayes, carried out without inner scores: then there is nothing to say."""
+        assert bare().plan.cut_off == COST
+        assert said(bare()) == []
 
 
 class TestInUse:
@@ -232,15 +272,15 @@ class TestInUse:
         rule = replace(COST, undecided_below=0.7)
         given = WithUndecided(0.25, 0.9, 0.68, 0.93)
         assert at(rule, undecided=given)[2:] == [
-            "A probability below 0.7 is left to a person: 25 % of cases. Of the others 90 % are "
-            "right; counting those left undecided as wrong, 68 % of all."
+            "An answer with a probability below 0.7 is left to a person: 25 % of cases. Of the others "
+            "90 % are right; counting those left undecided as wrong, 68 % of all."
         ]
 
     def test_all_undecided(self):
         rule = replace(COST, undecided_below=0.999)
         assert at(rule, undecided=WithUndecided(1.0, NAN, 0.0, 1.0))[2:] == [
-            "A probability below 0.999 is left to a person: 100 % of cases. Counting those left "
-            "undecided as wrong, 0 % of all."
+            "An answer with a probability below 0.999 is left to a person: 100 % of cases. Counting "
+            "those left undecided as wrong, 0 % of all."
         ]
 
     def test_cases_never_held_out_are_not_behind_rates(self):
@@ -251,8 +291,8 @@ class TestInUse:
         sentences = said(at_literal(made, part=replace(part, held=held), undecided=None))
         # three of ten missed, none of thirty called: Wilson 0.397 to 0.892 and 0.886 to 1
         assert sentences[1] == (
-            "At it, held out: a cases passed (specificity) 100 % (89–100 %), n = 30; b cases found "
-            "(sensitivity) 70 % (40–89 %), n = 10."
+            "Held out, each round at its own cut-off: a cases passed (specificity) 100 % "
+            "(89–100 %), n = 30; b cases found (sensitivity) 70 % (40–89 %), n = 10."
         )
 
 
@@ -277,13 +317,13 @@ class TestUnitsAndRows:
         # half-way between 0.2 and 0.6; ten lots of 0.6 are left to a person, thirty have 0.8
         assert said(self.given()) == [
             "A lot is called b from 0.400 up, learned from held-out scores inside the bag (a miss "
-            "costs 10, a false alarm 1); in 90 % of rounds it fell between 0.400 and 0.400.",
-            "At it, held out: a lots passed (specificity) 100 % (89–100 %), n = 30; b lots found "
-            "(sensitivity) 100 % (72–100 %), n = 10.",
+            "costs 10, a false alarm 1); in 90 % of rounds or more: 0.400.",
+            "Held out, each round at its own cut-off: a lots passed (specificity) 100 % "
+            "(89–100 %), n = 30; b lots found (sensitivity) 100 % (72–100 %), n = 10.",
             "Where 8 % of lots are b: 8 % are called b, rightly in 100 %; of those not called "
             "100 % are not b; the expected cost is 0.000 a lot.",
-            "A probability below 0.7 is left to a person: 25 % of lots. Of the others 100 % are "
-            "right; counting those left undecided as wrong, 75 % of all.",
+            "An answer with a probability below 0.7 is left to a person: 25 % of lots. Of the others "
+            "100 % are right; counting those left undecided as wrong, 75 % of all.",
         ]
 
     def test_rows_are_answered(self):
@@ -301,6 +341,28 @@ class TestUnitsAndRows:
         found = replace(made, beside=Beside(curves=(a_curve(as_given(made), 0.03),)))
         assert "Continued to 50 lots: " in said(found)[0]
 
+    @pytest.mark.parametrize("answered_from", ["all", "one"])
+    def test_a_curve_that_keeps_sites_together_counts_sites(self, answered_from):
+        made = kept(self.given(answered_from=answered_from), [f"s{at // 4}" for at in range(80)])
+        found = replace(made, beside=Beside(curves=(a_curve(as_given(made), 0.03),)))
+        (sentence,) = said(found)
+        assert "Continued to 50 entries of ‘site’: " in sentence
+        assert "Continued to 80 entries of ‘site’: " in sentence
+        (finding,) = still_rising(*as_given(found))
+        assert " still learns from more entries of ‘site’: " in finding.title
+        assert finding.advice == "Add entries of ‘site’, and judge the model again."
+
+    def test_against_the_majority_by_lots_alone(self):
+        # of the first repeat: thirty lots of a and ten of b are all right
+        assert binom.sf(39, 40, 30 / 40) < 1e-4
+        for answered_from, says in (
+            ("all", [f"{AGAINST}100 % against 75 %, p < 0.0001 {LEAVES_OUT}"]),
+            ("one", []),
+        ):
+            made = self.given(answered_from=answered_from)
+            check = checked(as_given(made), 0.9, [0.5] * 19)
+            assert said(replace(made, beside=Beside(chance=(check,))))[1:] == says
+
 
 class TestCurve:
     def test_call_reason_and_how_it_goes_on(self):
@@ -310,19 +372,25 @@ class TestCurve:
         # ends at 87.5 and 91.25 %
         ahead = "Continued to 50 cases: 81 % (75–88 %). Continued to 80 cases: 84 % (76–91 %)."
         assert said(replace(made, beside=Beside(curves=curves))) == [
+            "Learning curve, mean of the classes’ shares right (balanced accuracy) (by the highest "
+            f"score): rising. Learning from 40 cases instead of 20 brought 10.0 points. {ahead}",
+            "Learning curve, b cases found (sensitivity) (by the highest score): rising. Learning "
+            f"from 40 cases instead of 20 brought 10.0 points. {ahead} 12 of 500 resamples that no "
+            "curve fits are left out.",
+        ]
+        # without a cut-off there is no other way to answer
+        plan = replace(made.plan, cut_off=None)
+        assert said(replace(made, plan=plan, beside=Beside(curves=curves[:1]))) == [
             "Learning curve, mean of the classes’ shares right (balanced accuracy): rising. "
-            f"Learning from 40 cases instead of 20 brought 10.0 points. {ahead}",
-            "Learning curve, b cases found (sensitivity): rising. Learning from 40 cases instead "
-            f"of 20 brought 10.0 points. {ahead} 12 of 500 resamples that no curve fits are left "
-            "out.",
+            f"Learning from 40 cases instead of 20 brought 10.0 points. {ahead}"
         ]
 
     def test_without_a_law_it_goes_nowhere(self):
         made = bare()
         curve = a_curve(as_given(made), -0.1, call="cannot tell", reason="So be it.", ahead=())
         assert said(replace(made, beside=Beside(curves=(curve,)))) == [
-            "Learning curve, mean of the classes’ shares right (balanced accuracy): cannot tell. "
-            "So be it."
+            "Learning curve, mean of the classes’ shares right (balanced accuracy) (by the highest "
+            "score): cannot tell. So be it."
         ]
 
     def test_a_band_that_is_undefined_is_left_out(self):
@@ -352,7 +420,23 @@ class TestCurve:
         assert said(replace(made, beside=Beside(curves=(other,)))) == []
 
 
+def kept(found: Evaluation, sites: Sequence[str]) -> Evaluation:
+    """The same, these sites kept together by the headline's scheme and by the learning curve."""
+    table = replace(found.table, entries={"site": tuple(sites)})
+    scheme = choose(SCHEMES, "cross_validation", folds=2, keep="site")
+    curve = choose(ALL_SCHEMES, "learning_curve", keep="site")
+    plan = replace(found.plan, schemes=(scheme,), curve=curve)
+    judged = tuple(
+        replace(part, units=clusters(table, plan, part.scheme, counted_by=part.counted_by))
+        for part in found.judged
+    )
+    return replace(found, table=table, plan=plan, judged=judged)
+
+
 class TestChance:
+    # of the first repeat: four of four right, three of them a, so (3/4)^4 = 81/256
+    ALL_RIGHT = f"{AGAINST}100 % against 75 %, p = 0.3164 {LEAVES_OUT}"
+
     @pytest.mark.parametrize(
         ("as_good", "tables", "rounds", "says"),
         [
@@ -368,8 +452,9 @@ class TestChance:
         figures = [0.9] * as_good + [0.5] * (tables - as_good)
         check = checked(as_given(made), 0.9, figures, rounds=rounds)
         assert said(replace(made, beside=Beside(chance=(check,)))) == [
-            "Chance check: with labels permuted, naive Bayes did at least as well by balanced "
-            f"accuracy {says} whole pipeline repeated)."
+            "Chance check, by the highest score: with labels permuted, naive Bayes did at least as "
+            f"well by balanced accuracy {says} whole pipeline repeated).",
+            self.ALL_RIGHT,
         ]
 
     def test_of_the_best_of_all_whoever_that_is(self):
@@ -380,10 +465,62 @@ class TestChance:
             checked(given, 0.9, [0.5] * 4, candidate="lda", best=True),
         )
         assert said(replace(made, beside=Beside(chance=checks))) == [
-            "Chance check: with labels permuted, the best of all candidates, chosen anew on each, "
-            "did at least as well by AUC in 0 of 4 tables: p = 0.2000 (20 rounds each, whole "
-            "pipeline repeated)."
+            "Chance check, by the highest score: with labels permuted, the best of all candidates, "
+            "chosen anew on each, did at least as well by AUC in 0 of 4 tables: p = 0.2000 (20 "
+            "rounds each, whole pipeline repeated).",
+            self.ALL_RIGHT,
         ]
+
+    @pytest.mark.parametrize(
+        ("sites", "trades", "against"),
+        [
+            # six of a, then two of b: sites of one class, of both, and of one case each
+            ("ppqqrrss", " between what is kept together", False),
+            (
+                "ppqqrsrs",
+                " within what is kept together, so what that alone tells counts as chance",
+                False,
+            ),
+            ("pqrstuvw", "", True),
+        ],
+    )
+    def test_what_trades_labels(self, sites, trades, against):
+        made = kept(bare(), sites)
+        given = as_given(made)
+        checks = (checked(given, 0.9, [0.5] * 19), checked(given, 0.9, [0.5] * 19, best=True))
+        one, best, *rest = said(replace(made, beside=Beside(chance=checks)))
+        begin = f"Chance check, by the highest score: with labels permuted{trades}, "
+        assert one.startswith(f"{begin}naive Bayes did at least as well by accuracy in 0 of 19 ")
+        assert best.startswith(f"{begin}the best of all candidates, chosen anew on each, did at ")
+        # cases of a site are no independent trials
+        assert rest == ([self.ALL_RIGHT] if against else [])
+
+    def test_a_candidate_that_looks_at_nothing_is_held_against_nothing(self):
+        made = bare()
+        check = checked(as_given(made), 0.9, [0.5] * 19, best=True)
+        majority = choose(CANDIDATES, "majority")
+        plan = replace(
+            made.plan, candidates=(majority, *made.plan.candidates), about="majority", cut_off=None
+        )
+        assert len(said(replace(made, plan=plan, beside=Beside(chance=(check,))))) == 1
+
+    @pytest.mark.parametrize(
+        ("repeat", "n", "digits"), [([0, 0], 250, 1), ([0, 1], 125, 0)], ids=["all", "half"]
+    )
+    def test_tenths_of_a_percent_from_200_answered_once(self, repeat, n, digits):
+        """150 of a; two of b in five are called a. Where a repeat is one half, only that counts."""
+        labels = [0] * 150 + [1] * 100
+        score = np.where(labels, 0.75, 0.25)
+        score[150:190] = 0.25
+        out = np.array([np.arange(250) % 2 == half for half in (0, 1)])
+        held = (np.where(out, score, NAN), np.full((2, 250), NAN), np.full(250, NAN))
+        made = scored({"naive_bayes": held}, labels, None, repeat=repeat)
+        check = checked(as_given(made), 0.9, [0.5] * 19)
+        right, most = n * 210 // 250, n * 150 // 250
+        assert binom.sf(right - 1, n, most / n) < 1e-6  # so it is no 0.0000
+        assert said(replace(made, beside=Beside(chance=(check,))))[1] == (
+            f"{AGAINST}{84:.{digits}f} % against {60:.{digits}f} %, p < 0.0001 {LEAVES_OUT}"
+        )
 
 
 @pytest.mark.parametrize(

@@ -10,6 +10,7 @@ from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.limit import Limit
+from evalcore.schemes import SCHEMES
 from evalcore.wording import NBSP
 
 from .checks import table_of
@@ -46,37 +47,133 @@ class TestCutOffs:
         assert found("cut_off_chosen_here", *given) == []
 
     @pytest.mark.parametrize(
-        ("floor", "of_class", "expected"),
+        ("floor", "of_class", "needed", "every"),
         [
             # nine for 9 of 10 and nineteen for 19 of 20, in all
-            (0.9, 8, (8, 9)),
-            (0.95, 18, (18, 19)),
+            (0.9, 8, 9, True),
+            (0.95, 18, 19, True),
             # and in the bags, each half of all: eight and nine of seventeen
-            (0.9, 9, (1, 0.5)),
-            (0.9, 16, (1, 0.5)),
-            (0.9, 17, None),
-            (0.9, 18, None),
-            (0.95, 36, (1, 0.5)),
-            (0.95, 38, None),
+            (0.9, 9, None, True),
+            (0.9, 16, None, True),
+            (0.9, 17, None, False),
+            (0.9, 18, None, False),
+            (0.95, 36, None, True),
+            (0.95, 38, None, False),
         ],
     )
-    def test_too_few_in_all_or_in_the_bags(self, floor, of_class, expected):
+    def test_too_few_in_all_or_in_the_bags(self, floor, of_class, needed, every):
         rule = CutOffRule("b", "floor", floor=floor)
         given = as_given(at_floor(0, of_class=of_class, rule=rule))
-        numbers = [(f.value, f.threshold) for f in found("cut_off_calls_all", *given)]
-        assert numbers == ([expected] if expected else [])
+        numbers = {
+            check: [(f.value, f.threshold) for f in found(check, *given)]
+            for check in ("floor_from_few", "cut_off_calls_all")
+        }
+        assert numbers == {
+            "floor_from_few": [(of_class, needed)] if needed else [],
+            "cut_off_calls_all": [(1, 0.5)] if every else [],
+        }
 
     def test_too_few_in_the_bags_says_that_held_out_figures_are_of_something_else(self):
-        finding = only("cut_off_calls_all", *as_given(at_floor(0, of_class=9, rule=FLOOR)))
+        given = as_given(at_floor(0, of_class=9, rule=FLOOR))
+        finding = only("cut_off_calls_all", *given)
         assert finding.severity == "grave"
-        assert finding.title.replace(NBSP, " ") == (
-            "In 100 % of rounds the bag holds too few b cases for a floor of 90 %; every case is "
-            "called b there"
+        assert finding.title.replace(NBSP, " ") == "In 100 % of rounds every case is called b"
+        assert finding.seen.replace(NBSP, " ") == (
+            "So held-out figures are those of a constant answer there (4 of 4 rounds; threshold: "
+            "50 %)."
         )
-        assert "there are 9 in all and fewer in a bag (threshold: 50" in finding.seen
-        assert finding.seen.endswith("not those of the cut-off that goes to work.")
+        # and that another cut-off goes to work
+        apart = only("cut_off_apart", *given)
+        assert (apart.value, apart.threshold) == (0.5, -math.inf)
+        assert apart.title == "The cut-off that goes to work, 0.500, lies apart from those that were judged"  # fmt: skip
+        assert "of rounds it fell between calling all and calling all (" in apart.seen
 
-    @pytest.mark.parametrize("check", ["cut_off_calls_all", "floor_not_delivered"])
+    @pytest.mark.parametrize(
+        "rule", [CutOffRule("b", "fixed", at=0.25), CutOffRule("b", "cost", miss=1000)], ids=str
+    )
+    def test_whatever_the_rule_a_constant_answer_is_said(self, rule):
+        # scores are 0.25 and up; three cases of b score 0.25 inside the bags as those of a do
+        given = at_floor(0, rule=rule)
+        if rule.by == "cost":
+            (at,) = given.beside.cut_offs
+            nobody = np.zeros_like(at.part.held.scores)
+            nobody[:, 1] = 1
+            part = dataclasses.replace(
+                at.part, held=dataclasses.replace(at.part.held, scores=nobody)
+            )
+            assert found("cut_off_calls_all", *as_given(given)) == []
+            given = at_literal(given, part=part)
+        finding = only("cut_off_calls_all", *as_given(given))
+        assert (finding.severity, finding.subject) == ("grave", "b")
+        assert (finding.value, finding.threshold) == (1, 0.5)
+
+    @pytest.mark.parametrize(("rounds", "raised"), [(2, False), (3, True), (4, True)])
+    def test_it_takes_more_than_half_of_the_rounds(self, rounds, raised):
+        given = at_floor(0, rule=CutOffRule("b", "cost"))
+        (at,) = given.beside.cut_offs
+        held = at.part.held
+        scores = held.scores.copy()
+        scores[held.rounds.pairs[0] < rounds] = 0, 1
+        part = dataclasses.replace(at.part, held=dataclasses.replace(held, scores=scores))
+        values = [
+            f.value for f in found("cut_off_calls_all", *as_given(at_literal(given, part=part)))
+        ]
+        assert values == ([rounds / 4] if raised else [])
+
+    def test_all_called_the_other_class_is_not_this(self):
+        given = as_given(at_floor(0, rule=CutOffRule("b", "fixed", at=0.9)))
+        assert found("cut_off_calls_all", *given) == []
+
+    def test_without_a_round_at_a_cut_off_nothing_is_called(self):
+        given = at_floor(0, rule=FLOOR)
+        (at,) = given.beside.cut_offs
+        held = at.part.held
+        none = dataclasses.replace(held, rounds=held.rounds.first(0), scores=held.scores[:0])
+        part = dataclasses.replace(at.part, held=none)
+        nothing = at_literal(given, part=part, cut_offs=np.full(4, math.nan))
+        for check in ("cut_off_calls_all", "cut_off_apart"):
+            assert found(check, *as_given(nothing)) == []
+
+    def test_a_floor_counts_what_is_independent(self):
+        # twenty cases of b in two blocks
+        given = at_floor(0, rule=FLOOR)
+        (at,) = given.beside.cut_offs
+        part = dataclasses.replace(at.part, units=np.arange(40) % 2)
+        assert found("floor_from_few", *as_given(given)) == []
+        finding = only("floor_from_few", *as_given(at_literal(given, part=part, learned_from=2)))
+        assert (finding.severity, finding.value, finding.threshold) == ("grave", 2, 9)
+        assert finding.title.replace(NBSP, " ") == (
+            "2 b independent cases cannot teach a floor of 90 %"
+        )
+
+    @pytest.mark.parametrize(
+        ("on_all", "threshold"),
+        [
+            (0.2, 0.3), (0.3, None), (0.35, None), (0.5, None), (0.6, 0.5),
+            (-math.inf, 0.3), (math.inf, 0.5), (math.nan, None),
+        ],
+    )  # fmt: skip
+    def test_a_cut_off_beyond_either_end_was_not_judged(self, on_all, threshold):
+        cut_offs = np.array([0.3, 0.4, 0.5, math.nan])
+        given = at_literal(at_floor(0, rule=FLOOR), on_all=on_all, cut_offs=cut_offs)
+        raised = found("cut_off_apart", *as_given(given))
+        assert [f.threshold for f in raised] == ([] if threshold is None else [threshold])
+        assert all((f.severity, f.subject, f.value) == ("moderate", "b", on_all) for f in raised)
+        said = {-math.inf: "calling all", math.inf: "calling none"}
+        for finding in raised:
+            assert f"work, {said.get(on_all, f'{on_all:.3f}')}, lies" in finding.title
+            assert "fell between 0.300 and 0.500 (" in finding.seen
+
+    def test_a_fixed_cut_off_goes_to_work_as_it_was_judged(self):
+        given = at_floor(0, rule=CutOffRule("b", "fixed", at=0.3))
+        assert found("cut_off_apart", *as_given(at_literal(given, on_all=0.9))) == []
+
+    def test_constant_answers_are_asked_of_every_rule_but_not_found_in_these(self):
+        for rule in (CutOffRule("b", "cost"), CutOffRule("b", "fixed", at=0.6)):
+            given = as_given(at_floor(6, of_class=8, rule=rule))
+            assert found("cut_off_calls_all", *given) == []
+
+    @pytest.mark.parametrize("check", ["floor_from_few", "floor_not_delivered"])
     def test_a_floor_is_asked_of_a_floor_alone(self, check):
         for rule in (CutOffRule("b", "cost"), CutOffRule("b", "fixed", at=0.6)):
             assert found(check, *as_given(at_floor(6, of_class=8, rule=rule))) == []
@@ -125,7 +222,12 @@ class TestCutOffs:
     def test_of_the_candidate_of_the_answer(self):
         table, plan, made = as_given(at_floor(6, of_class=8, rule=FLOOR))
         nobody = dataclasses.replace(made, beside=dataclasses.replace(made.beside, cut_offs=()))
-        for check in ("cut_off_calls_all", "floor_not_delivered"):
+        for check in (
+            "cut_off_calls_all",
+            "floor_from_few",
+            "floor_not_delivered",
+            "cut_off_apart",
+        ):
             assert found(check, table, plan, nobody) == []
 
 
@@ -244,8 +346,55 @@ class TestChance:
         assert [f.subject for f in found("not_told_from_chance", *given)] == ["lda"]
         assert found("permuted_off_chance", *given) == []
 
+    @pytest.mark.parametrize(
+        ("of_groups", "within"),
+        [
+            ([0, 0, 1, 1], False),  # groups of one class each trade labels as wholes
+            ([0, 1, 0, 1], True),  # mixed ones keep their shares, and so what a group tells
+        ],
+    )
+    def test_where_labels_trade_within_groups_groups_are_not_chance(self, of_groups, within):
+        table = table_of(of_groups * 10, entries={"site": [f"s{i // 2}" for i in range(40)]})
+        kept = choose(SCHEMES, CV, folds=2, repeats=2, keep="site")
+        plan = dataclasses.replace(a_plan(), schemes=(kept,))
+        given = of_rounds({CV: halves(40)}, table=table, plan=plan)
+        finding = only("not_told_from_chance", *chance(given, 0.5, [0.7] * 20))
+        assert finding.severity == ("moderate" if within else "grave")
+        than = "what is kept together alone" if within else "chance"
+        assert finding.title.startswith(f"Logistic regression is not told from {than}: p")
+        assert ("permuted within what is kept together it" in finding.seen) == within
+        # 0.7 where guessing gives 0.5, but groups that stay tell of the classes
+        off = found("permuted_off_chance", *chance(given, 0.9, [0.7] * 20))
+        assert len(off) == (0 if within else 1)
+
 
 class TestLearningCurve:
+    @pytest.mark.parametrize(
+        ("scheme", "said"),
+        [
+            ("leave_block_out", "The headline leaves out each entry of ‘year’; "),
+            ("forward_in_time", "The headline goes by ‘year’; "),
+        ],
+    )
+    def test_of_single_cases_where_the_headline_goes_by_a_column(self, scheme, said):
+        year = [str(2000 + i // 10) for i in range(60)]
+        table = table_of([0, 1] * 30, entries={"year": year})
+        plan = dataclasses.replace(a_plan(), schemes=(choose(SCHEMES, scheme, column="year"),))
+        given = of_rounds(plan.draw(table), table=table, plan=plan)
+        assert found("curve_deals_units", *given) == []
+        finding = only("curve_deals_units", *beside(given, curves=(a_curve(given, 0.03),)))
+        assert (finding.severity, finding.value, finding.threshold) == ("moderate", 0, 1)
+        assert finding.seen.startswith(said + "the curve deals single cases, ")
+        assert finding.title.startswith("The learning curve leaves out 0 entries of ‘year’ ")
+
+    def test_one_that_keeps_groups_together_as_the_headline_does_is_right(self):
+        table = table_of([0, 1] * 20, entries={"site": [f"s{i // 2}" for i in range(40)]})
+        kept = choose(SCHEMES, CV, folds=2, repeats=2, keep="site")
+        plan = dataclasses.replace(a_plan(), schemes=(kept,))
+        given = of_rounds({CV: halves(40)}, table=table, plan=plan)
+        curve = a_curve(given, 0.03)
+        assert found("curve_deals_units", *beside(given, curves=(curve,))) == []
+
     def test_says_of_which_measure(self):
         given = alone()
         curves = (a_curve(given, 0.03), a_curve(given, 0.02, of_class="b"))

@@ -26,10 +26,12 @@ from evalcore.schemes import SCHEMES
 from evalcore.sheet import read_sheet
 from evalcore.sources import SOURCES
 from evalcore.table import Column, Roles, Table
+from evalcore.verdict import verdicts_in_use
 from evalcore.wording import NBSP
 
 from .checks import table_of
-from .learned_cases import a_curve, as_given, at_floor, beside, chance, picks
+from .learned_cases import a_curve, as_given, at_floor, at_literal, beside, chance, picks
+from .test_at_cut_off import scored
 from .test_evidence import line
 
 CV, BOOTSTRAP = "cross_validation", "bootstrap"
@@ -303,6 +305,12 @@ def dealt(labels: list[int]):
     return chance(given, 0.9, [0.5] * 39)
 
 
+def by_year():
+    """A curve beside a headline that leaves each year out."""
+    given = blocks(5)
+    return beside(given, curves=(a_curve(given, 0.03),))
+
+
 def rising(low: float, call: str, **choices):
     """A curve with this lower end of its gain."""
     given = alone(**choices)
@@ -392,10 +400,20 @@ RAISED = {
         alone(cut_off=CutOffRule("b", "fixed", at=0.35)),
         ("moderate", "b", 0, 1),
     ),
-    # of 8 further ones the smallest score leaves 1 in 9 below it, more than 1 in 10
+    # 4 or 5 of them in each bag, which call all in every round
     "cut_off_calls_all": (
+        as_given(at_floor(0, of_class=9, rule=FLOOR)),
+        ("grave", "b", 1, 0.5),
+    ),
+    # of 8 further ones the smallest score leaves 1 in 9 below it, more than 1 in 10
+    "floor_from_few": (
         as_given(at_floor(0, of_class=8, rule=FLOOR)),
         ("grave", "b", 8, 9),
+    ),
+    # 0.5 in every round
+    "cut_off_apart": (
+        as_given(at_literal(at_floor(0, rule=FLOOR), on_all=0.625)),
+        ("moderate", "b", 0.625, 0.5),
     ),
     # 17 of 20 found: Wilson 0.640 to 0.948 reaches 0.9
     "floor_not_delivered": (
@@ -413,6 +431,7 @@ RAISED = {
         ("note", "nearest_neighbours", 0.375, 0.5),
     ),
     "grid_too_narrow": (picked(K, 0.0, 0.25, 0.75), ("note", "nearest_neighbours", 0.75, 0.5)),
+    "curve_deals_units": (by_year(), ("moderate", "", 0, 1)),
     "still_rising": (rising(0.03, "rising"), ("note", "logistic", 0.03, 0)),
     # half the cases are in each bag; within a class of 50, 1 - (1 - 1/50)^50 are expected
     "bags_as_expected": (
@@ -458,6 +477,9 @@ QUIET = {
     "cut_off_chosen_here": alone(cut_off=CutOffRule("b", "fixed", at=0.35, set_on="2026-05-04")),
     # 9 of them in each bag: 1 in 10
     "cut_off_calls_all": as_given(at_floor(0, of_class=18, rule=FLOOR)),
+    "floor_from_few": as_given(at_floor(0, of_class=9, rule=FLOOR)),
+    # 0.5 in every round and of all
+    "cut_off_apart": as_given(at_floor(0, rule=FLOOR)),
     # 18 of 20 found
     "floor_not_delivered": as_given(at_floor(2, rule=FLOOR)),
     # (0 + 1)/(19 + 1)
@@ -467,6 +489,7 @@ QUIET = {
     "few_arrangements": dealt([0, 0, 0, 1, 1, 1]),
     "settings_unsteady": picked(K, 0.25, 0.25, 0.5),
     "grid_too_narrow": picked(K, 0.25, 0.25, 0.5),
+    "curve_deals_units": rising(0.03, "rising"),
     "still_rising": rising(-0.01, "cannot tell"),
     "bags_as_expected": of_rounds({CV: halves(100)}),
 }
@@ -628,6 +651,65 @@ def test_numbered_units_are_asked_about_less_gravely():
     table = read(lots_csv("{}"), Roles("class"))
     finding = only("units_not_kept_together", table, a_plan())
     assert (finding.severity, finding.subject, finding.value) == ("moderate", "lot", 2)
+
+
+@pytest.mark.parametrize(
+    ("kept", "asked"),
+    [(("lot", "lot"), 0), (("lot", ""), 1), (("", ""), 1), (("day", "day"), 1)],
+)
+def test_what_every_scheme_keeps_together_is_not_asked_about(kept, asked):
+    table = read(lots_csv(), Roles("class"))
+    schemes = (choose(SCHEMES, CV, keep=kept[0]), choose(SCHEMES, BOOTSTRAP, keep=kept[1]))
+    plan = dataclasses.replace(a_plan(), schemes=schemes)
+    assert len(found("units_not_kept_together", table, plan)) == asked
+
+
+class TestAnswersInUse:
+    """Forty cases of each class with scores for b below 1/2, 0.1 for a and 0.4 for b.
+
+    By the highest score all are a; at a cut-off of 0.25 all are right, and at one of 0.45 none of
+    b is.
+    """
+
+    LABELS = np.arange(80) // 40
+
+    def given(self, at: float | None, *others: str, measure: str = "accuracy"):
+        rule = None if at is None else CutOffRule("b", "fixed", at=at, set_on="2026-01-15")
+        half = np.array([np.arange(80) % 2 == r % 2 for r in range(4)])
+        held = np.where(half, np.where(self.LABELS, 0.4, 0.1), np.nan)
+        scores = (held, np.full((4, 80), np.nan), np.full(80, np.nan))
+        names = dict.fromkeys(("naive_bayes", *others), scores)
+        return as_given(
+            scored(names, self.LABELS, rule, repeat=[0, 0, 1, 1], measure=measure, about="naive_bayes")
+        )  # fmt: skip
+
+    @pytest.mark.parametrize("at", [None, 0.45, 0.25])
+    def test_not_better_than_the_majority(self, at):
+        raised = found("not_better_than_majority", *self.given(at))
+        assert [f.value for f in raised] == ([] if at == 0.25 else [wilson(40, 80)[0]])
+
+    def test_others_are_compared_by_the_highest_score(self):
+        raised = found("not_better_than_majority", *self.given(0.25, "lda"))
+        assert [f.subject for f in raised] == ["lda"]
+
+    @pytest.mark.parametrize("at", [None, 0.45, 0.25])
+    def test_wide_interval(self, at):
+        # Wilson at 40 of 80 is 0.214 wide, at 80 of 80 0.046
+        low, high = wilson(40, 80)
+        raised = found("wide_interval", *self.given(at))
+        expected = [] if at == 0.25 else [pytest.approx(high - low, rel=1e-12)]
+        assert [f.value for f in raised] == expected
+
+    def test_the_study_simulated_no_verdict_at_a_cut_off(self):
+        limits, rule = (
+            (Limit("accuracy", 0.5),),
+            CutOffRule("b", "fixed", at=0.5, set_on="2026-05-04"),
+        )
+        table, plan, made = simulated(60, limits=limits, cut_off=rule)
+        assert made.in_use == "at_cut_off"
+        assert [v.word for v in verdicts_in_use(made, made.about)] == ["shown"]
+        assert found("verdict_falls_short", table, plan, made) == []
+        assert len(found("verdict_falls_short", *simulated(60, limits=limits))) == 1
 
 
 def test_few_gaps_are_a_note():

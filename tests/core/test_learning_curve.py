@@ -1,7 +1,9 @@
 """The learning curve: laws of its rounds, a curve worked by hand, planted curves, refusals."""
 
 import itertools
+import json
 import math
+from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
@@ -13,21 +15,24 @@ from scipy import optimize
 
 from evalcore import draws, power_law
 from evalcore.answers import HeldOut, Reduced
+from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose, choose_written
 from evalcore.errors import EvalError, PlanError
 from evalcore.groups import groups_of
 from evalcore.judged import Judged
 from evalcore.learning_curve import Prediction, learning_curve
+from evalcore.plan import Plan
 from evalcore.power_law import NoPowerLaw, PowerLaw
 from evalcore.rounds import Rounds
-from evalcore.schemes import LEARNING_CURVE, SCHEMES, draw
+from evalcore.schemes import ALL_SCHEMES, LEARNING_CURVE, SCHEMES, draw
 from evalcore.wording import NBSP, Noun
 
-from .checks import exactly, table_of
+from .checks import carried_out, exactly, table_of
 from .test_schemes import tables
 
 
-def rounds_of(table, seed=1, *, sizes=6, subsets=20) -> Rounds:
-    settings = {"sizes": sizes, "subsets": subsets}
+def rounds_of(table, seed=1, *, sizes=6, subsets=20, keep="") -> Rounds:
+    settings = {"sizes": sizes, "subsets": subsets} | ({"keep": keep} if keep else {})
     return draw(LEARNING_CURVE, table, settings, np.random.default_rng(seed))
 
 
@@ -47,6 +52,17 @@ def part_of(rounds: Rounds, labels, right, *, units=None, n_classes=2) -> Judged
 def curve_of(part, measure="accuracy", *, seed=1, **rest):
     return learning_curve(
         part, measure, level=rest.pop("level", 0.95), rng=np.random.default_rng(seed), **rest
+    )
+
+
+def at_sites(labels, sites, *, features=None, rows=1):
+    """A case of this class at each of these sites; two rows of it each where `rows` is 2."""
+    turn = np.tile(np.arange(len(labels)), rows)
+    return table_of(
+        np.asarray(labels)[turn].tolist(),
+        units=None if rows == 1 else turn.tolist(),
+        features=None if features is None else features[turn],
+        entries={"site": [f"s{at}" for at in np.asarray(sites)[turn]]},
     )
 
 
@@ -154,6 +170,7 @@ class TestRounds:
         assert [(s.key, s.default, s.low, s.high) for s in LEARNING_CURVE.settings] == [
             ("sizes", 6, 5, 12),
             ("subsets", 20, 20, 1000),
+            ("keep", "", 0, 0),
         ]
         assert draws.LEAST_SIZES == power_law.LEAST_SIZES
 
@@ -161,8 +178,8 @@ class TestRounds:
 class TestRefusedTables:
     said = (
         "Class ‘{}’ has {} of {}. A learning curve takes 4 sizes, the largest about twice the "
-        "smallest or more, each with 2 cases of every class: 5 cases of every class are needed, "
-        "and 7 of each always do."
+        "smallest or more, each with 2 {of} of every class; 7 of each always do, and fewer than 5 "
+        "never."
     )
 
     @pytest.mark.parametrize(
@@ -176,16 +193,44 @@ class TestRefusedTables:
     )
     def test_too_few(self, numbers, has):
         table = table_of(np.repeat([0, 1], numbers).tolist())
-        with pytest.raises(PlanError, match=exactly(self.said.format(*has))):
+        with pytest.raises(PlanError, match=exactly(self.said.format(*has, of="cases"))):
             rounds_of(table)
         # asked before it is refused
         assert LEARNING_CURVE.n_rounds(table, {"sizes": 6, "subsets": 20}) % 20 == 0
+
+    @pytest.mark.parametrize(
+        ("numbers", "has"),
+        [
+            ((4, 30), ("a", f"4{NBSP}entries of ‘site’", 34)),
+            ((9, 1), ("b", f"1{NBSP}entry of ‘site’", 10)),
+            ((6, 6), ("a", f"6{NBSP}entries of ‘site’", 12)),
+        ],
+    )
+    def test_too_few_that_are_kept_together(self, numbers, has):
+        """However many cases they hold."""
+        sites = np.repeat(np.arange(sum(numbers)), 10)
+        table = at_sites((np.arange(len(sites)) >= 10 * numbers[0]).astype(int), sites)
+        message = self.said.format(*has, of="entries of ‘site’")
+        with pytest.raises(PlanError, match=exactly(message)):
+            rounds_of(table, keep="site")
+        assert LEARNING_CURVE.n_rounds(table, {"sizes": 6, "subsets": 20, "keep": "site"}) % 20 == 0
+        assert rounds_of(table).n_rounds == 120
+
+    def test_a_class_that_is_most_frequent_nowhere(self):
+        """Two of a and one of b in each of ten sites."""
+        table = at_sites([0, 0, 1] * 10, np.repeat(np.arange(10), 3))
+        message = self.said.format("b", f"0{NBSP}entries of ‘site’", 10, of="entries of ‘site’")
+        with pytest.raises(PlanError, match=exactly(message)):
+            rounds_of(table, keep="site")
 
     def test_seven_always_do_and_so_do_five_among_many(self):
         for sizes, one, other in itertools.product(range(5, 13), range(7, 30), range(7, 30)):
             groups = groups_of(table_of([0] * one + [1] * other))
             assert len(draws.nested_sizes(groups, sizes)) >= 4
         assert rounds_of(table_of([0] * 5 + [1] * 20)).n_rounds == 20 * 6
+        sites = np.repeat(np.arange(25), 2)
+        table = at_sites((sites >= 5).astype(int), sites)
+        assert rounds_of(table, keep="site").n_rounds == 20 * 6
 
 
 # four units of a, two of b; halves held out, twice. Right (1) or wrong, in the order of pairs
@@ -524,6 +569,177 @@ class TestBlocks:
         # the core reads between two ranks on the scale of normal quantiles
         gaps = np.diff(np.sort(replicates, axis=0), axis=0)[[4, 194]]
         assert (np.abs(np.stack([curve.low, curve.high]) - ends) <= gaps).all()
+
+
+SETTINGS = {"sizes": 6, "subsets": 20}
+NEAREST = choose(CANDIDATES, "nearest_neighbours", k=1)
+
+
+def planned(table, keep, **changes) -> Plan:
+    scheme = choose(SCHEMES, "cross_validation", folds=5, repeats=4, keep=keep)
+    curve = choose(ALL_SCHEMES, "learning_curve", keep=keep)
+    return Plan(table.roles, (scheme,), (NEAREST,), curve=curve, **changes)
+
+
+class TestKeptTogether:
+    """Sites take the place of units: bags, sizes and bands are of them."""
+
+    @given(tables(least=7, most_units=12), st.integers(0, 1000))
+    def test_laws(self, at_units, seed):
+        """Every unit of the drawn table is a site, and each of its cases a unit of two rows."""
+        table = at_sites(at_units.labels, at_units.units, rows=2)
+        rounds, groups = rounds_of(table, seed, keep="site"), groups_of(table, "site")
+        assert groups.number == at_units.n_units <= table.n_units
+        assert rounds.n_rounds == LEARNING_CURVE.n_rounds(table, SETTINGS | {"keep": "site"})
+        for site in range(groups.number):
+            rows = groups.of_case == site
+            for counts in (rounds.train[:, rows], rounds.test[:, rows]):
+                assert (counts == counts[:, :1]).all()
+        assert not ((rounds.train > 0) & (rounds.test > 0)).any()
+        # the same as for a table that has the sites for units, whatever their number of rows
+        wanted = draws.nested_sizes(groups, 6)
+        shape = (-1, len(wanted), groups.number)
+        by_site = rounds.of_units(groups.of_case)
+        train, test = (part.reshape(shape).astype(int) for part in (by_site.train, by_site.test))
+        of_class = np.stack([groups.labels == k for k in range(table.n_classes)], axis=1)
+        assert ((train @ of_class)[:, :-1] == wanted[:-1]).all()
+        assert (train @ of_class >= 2).all()
+        assert (train[:, 1:] >= train[:, :-1]).all()
+        assert (train[:, -1] + test[:, -1] == 1).all()
+        assert (test == test[:, :1]).all()
+
+    def test_sites_of_one_case_draw_as_cases_do(self):
+        labels = [0, 1] * 15
+        table = at_sites(labels, np.arange(30))
+        alone, as_sites = rounds_of(table), rounds_of(table, keep="site")
+        assert alone.n_rounds == as_sites.n_rounds
+        assert (as_sites.train.sum(axis=1) == alone.train.sum(axis=1)).all()
+
+    def test_a_site_goes_with_the_most_frequent_class_of_its_units(self):
+        # of seven sites two in three are b, and seven more hold a alone
+        labels, sites = [0, 1, 1] * 7 + [0] * 7, [*np.repeat(range(7), 3), *range(7, 14)]
+        table = at_sites(labels, sites, rows=2)
+        groups = groups_of(table, "site")
+        train = rounds_of(table, keep="site").of_units(groups.of_case).train.reshape(20, 4, 14)
+        for k in range(2):
+            assert train[:, :-1, groups.labels == k].sum(axis=2).tolist() == [[2, 3, 4]] * 20
+
+
+@pytest.fixture(scope="module", params=["all", "one"])
+def signatures(request):
+    """Sixty sites of four lots of two rows; features are the site's signature and tell no class.
+
+    All lots of a site are of one class. The evaluation with sites kept together, and the one
+    with lots dealt singly.
+    """
+    rng, site = np.random.default_rng(4), np.repeat(np.arange(60), 4)
+    features = rng.normal(size=(60, 3))[site] + 1e-3 * rng.normal(size=(240, 3))
+    table = at_sites(site % 2, site, features=features, rows=2)
+    changes = {"answered_from": request.param, "measure": "accuracy"}
+    return [carried_out(table, planned(table, keep, **changes))[0] for keep in ("site", "")]
+
+
+class TestSignatures:
+    def test_single_lots_are_known_by_their_site_and_new_sites_are_not(self, signatures):
+        kept, alone = (found.beside.curves[0].found for found in signatures)
+        assert alone.values[-1] > 0.99
+        # sixty coins: 0.5 within three standard deviations of sqrt(0.25/60) = 0.0645
+        assert abs(kept.values - 0.5).max() < 3 * 0.0645
+        assert (kept.low < 0.5).all()
+        assert (kept.high > 0.5).all()
+        assert kept.call != "rising"
+
+    def test_it_agrees_with_the_headline(self, signatures):
+        for found in signatures:
+            headline = found.estimate("accuracy", "nearest_neighbours").value
+            # the same design, dealt anew: four repeats of folds
+            assert found.beside.curves[0].found.values[-1] == pytest.approx(headline, abs=0.04)
+
+    def test_sizes_count_sites(self, signatures):
+        kept, alone = (found.beside.curves[0].found for found in signatures)
+        # thirty of a class, 24 in the largest bags, of which 0.15 are 3.6, 0.219 5.3, and so on
+        assert kept.sizes.tolist() == [8, 10, 16, 22, 32, 48]
+        assert alone.sizes.tolist() == [28, 42, 62, 90, 132, 192]
+        names = [{e.estimator for e in f.beside.estimates} for f in signatures]
+        assert names[0] >= {f"learned_from_{n}" for n in (8, 10, 16, 22, 32, 48)}
+        assert names[1] >= {f"learned_from_{n}" for n in (28, 42, 62, 90, 132, 192)}
+        assert f"48{NBSP}entries of ‘site’ instead of 22 brought" in kept.reason
+        assert f"192{NBSP}cases instead of 90 brought" in alone.reason
+
+    def test_the_band_is_of_sites(self, signatures):
+        """Shares of sites drawn anew, class by class, against the ends."""
+        evaluation = signatures[0]
+        part, found = evaluation.beside.curves[0].part, evaluation.beside.curves[0].found
+        n = len(part.held.labels)
+        assert n == (240 if evaluation.counted_by == "unit" else 480)
+        site = np.tile(np.repeat(np.arange(60), 4), n // 240)
+        shares = double_loop(part)
+        of_site = np.array([shares[:, site == at].mean(axis=1) for at in range(60)])
+        rng = np.random.default_rng(8)
+        counts = [rng.multinomial(30, [1 / 30] * 30, size=4000) for _ in range(2)]
+        replicates = sum(c @ of_site[k::2] for k, c in enumerate(counts)) / 60
+        # ends of 500 resamples and of 4000: each within four standard errors of a quantile
+        error = replicates.std(axis=0) * math.sqrt(0.025 * 0.975 / 500) / 0.0584
+        for ends, p in ((found.low, 0.025), (found.high, 0.975)):
+            assert (abs(ends - np.quantile(replicates, p, axis=0)) < 4 * error).all()
+        # lots drawn one by one would make it half as wide
+        single = learning_curve(
+            replace(part, units=None), "accuracy", level=0.95, rng=np.random.default_rng(1)
+        )
+        assert ((single.high - single.low) < 0.65 * (found.high - found.low)).all()
+
+
+class TestPlanKeepsTheSame:
+    said = (
+        "The learning curve must keep together what the first scheme keeps together, or it judges "
+        "something else; got {!r} and {!r}."
+    )
+    table = at_sites([0, 1] * 20, np.repeat(np.arange(20), 2))
+
+    def plan(self, curve, *schemes):
+        made = tuple(choose_written(SCHEMES, scheme) for scheme in schemes)
+        return Plan(self.table.roles, made, (NEAREST,), curve=choose_written(ALL_SCHEMES, curve))
+
+    @pytest.mark.parametrize(
+        ("curve", "schemes", "got"),
+        [
+            ("learning_curve", ["bootstrap:keep=site"], ("", "site")),
+            ("learning_curve:keep=site", ["bootstrap"], ("site", "")),
+            ("learning_curve:keep=site", ["holdout:keep=year"], ("site", "year")),
+            ("learning_curve:keep=site", ["bootstrap", "holdout:keep=site"], ("site", "")),
+            # a block or a time is not what a scheme keeps together by `keep`
+            ("learning_curve:keep=site", ["leave_block_out:column=site"], ("site", "")),
+            ("learning_curve:keep=site", ["leave_one_out"], ("site", "")),
+        ],
+    )
+    def test_refused(self, curve, schemes, got):
+        with pytest.raises(PlanError, match=exactly(self.said.format(*got))):
+            self.plan(curve, *schemes)
+
+    @pytest.mark.parametrize(
+        ("curve", "schemes"),
+        [
+            ("learning_curve:keep=site", ["cross_validation:keep=site", "bootstrap"]),
+            ("learning_curve:keep=site", ["random_subsampling:keep=site"]),
+            ("learning_curve", ["cross_validation", "bootstrap:keep=site"]),
+            ("learning_curve", ["leave_block_out:column=site"]),
+            ("learning_curve", ["forward_in_time:column=site"]),
+        ],
+    )
+    def test_taken(self, curve, schemes):
+        plan = self.plan(curve, *schemes)
+        assert Plan.from_json(plan.to_json()) == plan
+        assert plan.keep == ("site" if "keep" in curve else "")
+
+    def test_plans_from_before_keep_together_nothing(self):
+        data = json.loads(self.plan("learning_curve", "bootstrap").to_json())
+        data["curve"]["settings"] = [["sizes", 6], ["subsets", 20]]
+        old = Plan.from_json(json.dumps(data))
+        assert old.curve.values() == SETTINGS
+        rounds = old.draw(self.table)["learning_curve"]
+        new = self.plan("learning_curve", "bootstrap").draw(self.table)["learning_curve"]
+        assert (rounds.train == new.train).all()
+        assert (rounds.test == new.test).all()
 
 
 class TestARealCandidate:

@@ -3,12 +3,14 @@
 import numpy as np
 import pytest
 
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.further_cases import more_cases
 from evalcore.limit import Limit
 from evalcore.outlook import in_words, outlook
-from evalcore.verdict import verdicts
+from evalcore.verdict import verdicts, verdicts_at_cut_off
 from evalcore.wording import NBSP
 
+from . import test_verdict
 from .test_verdict import LIMIT, evaluation, first
 
 
@@ -99,6 +101,23 @@ def test_nothing_more_where_nothing_is_asked_for():
     for _, ahead in seen:
         assert ahead.needed == ()
         assert in_words(shown, ahead) == ""
+
+
+@pytest.mark.parametrize(("set_on", "asked"), [("", False), ("2026-01-15", True)])
+def test_no_further_cases_show_a_limit_with_a_cut_off_chosen_on_these(set_on, asked):
+    right = np.ones((1, 2, 80), dtype=bool)
+    right[..., ::8] = False  # ten wrong of 80: not shown, nor shown to fall short
+    rule, limits = CutOffRule("b", "fixed", at=0.25, set_on=set_on), (Limit("accuracy", 0.85),)
+    found = test_verdict.TestAtCutOff().found(right, rule, limits=limits)
+    (verdict,) = verdicts_at_cut_off(found, "naive_bayes")
+    ahead = outlook(found, "naive_bayes", verdict)
+    assert verdict.word == "not shown yet"
+    assert bool(ahead.needed) == asked
+    assert bool(in_words(found, ahead)) == asked
+    # by the highest score no cut-off is in it
+    (by_highest,) = verdicts(found, "naive_bayes")
+    assert by_highest.word == "shown to fall short"
+    assert outlook(found, "naive_bayes", by_highest).needed
 
 
 def test_a_limit_fallen_short_of_can_still_be_asked_about():

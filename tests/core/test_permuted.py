@@ -14,14 +14,18 @@ from sklearn.metrics import balanced_accuracy_score, roc_auc_score
 from sklearn.naive_bayes import GaussianNB
 
 from evalcore.answers import HeldOut
+from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose, choose_written
 from evalcore.engine import CHANCE, Task, run, tasks
+from evalcore.findings import findings
 from evalcore.groups import groups_of
 from evalcore.permuted import (
     arrangements,
     chance_figure,
     chance_rounds,
+    dealt_among,
+    kept_together,
     permuted_figures,
     permuted_table,
 )
@@ -29,11 +33,14 @@ from evalcore.pipeline import candidates_in
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES
+from evalcore.wording import NBSP
 
-from .checks import table_of
+from .checks import carried_out, table_of
+from .learned_cases import as_given, chance
 
 BAYES = choose(CANDIDATES, "naive_bayes")
 CROSS = choose(SCHEMES, "cross_validation", folds=5, repeats=6)
+CHANCE_FINDINGS = {"not_told_from_chance", "permuted_off_chance", "few_arrangements"}
 
 
 def noise(n=20, *, seed=1, units=None, entries=None):
@@ -227,6 +234,139 @@ class TestKeptTogether:
         assert any(labels != classes for labels in mixed)
         whole = [max(map(len, by_site(labels, sites).values())) == 1 for labels in mixed]
         assert all(whole) if together else not all(whole)
+
+
+class TestDealtAmong:
+    """What trades labels, said before it is done."""
+
+    @pytest.mark.parametrize(
+        ("classes", "sites", "among"),
+        [
+            ((0, 0, 0, 1, 1, 1, 2), "ppqrrrs", "groups"),
+            ((0, 1, 0, 1, 1, 0, 1), "pqpppqr", "within groups"),
+            ((0, 0, 1, 1, 0, 0, 1), "ppqqrrr", "within groups"),
+            # one site for all: what it holds trades, which is every unit
+            ((0, 1, 0), "ppp", "within groups"),
+            ((0, 0, 1, 1), "srqp", "units"),
+        ],
+    )
+    def test_as_all_that_comes_up_shows(self, classes, sites, among):
+        table = in_sites(classes, sites, twice=[0])
+        assert dealt_among(table, groups_of(table, "site")) == among
+        assert dealt_among(table, groups_of(table)) == "units"
+        seen = dealt(table, 400)
+        whole = all(len(of) == 1 for mixed in seen for of in by_site(mixed, sites).values())
+        before = by_site(classes, sites)
+        within = all(by_site(mixed, sites) == before for mixed in seen)
+        assert (whole, within) == {
+            "groups": (True, False),
+            "within groups": (False, True),
+            "units": (True, False),  # a unit alone is a whole site
+        }[among]
+
+    @pytest.mark.parametrize(
+        ("schemes", "number"),
+        [
+            (["bootstrap:keep=site"], 3),
+            (["leave_block_out:column=site"], 3),
+            (["forward_in_time:column=day,parts=2"], 12),
+            (["leave_one_out"], 12),
+            # the headline's alone
+            (["bootstrap", "holdout:keep=site"], 12),
+            (["bootstrap:keep=site", "holdout:keep=day"], 3),
+        ],
+    )
+    def test_kept_together_by_the_headline_s_scheme(self, schemes, number):
+        table = in_time([0, 1] * 6, sites="pppp" + "qqqq" + "rrrr")
+        chosen = tuple(choose_written(SCHEMES, scheme) for scheme in schemes)
+        groups = kept_together(table, Plan(table.roles, chosen, (BAYES,)))
+        assert groups.number == number
+        assert_array_equal(groups.of_case, np.arange(12) // (12 // number))
+
+
+def signatures(*of_b):
+    """Ten units a site, so many of them of class b; the site's number is the only feature."""
+    site = np.repeat(np.arange(len(of_b)), 10)
+    labels = np.concatenate([np.arange(10) < number for number in of_b]).astype(int)
+    steps = np.tile(np.arange(10) / 1000, len(of_b))  # else a class would have no variance
+    features = ((site % 2) + steps)[:, None]
+    return table_of(labels.tolist(), features=features, entries={"site": [f"s{at}" for at in site]})
+
+
+def checked_by_site(table, *, permutations=19):
+    """The chance check of naive Bayes with every site left out once, and all findings of it."""
+    scheme = choose(SCHEMES, "leave_block_out", column="site")
+    plan = Plan(table.roles, (scheme,), (BAYES,), permutations=permutations)
+    evaluation, _ = carried_out(table, plan)
+    return evaluation, findings(table, plan, evaluation)
+
+
+class TestWhatTheSiteTellsCountsAsChance:
+    """Sites of few and of many b in turn, and a feature that tells the kind of site alone."""
+
+    mixed = (2, 8) * 4
+    pure = (0, 10) * 4
+
+    def test_within_sites_permuted_labels_are_answered_as_well(self):
+        """Nothing moves between sites, so every answer and figure stays as it was."""
+        evaluation, found = checked_by_site(signatures(*self.mixed))
+        (check,) = evaluation.beside.chance
+        # all of a site get one answer: eight of ten right everywhere
+        assert check.observed == 0.8
+        assert check.permuted.tolist() == [0.8] * 19
+        assert (check.test.at_least_as_good, check.test.p) == (19, 1.0)
+        said = beside_in_sentences(evaluation)
+        assert [sentence.replace(NBSP, " ") for sentence in said] == [
+            "Chance check, by the highest score: with labels permuted within what is kept "
+            "together, so what that alone tells counts as chance, naive Bayes did at least as "
+            "well by balanced accuracy in 19 of 19 tables: p = 1.0000 (8 rounds each, whole "
+            "pipeline repeated)."
+        ]
+        of_chance = {f.check: f for f in found if f.check in CHANCE_FINDINGS}
+        # 0.8 is far from guessing, and as it should be
+        assert set(of_chance) == {"not_told_from_chance"}
+        finding = of_chance["not_told_from_chance"]
+        assert (finding.severity, finding.subject) == ("moderate", "naive_bayes")
+        assert finding.title.replace(NBSP, " ") == (
+            "Naive Bayes is not told from what is kept together alone: p = 1.0000"
+        )
+        assert finding.seen.replace(NBSP, " ") == (
+            "With labels permuted within what is kept together it did at least as well in 19 of "
+            "19 tables; p = (k + 1)/(m + 1) = 1.0000 (threshold: 0.05)."
+        )
+
+    def test_whole_sites_of_one_class_trade(self):
+        evaluation, found = checked_by_site(signatures(*self.pure), permutations=30)
+        (check,) = evaluation.beside.chance
+        assert check.observed == 1.0
+        # of seventy ways to deal b to four of eight sites the feature tells all in 2 and three of
+        # four in 32; in 36 it tells nothing, and the site left out is on the lesser side of seven
+        assert {0.0, 0.75} <= set(check.permuted.tolist()) <= {0.0, 0.75, 1.0}
+        ways = [2 / 70, 32 / 70, 36 / 70]
+        times = [(check.permuted == value).sum() for value in (1.0, 0.75, 0.0)]
+        assert all(abs(n - 30 * w) <= 3 * (30 * w) ** 0.5 for n, w in zip(times, ways, strict=True))
+        assert check.test.p == (1 + times[0]) / 31
+        sentence = beside_in_sentences(evaluation)[0]
+        assert sentence.startswith(
+            "Chance check, by the highest score: with labels permuted between what is kept "
+            "together, naive Bayes did at least as well by "
+        )
+        assert not any("what is kept together alone" in f.title for f in found)
+
+    @pytest.mark.parametrize(("of_b", "says"), [(mixed, []), (pure, ["permuted_off_chance"])])
+    def test_guessing_is_the_yardstick_unless_sites_hold_both(self, of_b, says):
+        evaluation, _ = checked_by_site(signatures(*of_b), permutations=0)
+        given = as_given(evaluation)
+        high = chance(given, 0.95, [0.8] * 100)
+        found = [f.check for f in findings(*high) if f.check in CHANCE_FINDINGS]
+        assert found == says
+        low = chance(given, 0.95, [0.97] * 100)
+        (told,) = (f for f in findings(*low) if f.check == "not_told_from_chance")
+        within = of_b == self.mixed
+        assert told.severity == ("moderate" if within else "grave")
+        title = "what is kept together alone" if within else "chance"
+        assert told.title.replace(NBSP, " ") == f"Naive Bayes is not told from {title}: p = 1.0000"
+        assert ("permuted within what is kept together it did" in told.seen) == within
 
 
 class TestRounds:
@@ -521,7 +661,7 @@ class TestArrangements:
         table = table_of([0, 1, 1, 0, 1, 2])
         plan = Plan(table.roles, (choose(SCHEMES, "bootstrap"),), (BAYES,))
         found = {tuple(order) for order in itertools.permutations(table.labels.tolist())}
-        assert arrangements(table, plan) == pytest.approx(len(found), rel=1e-9)
+        assert arrangements(table, plan) == len(found)
 
     def test_of_groups_and_within_them(self):
         pure = table_of([0, 0, 1, 1, 1, 0], entries={"site": ["a", "a", "b", "b", "c", "d"]})
@@ -529,7 +669,7 @@ class TestArrangements:
         for table, ways in ((pure, 6), (mixed, 3 * 2)):
             scheme = choose(SCHEMES, "bootstrap", keep="site")
             plan = Plan(table.roles, (scheme,), (BAYES,))
-            assert arrangements(table, plan) == pytest.approx(ways, rel=1e-9)
+            assert arrangements(table, plan) == ways
 
     def test_more_than_a_float_holds(self):
         table = table_of([0, 1] * 600)

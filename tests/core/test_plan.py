@@ -8,10 +8,11 @@ import pytest
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import Choice, choose, choose_written
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.errors import PlanError
 from evalcore.limit import Limit
 from evalcore.plan import APPENDING, Plan, generator, recommended_candidates, recommended_schemes
-from evalcore.schemes import SCHEMES
+from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.table import Roles
 from evalcore.wording import Noun
 
@@ -268,6 +269,27 @@ class TestRefusals:
     def test_of_a_plan(self, changes, message):
         refused(message, plan, **changes)
 
+    def test_of_a_curve_that_keeps_something_else_together(self):
+        def curve(keep):
+            return choose(ALL_SCHEMES, "learning_curve", keep=keep)
+
+        by_site = choose(SCHEMES, "cross_validation", keep="site")
+        for scheme, keep, kept in (
+            (CV, "site", ""),
+            (by_site, "", "site"),
+            (by_site, "day", "site"),
+        ):
+            refused(
+                "The learning curve must keep together what the first scheme keeps together, or it "
+                f"judges something else; got {keep!r} and {kept!r}.",
+                plan,
+                schemes=(scheme, BOOTSTRAP),
+                curve=curve(keep),
+            )
+        assert plan(schemes=(by_site, CV), curve=curve("site")).curve == curve("site")
+        # what has nothing to keep together keeps nothing
+        assert plan(schemes=(choose(SCHEMES, "leave_one_out"),), curve=curve("")).curve == curve("")
+
     @pytest.mark.parametrize(
         ("values", "message"),
         [
@@ -310,6 +332,23 @@ class TestOnATable:
             plan(limits=(Limit("sensitivity", 0.8),)).check,
             self.table,
         )
+
+    def test_undecided_goes_by_probabilities_of_the_answer(self):
+        # of support vectors there are distances to their border only (scikit-learn's SVC)
+        svm, undecided = choose(CANDIDATES, "svm"), CutOffRule("b", "cost", undecided_below=0.7)
+        asked = plan(candidates=(MAJORITY, svm, LOGISTIC), about="svm", cut_off=undecided)
+        message = (
+            "`undecided` goes by probabilities, and there are none from support vectors (SVM); "
+            "leave it "
+            "out, or let the answer be about another candidate."
+        )
+        refused(message, asked.check, self.table)
+        # the answer is about it unsaid, as the first that looks at features
+        refused(message, dataclasses.replace(asked, about="").check, self.table)
+        # another candidate's answers, or no undecided ones
+        assert dataclasses.replace(asked, about="logistic").check(self.table) is None
+        learned = dataclasses.replace(asked, cut_off=CutOffRule("b", "cost"))
+        assert learned.check(self.table) is None
 
     def test_more_neighbours_than_a_bag_has_cases(self):
         # the smallest of five parts' complements: 23 less 5

@@ -207,6 +207,20 @@ class TestAtCutOff:
         none_right = self.found(np.zeros((1, 2, 80), dtype=bool))
         assert self.words(verdicts_at_cut_off(none_right, "naive_bayes")) == fall_short
 
+    @pytest.mark.parametrize(("floor", "right"), [(0.9, True), (0.97, False)])
+    def test_a_floor_too_high_for_the_bags_calls_all_and_shows_nothing_of_the_others(
+        self, floor, right
+    ):
+        # twenty of b in a bag, forty in all: rank 2.1 of 20 for 0.9; 0.63 of 20 for 0.97, and so
+        # every bag calls all, though of forty the rank is 1.23
+        rule = CutOffRule("b", "floor", floor=floor)
+        limits = (Limit("sensitivity", 0.8, "b"), Limit("sensitivity", 0.8, "a"))
+        found = self.found(np.ones((1, 2, 80), dtype=bool), rule, limits=limits)
+        at = verdicts_at_cut_off(found, "naive_bayes")
+        assert [v.value for v in at] == [1, 1 if right else 0]
+        assert self.words(at) == ["shown", "shown" if right else "shown to fall short"]
+        assert found.at_cut_off("naive_bayes").on_all == 0.3
+
     def test_none_without_a_cut_off(self):
         found = evaluation(first(40, 40), labels=[0, 1] * 20)
         assert verdicts_at_cut_off(found, "lda") == ()
