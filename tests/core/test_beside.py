@@ -16,6 +16,7 @@ from evalcore.learning_curve import learning_curve
 from evalcore.limit import Limit
 from evalcore.plan import Plan, generator
 from evalcore.results import results_csv
+from evalcore.rounds import Rounds
 from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.selection import stratified_bags
 from evalcore.tuning import Inner, inner_rounds
