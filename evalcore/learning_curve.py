@@ -300,4 +300,8 @@ def _reason(
         "cannot tell": f"{points(gain.value)}, and anything from {points(ends.low)} to "
         f"{points(ends.high)} fits ({sure}), so whether more would help cannot be told.",
     }[call]
+    if call == "cannot tell" and ends.low > 0:
+        # it helped, but the sizes before do not lead up to it
+        said = f"{tenths(gain.value)} ({sure}: {tenths(ends.low)} to {tenths(ends.high)}); whether "
+        said += "that goes on cannot be told."
     return f"{learning} brought {said}{refusal}"
