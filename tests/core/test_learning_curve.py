@@ -25,7 +25,7 @@ from evalcore.plan import Plan
 from evalcore.power_law import NoPowerLaw, PowerLaw
 from evalcore.rounds import Rounds
 from evalcore.schemes import ALL_SCHEMES, LEARNING_CURVE, SCHEMES, draw
-from evalcore.wording import NBSP, Noun
+from evalcore.wording import NBSP, Noun, tenths
 
 from .checks import carried_out, exactly, table_of
 from .test_schemes import tables
@@ -482,6 +482,12 @@ class TestCalls:
         assert isinstance(curve.law, NoPowerLaw)
         assert curve.gain.interval.low > 0.1
         assert curve.call == "cannot tell"
+        ends = curve.gain.interval
+        assert curve.reason == (
+            f"Learning from 160{NBSP}units instead of 74 brought {tenths(curve.gain.value)} "
+            f"(95{NBSP}% interval: {tenths(ends.low)} to {tenths(ends.high)}); whether that goes on "
+            f"cannot be told. {curve.law.reason}"
+        )
 
     def test_rising_comes_before_flat(self):
         """Whoever is right at one size is right at all larger ones: a small gain, but a sure one."""
