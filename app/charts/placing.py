@@ -3,11 +3,28 @@
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
+from typing import Protocol
 
 from app.charts import drawing
 from app.charts.style import LIMIT, REFERENCE
 
 WIDE, SLIM = 640, 352  # px in which words must not collide
+
+
+class Named(Protocol):
+    """A place on the ruler with words."""
+
+    @property
+    def value(self) -> float:
+        """Where."""
+
+    @property
+    def long(self) -> str:
+        """Its words."""
+
+    @property
+    def short(self) -> str:
+        """Its words where it is narrow."""
 
 
 @dataclass(frozen=True)
@@ -47,10 +64,8 @@ class Reference:
         return LIMIT if self.is_limit else REFERENCE
 
 
-def placed(
-    references: Sequence[Reference], rule: drawing.Ruler
-) -> tuple[list[tuple[str, int]], int]:
-    """Side ("left" or "right" aligned) and line of each reference's words, and the lines needed.
+def placed(references: Sequence[Named], rule: drawing.Ruler) -> tuple[list[tuple[str, int]], int]:
+    """Side ("left" or "right" aligned) and line of the words of each, and the lines needed.
 
     The words of two lines go away from each other; where they would still touch at a width that
     is met, or leave the chart, they stand on two lines.
@@ -80,7 +95,7 @@ def side_that_fits(words: str, place: float, wanted: str) -> str:
     return wanted if room[wanted] >= need or room[wanted] >= room[other] else other
 
 
-def _span(reference: Reference, rule: drawing.Ruler, side: str, width: int) -> tuple[float, float]:
+def _span(reference: Named, rule: drawing.Ruler, side: str, width: int) -> tuple[float, float]:
     words = reference.long if width == WIDE else reference.short
     x, length = width * rule.place(reference.value), drawing.CHARACTER * len(words)
     return (x, x + length) if side == "left" else (x - length, x)

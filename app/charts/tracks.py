@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 import altair as alt
 
 from app.charts import drawing
-from app.charts.placing import Reference, placed, side_that_fits
+from app.charts.placing import Reference, placed
 from app.charts.style import LIMIT, PAPER, STRAW, TRACK
 from evalcore.figures import Interval
 
@@ -25,6 +25,16 @@ class Bound:
     value: float
     words: str
     colour: str
+
+    @property
+    def long(self) -> str:
+        """Its words."""
+        return self.words
+
+    @property
+    def short(self) -> str:
+        """The same where it is narrow."""
+        return self.words
 
 
 @dataclass(frozen=True)
@@ -70,7 +80,8 @@ def track_chart(
     """Rows under each other on one ruler, reference lines named once on top."""
     sides, lines = placed(references, rule)
     top = 18 * lines + 8 if references else 0
-    pitch = 50 + (UNDER if any(row.bounds for row in rows) else 0)
+    under = max((placed(row.bounds, rule)[1] for row in rows if row.bounds), default=0)
+    pitch = 50 + UNDER * under
     tops = [top + pitch * at + HEADER + 4 for at in range(len(rows))]
     bottom = top + pitch * len(rows)
     height = bottom + drawing.AXIS_ROOM
@@ -215,17 +226,14 @@ def _bounds(
     """Strokes with words under the track, pointing away from each other."""
     strokes, words = [], []
     for y, row in zip(tops, rows, strict=True):
-        order = sorted(row.bounds, key=lambda bound: bound.value)
-        for rank, bound in enumerate(order):
+        for bound, (side, line) in zip(row.bounds, placed(row.bounds, rule)[0], strict=True):
             is_limit = bound.colour == LIMIT
             end = y + TRACK_HEIGHT + (0 if is_limit else 8)
             strokes.append({"x": bound.value, "y": y, "y2": end, "colour": bound.colour})
-            wanted = "right" if rank == 0 and len(order) > 1 else "left"
-            side = side_that_fits(bound.words, rule.place(bound.value), wanted)
             words.append(
                 {
                     "x": bound.value,
-                    "y": y + TRACK_HEIGHT + 13,
+                    "y": y + TRACK_HEIGHT + 13 + UNDER * line,
                     "long": bound.words,
                     "short": bound.words,
                     "align": side,

@@ -227,6 +227,14 @@ def test_per_class_marks_limits_and_cautious_bounds(lots):
     assert plain(figure.title) == "Failing lots found: at least 41 %, limit 90 %"
 
 
+@pytest.mark.parametrize(("bound", "apart"), [(0.41, False), (0.89, True), (0.91, True)])
+def test_words_of_a_bound_and_a_limit_do_not_touch(lots, bound, apart):
+    figure = per_class(lots, "logistic", bounds={"failing": bound})
+    under = [r for r in drawn(figure, "x", "long", "align") if r["long"].startswith(("at", "lim"))]
+    assert len(under) == 2
+    assert (under[0]["y"] != under[1]["y"]) == apart
+
+
 def test_every_figure_has_its_words_and_takes_the_width_of_its_container(lots):
     for figure in all_figures(lots):
         assert figure.alt.startswith(figure.title)
