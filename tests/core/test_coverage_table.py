@@ -103,12 +103,17 @@ def test_a_scheme_that_was_not_carried_out_leaves_no_line():
 def test_auc_of_two_schemes_only_where_there_were_two():
     alone = figure(AUC, 0.7, 0.6, 0.8) | figure(AUC.replace("/auc", "_alone/auc"), 0.7, 0.65, 0.8)
     second = figure("bootstrap/mean_of_rounds/auc", 0.7, 0.6, 0.8)
-    made = [raw(0) | {"true/auc": 0.7} | alone, raw(1) | {"true/auc": 0.5} | alone | second]
+    twice = [raw(at) | {"true/auc": 0.5} | alone | second for at in (1, 2)]
+    made = [raw(0) | {"true/auc": 0.7} | alone, *twice]
     lines = list(summary(made))
     both = only(lines, scheme="default", estimator="mean_of_rounds")
-    assert (both["tables"], both["coverage"]) == (1, 0)
+    assert (both["tables"], both["coverage"]) == (2, 0)
     one = only(lines, scheme="default", estimator="mean_of_rounds_alone")
-    assert (one["tables"], one["coverage"]) == (2, 1 / 2)
+    assert (one["tables"], one["coverage"]) == (3, 1 / 3)
+    # one of two is not most of a cell's tables
+    few = {(line["scheme"], line["estimator"]) for line in summary(made[:2])}
+    assert ("default", "mean_of_rounds") not in few
+    assert ("default", "mean_of_rounds_alone") in few
 
 
 def test_a_verdict_is_wrong_where_the_true_rate_itself_is_called_shown():

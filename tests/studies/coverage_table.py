@@ -83,7 +83,8 @@ def _figures(candidate: str, rows: Sequence[Raw]) -> Iterator[Line]:
         if (scheme, by) == ("default", MEAN):
             # with one scheme there is but one model variance: the figure of that one alone
             given = [row for row in given if _has(row, f"bootstrap/{MEAN}/{measure}/value")]
-        if given:
+        # a few tables of a cell may be recommended another scheme; a line is of most of them
+        if 2 * len(given) > len(rows):
             # what was judged of the best is what is left once its luck is taken off
             estimator = WINNER if best and by == HELD else by
             head = {"scheme": scheme, "estimator": estimator, "measure": measure}
