@@ -171,18 +171,23 @@ def table(rows: Sequence[dict[str, str]], *, key: str) -> None:
         "font-size:0.875rem;font-variant-numeric:tabular-nums'>"
         f"<thead><tr>{head}</tr></thead><tbody>{body}</tbody></table></div>"
     )
-    quoted = [",".join('"' + plain(cell).replace('"', '""') + '"' for cell in line) for line in (
-        header, *([r.get(h, "") for h in header] for r in rows)
-    )]  # fmt: skip
     st.download_button(
         "Download as CSV",
-        ("\ufeff" + "\n".join(quoted) + "\n").encode(),
+        # made on the click: a file made in advance is gone where the page is drawn anew meanwhile
+        lambda: _csv(header, rows),
         file_name=f"{key}.csv",
         mime="text/csv",
         key=f"{key}-csv",
         on_click="ignore",
         type="tertiary",
     )
+
+
+def _csv(header: Sequence[str], rows: Sequence[dict[str, str]]) -> bytes:
+    """The same rows as a file that a spreadsheet reads as text in UTF-8."""
+    lines = (header, *([row.get(name, "") for name in header] for row in rows))
+    quoted = (",".join('"' + plain(cell).replace('"', '""') + '"' for cell in x) for x in lines)
+    return ("\ufeff" + "\n".join(quoted) + "\n").encode()
 
 
 _CELL = "text-align:left;padding:0.3rem 1rem 0.3rem 0;border-bottom:1px solid #D9D6CE;"

@@ -1,5 +1,6 @@
 """A visit in a real browser: from a table to the answer, and what may happen on the way."""
 
+import csv
 import re
 import time
 from pathlib import Path
@@ -95,6 +96,19 @@ def charts_are_drawn(page: Page) -> None:
         assert "Scheme: " in (chart.get_attribute("aria-label") or "")
 
 
+def figures_are_taken_along(page: Page) -> None:
+    """The file of a chart's figures holds what its table shows."""
+    unfold(page, "These figures as a table")
+    shown = page.locator("table").filter(visible=True).first
+    expect(shown).to_be_visible()
+    with page.expect_download() as download:
+        page.get_by_role("button", name="Download as CSV").filter(visible=True).first.click()
+    text = Path(download.value.path()).read_text("utf-8-sig")
+    cells = shown.locator("th, td").all_inner_texts()
+    assert len(cells) >= 8
+    assert [cell for line in csv.reader(text.splitlines()) for cell in line] == cells
+
+
 def answer_of(page: Page) -> str:
     return page.get_by_text("is expected to be right in").first.inner_text()
 
@@ -119,6 +133,7 @@ def test_from_the_demo_table_to_the_answer(page, dashboard):
     see(page, "Few failing lots: 38, where a limit asks for 75")
     charts_are_drawn(page)
     see(page, "All figures")
+    figures_are_taken_along(page)
 
     # the address finds it again, in the same tab and in another one
     assert re.search(r"/results\?record=\d{8}-\d{6}-[0-9a-f]{6}$", page.url)
