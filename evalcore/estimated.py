@@ -1,7 +1,7 @@
 """Every estimate of one candidate under one scheme, counted one way."""
 
 import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 
 import numpy as np
 
@@ -39,16 +39,12 @@ LOSSES = {"brier": brier, "log_loss": log_loss}
 WEIGHTED = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
 
 
-def estimates_of(
-    table: Table, plan: Plan, part: Judged, judged: Sequence[Judged]
-) -> Iterator[Estimate]:
-    """All measures by all estimators; `judged` are all parts, for what other schemes show."""
-    this = (part.candidate, part.counted_by)
-    alike = [p for p in judged if (p.candidate, p.counted_by) == this]
+def estimates_of(table: Table, plan: Plan, part: Judged) -> Iterator[Estimate]:
+    """All measures by all estimators."""
     for measure in ALL_MEASURES.values():
         classes = list(enumerate(table.classes)) if measure.per_class else [(0, "")]
         for k, name in classes:
-            values = _figures(plan, part, alike, measure.key, of_class=k)
+            values = _figures(plan, part, measure.key, of_class=k)
             n = n_behind(part, k if measure.per_class else None)
             for estimator, value, interval, undefined in values:
                 yield Estimate(
@@ -106,7 +102,7 @@ def n_behind(part: Judged, of_class: int | None) -> int:
 
 
 def _figures(
-    plan: Plan, part: Judged, alike: Sequence[Judged], measure: str, *, of_class: int
+    plan: Plan, part: Judged, measure: str, *, of_class: int
 ) -> Iterator[tuple[str, float, Interval | None, int]]:
     """Estimator, value, interval and undefined rounds of one measure."""
     mean, undefined = estimates.mean_of_rounds(part.held_values(measure, of_class))
@@ -114,7 +110,7 @@ def _figures(
     if ALL_MEASURES[measure].from_confusion is None:
         # never pooled across rounds: scores of different models are not on one scale
         out_of_bag = mean
-        yield "mean_of_rounds", mean, auc_interval(plan.level, part, alike, mean), undefined
+        yield "mean_of_rounds", mean, auc_interval(plan.level, part, mean), undefined
     else:
         out_of_bag = part.pooled_value(measure, of_class)
         yield "held_out_by_case", out_of_bag, default_interval(plan, part, measure, of_class), 0

@@ -13,7 +13,7 @@ from evalcore.candidates import CANDIDATES
 from evalcore.comparison import Difference
 from evalcore.estimated import estimates_of, losses_of
 from evalcore.figures import CountedBy, Estimate
-from evalcore.judged import Judged, clusters
+from evalcore.judged import Judged, clusters, with_second_looks
 from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
@@ -212,13 +212,13 @@ def evaluate(
         permuted=np.empty((0, len(plan.candidates))) if permuted is None else permuted,
     )
     # bags of the learning curve are small on purpose: their mean says nothing
-    judged = [part for part in judged if not plan.is_curve(part.scheme)]
+    parts = with_second_looks([part for part in judged if not plan.is_curve(part.scheme)])
     rounds = {scheme: drawn for scheme, drawn in rounds.items() if not plan.is_curve(scheme)}
     planned = {scheme: number for scheme, number in planned.items() if not plan.is_curve(scheme)}
-    figures = [e for part in judged for e in estimates_of(table, plan, part, judged)]
-    figures += [e for part in judged for e in losses_of(table, plan, part)]
+    figures = [e for part in parts for e in estimates_of(table, plan, part)]
+    figures += [e for part in parts for e in losses_of(table, plan, part)]
     for scheme in rounds:
         for way in ways:
-            alike = [p for p in judged if (p.scheme, p.counted_by) == (scheme, way)]
+            alike = [p for p in parts if (p.scheme, p.counted_by) == (scheme, way)]
             figures += winner_estimates(table, plan, alike)
-    return Evaluation(table, plan, rounds, planned, tuple(judged), tuple(figures), failures, asked)
+    return Evaluation(table, plan, rounds, planned, parts, tuple(figures), failures, asked)

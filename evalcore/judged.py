@@ -1,8 +1,8 @@
 """One candidate under one scheme, counted one way: its values, model variances and intervals."""
 
 import math
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -35,6 +35,9 @@ class Judged:
         Of the fit on all cases, one round.
     units : ndarray of int or None
         What counted cases resemble each other by (see `clusters`), else None.
+    second_looks : tuple of Judged
+        The same candidate counted the same way under the other schemes: what this scheme's rounds
+        cannot tell of the model's variance is taken from them.
     """
 
     scheme: str
@@ -45,6 +48,7 @@ class Judged:
     on_all: Floats
     whole: Reduced
     units: NDArray[np.intp] | None
+    second_looks: "tuple[Judged, ...]" = ()
 
     def held_values(self, measure: str, of_class: int = 0) -> Floats:
         """A measure within each round's held-out cases, shape (R,)."""
@@ -93,30 +97,83 @@ class Judged:
     @cached_property
     def tau2(self) -> float:
         """Model variance of the share right."""
-        return model_variance.model_variance(self.held.correct, self.held.rounds, units=self.units)
+        return _told(lambda part: part.own_tau2(None), self)
+
+    def tau2_of(self, of_class: int) -> float:
+        """Model variance of the share right within one class."""
+        return _told(lambda part: part.own_tau2(of_class), self)
+
+    def cautious_tau2(self, of_class: int | None) -> float:
+        """Model variance of all or of one class with its standard error added, for verdicts."""
+        return _told(lambda part: part.own_tau2(of_class, cautious=True), self)
+
+    @cached_property
+    def tau2_balanced(self) -> float:
+        """Model variance of balanced accuracy.
+
+        Where no round holds out two of a class, its rounds tell the part between classes alone.
+        """
+        own = self.own_tau2_balanced
+        if all(not math.isnan(self.own_tau2(k)) for k in range(self.n_classes)):
+            return own
+        return _largest([own, *(part.own_tau2_balanced for part in self.second_looks)])
 
     @cached_property
     def tau2_auc(self) -> float:
-        """Model variance of the AUC within rounds, of two classes."""
+        """Model variance of the AUC of two classes: the largest that any scheme shows.
+
+        Folds alone cannot tell it where a class has few cases (own simulation).
+        """
+        return _largest([part.own_tau2_auc for part in (self, *self.second_looks)])
+
+    def own_tau2(self, of_class: int | None, *, cautious: bool = False) -> float:
+        """What this scheme's rounds tell of the model's variance, of all or of one class."""
+        function = (
+            model_variance.cautious_model_variance if cautious else model_variance.model_variance
+        )
+        chosen = None if of_class is None else self.held.labels == of_class
+        return function(self.held.correct, self.held.rounds, chosen=chosen, units=self.units)
+
+    @cached_property
+    def own_tau2_balanced(self) -> float:
+        """What this scheme's rounds tell of it for balanced accuracy."""
+        return model_variance.balanced_model_variance(
+            self.held.labels, self.held.rounds, self.held.correct, n_classes=self.n_classes
+        )
+
+    @cached_property
+    def own_tau2_auc(self) -> float:
+        """What this scheme's rounds tell of it for the AUC."""
         return model_variance.auc_model_variance(
             self.held.labels == 1, self.held.rounds, self.held.scores[:, 1]
         )
 
-    def cautious_tau2(self, of_class: int | None) -> float:
-        """Model variance of all or of one class with its standard error added, for verdicts."""
-        chosen = None if of_class is None else self.held.labels == of_class
-        return model_variance.cautious_model_variance(
-            self.held.correct, self.held.rounds, chosen=chosen, units=self.units
-        )
 
-    def tau2_of(self, of_class: int) -> float:
-        """Model variance of the share right within one class."""
-        return model_variance.model_variance(
-            self.held.correct,
-            self.held.rounds,
-            chosen=self.held.labels == of_class,
-            units=self.units,
+def _told(variance: Callable[[Judged], float], part: Judged) -> float:
+    """A variance from the part's own rounds, else the largest that a second look shows."""
+    own = variance(part)
+    return _largest([variance(look) for look in part.second_looks]) if math.isnan(own) else own
+
+
+def _largest(values: Sequence[float]) -> float:
+    """Of those that are known; nan if none is."""
+    return max((value for value in values if not math.isnan(value)), default=math.nan)
+
+
+def with_second_looks(judged: Sequence[Judged]) -> tuple[Judged, ...]:
+    """Each part with the same candidate's parts, counted the same way, of the other schemes."""
+    return tuple(
+        replace(
+            part,
+            second_looks=tuple(
+                other
+                for other in judged
+                if other.scheme != part.scheme
+                and (other.candidate, other.counted_by) == (part.candidate, part.counted_by)
+            ),
         )
+        for part in judged
+    )
 
 
 def clusters(
@@ -209,24 +266,14 @@ def balanced_interval(level: float, part: Judged) -> Interval:
     """The default interval for balanced accuracy."""
     parts = [share_interval(level, part, k, variance=False) for k in range(part.n_classes)]
     recalls = [part.pooled_value("sensitivity", k) for k in range(part.n_classes)]
-    tau2 = model_variance.balanced_model_variance(
-        part.held.labels, part.held.rounds, part.held.correct, n_classes=part.n_classes
-    )
-    return intervals.square_and_add(recalls, parts, tau2)
+    return intervals.square_and_add(recalls, parts, part.tau2_balanced)
 
 
-def auc_interval(
-    level: float, part: Judged, alike: Sequence[Judged], value: float
-) -> Interval | None:
-    """Interval for an AUC; None for more classes or dependent cases, since none keeps its word.
-
-    The model's variance is the largest that any scheme shows: the folds alone cannot tell it
-    where a class has few cases (own simulation).
-    """
-    if part.held.scores.shape[1] != 2 or part.units is not None or math.isnan(value):
+def auc_interval(level: float, part: Judged, value: float) -> Interval | None:
+    """Interval for an AUC; None for more classes or dependent cases, since none keeps its word."""
+    if part.n_classes != 2 or part.units is not None or math.isnan(value):
         return None
     known = part.held.labels[~np.isnan(part.shares)]
-    tau2 = max((p.tau2_auc for p in alike if not math.isnan(p.tau2_auc)), default=math.nan)
     return intervals.auc_score_type(
-        value, int((known == 1).sum()), int((known == 0).sum()), tau2, level=level
+        value, int((known == 1).sum()), int((known == 0).sum()), part.tau2_auc, level=level
     )

@@ -2,6 +2,7 @@
 
 import itertools
 import math
+from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
@@ -15,7 +16,7 @@ from evalcore.answers import HeldOut, Reduced
 from evalcore.binomial import wilson
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
-from evalcore.intervals import auc_score_type, with_model_variance
+from evalcore.intervals import auc_score_type, square_and_add, with_model_variance
 from evalcore.judged import (
     Judged,
     auc_interval,
@@ -24,6 +25,7 @@ from evalcore.judged import (
     offers_interval,
     plus_632,
     share_interval,
+    with_second_looks,
 )
 from evalcore.model_variance import (
     auc_model_variance,
@@ -156,32 +158,33 @@ class TestAucInterval:
         small, large = self.tau2(still), self.tau2(wobbling)
         assert small < 0.3 * large
         expected = auc_score_type(0.8, 6, 8, large, level=0.9)
-        for part in (still, wobbling):
-            for alike in ([still, wobbling], [wobbling, still]):
-                assert auc_interval(0.9, part, alike, 0.8) == expected
+        for alike in ([still, wobbling], [wobbling, still]):
+            for part in with_second_looks(alike):
+                assert auc_interval(0.9, part, 0.8) == expected
         assert auc_score_type(0.8, 6, 8, small, level=0.9).width < expected.width
 
     def test_a_scheme_that_cannot_tell_does_not_count(self):
         once = judged_of(np.where(np.eye(14), 0, -1), self.labels, scores=np.eye(14))
-        wobbling = self.part(1.5)
+        wobbling = self.part(1.5, scheme="bootstrap")
         assert math.isnan(once.tau2_auc)
         expected = auc_score_type(0.8, 6, 8, self.tau2(wobbling), level=0.95)
         for alike in ([once, wobbling], [wobbling, once]):
-            assert auc_interval(0.95, once, alike, 0.8) == expected
-        assert auc_interval(0.95, once, [once], 0.8) == auc_score_type(0.8, 6, 8, level=0.95)
+            for part in with_second_looks(alike):
+                assert auc_interval(0.95, part, 0.8) == expected
+        assert auc_interval(0.95, once, 0.8) == auc_score_type(0.8, 6, 8, level=0.95)
 
     def test_counts_cases_held_out_alone(self):
         part = self.part(1.5, never=[0, 13, 12])
         expected = auc_score_type(0.8, 5, 6, self.tau2(part), level=0.95)
-        assert auc_interval(0.95, part, [part], 0.8) == expected
+        assert auc_interval(0.95, part, 0.8) == expected
 
     def test_none_where_none_keeps_its_word(self):
         part = self.part(1.5)
-        assert auc_interval(0.95, part, [part], NAN) is None
+        assert auc_interval(0.95, part, NAN) is None
         dependent = self.part(1.5, units=np.arange(14) // 2)
-        assert auc_interval(0.95, dependent, [dependent], 0.8) is None
+        assert auc_interval(0.95, dependent, 0.8) is None
         three = judged_of([[0, 1, 2, 0]] * 2, [0, 1, 2, 0], n_classes=3)
-        assert auc_interval(0.95, three, [three], 0.8) is None
+        assert auc_interval(0.95, three, 0.8) is None
 
     def test_in_an_evaluation_of_two_schemes(self):
         rng = np.random.default_rng(2)
@@ -198,6 +201,71 @@ class TestAucInterval:
         for scheme in found.rounds:
             e = found.estimate("auc", "lda", scheme=scheme, estimator="mean_of_rounds")
             assert e.interval == auc_score_type(e.value, 9, 9, max(tau2), level=0.95)
+
+
+def one_of_each_class(*, first=1, second=1) -> Judged:
+    """One of each class in a round, every case twice: all right or all wrong within a repeat."""
+    labels, answers = np.repeat([0, 1], 10), np.full((20, 20), -1)
+    for r in range(20):
+        mine = np.arange(20) % 10 == r % 10
+        right = first if r < 10 else second
+        answers[r, mine] = labels[mine] if right else 1 - labels[mine]
+    return judged_of(answers, labels, repeat=np.repeat([0, 1], 10), scheme="few_of_a_class")
+
+
+class TestSecondLooks:
+    """What rounds that hold out one of a class cannot tell; by hand, see `varying_in_b`."""
+
+    def test_a_class_takes_it_from_the_scheme_that_can_tell(self):
+        alone, elsewhere = one_of_each_class(), varying_in_b()
+        few, _ = with_second_looks([alone, elsewhere])
+        assert math.isnan(alone.tau2_of(0))
+        assert math.isnan(alone.tau2_of(1))
+        assert share_interval(0.9, alone, 1) == wilson(1.0, 10, level=0.9)
+        assert few.tau2_of(0) == 0
+        assert few.tau2_of(1) == pytest.approx(0.5, rel=1e-15)
+        assert few.cautious_tau2(1) == elsewhere.cautious_tau2(1)
+        expected = with_model_variance(1.0, 10, few.tau2_of(1), level=0.9)
+        assert share_interval(0.9, few, 1) == expected
+        assert expected.low < wilson(1.0, 10, level=0.9).low - 0.1
+
+    def test_the_largest_of_several_that_can_tell(self):
+        third = replace(varying_in_b(), scheme="other", held=one_of_each_class(second=0).held)
+        parts = [one_of_each_class(), varying_in_b(), third]
+        for order in ((0, 1, 2), (0, 2, 1)):
+            few = with_second_looks([parts[i] for i in order])[0]
+            assert few.tau2_of(1) == pytest.approx(0.5, rel=1e-15)
+
+    def test_balanced_accuracy_takes_the_larger_where_a_class_cannot_be_told(self):
+        # elsewhere (1/4)^2 - 5/4/25/4 = 1/20 a round, doubled by two repeats
+        assert varying_in_b().tau2_balanced == pytest.approx(0.1, rel=1e-14)
+        few, full = with_second_looks([one_of_each_class(), varying_in_b()])
+        assert one_of_each_class().tau2_balanced == 0
+        assert few.tau2_balanced == pytest.approx(0.1, rel=1e-14)
+        # here (1/2)^2 - 2/4/4 = 1/8 a round between the classes, doubled
+        few, full = with_second_looks([one_of_each_class(second=0), varying_in_b()])
+        assert few.tau2_balanced == pytest.approx(0.25, rel=1e-14)
+        # the other scheme tells both classes itself
+        assert full.tau2_balanced == pytest.approx(0.1, rel=1e-14)
+        ends = [share_interval(0.95, few, k, variance=False) for k in (0, 1)]
+        assert balanced_interval(0.95, few) == square_and_add([0.5, 0.5], ends, few.tau2_balanced)
+
+    def test_all_cases_take_their_own_where_it_can_be_told(self):
+        few, _ = with_second_looks([one_of_each_class(), varying_in_b()])
+        assert varying_in_b().tau2 > 0
+        assert few.tau2 == 0
+        once = judged_of(np.where(np.eye(20), 0, -1), np.repeat([0, 1], 10), scheme="once")
+        borrowing, _ = with_second_looks([once, varying_in_b()])
+        assert math.isnan(once.tau2)
+        assert borrowing.tau2 == varying_in_b().tau2
+
+    def test_only_of_the_same_candidate_counted_the_same_way(self):
+        parts = [
+            one_of_each_class(),
+            replace(varying_in_b(), candidate="tree"),
+            replace(varying_in_b(), counted_by="unit"),
+        ]
+        assert [part.second_looks for part in with_second_looks(parts)] == [(), (), ()]
 
 
 class TestShareInterval:

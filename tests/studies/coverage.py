@@ -218,8 +218,8 @@ def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
         )
         interval = estimate.interval
         if by == ALONE:
-            part = found.part(name, scheme_name)
-            interval = auc_interval(found.plan.level, part, [part], estimate.value)
+            part = replace(found.part(name, scheme_name), second_looks=())
+            interval = auc_interval(found.plan.level, part, estimate.value)
         row |= _parts(f"{scheme}/{by}/{measure}", estimate.value, interval)
     return row
 
