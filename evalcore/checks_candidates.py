@@ -236,8 +236,9 @@ def model_variance_unknown(
         "The interval leaves out how much the model itself varies: each case was answered at most "
         "once, twice is needed",
         f"Each case is held out in at most {int(part.held.rounds.times_tested.max())} round of the "
-        "first scheme, and no other scheme holds one out more often; from 2 on, the model's variance can be told apart. Such an interval holds "
-        "the truth less often than it promises, most so for a model that varies a lot.",
+        "first scheme, and no other scheme holds one out more often; from 2 on, the model's "
+        "variance can be told apart. Such an interval holds the truth less often than it promises, "
+        "most so for a model that varies a lot.",
         "Repeat the cross-validation, or take random subsampling or the bootstrap, be it as a "
         "second scheme.",
         1,

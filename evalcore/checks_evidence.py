@@ -3,22 +3,14 @@
 from collections.abc import Iterator
 from dataclasses import replace
 
-from evalcore.evaluation import HIGHEST, Evaluation
-from evalcore.evidence import (
-    LEAST,
-    LEVEL,
-    MOST_WRONG,
-    falling_short,
-    headline,
-    like,
-    matching,
-    size_in_words,
-)
+from evalcore.evaluation import Evaluation
+from evalcore.evidence import LEAST, LEVEL, MOST_WRONG, like
+from evalcore.evidence_quoted import falling_short, headline, matching, size_in_words
 from evalcore.figures import Finding
 from evalcore.measures import ALL_MEASURES
 from evalcore.plan import Plan
 from evalcore.table import Table
-from evalcore.verdict import verdicts
+from evalcore.verdict import verdicts_in_use
 from evalcore.wording import count, level, percent, tenths
 
 
@@ -55,14 +47,16 @@ def interval_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) ->
 def verdict_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
     """A limit is shown by a rule that was wrong too often on simulated tables like this one."""
     given = headline(evaluation) if evaluation else None
-    if evaluation is None or given is None or evaluation.in_use != HIGHEST:
-        return  # no verdict at a learned cut-off was simulated
-    for verdict in verdicts(evaluation, evaluation.about):
+    if evaluation is None or given is None:
+        return
+    for verdict in verdicts_in_use(evaluation, evaluation.about):
         measure = verdict.limit.measure
         wanted = replace(given, estimator="verdict", measure=measure)
         short = [line for line in like(wanted) if line.short]
         if verdict.word != "shown" or verdict.limit.confidence != LEVEL or not short:
             continue
+        if given.cut_off and verdict.limit.of_class not in ("", given.cut_off.of_class):
+            continue  # at cut-offs the class that is called was studied
         worst = min(short, key=lambda line: line.coverage)
         wrong, most = percent(1 - worst.coverage, worst.tables), percent(MOST_WRONG, 1)
         yield Finding(

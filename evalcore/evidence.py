@@ -6,7 +6,6 @@ scheme and figure. What counts as alike (`ALIKE`) is our own judgement, no sourc
 
 import csv
 import io
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass, fields
 from functools import lru_cache
@@ -14,24 +13,14 @@ from importlib import resources
 from typing import Any
 
 from evalcore.candidates import CANDIDATES
-from evalcore.choice import Choice, choose, choose_written
-from evalcore.evaluation import Evaluation
-from evalcore.figures import Estimate
-from evalcore.measures import ALL_MEASURES
-from evalcore.profile import smallest_class
-from evalcore.schemes import SCHEMES
-from evalcore.wording import Noun, count, level, listed, percent
+from evalcore.choice import Choice, choose_written
+from evalcore.cut_off_rule import CutOffRule
 
 LEVEL = 0.95  # of the intervals that were simulated
 LEAST, MOST_WRONG = 0.93, 0.05  # an interval's coverage; the share of tables with a false word
 ALIKE = 1.5  # numbers of cases this many times apart are still alike
 MANY_FEATURES = 0.5  # features a case from which a table is of a kind of its own
-STUDIED = {"cross_validation": "default", "bootstrap": "bootstrap"}
 WORDS = ("verdict", "comparison")  # lines about what was said, not about an interval
-NONE_LIKE = (
-    "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
-    "cases, smallest class, features), so whether the interval keeps its word here is not measured."
-)
 
 
 @dataclass(frozen=True)
@@ -51,6 +40,9 @@ class Line:
         Median over the tables, in units.
     candidate : str
         As written on the command line.
+    cut_off : str
+        Rule for the smallest class of each table, as on the command line after the colon; empty
+        where the class with the highest score was answered.
     scheme : {"default", "bootstrap"}
         The scheme recommended for the table, or the bootstrap alone.
     estimator, interval, measure : str
@@ -71,6 +63,7 @@ class Line:
     rows: int
     smallest_class: float
     candidate: str
+    cut_off: str
     scheme: str
     estimator: str
     interval: str
@@ -102,6 +95,10 @@ class Headline:
     Attributes
     ----------
     candidate : Choice
+    cut_off : CutOffRule or None
+        None where the class with the highest score is answered.
+    called : int
+        Units of the class that is called from the cut-off up; 0 without one.
     scheme, estimator, measure, counted_by : str
         As in `Line`.
     n, smallest_class : int
@@ -110,6 +107,8 @@ class Headline:
     """
 
     candidate: Choice
+    cut_off: CutOffRule | None
+    called: int
     scheme: str
     estimator: str
     measure: str
@@ -142,37 +141,6 @@ def read(text: str) -> tuple[Line, ...]:
     return tuple(Line(**{name: kinds[name](value) for name, value in row.items()}) for row in rows)
 
 
-def headline(evaluation: Evaluation) -> Headline | None:
-    """What the headline rests on; None where the study holds nothing of its kind.
-
-    That is: at another level, or under another scheme than the recommended cross-validation or
-    bootstrap.
-    """
-    table, plan = evaluation.table, evaluation.plan
-    used = plan.scheme(evaluation.scheme)
-    studied = [choose(SCHEMES, key) for key in STUDIED]
-    if plan.level != LEVEL or used not in studied:
-        return None
-    estimate = _estimate(evaluation)
-    estimator = estimate.estimator
-    if estimate.measure == "auc" and len(plan.schemes) == 1:
-        estimator = "mean_of_rounds_alone"
-    elif estimate.measure == "auc" and set(plan.schemes) != set(studied):
-        return None  # the other schemes bear on its interval too
-    return Headline(
-        plan.candidate(evaluation.about),
-        STUDIED[used.key],
-        estimator,
-        estimate.measure,
-        evaluation.counted_by,
-        table.n_units,
-        smallest_class(table)[1],
-        table.n_cases,
-        len(table.columns),
-        table.n_classes,
-    )
-
-
 def like(given: Headline, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
     """Lines about tables that resemble the user's, of the same candidate and figure.
 
@@ -185,81 +153,13 @@ def like(given: Headline, among: Sequence[Line] | None = None) -> tuple[Line, ..
     Returns
     -------
     tuple of Line
-        Same candidate with its settings, scheme, figure and way of counting; n and the smallest
-        class within a factor of 1.5; two classes, or more than two, alike; several rows a unit,
-        or one; from half as many features as cases on, only kinds with as many.
+        Same candidate with its settings, scheme, figure and way of counting; a cut-off found alike,
+        or none; n and the smallest class within a factor of 1.5; two classes, or more than two,
+        alike; several rows a unit, or one; from half as many features as cases on, only kinds with
+        as many.
     """
     known = lines() if among is None else among
     return tuple(line for line in known if _same_figure(line, given) and _alike(line, given))
-
-
-def matching(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
-    """Lines like the headline's; none while rounds that it rests on are missing."""
-    given = headline(evaluation) if _complete(evaluation) else None
-    return like(given, among) if given else ()
-
-
-def falling_short(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
-    """Those of them in which the interval did not keep its word."""
-    return tuple(line for line in matching(evaluation, among) if line.short)
-
-
-def sentence(evaluation: Evaluation, among: Sequence[Line] | None = None) -> str:
-    """What is known of the headline's interval on simulated tables like this one.
-
-    Empty where the headline has no interval, and while rounds it rests on are missing.
-    """
-    bounds = _estimate(evaluation).interval
-    if not _complete(evaluation) or bounds is None or not bounds.defined:
-        return ""
-    found = matching(evaluation, among)
-    tables = sum(line.tables - line.without_interval for line in found)
-    shares = [line.coverage for line in found if not math.isnan(line.coverage)]
-    if not shares:
-        return NONE_LIKE
-    held = [percent(share, tables) for share in (min(shares), max(shares))]
-    lacking = sum(line.without_interval for line in found)
-    none = f", with none in {count(lacking)} more" if lacking else ""
-    return (
-        f"In {count(tables)} simulated tables like this one in size ({size_in_words(found)}), the "
-        f"{level(LEVEL)} interval of this candidate’s {ALL_MEASURES[found[0].measure].trade} held "
-        f"the true value in {' to '.join(dict.fromkeys(held))}{none}; real tables may be otherwise."
-    )
-
-
-def size_in_words(found: Sequence[Line]) -> str:
-    """How large simulated tables were: "60 cases, about 30 in the smallest class; ..."."""
-    rows = listed([count(rows) for rows in sorted({line.rows for line in found})], last="or")
-    what = "cases" if rows == "1" else f"units of {rows} rows"
-    kinds = Noun("kind of data", "kinds of data").counted(len({line.scenario for line in found}))
-    return (
-        f"{_span([line.n for line in found])} {what}, about "
-        f"{_span([round(line.smallest_class) for line in found])} in the smallest class; {kinds}"
-    )
-
-
-def _span(numbers: Sequence[int]) -> str:
-    return " to ".join(dict.fromkeys([count(min(numbers)), count(max(numbers))]))
-
-
-def _estimate(evaluation: Evaluation) -> Estimate:
-    """The headline's figure; of sensitivity, which has several classes, the balanced one."""
-    measure = evaluation.plan.measure
-    measure = "balanced_accuracy" if measure == "sensitivity" else measure
-    # at a learned cut-off where there is one: such figures were not studied, so no line is alike
-    estimator = "mean_of_rounds" if measure == "auc" else evaluation.in_use
-    return evaluation.estimate(measure, evaluation.about, estimator=estimator)
-
-
-def _complete(evaluation: Evaluation) -> bool:
-    """Whether all rounds that the headline's interval rests on have finished."""
-    first = evaluation.plan.measure != "auc"
-    names = (evaluation.scheme,) if first else evaluation.plan.scheme_names
-    return all(
-        name in evaluation.rounds
-        and evaluation.rounds[name].n_rounds == evaluation.planned.get(name)
-        for name in names
-    )
 
 
 def _same_figure(line: Line, given: Headline) -> bool:
@@ -269,7 +169,30 @@ def _same_figure(line: Line, given: Headline) -> bool:
         given.estimator,
         given.measure,
         given.counted_by,
-    ) and _choice(line.candidate) == given.candidate
+    ) and (_choice(line.candidate) == given.candidate and _same_rule(line, given))
+
+
+def _same_rule(line: Line, given: Headline) -> bool:
+    """Whether cut-offs were found alike: from floors, or from costs weighed by the share in use."""
+    rule = given.cut_off if given.measure != "auc" else None  # which knows no cut-off
+    if rule is None or not line.cut_off:
+        return rule is None and not line.cut_off
+    if not _near(line.smallest_class, given.called):
+        return False  # studied of the smallest class
+    studied = CutOffRule.read(f"smallest class:{line.cut_off}")
+    if studied.by != rule.by:
+        return False
+    if rule.by == "floor":
+        return _near(1 - studied.floor, 1 - rule.floor)
+    return rule.by == "cost" and _near(
+        _odds(studied, line.smallest_class / line.n), _odds(rule, given.called / given.n)
+    )
+
+
+def _odds(rule: CutOffRule, table_share: float) -> float:
+    """Cost of all misses to that of all false alarms if every answer were wrong."""
+    share = rule.share_used(table_share)
+    return rule.miss * share / (rule.alarm * (1 - share))
 
 
 def _alike(line: Line, given: Headline) -> bool:

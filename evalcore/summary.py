@@ -4,7 +4,7 @@ import dataclasses
 from dataclasses import dataclass
 from typing import Any
 
-from evalcore import evidence
+from evalcore import evidence_quoted
 from evalcore.answer import (
     CAUTION,
     answer,
@@ -135,7 +135,7 @@ def design(evaluation: Evaluation) -> tuple[str, ...]:
         if table.has_units
         else f"n counts {table.noun.plural}.",
     }[evaluation.counted_by]
-    last = (evidence.sentence(evaluation), best_sentence(evaluation))
+    last = (evidence_quoted.sentence(evaluation), best_sentence(evaluation))
     return (
         f"{capitalised(listed(schemes))}; the first gives the headline.{kept}",
         "Filling of gaps, scaling and the coding of text are learned anew inside every bag.",

@@ -3,7 +3,7 @@
 import streamlit as st
 
 from app import charts, look, state
-from evalcore import evidence
+from evalcore import evidence_quoted
 from evalcore.answer import (
     CAUTION,
     answer,
@@ -94,7 +94,7 @@ def how_sure(evaluation: Evaluation) -> None:
     if evaluation.in_use != HIGHEST:
         look.soft(BY_HIGHEST)
     look.figure(charts.estimates_with_intervals(evaluation, measure), key="estimates")
-    for said in (evidence.sentence(evaluation), best_sentence(evaluation)):
+    for said in (evidence_quoted.sentence(evaluation), best_sentence(evaluation)):
         if said:
             look.soft(said)
     if measure != "accuracy":

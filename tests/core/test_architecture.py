@@ -90,6 +90,7 @@ ORDER = (
     "other_intervals",
     "verdict",
     "evidence",
+    "evidence_quoted",
     "outlook",
     "rehearsal",
     "answer",

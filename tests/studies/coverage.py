@@ -16,14 +16,17 @@ import os
 import pathlib
 import sys
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
 from evalcore import measures
+from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
 from evalcore.candidates import CANDIDATES, estimator
 from evalcore.choice import Choice, choose_written
 from evalcore.comparison import PRACTICAL
+from evalcore.cut_off import calls
+from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import CountedBy, Interval
 from evalcore.judged import auc_interval
@@ -32,8 +35,9 @@ from evalcore.plan import Plan, generator, recommended_schemes
 from evalcore.profile import smallest_class
 from evalcore.table import Table
 from evalcore.together import ESTIMATOR as WINNER
-from evalcore.verdict import verdicts
+from evalcore.verdict import verdicts_in_use
 from tests.core.checks import carried_out, table_of
+from tests.studies.cells import CELLS, Cell
 from tests.studies.mechanisms import MECHANISMS, SEED, Cases, further_cases
 
 Row = dict[str, object]
@@ -42,61 +46,16 @@ SHARES = MEASURES[:3]  # measures that limits go on
 BEST = "best of all"  # the row of whoever came out best
 
 
-@dataclass(frozen=True)
-class Cell:
-    """What is repeated."""
-
-    scenario: str
-    n: int  # units
-    candidates: tuple[str, ...]  # as written in a plan; the first is compared with the others
-    most: int = 10**9  # tables of it, whatever is asked for; slow candidates have fewer
-    bootstrap: bool = True  # whether the second look is carried out too
-
-
-STEADY = ("logistic", "lda", "naive_bayes")
-EIGHT = (
-    *STEADY,
-    *("qda", "tree", *(f"nearest_neighbours:k={k}" for k in (5, 1, 15))),
-)
-QUICK = (
-    Cell("gauss", 60, ("lda",), bootstrap=False),
-    Cell("p50", 60, ("naive_bayes",), bootstrap=False),
-    Cell("imb", 60, ("lda",), bootstrap=False),
-    Cell("noise", 40, ("nearest_neighbours:k=1",), bootstrap=False),
-    Cell("xor", 100, ("tree",), bootstrap=False),
-)
-SMALL = (
-    *((scenario, n) for scenario in ("gauss", "imb") for n in (30, 60, 120)),
-    *(("p50", 60), ("noise", 40), ("three", 60), ("xor", 100), ("sep", 40)),
-)
-LARGE = (("gauss", 300), ("gauss", 500), ("imb", 300), ("noise", 120))
-DEFAULT = (
-    *(Cell(*at, EIGHT) for at in SMALL),
-    *(Cell(*at, (*STEADY, "tree")) for at in LARGE),
-    *(Cell("units", n, ("logistic", "lda", "nearest_neighbours:k=5")) for n in (10, 20, 40)),
-)
-TUNED = tuple(
-    Cell(*at, (grid,), 400, bootstrap=False)
-    for at in (("gauss", 60), ("imb", 60), ("noise", 40), ("xor", 100))
-    for grid in ("nearest_neighbours:k=1/5/15", "logistic:C=0.01/1/100")
-)
-SLOW_ON = (("gauss", 60), ("imb", 60), ("xor", 100))
-SLOW = (
-    *TUNED,
-    *(Cell(*at, ("svm",), 400) for at in SLOW_ON),
-    *(Cell(*at, ("forest",), 400, bootstrap=False) for at in SLOW_ON),
-)
-CELLS = {"quick": QUICK, "default": DEFAULT, "slow": SLOW}
-
 HELD, MEAN, SWITCH = "held_out_by_case", "mean_of_rounds", "out_of_bag_or_632_plus"
 ALONE = "mean_of_rounds_alone"  # AUC with the model variance of its own scheme alone
 BY_SCHEME = (*((HELD, measure) for measure in SHARES), (MEAN, "auc"), (ALONE, "auc"))
 FIGURES = (  # scheme, estimator, measure; the default scheme is what the table is recommended
     *(("default", *figure) for figure in BY_SCHEME),
     *(("bootstrap", *figure) for figure in (*BY_SCHEME, (SWITCH, "accuracy"))),
+    *(("default", AT_CUT_OFF, measure) for measure in SHARES),
 )
 PARTS = ("value", "low", "high", "method")
-KEYS = ("scenario", "n", "candidate", "counted_by", "table")
+KEYS = ("scenario", "n", "candidate", "cut_off", "counted_by", "table")
 COLUMNS = (
     *KEYS,
     "smallest_class",
@@ -122,7 +81,8 @@ def made(cell: Cell, number: int) -> tuple[Table, Plan]:
         Limit(measure, least, table.classes[of_class] if measure == "sensitivity" else "")
         for measure in SHARES
     )
-    return table, Plan(table.roles, schemes, candidates, limits=limits, seed=seed)
+    rule = CutOffRule.read(f"{table.classes[of_class]}:{cell.cut_off}") if cell.cut_off else None
+    return table, Plan(table.roles, schemes, candidates, limits=limits, cut_off=rule, seed=seed)
 
 
 def judge(cell: Cell, number: int) -> list[Row]:
@@ -130,7 +90,9 @@ def judge(cell: Cell, number: int) -> list[Row]:
     table, plan = made(cell, number)
     of_class, size = smallest_class(table)
     found = carried_out(table, plan)[0]
-    ways: list[CountedBy] = ["unit", "case"] if table.has_units else ["case"]
+    ways: list[CountedBy] = (
+        ["unit", "case"] if table.has_units and not cell.cut_off else [found.counted_by]
+    )
     further = further_cases(cell.scenario)
     scores = {
         name: fitted_scores(table, final_choice(found, name), further, random_state=plan.seed)
@@ -140,12 +102,15 @@ def judge(cell: Cell, number: int) -> list[Row]:
     for way in ways:
         counted = found if way == found.counted_by else _counted_by_case(found)
         truth = {
-            name: true_values(cell.scenario, further, scores[name], counted_by=way)
+            name: true_values(
+                cell.scenario, further, scores[name], counted_by=way, called=called(found, name)
+            )
             for name in found.candidates
         }
         # candidates of the same key are told apart as they were written
         for name, written in zip(found.candidates, cell.candidates, strict=True):
-            row: Row = dict(zip(KEYS, (cell.scenario, cell.n, written, way, number), strict=True))
+            keys = (cell.scenario, cell.n, written, cell.cut_off, way, number)
+            row: Row = dict(zip(KEYS, keys, strict=True))
             row |= {"smallest_class": size} | _true_columns(truth[name], of_class)
             row |= judged_values(counted, name, table.classes[of_class])
             row |= _bounds(_alone(counted), name)
@@ -174,15 +139,32 @@ def fitted_scores(
     return scores if scores.ndim == 2 else np.column_stack([-scores, scores])
 
 
+def called(found: Evaluation, name: str) -> tuple[int, float] | None:
+    """The class that is called and the cut-off it goes to work with, where one was asked for."""
+    at = found.at_cut_off(name)
+    return (found.table.classes.index(at.rule.of_class), at.on_all) if at else None
+
+
 def true_values(
-    scenario: str, further: Cases, scores: measures.Floats, *, counted_by: CountedBy
+    scenario: str,
+    further: Cases,
+    scores: measures.Floats,
+    *,
+    counted_by: CountedBy,
+    called: tuple[int, float] | None = None,
 ) -> dict[str, measures.Floats]:
-    """Accuracy, balanced accuracy, sensitivity of each class and AUC, on further cases or units."""
+    """Accuracy, balanced accuracy, sensitivity of each class and AUC, on further cases or units.
+
+    Answered by the highest score, or from a cut-off of one of two classes.
+    """
     labels = further.labels
     if counted_by == "unit":
         rows = MECHANISMS[scenario].rows
         labels, scores = labels[::rows], scores.reshape(-1, rows, scores.shape[1]).mean(axis=1)
     named = measures.predicted_class(scores)
+    if called:
+        of_class, cut_off = called
+        named = np.where(calls(scores[:, of_class], cut_off), of_class, 1 - of_class)
     counts = measures.confusion(labels, named, n_classes=scores.shape[1])
     values = {
         "accuracy": measures.accuracy(counts)[0],
@@ -203,11 +185,14 @@ def _true_columns(truth: Mapping[str, measures.Floats], of_class: int) -> Row:
 
 
 def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
-    """Value and default interval of every figure of a candidate, as far as schemes were used."""
+    """Value and default interval of every figure of a candidate, as far as schemes were used.
+
+    Where there is a cut-off, of the figures at it alone: the others are studied without one.
+    """
     row: Row = {}
     for scheme, by, measure in FIGURES:
         scheme_name = found.scheme if scheme == "default" else scheme
-        if scheme_name not in found.rounds:
+        if scheme_name not in found.rounds or (by == AT_CUT_OFF) != (found.in_use == AT_CUT_OFF):
             continue
         estimate = found.estimate(
             measure,
@@ -242,7 +227,7 @@ def _bounds(found: Evaluation, name: str) -> Row:
     """What each measure was shown to be at least; a limit at or below it is called shown."""
     return {
         f"at_least/{verdict.limit.measure}": verdict.at_least if verdict.n >= 10 else -math.inf
-        for verdict in verdicts(found, name)
+        for verdict in verdicts_in_use(found, name)
     }
 
 
@@ -313,14 +298,14 @@ def run(cells: Sequence[Cell], path: pathlib.Path, *, tables: int, jobs: int = 1
     from joblib import Parallel, delayed
 
     _begun(path)
-    keys = ("scenario", "n", "candidate", "table")
+    keys = ("scenario", "n", "candidate", "cut_off", "table")
     done = {tuple(row[key] for key in keys) for row in finished(path)}
     todo = (
         delayed(judge)(cell, number)
         for number in range(tables)
         for cell in cells
         if number < cell.most
-        and (cell.scenario, str(cell.n), cell.candidates[-1], str(number)) not in done
+        and (cell.scenario, str(cell.n), cell.candidates[-1], cell.cut_off, str(number)) not in done
     )
     with path.open("a", newline="", encoding="utf-8") as file:
         writer = csv.DictWriter(file, COLUMNS, restval="", lineterminator="\n")

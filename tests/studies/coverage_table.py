@@ -22,7 +22,7 @@ Line = dict[str, object]
 
 COLUMNS = (
     *("scenario", "n", "counted_by", "features", "classes", "rows", "smallest_class"),
-    *("candidate", "scheme", "estimator", "interval", "measure"),
+    *("candidate", "cut_off", "scheme", "estimator", "interval", "measure"),
     *("coverage", "monte_carlo_error", "bias", "rmse", "width", "tables", "without_interval"),
 )
 ALL_PAIRS = "all pairs"  # a table is wrong if any of its calls is
@@ -36,9 +36,10 @@ def summary(rows: Iterable[Raw]) -> Iterator[Line]:
     rows : iterable of mapping
         As `coverage.run` writes them, in their order; of a table judged twice the later rows count.
     """
-    cells: dict[tuple[str, int, str], list[Raw]] = {}
+    cells: dict[tuple[str, int, str, str], list[Raw]] = {}
     for row in _latest(rows):
-        key = (str(row["scenario"]), int(str(row["n"])), str(row["counted_by"]))
+        scenario, n, *rest = (str(row[key]) for key in ("scenario", "n", "counted_by", "cut_off"))
+        key = (scenario, int(n), *rest)
         cells.setdefault(key, []).append(row)
     order = list(MECHANISMS)
     for key in sorted(cells, key=lambda key: (order.index(key[0]), *key[1:])):
@@ -177,6 +178,7 @@ def _line(rows: Sequence[Raw], candidate: str, figures: Line) -> Line:
         "rows": mechanism.rows,
         "smallest_class": float(np.median(_numbers(rows, "smallest_class"))),
         "candidate": candidate,
+        "cut_off": first["cut_off"],
         "scheme": "default",
         "interval": "",
         "bias": math.nan,

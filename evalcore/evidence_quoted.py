@@ -1,0 +1,125 @@
+"""What the coverage study says of the user's own headline."""
+
+import math
+from collections.abc import Sequence
+
+from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
+from evalcore.choice import choose
+from evalcore.evaluation import Evaluation
+from evalcore.evidence import LEVEL, Headline, Line, like
+from evalcore.figures import Estimate
+from evalcore.measures import ALL_MEASURES
+from evalcore.profile import smallest_class
+from evalcore.schemes import SCHEMES
+from evalcore.wording import Noun, count, level, listed, percent
+
+STUDIED = {"cross_validation": "default", "bootstrap": "bootstrap"}
+NONE_LIKE = (
+    "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
+    "cases, smallest class, features), so whether the interval keeps its word here is not measured."
+)
+
+
+def headline(evaluation: Evaluation) -> Headline | None:
+    """What the headline rests on; None where the study holds nothing of its kind.
+
+    That is: at another level, or under another scheme than the recommended cross-validation or
+    bootstrap.
+    """
+    table, plan = evaluation.table, evaluation.plan
+    used = plan.scheme(evaluation.scheme)
+    studied = [choose(SCHEMES, key) for key in STUDIED]
+    if plan.level != LEVEL or used not in studied:
+        return None
+    estimate = _estimate(evaluation)
+    estimator = estimate.estimator
+    if estimate.measure == "auc" and len(plan.schemes) == 1:
+        estimator = "mean_of_rounds_alone"
+    elif estimate.measure == "auc" and set(plan.schemes) != set(studied):
+        return None  # the other schemes bear on its interval too
+    rule = plan.cut_off if evaluation.in_use == AT_CUT_OFF else None
+    called = table.units_holding[table.classes.index(rule.of_class)] if rule else 0
+    return Headline(
+        plan.candidate(evaluation.about),
+        rule,
+        int(called),
+        STUDIED[used.key],
+        estimator,
+        estimate.measure,
+        evaluation.counted_by,
+        table.n_units,
+        smallest_class(table)[1],
+        table.n_cases,
+        len(table.columns),
+        table.n_classes,
+    )
+
+
+def matching(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
+    """Lines like the headline's; none while rounds that it rests on are missing."""
+    given = headline(evaluation) if _complete(evaluation) else None
+    return like(given, among) if given else ()
+
+
+def falling_short(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
+    """Those of them in which the interval did not keep its word."""
+    return tuple(line for line in matching(evaluation, among) if line.short)
+
+
+def sentence(evaluation: Evaluation, among: Sequence[Line] | None = None) -> str:
+    """What is known of the headline's interval on simulated tables like this one.
+
+    Empty where the headline has no interval, and while rounds it rests on are missing.
+    """
+    bounds = _estimate(evaluation).interval
+    if not _complete(evaluation) or bounds is None or not bounds.defined:
+        return ""
+    found = matching(evaluation, among)
+    tables = sum(line.tables - line.without_interval for line in found)
+    shares = [line.coverage for line in found if not math.isnan(line.coverage)]
+    if not shares:
+        return NONE_LIKE
+    held = [percent(share, tables) for share in (min(shares), max(shares))]
+    lacking = sum(line.without_interval for line in found)
+    none = f", with none in {count(lacking)} more" if lacking else ""
+    return (
+        f"In {count(tables)} simulated tables like this one in size ({size_in_words(found)}), the "
+        f"{level(LEVEL)} interval of this candidate’s {ALL_MEASURES[found[0].measure].trade} held "
+        f"the true value in {' to '.join(dict.fromkeys(held))}{none}; real tables may be otherwise."
+    )
+
+
+def size_in_words(found: Sequence[Line]) -> str:
+    """How large simulated tables were: "60 cases, about 30 in the smallest class; ..."."""
+    rows = listed([count(rows) for rows in sorted({line.rows for line in found})], last="or")
+    what = "cases" if rows == "1" else f"units of {rows} rows"
+    kinds = Noun("kind of data", "kinds of data").counted(len({line.scenario for line in found}))
+    return (
+        f"{_span([line.n for line in found])} {what}, about "
+        f"{_span([round(line.smallest_class) for line in found])} in the smallest class; {kinds}"
+        f"{'; cut-offs learned alike' if found[0].cut_off else ''}"
+    )
+
+
+def _span(numbers: Sequence[int]) -> str:
+    return " to ".join(dict.fromkeys([count(min(numbers)), count(max(numbers))]))
+
+
+def _estimate(evaluation: Evaluation) -> Estimate:
+    """The headline's figure; of sensitivity, which has several classes, the balanced one."""
+    measure = evaluation.plan.measure
+    measure = "balanced_accuracy" if measure == "sensitivity" else measure
+    # at a learned cut-off where there is one
+    estimator = "mean_of_rounds" if measure == "auc" else evaluation.in_use
+    return evaluation.estimate(measure, evaluation.about, estimator=estimator)
+
+
+def _complete(evaluation: Evaluation) -> bool:
+    """Whether all rounds that the headline's interval rests on have finished."""
+    first = evaluation.plan.measure != "auc"
+    names = (evaluation.scheme,) if first else evaluation.plan.scheme_names
+    return all(
+        name in evaluation.rounds
+        and evaluation.rounds[name].n_rounds == evaluation.planned.get(name)
+        for name in names
+    )
