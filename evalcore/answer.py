@@ -31,6 +31,7 @@ from evalcore.wording import (
 )
 
 WITH_CUT_OFF = " at the cut-off"
+BY_HIGHEST = "answered by the highest score, not at the cut-off"
 
 LOSS_NAMES = {
     "brier": "squared distance of probabilities (Brier score, sum over classes)",
@@ -134,6 +135,11 @@ def _figure(estimate: Estimate, *, noun: str = "") -> str:
     if bounds is None or not bounds.defined:
         return f"{percent(estimate.value, estimate.n)} ({n})"
     return with_interval(estimate.value, bounds, estimate.n)[:-1] + f", {n})"
+
+
+def by_highest(evaluation: Evaluation) -> str:
+    """What has to stand by figures of all candidates where the answer is at a cut-off."""
+    return "" if evaluation.in_use == HIGHEST else BY_HIGHEST
 
 
 def answer(evaluation: Evaluation) -> str:

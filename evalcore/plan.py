@@ -170,14 +170,16 @@ class Plan:
     def title(self, name: str) -> str:
         """What sentences call a candidate."""
         choice = self.candidate(name)
-        title = _title(choice)
-        alike = [c for c in self.candidates if _title(c) == title]
+        kind = _kind(choice)
+        alike = [c for c in self.candidates if _kind(c) == kind]
         differ = [
             f"{setting} {BETWEEN.join(map(written_value, _several(choice, setting)))}"
             for setting, _ in choice.settings
             if len({_several(c, setting) for c in alike}) > 1
         ]
-        return f"{title} ({', '.join(differ)})" if differ else title
+        title, tuned = kind
+        said = [f"{listed(tuned)} tuned"] if tuned else []
+        return f"{title} ({'; '.join([*said, *differ])})" if said or differ else title
 
     @property
     def about_name(self) -> str:
@@ -379,12 +381,11 @@ def _choice(data: dict[str, Any]) -> Choice:
     )
 
 
-def _title(choice: Choice) -> str:
-    """What a candidate is called, apart from others of its kind."""
+def _kind(choice: Choice) -> tuple[str, tuple[str, ...]]:
+    """What a candidate is called without what tells it from others, and its tuned settings."""
     candidate = CANDIDATES[choice.key]
-    if not choice.tuned:
-        return candidate.named(choice.values())
-    return f"{candidate.title}, {listed([name for name, _ in choice.grid])} tuned"
+    title = candidate.title if choice.tuned else candidate.named(choice.values())
+    return title, tuple(name for name, _ in choice.grid)
 
 
 def _several(choice: Choice, setting: str) -> tuple[Value, ...]:

@@ -20,6 +20,7 @@ from app.charts.style import (
     text_alternative,
 )
 from app.charts.tracks import TrackRow, track_chart
+from evalcore.answer import by_highest
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.profile import majority
@@ -65,7 +66,12 @@ def estimates_with_intervals(evaluation: Evaluation, measure: str) -> Figure:
     lines, scheme = [reference, *limit], scheme_so_far(evaluation, evaluation.scheme)
     return Figure(
         title=title,
-        caption=caption(evaluation, evaluation.scheme, _how(evaluation, found, limit)),
+        caption=caption(
+            evaluation,
+            evaluation.scheme,
+            by_highest(evaluation),
+            _how(evaluation, found, limit),
+        ),
         chart=_chart(evaluation, found, lines, measure),
         alt=text_alternative(title, said, [line.long for line in lines], scheme),
         rows=tuple(_row(evaluation, e) for e in found),

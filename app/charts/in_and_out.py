@@ -21,6 +21,7 @@ from app.charts.style import (
     scheme_so_far,
     text_alternative,
 )
+from evalcore.answer import by_highest
 from evalcore.evaluation import Evaluation
 from evalcore.wording import capitalised
 
@@ -67,7 +68,7 @@ def in_and_out(
     undefined = undefined_words([p.held for p in pairs])
     return Figure(
         title=title,
-        caption=caption(evaluation, scheme, _how(sides), undefined),
+        caption=caption(evaluation, scheme, by_highest(evaluation), _how(sides), undefined),
         chart=_chart(evaluation, pairs, sides, bins, measure=measure, m=usual_size(sizes)),
         alt=text_alternative(title, said, [], scheme_so_far(evaluation, scheme)),
         rows=tuple(_row(p, sides, measure) for p in pairs),

@@ -23,6 +23,7 @@ from app.charts.style import (
     shorten,
     text_alternative,
 )
+from evalcore.answer import by_highest
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.judged import Judged
@@ -73,7 +74,7 @@ def round_scores(evaluation: Evaluation, scheme: str, measure: str = "accuracy")
     said = [f"{r['candidate']}: mean {r['mean of the rounds']}, {r['range']}" for r in rows]
     return Figure(
         title=title,
-        caption=caption(evaluation, scheme, how, undefined_words(values)),
+        caption=caption(evaluation, scheme, by_highest(evaluation), how, undefined_words(values)),
         chart=_chart(evaluation, parts, measure, bins=bins, lone=lone),
         alt=text_alternative(title, said, [], scheme_so_far(evaluation, scheme)),
         rows=rows,

@@ -17,7 +17,7 @@ from evalcore.beside_answer import beside_in_sentences
 from evalcore.checks_candidates import why_632_misleads
 from evalcore.engine import chunk_rounds
 from evalcore.errors import EvalError
-from evalcore.evaluation import HIGHEST, Evaluation
+from evalcore.evaluation import Evaluation
 from evalcore.findings import findings
 from evalcore.record import Record, Status
 from evalcore.schemes import SCHEMES
@@ -26,10 +26,6 @@ from evalcore.verdict import verdicts_in_use
 from evalcore.wording import count, duration, n_equals, with_interval
 
 PROGRESS_EVERY, FIGURES_EVERY = 1.0, 3.0
-BY_HIGHEST = (
-    "The candidates below, their rounds and their scores are compared by the highest score, not "
-    "at the cut-off; the classes are at the cut-off."
-)
 
 
 def nothing_yet() -> None:
@@ -91,8 +87,6 @@ def how_sure(evaluation: Evaluation) -> None:
     """Every candidate on one axis, then each class of the one the answer is about."""
     st.header("How sure", anchor=False)
     measure = evaluation.plan.measure
-    if evaluation.in_use != HIGHEST:
-        look.soft(BY_HIGHEST)
     look.figure(charts.estimates_with_intervals(evaluation, measure), key="estimates")
     for said in (evidence_quoted.sentence(evaluation), best_sentence(evaluation)):
         if said:

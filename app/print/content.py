@@ -17,7 +17,7 @@ from app.charts.print_form import printed, svg, without_forbidden
 from app.charts.round_scores import round_scores
 from app.charts.style import Figure
 from app.print.lower import lowered
-from evalcore.answer import scheme_in_words
+from evalcore.answer import by_highest, scheme_in_words
 from evalcore.errors import RecordError
 from evalcore.estimated import ESTIMATORS
 from evalcore.evaluation import Evaluation
@@ -301,7 +301,12 @@ def _how_found(evaluation: Evaluation, methods: dict[str, list[str]]) -> str:
         named.setdefault(listed(known) or "none", []).append(measure.split(" (")[0])
     said = "; ".join(f"{method}: {listed(of)}" for method, of in named.items())
     auc = " AUC is the mean of the rounds." if any("(AUC)" in column for column in methods) else ""
-    return f"In brackets the {level(evaluation.plan.level)} interval. Methods: {said}.{auc}"
+    by = _sentence(by_highest(evaluation))
+    return f"{by}In brackets the {level(evaluation.plan.level)} interval. Methods: {said}.{auc}"
+
+
+def _sentence(words: str) -> str:
+    return f"{capitalised(words)}. " if words else ""
 
 
 def _n(counted: str) -> str:
@@ -346,6 +351,7 @@ def by_estimator(evaluation: Evaluation) -> Groups:
             )
             for scheme, candidates in found.items()
         ),
+        note=_sentence(by_highest(evaluation)).strip(),
     )
 
 

@@ -244,7 +244,7 @@ class TestSaying:
         assert " Accuracy at the cut-off: shown." in lines[0]
         assert "linear discriminant at the cut-off is expected to be right in" in lines[1]
         begins = (
-            "Nearest neighbours, k tuned: picked inside the bag k=1 in ",
+            "Nearest neighbours (k tuned): picked inside the bag k=1 in ",
             "A case is called failing from 0.",
             "Held out, each round at its own cut-off: failing cases found (sensitivity) ",
             "Where 10 % of cases are failing: ",

@@ -108,7 +108,7 @@ class TestResults:
         assert " Accuracy at the cut-off: " in results.title[0].value
         assert spaced(answer(evaluation)) in texts(results)
         assert "linear discriminant at the cut-off is expected to be right in" in texts(results)
-        assert "compared by the highest score, not at the cut-off" in texts(results)
+        assert "Answered by the highest score, not at the cut-off." in texts(results)
         rows = limit_rows(evaluation, "lda")
         assert [row.name for row in rows] == [
             "Failing cases found (sensitivity) at the cut-off",
@@ -141,7 +141,7 @@ class TestResults:
         page_ = opened(bare, "results")
         assert HEADER not in [header.value for header in page_.header]
         assert "at the cut-off" not in texts(page_) + page_.title[0].value
-        assert "compared by the highest score" not in texts(page_)
+        assert "by the highest score" not in texts(page_)
         for word in ("Learning curve", "Chance check", "picked inside the bag"):
             assert word not in texts(page_)
 

@@ -104,7 +104,7 @@ class TestPicked:
     def test_each_option_and_what_goes_to_work(self):
         # of two rounds
         assert said(self.given(0.5, 0.0, 0.5)) == [
-            "Nearest neighbours, k tuned: picked inside the bag k=1 in 50 %, k=5 in 0 % and k=15 "
+            "Nearest neighbours (k tuned): picked inside the bag k=1 in 50 %, k=5 in 0 % and k=15 "
             "in 50 % of 2 rounds; all cases together pick k=15, which the final model takes."
         ]
 

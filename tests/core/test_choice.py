@@ -239,8 +239,8 @@ class TestNames:
         )
         assert made.candidate_names == names
         assert [made.title(name) for name in names] == [
-            "nearest neighbours, k tuned (k 1/5/15)",
-            "nearest neighbours, k tuned (k 3/5)",
+            "nearest neighbours (k tuned; k 1/5/15)",
+            "nearest neighbours (k tuned; k 3/5)",
             "logistic regression",
         ]
         assert made.candidate(names[1]) == narrow
@@ -248,7 +248,7 @@ class TestNames:
     def test_a_grid_beside_the_same_kind_with_one_value(self):
         made = plan(candidates=(NEAR, choose(CANDIDATES, "nearest_neighbours", k=1)))
         assert [made.title(name) for name in made.candidate_names] == [
-            "nearest neighbours, k tuned",
+            "nearest neighbours (k tuned)",
             "nearest neighbour",
         ]
 

@@ -1,28 +1,18 @@
-"""Which simulated tables resemble the user's, what is said of them, and the packaged table itself."""
+"""Which simulated tables resemble the user's, and the packaged table itself."""
 
 import dataclasses
 import math
 
-import numpy as np
 import pytest
 
 from evalcore import evidence
-from evalcore.answer import best_sentence
+from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose, choose_written
-from evalcore.cut_off import CutOffRule
-from evalcore.evaluation import Evaluation
-from evalcore.evidence import Headline, Line, falling_short, headline, like, read, sentence
-from evalcore.plan import Plan, recommended_schemes
-from evalcore.schemes import SCHEMES
-from evalcore.summary import design
-from evalcore.wording import NBSP
-from tests.studies.coverage import FIGURES
+from evalcore.cut_off_rule import CutOffRule
+from evalcore.evidence import Headline, Line, like, read
+from tests.studies.coverage import FIGURES, SHARES
 from tests.studies.mechanisms import MECHANISMS
-
-from .checks import carried_out, table_of
-
-CV, BOOTSTRAP = choose(SCHEMES, "cross_validation"), choose(SCHEMES, "bootstrap")
 
 
 def line(**changes) -> Line:
@@ -36,6 +26,7 @@ def line(**changes) -> Line:
         rows=1,
         smallest_class=30,
         candidate="lda",
+        cut_off="",
         scheme="default",
         estimator="held_out_by_case",
         interval="wilson_model_variance",
@@ -54,6 +45,8 @@ def line(**changes) -> Line:
 def asked(**changes) -> Headline:
     usual = Headline(
         candidate=choose(CANDIDATES, "lda"),
+        cut_off=None,
+        called=0,
         scheme="default",
         estimator="held_out_by_case",
         measure="accuracy",
@@ -65,6 +58,17 @@ def asked(**changes) -> Headline:
         classes=2,
     )
     return dataclasses.replace(usual, **changes)
+
+
+def line_at(rule: str, **changes) -> Line:
+    """A line about answers at cut-offs for the smallest class."""
+    return line(**{"cut_off": rule, "estimator": AT_CUT_OFF} | changes)
+
+
+def asked_at(rule: str, **changes) -> Headline:
+    """The same asked at a cut-off for class b, of 30."""
+    given = {"cut_off": CutOffRule.read(f"b:{rule}"), "called": 30, "estimator": AT_CUT_OFF}
+    return asked(**given | changes)
 
 
 class TestLike:
@@ -134,6 +138,121 @@ class TestLike:
         assert not line(n=15, rows=1, features=5).many_features
 
 
+class TestCutOffsLearnedAlike:
+    """Of 60 cases half are of the class, so that costs stand to each other as miss to alarm."""
+
+    @pytest.mark.parametrize(
+        ("studied", "of_user"),
+        [
+            ("floor=0.9", "floor=0.9"),
+            # left out of the class: 0.15 to 0.1 is three halves, ends included; 0.1 to 0.07
+            ("floor=0.9", "floor=0.85"),
+            ("floor=0.85", "floor=0.9"),
+            ("floor=0.9", "floor=0.93"),
+            ("floor=0.25", "floor=0.5"),
+            ("floor=0.5", "floor=0.25"),
+            ("miss=5,alarm=1", "miss=5"),
+            ("miss=5,alarm=1", "miss=50,alarm=10"),
+            # 7.5 and 10/3 to 5 are three halves either way
+            ("miss=5,alarm=1", "miss=7.5"),
+            ("miss=5,alarm=1", "miss=10,alarm=3"),
+            # the share in use: 5 x 0.6/0.4 = 7.5, 5 x 0.4/0.6 = 10/3, 20 x 0.2/0.8 = 5
+            ("miss=5,alarm=1", "miss=5,share=0.6"),
+            ("miss=5,alarm=1", "miss=5,share=0.4"),
+            ("miss=5,alarm=1", "miss=20,share=0.2"),
+            # the middle of a range: 0.6
+            ("miss=5,alarm=1", "miss=5,share=0.5-0.7"),
+            # of the study too: 5 x 0.2/0.8 = 1.25
+            ("miss=5,alarm=1,share=0.2", "miss=1.25"),
+            # what is left to a person changes no cut-off
+            ("floor=0.9", "floor=0.9,undecided=0.7"),
+        ],
+    )
+    def test_these_are(self, studied, of_user):
+        given = line_at(studied)
+        assert like(asked_at(of_user), [given]) == (given,)
+
+    @pytest.mark.parametrize(
+        ("studied", "of_user"),
+        [
+            # 0.05, 0.06 and 0.16 to 0.1; 0.76 to 0.5
+            ("floor=0.9", "floor=0.95"),
+            ("floor=0.9", "floor=0.94"),
+            ("floor=0.9", "floor=0.84"),
+            ("floor=0.5", "floor=0.24"),
+            ("miss=5,alarm=1", "miss=7.6"),
+            ("miss=5,alarm=1", "miss=10,alarm=3.1"),
+            ("miss=5,alarm=1", "miss=1,alarm=5"),
+            # 5 x 0.61/0.39 = 7.8, 5 x 0.39/0.61 = 3.2, 5 x 0.62/0.38 = 8.2
+            ("miss=5,alarm=1", "miss=5,share=0.61"),
+            ("miss=5,alarm=1", "miss=5,share=0.39"),
+            ("miss=5,alarm=1", "miss=5,share=0.5-0.74"),
+            ("miss=5,alarm=1,share=0.2", "miss=5"),
+            # found in another way
+            ("floor=0.9", "miss=5"),
+            ("miss=5,alarm=1", "floor=0.9"),
+            # fixed ones are like nothing, not even each other
+            ("floor=0.9", "at=0.5,set_on=2026-01-15"),
+            ("miss=5,alarm=1", "at=0.5"),
+            ("at=0.5", "at=0.5"),
+        ],
+    )
+    def test_these_are_not(self, studied, of_user):
+        assert like(asked_at(of_user), [line_at(studied)]) == ()
+
+    def test_without_a_rule_only_lines_without_one(self):
+        known = [line(estimator=AT_CUT_OFF), line_at("floor=0.9"), line_at("miss=5,alarm=1")]
+        assert like(asked(estimator=AT_CUT_OFF), known) == (known[0],)
+        assert like(asked_at("floor=0.9"), known) == (known[1],)
+        assert like(asked_at("miss=5"), known) == (known[2],)
+        assert like(asked_at("at=0.5"), known) == ()
+
+    @pytest.mark.parametrize(
+        ("called", "alike"), [(19, False), (20, True), (30, True), (45, True), (46, False)]
+    )
+    def test_the_called_class_is_as_large_as_the_smallest_that_was_studied(self, called, alike):
+        # three halves of 30 either way, whatever the smallest class of the user's table
+        for rule in ("floor=0.9", f"miss={5 * (90 - called) / called}"):  # 5 in all
+            given = asked_at(rule, called=called, n=90, cases=90)
+            studied = line_at("floor=0.9" if rule.startswith("floor") else "miss=5,alarm=1")
+            assert like(given, [studied]) == ((studied,) if alike else ())
+
+    @pytest.mark.parametrize(
+        ("called", "alike"), [(23, False), (25, True), (35, True), (37, False)]
+    )
+    def test_unstated_shares_are_those_of_the_table(self, called, alike):
+        # 5 x 23/37 = 3.1, 5 x 25/35 = 3.6, 5 x 35/25 = 7, 5 x 37/23 = 8.0
+        given, studied = asked_at("miss=5", called=called), line_at("miss=5,alarm=1")
+        assert like(given, [studied]) == ((studied,) if alike else ())
+
+    @pytest.mark.parametrize(
+        ("miss", "alike"), [(1.6, False), (1.7, True), (3.7, True), (3.8, False)]
+    )
+    def test_of_the_study_too(self, miss, alike):
+        # 5 x (20/60)/(40/60) = 2.5
+        studied = line_at("miss=5,alarm=1", smallest_class=20)
+        assert like(asked_at(f"miss={miss}"), [studied]) == ((studied,) if alike else ())
+
+    @pytest.mark.parametrize(("lower", "higher"), [(2, 3), (5, 7.5)])
+    def test_three_halves_are_alike_whatever_the_share(self, lower, higher):
+        # costs three halves apart at one share, which is no binary fraction
+        for of_class in range(6, 55):
+            size = {"smallest_class": of_class}
+            studied = line_at(f"miss={lower},alarm=1", **size)
+            given = asked_at(f"miss={higher}", called=of_class, **size)
+            assert like(given, [studied]) == (studied,), of_class
+
+    def test_auc_knows_no_cut_off(self):
+        auc = {"measure": "auc", "estimator": "mean_of_rounds_alone"}
+        known = [line(**auc), line_at("floor=0.9", **auc)]
+        for given in (
+            asked(**auc),
+            *(asked_at(rule, **auc) for rule in ("floor=0.9", "miss=5", "at=0.5")),
+            asked_at("floor=0.9", called=2, **auc),
+        ):
+            assert like(given, known) == (known[0],)
+
+
 class TestShort:
     @pytest.mark.parametrize(
         ("estimator", "coverage", "error", "short"),
@@ -155,167 +274,21 @@ class TestShort:
         assert given.short is short
 
 
-@pytest.fixture(scope="module")
-def evaluation() -> Evaluation:
-    """Thirty cases of each class under the recommended schemes, all rounds."""
-    rng = np.random.default_rng(1)
-    labels = [0] * 30 + [1] * 30
-    table = table_of(labels, features=rng.normal(size=(60, 5)) + np.array(labels)[:, None])
-    candidates = (choose(CANDIDATES, "lda"), choose(CANDIDATES, "naive_bayes"))
-    plan = Plan(table.roles, recommended_schemes(table), candidates, measure="accuracy")
-    return carried_out(table, plan)[0]
-
-
-def planned(evaluation: Evaluation, **changes) -> Evaluation:
-    return dataclasses.replace(evaluation, plan=dataclasses.replace(evaluation.plan, **changes))
-
-
-class TestHeadline:
-    def test_of_the_recommended_plan(self, evaluation):
-        assert headline(evaluation) == asked()
-
-    def test_is_about_the_candidate_of_the_answer(self, evaluation):
-        given = headline(planned(evaluation, about="naive_bayes"))
-        assert given == asked(candidate=choose(CANDIDATES, "naive_bayes"))
-
-    def test_of_sensitivity_is_the_balanced_one(self, evaluation):
-        for measure in ("balanced_accuracy", "sensitivity"):
-            assert headline(planned(evaluation, measure=measure)).measure == "balanced_accuracy"
-
-    def test_of_auc_goes_by_the_schemes_that_bear_on_its_interval(self, evaluation):
-        auc = planned(evaluation, measure="auc")
-        assert headline(auc) == asked(measure="auc", estimator="mean_of_rounds")
-        alone = planned(auc, schemes=(CV,))
-        assert headline(alone) == asked(measure="auc", estimator="mean_of_rounds_alone")
-        fewer = choose(SCHEMES, "bootstrap", rounds=50)
-        assert headline(planned(auc, schemes=(CV, fewer))) is None
-        assert headline(planned(evaluation, schemes=(CV, fewer))) == asked()
-
-    def test_of_the_bootstrap_as_the_first_scheme(self, evaluation):
-        rounds = {"bootstrap": evaluation.rounds["bootstrap"]}
-        alone = planned(dataclasses.replace(evaluation, rounds=rounds), schemes=(BOOTSTRAP,))
-        assert headline(alone) == asked(scheme="bootstrap")
-
-    def test_counts_units(self):
-        labels = np.repeat([0, 1], 60)
-        table = table_of(labels.tolist(), units=np.arange(120) // 2)
-        lda = (choose(CANDIDATES, "lda"),)
-        plan = Plan(table.roles, (CV,), lda, measure="accuracy")
-        found = carried_out(table, plan)[0]
-        given = asked(counted_by="unit", cases=120, features=1)
-        assert headline(found) == given
-        assert headline(planned(found, answered_from="one")) == dataclasses.replace(
-            given, counted_by="case"
-        )
-
-    def test_nothing_of_the_kind_was_studied(self, evaluation):
-        assert headline(planned(evaluation, level=0.9)) is None
-        more = choose(SCHEMES, "cross_validation", repeats=21)
-        assert headline(planned(evaluation, schemes=(more, BOOTSTRAP))) is None
-
-
-def said(evaluation: Evaluation, *among: Line) -> str:
-    return sentence(evaluation, among).replace(NBSP, " ")
-
-
-class TestSentence:
-    def test_of_several_kinds_of_tables(self, evaluation):
-        others = [
-            line(n=40, smallest_class=20.5, coverage=0.971, scenario="sep", tables=1200),
-            line(coverage=0.2, candidate="qda"),
-        ]
-        assert said(evaluation, line(coverage=0.953), *others) == (
-            "In 2,200 simulated tables like this one in size (40 to 60 cases, about 20 to 30 in "
-            "the smallest class; 2 kinds of data), the 95 % interval of this candidate’s accuracy "
-            "held the true value in 95.3 % to 97.1 %; real tables may be otherwise."
-        )
-
-    def test_of_one_kind_and_with_tables_that_had_no_interval(self, evaluation):
-        given = line(measure="balanced_accuracy", tables=1000, without_interval=100)
-        assert said(planned(evaluation, measure="balanced_accuracy"), given) == (
-            "In 900 simulated tables like this one in size (60 cases, about 30 in the smallest "
-            "class; 1 kind of data), the 95 % interval of this candidate’s balanced accuracy held "
-            "the true value in 95.0 %, with none in 100 more; real tables may be otherwise."
-        )
-
-    def test_of_units(self):
-        given = [line(rows=6, n=20, smallest_class=9), line(rows=6, n=30, smallest_class=12)]
-        assert evidence.size_in_words(given).replace(NBSP, " ") == (
-            "20 to 30 units of 6 rows, about 9 to 12 in the smallest class; 1 kind of data"
-        )
-
-    def test_figures_at_a_learned_cut_off_were_not_studied(self, evaluation):
-        rule = CutOffRule("b", "floor", floor=0.8)
-        plan = dataclasses.replace(evaluation.plan, schemes=(CV,), cut_off=rule)
-        found = carried_out(evaluation.table, plan)[0]
-        assert headline(found) == asked(estimator="at_cut_off")
-        assert said(found, line()).startswith("No simulated table resembles this one (")
-        auc = planned(found, measure="auc")
-        assert headline(auc) == asked(measure="auc", estimator="mean_of_rounds_alone")
-
-    def test_where_nothing_is_alike(self, evaluation):
-        expected = (
-            "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
-            "cases, smallest class, features), so whether the interval keeps its word here is not "
-            "measured."
-        )
-        assert said(evaluation) == expected
-        assert said(evaluation, line(n=200)) == expected
-        assert said(planned(evaluation, level=0.9), line()) == expected
-        never = line(coverage=math.nan, without_interval=1000)
-        assert said(evaluation, never) == expected
-
-    def test_none_without_an_interval_or_while_rounds_are_missing(self, evaluation):
-        assert said(evaluation, line()) != ""
-        key = ("accuracy", "held_out_by_case")
-        bare = tuple(
-            dataclasses.replace(e, interval=None) if (e.measure, e.estimator) == key else e
-            for e in evaluation.estimates
-        )
-        assert said(dataclasses.replace(evaluation, estimates=bare), line()) == ""
-        more = evaluation.planned | {"cross_validation": 101}
-        assert said(dataclasses.replace(evaluation, planned=more), line()) == ""
-
-    def test_only_auc_waits_for_the_second_scheme(self, evaluation):
-        unfinished = dataclasses.replace(
-            evaluation, planned=evaluation.planned | {"bootstrap": 201}
-        )
-        assert said(unfinished, line()) != ""
-        assert said(planned(unfinished, measure="auc"), line()) == ""
-
-
-def test_the_summary_quotes_it_between_what_intervals_are_and_who_came_out_best(evaluation):
-    given = design(evaluation)
-    assert given[-2:] == (sentence(evaluation), best_sentence(evaluation))
-    assert given[-3].startswith("Intervals are two-sided")
-    missing = dataclasses.replace(
-        evaluation, planned=evaluation.planned | {"cross_validation": 101}
-    )
-    assert all(design(missing))
-
-
-class TestFallingShort:
-    def test_lines_alike_that_are_short(self, evaluation):
-        short = line(coverage=0.887, monte_carlo_error=0.01)
-        given = [line(), short, dataclasses.replace(short, n=200), line(coverage=0.92)]
-        assert falling_short(evaluation, given) == (short,)
-
-    def test_not_while_rounds_are_missing(self, evaluation):
-        more = evaluation.planned | {"cross_validation": 101}
-        unfinished = dataclasses.replace(evaluation, planned=more)
-        assert falling_short(unfinished, [line(coverage=0.8)]) == ()
-        assert len(falling_short(evaluation, [line(coverage=0.8)])) == 1
-
-
 class TestRead:
     HEADER = ",".join(field.name for field in dataclasses.fields(Line))
-    ROW = "units,20,unit,5,2,6,9.5,lda,default,verdict,,accuracy,0.9810,0.0043,nan,nan,nan,1000,3"
+    ROW = "units,20,unit,5,2,6,9.5,lda,,default,verdict,,accuracy,0.9810,0.0043,nan,nan,nan,1000,3"
 
     def test_values_are_typed(self):
         (found,) = read(f"{self.HEADER}\n{self.ROW}\n")
         assert (found.n, found.rows, found.smallest_class) == (20, 6, 9.5)
         assert (found.coverage, found.tables, found.interval) == (0.981, 1000, "")
         assert math.isnan(found.width)
+
+    def test_a_rule_of_two_costs_is_one_value(self):
+        (found,) = read(f"{self.HEADER}\n{self.ROW.replace('lda,', 'lda,"miss=5,alarm=1"', 1)}\n")
+        assert (found.candidate, found.cut_off) == ("lda", "miss=5,alarm=1")
+        (none,) = read(f"{self.HEADER}\n{self.ROW}\n")
+        assert none.cut_off == ""
 
     def test_columns_must_be_those(self):
         with pytest.raises(TypeError):
@@ -328,10 +301,27 @@ class TestPackaged:
     """Whatever the figures are: the file is whole and says what it should."""
 
     def test_every_scenario_and_every_figure_has_lines(self):
-        known = evidence.lines()
+        known = [x for x in evidence.lines() if not x.cut_off]
         assert {x.scenario for x in known} == set(MECHANISMS)
-        assert {(x.scheme, x.estimator, x.measure) for x in known} >= set(FIGURES)
+        by_the_highest_score = {figure for figure in FIGURES if figure[1] != AT_CUT_OFF}
+        given = {(x.scheme, x.estimator, x.measure) for x in known}
+        assert given >= by_the_highest_score
+        assert AT_CUT_OFF not in {by for _, by, _ in given}
         assert {x.estimator for x in known} >= {"verdict", "difference", "comparison"}
+
+    def test_every_rule_has_its_figures_and_its_verdicts(self):
+        wanted = {("default", by, m) for by in (AT_CUT_OFF, "verdict") for m in SHARES}
+        known = [x for x in evidence.lines() if x.cut_off]
+        for rule in {x.cut_off for x in known}:
+            given = {(x.scheme, x.estimator, x.measure) for x in known if x.cut_off == rule}
+            assert given == wanted
+
+    def test_rules_learn_the_cut_off_of_one_of_two_classes(self):
+        for x in evidence.lines():
+            if x.cut_off:
+                rule = CutOffRule.read(f"smallest class:{x.cut_off}")
+                assert rule.written() == f"smallest class:{x.cut_off}"
+                assert (rule.by in ("floor", "cost"), x.classes) == (True, 2)
 
     def test_shares_are_shares_and_tables_are_counted(self):
         for x in evidence.lines():
@@ -354,11 +344,13 @@ class TestPackaged:
 
     def test_each_figure_of_a_cell_stands_once(self):
         keys = [
-            (x.scenario, x.n, x.counted_by, x.candidate, x.scheme, x.estimator, x.measure)
+            (x.scenario, x.n, x.counted_by, x.candidate, x.cut_off)
+            + (x.scheme, x.estimator, x.measure)
             for x in evidence.lines()
         ]
         assert len(set(keys)) == len(keys)
 
     def test_candidates_that_figures_are_of_can_be_chosen(self):
-        told = {x.candidate for x in evidence.lines() if x.estimator == "held_out_by_case"}
+        figures = ("held_out_by_case", AT_CUT_OFF)
+        told = {x.candidate for x in evidence.lines() if x.estimator in figures}
         assert {choose_written(CANDIDATES, written).key for written in told} <= set(CANDIDATES)
