@@ -3,31 +3,28 @@
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from evalcore.answers import Answers, HeldOut, unit_means
 from evalcore.candidates import CANDIDATES
-from evalcore.cut_off import (
-    AtShare,
-    WithUndecided,
-    at_share,
-    calls,
-    learned,
-    learned_by_round,
-    with_undecided,
-)
+from evalcore.cut_off import WithUndecided, calls, learned, learned_by_round, with_undecided
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.estimated import default_interval, n_behind
 from evalcore.figures import CountedBy, Estimate, Interval
-from evalcore.judged import Judged
+from evalcore.judged import CutOffs, Judged
 from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
+from evalcore.share_in_use import AtShare, Rate, at_share
 from evalcore.table import Table
 
 ESTIMATOR = "at_cut_off"
+HALF = 0.5
+Unlike = Literal["", "not learned", "all", "none", "bags"]
+RATIO, SUM = "ratio_of_shares", "sum_of_shares"
 SPREAD = 0.9  # share of rounds between the ends of a cut-off's spread
 
 
@@ -51,6 +48,9 @@ class AtCutOff:
         At each end of the stated share in use, else at the table's share.
     undecided : WithUndecided or None
         None where nobody is left undecided, or scores are no probabilities.
+    unlike : {"", "not learned", "all", "none", "bags"}
+        Why no interval is offered, if none is: it could not be learned from all cases; it calls
+        all or none of them; or in most rounds every or no case is called, since bags are smaller.
     """
 
     part: Judged
@@ -60,6 +60,7 @@ class AtCutOff:
     learned_from: int
     at_shares: tuple[AtShare, ...]
     undecided: WithUndecided | None
+    unlike: Unlike
 
     @property
     def undefined(self) -> int:
@@ -105,6 +106,8 @@ def at_cut_off(
     k = table.classes.index(rule.of_class)
     positive = table.labels_by(way) == k
     share = rule.share_used(float(positive.mean()))
+    like: CutOffs = "none"
+    apart: Unlike = ""
     if rule.by == "fixed":
         cut_offs, on_all, behind = np.full(len(given.on_all[way]), rule.at), rule.at, 0
     elif given.inner is None or whole.inner is None:
@@ -112,10 +115,13 @@ def at_cut_off(
     else:
         inner = _counted(table, given.inner, way)
         cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
-        on_all = learned(positive, _counted(table, whole.inner, way)[0], rule=rule, share=share)
+        of_all = _counted(table, whole.inner, way)[0]
+        on_all = learned(positive, of_all, rule=rule, share=share)
         behind = _independent(judged, positive)
-    part = replace(judged, held=_answered(judged.held, cut_offs, k))
-    rates = [part.pooled_value("sensitivity", at) for at in (k, 1 - k)]
+        apart = why_unlike(cut_offs, on_all, of_all)
+        like = "unlike" if apart else "learned"
+    part = replace(judged, held=_answered(judged.held, cut_offs, k), cut_offs=like)
+    rates = [_rate(plan, part, at) for at in (k, 1 - k)]
     shares = dict.fromkeys((rule.share_low or share, rule.share_high or share))
     return AtCutOff(
         part,
@@ -125,7 +131,33 @@ def at_cut_off(
         behind,
         tuple(at_share(rates[0], rates[1], rule=rule, share=each) for each in shares),
         _undecided(plan, judged, part, rule=rule, cut_offs=cut_offs),
+        apart,
     )
+
+
+def why_unlike(cut_offs: Floats, on_all: float, of_all: Floats) -> Unlike:
+    """Why held-out figures say little about the cut-off that goes to work; empty if they do not.
+
+    Parameters
+    ----------
+    cut_offs : ndarray, shape (R,)
+    on_all : float
+    of_all : ndarray, shape (n,)
+        The inner scores that it was learned from.
+    """
+    if math.isnan(on_all):
+        return "not learned"
+    called = calls(of_all[~np.isnan(of_all)], on_all)
+    if called.all() or not called.any():
+        return "all" if called.all() else "none"
+    known = cut_offs[~np.isnan(cut_offs)]
+    return "bags" if np.isinf(known).sum() > HALF * len(known) else ""
+
+
+def _rate(plan: Plan, part: Judged, k: int) -> Rate:
+    bounds = default_interval(plan, part, "sensitivity", k)
+    value = part.pooled_value("sensitivity", k)
+    return Rate(value, bounds.low, bounds.high) if bounds else Rate(value)
 
 
 def _independent(judged: Judged, positive: NDArray[np.bool_]) -> int:
@@ -216,15 +248,16 @@ def cut_off_estimates(table: Table, plan: Plan, found: AtCutOff) -> Iterator[Est
     other = table.classes[1 - table.classes.index(found.rule.of_class)]
     for at in found.at_shares:
         where = f"{ESTIMATOR}_share_{at.share:.6g}"
-        values = (
-            ("precision", found.rule.of_class, at.right_when_called),
-            ("precision", other, at.right_when_not_called),
-            ("share_called", found.rule.of_class, at.called),
-            ("cost_per_case", "", at.cost),
-        )
-        for measure, name, value in values:
-            if measure != "cost_per_case" or found.rule.by == "cost":
-                yield figure(measure, value, of_class=name, estimator=where)
+        yield figure("share_called", at.called, of_class=found.rule.of_class, estimator=where)
+        for measure, name, rate, method in (
+            ("precision", found.rule.of_class, at.right_when_called, RATIO),
+            ("precision", other, at.right_when_not_called, RATIO),
+            ("cost_per_case", "", at.cost, SUM),
+        ):
+            if measure == "cost_per_case" and found.rule.by != "cost":
+                continue
+            bounds = Interval(rate.low, rate.high, plan.level, method) if rate.bounded else None
+            yield figure(measure, rate.value, of_class=name, interval=bounds, estimator=where)
     if found.undecided:
         yield figure("share_undecided", found.undecided.sent)
         for which in ("right_of_decided", "right_counting_undecided_wrong"):

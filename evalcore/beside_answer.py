@@ -4,7 +4,7 @@ import math
 from collections.abc import Iterator
 
 from evalcore.answer import measure_name
-from evalcore.at_cut_off import AtCutOff
+from evalcore.at_cut_off import RATIO, AtCutOff
 from evalcore.beside import Curve
 from evalcore.chance_check import ChanceCheck, majority_of
 from evalcore.estimated import n_behind
@@ -15,7 +15,9 @@ from evalcore.judged import share_interval
 from evalcore.measures import ALL_MEASURES
 from evalcore.permuted import dealt_among, kept_together
 from evalcore.picked import Picked
+from evalcore.share_in_use import Rate
 from evalcore.wording import (
+    DASH,
     NBSP,
     Noun,
     capitalised,
@@ -165,17 +167,23 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
     """What the answers are worth at the shares of the class in use."""
     noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)
     name, stated = class_name(found.rule.of_class), bool(found.rule.share_low)
+
+    def rate(of: Rate) -> str:
+        return with_interval(of.value, Interval(of.low, of.high, evaluation.plan.level, RATIO), n)
+
     for at in found.at_shares:
         # a share that was stated is repeated as it was, not rounded by the size of the table
         share = level(at.share) if stated else percent(at.share, n)
         said = [f"{percent(at.called, n)} are called {name}"]
-        if not math.isnan(at.right_when_called):
-            said.append(f", rightly in {percent(at.right_when_called, n)}")
-        if not math.isnan(at.right_when_not_called):
-            right = percent(at.right_when_not_called, n)
-            said.append(f"; of those not called {right} are not {name}")
+        if not math.isnan(at.right_when_called.value):
+            said.append(f", rightly in {rate(at.right_when_called)}")
+        if not math.isnan(at.right_when_not_called.value):
+            said.append(f"; of those not called {rate(at.right_when_not_called)} are not {name}")
         if found.rule.by == "cost":
-            said.append(f"; the expected cost is {decimal(at.cost, 3)} a {noun.singular}")
+            cost = decimal(at.cost.value, 3)
+            if at.cost.bounded:
+                cost += f" ({decimal(at.cost.low, 3)}{DASH}{decimal(at.cost.high, 3)})"
+            said.append(f"; the expected cost is {cost} a {noun.singular}")
         yield (
             f"Where {share} of {noun.plural} are {name}"
             f"{'' if stated else ', the share of this table'}: {''.join(said)}."

@@ -1,4 +1,4 @@
-"""Doubts about what was learned or checked beside the estimates: cut-off, settings, chance."""
+"""Doubts about what was learned or checked beside the estimates: settings, chance, curve."""
 
 import math
 from collections.abc import Iterator
@@ -6,171 +6,29 @@ from collections.abc import Iterator
 import numpy as np
 
 from evalcore.answer import measure_name
-from evalcore.beside_answer import P_DIGITS, place
+from evalcore.beside_answer import P_DIGITS
 from evalcore.candidates import CANDIDATES
-from evalcore.cut_off import least_units
-from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.groups import noun_of
-from evalcore.judged import share_interval
 from evalcore.permuted import arrangements, dealt_among, kept_together
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
     NBSP,
     capitalised,
-    class_name,
     count,
     decimal,
     level,
-    n_equals,
     percent,
     quoted,
-    reading,
     tenths,
-    with_interval,
 )
 
 SURE = 0.05  # p above which a figure is not told from chance
 OFF_CHANCE = 0.05  # points that permuted labels may be off what guessing gives
 HALF = 0.5
 BY_COLUMN = {"leave_block_out": "leaves out each entry of", "forward_in_time": "goes by"}
-
-
-def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """A fixed cut-off that was not set before these cases were seen."""
-    if evaluation is None or plan.cut_off is None or not plan.cut_off.chosen_on_these_cases:
-        return
-    yield Finding(
-        "cut_off_chosen_here",
-        "grave" if plan.limits else "moderate",
-        plan.cut_off.of_class,
-        f"The cut-off {reading(plan.cut_off.at)} was chosen on these cases",
-        "It was fixed without a date on which it was set, so it counts as picked by eye on the "
-        "cases it is judged on (dates stated: 0; threshold: 1). Its figures flatter it, and no "
-        "limit is called shown with it.",
-        "Let each round learn it (by costs or by a floor), or state when it was set if that was "
-        "before these cases were seen.",
-        0,
-        1,
-        "common_practice",
-    )
-
-
-def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """A cut-off that calls every case its class, so that nothing is told apart."""
-    if evaluation is None or plan.cut_off is None:
-        return
-    found = evaluation.at_cut_off(evaluation.about)
-    if found is None or not len(found.part.held.labels):
-        return
-    rule, k = plan.cut_off, table.classes.index(plan.cut_off.of_class)
-    called = found.part.held.confusion[:, :, k].sum(axis=1)
-    every = called == found.part.held.rounds.test_sizes
-    share = float(every.mean()) if len(every) else 0.0
-    if share <= HALF:
-        return
-    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
-    yield Finding(
-        "cut_off_calls_all",
-        "grave",
-        rule.of_class,
-        f"In {percent(share, len(every))} of rounds every {noun.singular} is called {name}",
-        f"So held-out figures are those of a constant answer there ({count(int(every.sum()))} of "
-        f"{count(len(every))} rounds; threshold: {level(HALF)}).",
-        f"Take other costs or a lower floor, or add {name} {noun.plural}: a cut-off that is "
-        "learned needs scores that tell the classes apart, and a floor enough of its class in "
-        "every bag.",
-        share,
-        HALF,
-        "common_practice",
-    )
-
-
-def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Too few independent units of a class to learn a floor."""
-    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
-        return
-    rule, needed = plan.cut_off, least_units(plan.cut_off.floor)
-    found = evaluation.at_cut_off(evaluation.about)
-    if found is None or found.learned_from >= needed:
-        return
-    name, noun = class_name(rule.of_class), table.noun_for(evaluation.counted_by)
-    what = noun.plural if found.part.units is None else f"independent {table.noun.plural}"
-    yield Finding(
-        "floor_from_few",
-        "grave",
-        rule.of_class,
-        f"{capitalised(count(found.learned_from))} {name} {what} cannot teach a floor of "
-        f"{level(rule.floor)}",
-        f"A cut-off that finds {level(rule.floor)} of further {what} of a class takes at least "
-        f"{needed} of them; there are {found.learned_from} (threshold: {needed}).",
-        f"Take a lower floor, or add {name} {table.noun.plural}.",
-        found.learned_from,
-        needed,
-        "wilks1941",
-    )
-
-
-def floor_not_delivered(
-    table: Table, plan: Plan, evaluation: Evaluation | None
-) -> Iterator[Finding]:
-    """The floor that was asked for is not reached on held-out cases."""
-    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
-        return
-    found = evaluation.at_cut_off(evaluation.about)
-    if found is None:
-        return
-    k = table.classes.index(plan.cut_off.of_class)
-    value, floor = found.part.pooled_value("sensitivity", k), plan.cut_off.floor
-    if math.isnan(value) or value >= floor:
-        return
-    bounds, n = share_interval(plan.level, found.part, k), n_behind(found.part, k)
-    named = f"{class_name(plan.cut_off.of_class)} {table.noun_for(evaluation.counted_by).plural}"
-    where = "lies above" if bounds.high < floor else "is within"
-    yield Finding(
-        "floor_not_delivered",
-        "grave" if bounds.high < floor else "moderate",
-        plan.cut_off.of_class,
-        # in points, for a share just short of the floor would be rounded up to it
-        f"The cut-off for at least {level(floor)} of {named} finds {tenths(floor - value)} less "
-        "while they are held out",
-        f"Learned inside each bag, it finds {with_interval(value, bounds, n)}, {n_equals(n)}; the "
-        f"threshold is the floor, {level(floor)}"
-        f"{f', which {where} the interval' if bounds.defined else ''}.",
-        "Ask for a higher floor than the one needed, or add cases of the class: scores of inner "
-        "models, fitted to four fifths of a bag, are not quite those of the model itself.",
-        value,
-        floor,
-        "vovk2005",
-    )
-
-
-def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """The cut-off that goes to work lies outside those that were judged."""
-    if evaluation is None or plan.cut_off is None or plan.cut_off.by == "fixed":
-        return
-    found = evaluation.at_cut_off(evaluation.about)
-    if found is None or math.isnan(found.on_all) or not found.spread.defined:
-        return
-    low, high = found.spread.low, found.spread.high
-    if low <= found.on_all <= high:
-        return
-    yield Finding(
-        "cut_off_apart",
-        "moderate",
-        plan.cut_off.of_class,
-        f"The cut-off that goes to work, {place(found.on_all)}, lies apart from those that were "
-        "judged",
-        f"Learned from all cases it is {place(found.on_all)}; in {level(found.spread.level)} of "
-        f"rounds it fell between {place(low)} and {place(high)} (threshold: these ends). Held-out "
-        "figures are those of the rounds’ cut-offs.",
-        "Expect other rates than those reported: more cases of the class make cut-offs steadier.",
-        found.on_all,
-        high if found.on_all > high else low,
-        "common_practice",
-    )
 
 
 def settings_unsteady(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from evalcore.cut_off_rule import CutOffRule, check_floor
-from evalcore.decisions import mid_point, predictive_values, within
+from evalcore.decisions import mid_point, within
 from evalcore.errors import EvalError
 from evalcore.shares import Floats, by_group, group_means, group_sums
 
@@ -172,52 +172,6 @@ def calls(scores: ArrayLike, cut_offs: ArrayLike) -> Floats:
     """
     score, cut_off = np.asarray(scores, dtype=np.float64), np.asarray(cut_offs, dtype=np.float64)
     return np.where(np.isnan(score) | np.isnan(cut_off), np.nan, score >= cut_off)
-
-
-@dataclass(frozen=True)
-class AtShare:
-    """What a cut-off gives where the class has a share.
-
-    Attributes
-    ----------
-    share : float
-    right_when_called, right_when_not_called : float
-        Positive and negative predictive value; nan where that answer never comes.
-    cost : float
-        Expected cost of a case; the share wrong where no costs were stated.
-    called : float
-        Share of all cases that is called the class.
-    """
-
-    share: float
-    right_when_called: float
-    right_when_not_called: float
-    cost: float
-    called: float
-
-
-def at_share(sensitivity: float, specificity: float, *, rule: CutOffRule, share: float) -> AtShare:
-    """Predictive values, cost and calls of a sensitivity and specificity at a share.
-
-    Called: share x sensitivity + (1 - share)(1 - specificity). nan where a rate is nan; raises
-    `EvalError` unless the share lies within 0 to 1.
-
-    Examples
-    --------
-    >>> found = at_share(0.75, 0.5, rule=CutOffRule("failing", "cost", miss=9), share=0.25)
-    >>> round(found.right_when_called, 4), round(found.right_when_not_called, 4)
-    (0.3333, 0.8571)
-    >>> found.cost, found.called
-    (0.9375, 0.5625)
-    """
-    called_right, left_right = predictive_values(sensitivity, specificity, share=share)
-    return AtShare(
-        share=share,
-        right_when_called=float(called_right),
-        right_when_not_called=float(left_right),
-        cost=float(cost_per_case(sensitivity, specificity, rule=rule, share=share)),
-        called=share * sensitivity + (1 - share) * (1 - specificity),
-    )
 
 
 @dataclass(frozen=True)

@@ -4,6 +4,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from evalcore import checks_candidates as candidates
+from evalcore import checks_cut_off as at_cut_off
 from evalcore import checks_evidence as of_evidence
 from evalcore import checks_learned as learned
 from evalcore import checks_rounds as rounds
@@ -77,12 +78,13 @@ CHECKS: dict[str, Check] = {
         Check("missing_values", "gaps in the table", of_table.missing_values),
         Check("share_of_classes", "the mix of classes is assumed", rounds.share_of_classes),
         Check(
-            "cut_off_chosen_here", "a cut-off chosen on these cases", learned.cut_off_chosen_here
+            "cut_off_chosen_here", "a cut-off chosen on these cases", at_cut_off.cut_off_chosen_here
         ),
-        Check("cut_off_calls_all", "a cut-off calls everything", learned.cut_off_calls_all),
-        Check("floor_from_few", "too few units for a floor", learned.floor_from_few),
-        Check("cut_off_apart", "the cut-off in use was not judged", learned.cut_off_apart),
-        Check("floor_not_delivered", "a floor is not delivered", learned.floor_not_delivered),
+        Check("cut_off_calls_all", "a cut-off calls everything", at_cut_off.cut_off_calls_all),
+        Check("floor_from_few", "too few units for a floor", at_cut_off.floor_from_few),
+        Check("cut_off_apart", "the cut-off in use lies apart", at_cut_off.cut_off_apart),
+        Check("cut_off_not_judged", "a cut-off that was not judged", at_cut_off.cut_off_not_judged),
+        Check("floor_not_delivered", "a floor is not delivered", at_cut_off.floor_not_delivered),
         Check("not_told_from_chance", "chance does as well", learned.not_told_from_chance),
         Check("few_arrangements", "few ways to deal the labels", learned.few_arrangements),
         Check(

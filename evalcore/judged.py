@@ -4,6 +4,7 @@ import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,6 +16,8 @@ from evalcore.measures import ALL_MEASURES, Floats
 from evalcore.plan import Plan
 from evalcore.schemes import ALL_SCHEMES, LEAST_BLOCKS
 from evalcore.table import Table
+
+CutOffs = Literal["none", "learned", "unlike"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -38,6 +41,9 @@ class Judged:
     second_looks : tuple of Judged
         The same candidate counted the same way under the other schemes: what this scheme's rounds
         cannot tell of the model's variance is taken from them.
+    cut_offs : {"none", "learned", "unlike"}
+        Whether each round answered at a cut-off learned inside its bag; "unlike" if those say
+        little about the one that goes to work, and then no interval is offered.
     """
 
     scheme: str
@@ -49,6 +55,7 @@ class Judged:
     whole: Reduced
     units: NDArray[np.intp] | None
     second_looks: "tuple[Judged, ...]" = ()
+    cut_offs: CutOffs = "none"
 
     def held_values(self, measure: str, of_class: int = 0) -> Floats:
         """A measure within each round's held-out cases, shape (R,)."""
@@ -215,7 +222,9 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
 
 
 def offers_interval(part: Judged) -> bool:
-    """Whether there are enough blocks, where cases come in blocks, to tell their variance."""
+    """Whether cut-offs are like the one in use, and blocks, if any, are enough to tell anything."""
+    if part.cut_offs == "unlike":
+        return False
     return part.units is None or part.blocks >= LEAST_BLOCKS
 
 
@@ -243,7 +252,7 @@ def share_interval(
     chosen = ~np.isnan(part.shares)
     if of_class is not None:
         chosen &= part.held.labels == of_class
-    if not chosen.any():
+    if not chosen.any() or part.cut_offs == "unlike":
         return Interval(math.nan, math.nan, level, "wilson")
     tau2 = math.nan
     if variance:
@@ -259,7 +268,18 @@ def share_interval(
         return intervals.rows_of_units(
             shares, part.units[chosen], tau2, level=level, cluster=within
         )
-    return intervals.with_model_variance(float(shares.mean()), len(shares), tau2, level=level)
+    return at_rate(
+        part, float(shares.mean()), len(shares), tau2=tau2, level=level, of_class=of_class
+    )
+
+
+def at_rate(
+    part: Judged, rate: float, n: int, *, tau2: float, level: float, of_class: int | None
+) -> Interval:
+    """The interval of independent cases at a rate: exact for a class at learned cut-offs."""
+    if part.cut_offs == "learned" and of_class is not None:
+        return intervals.exact_with_model_variance(rate, n, tau2, level=level)
+    return intervals.with_model_variance(rate, n, tau2, level=level)
 
 
 def balanced_interval(level: float, part: Judged) -> Interval:

@@ -8,8 +8,7 @@ import numpy as np
 
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
-from evalcore.intervals import with_model_variance
-from evalcore.judged import Judged, balanced_interval, offers_interval, share_interval
+from evalcore.judged import Judged, at_rate, balanced_interval, offers_interval, share_interval
 from evalcore.limit import Limit
 from evalcore.sample_size import LEAST_UNITS, lower_bound, upper_bound
 from evalcore.table import Table
@@ -153,7 +152,8 @@ def _bounds(level: float, part: Judged, of_class: int | None, rate: float) -> In
     if part.units is not None:
         return Interval(max(0.0, own.low - (value - rate)), own.high, level, own.method)
     tau2 = part.cautious_tau2(of_class)
-    return with_model_variance(rate, int((~np.isnan(shares)).sum()), tau2, level=level)
+    n = int((~np.isnan(shares)).sum())
+    return at_rate(part, rate, n, tau2=tau2, level=level, of_class=of_class)
 
 
 def _units_behind(part: Judged, of_class: int | None) -> int:

@@ -18,14 +18,12 @@ import sys
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import replace
 
-import numpy as np
-
 from evalcore import measures
 from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
-from evalcore.candidates import CANDIDATES, estimator
-from evalcore.choice import Choice, choose_written
+from evalcore.at_cut_off import RATIO, SUM
+from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose_written
 from evalcore.comparison import PRACTICAL
-from evalcore.cut_off import calls
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import CountedBy, Interval
@@ -38,11 +36,21 @@ from evalcore.together import ESTIMATOR as WINNER
 from evalcore.verdict import verdicts_in_use
 from tests.core.checks import carried_out, table_of
 from tests.studies.cells import CELLS, Cell
-from tests.studies.mechanisms import MECHANISMS, SEED, Cases, further_cases
+from tests.studies.mechanisms import MECHANISMS, SEED, further_cases
+from tests.studies.truth import (
+    called,
+    columns,
+    final_choice,
+    fitted_scores,
+    true_in_use,
+    true_values,
+)
 
 Row = dict[str, object]
 MEASURES = ("accuracy", "balanced_accuracy", "sensitivity", "auc")
 SHARES = MEASURES[:3]  # measures that limits go on
+# at the table's share: how often right when the class is called, and when not; expected cost
+IN_USE = ("right_when_called", "right_when_not_called", "cost")
 BEST = "best of all"  # the row of whoever came out best
 
 
@@ -52,14 +60,14 @@ BY_SCHEME = (*((HELD, measure) for measure in SHARES), (MEAN, "auc"), (ALONE, "a
 FIGURES = (  # scheme, estimator, measure; the default scheme is what the table is recommended
     *(("default", *figure) for figure in BY_SCHEME),
     *(("bootstrap", *figure) for figure in (*BY_SCHEME, (SWITCH, "accuracy"))),
-    *(("default", AT_CUT_OFF, measure) for measure in SHARES),
+    *(("default", AT_CUT_OFF, measure) for measure in (*SHARES, *IN_USE)),
 )
 PARTS = ("value", "low", "high", "method")
 KEYS = ("scenario", "n", "candidate", "cut_off", "counted_by", "table")
 COLUMNS = (
     *KEYS,
     "smallest_class",
-    *(f"true/{measure}" for measure in MEASURES),
+    *(f"true/{measure}" for measure in (*MEASURES, *IN_USE)),
     *(f"{'/'.join(figure)}/{part}" for figure in FIGURES for part in PARTS),
     *(f"at_least/{measure}" for measure in SHARES),
     *(f"difference/{part}" for part in ("true", "value", "low", "high", "call", "false")),
@@ -111,77 +119,13 @@ def judge(cell: Cell, number: int) -> list[Row]:
         for name, written in zip(found.candidates, cell.candidates, strict=True):
             keys = (cell.scenario, cell.n, written, cell.cut_off, way, number)
             row: Row = dict(zip(KEYS, keys, strict=True))
-            row |= {"smallest_class": size} | _true_columns(truth[name], of_class)
+            row |= {"smallest_class": size} | columns(truth[name], of_class)
             row |= judged_values(counted, name, table.classes[of_class])
+            row |= _in_use(counted, name, truth[name])
             row |= _bounds(_alone(counted), name)
             rows.append(row | _difference(counted, name, truth))
         rows += _best(cell, counted, truth, rows[-1], of_class=of_class)
     return rows
-
-
-def final_choice(found: Evaluation, name: str) -> Choice:
-    """A candidate with the settings of its final model: those picked on all cases, if tuned."""
-    choice = found.plan.candidate(name)
-    for settings in found.beside.picked:
-        if settings.candidate == name:
-            return choice.options[settings.on_all]
-    return choice
-
-
-def fitted_scores(
-    table: Table, choice: Choice, further: Cases, *, random_state: int
-) -> measures.Floats:
-    """What the model fitted on a table answers for further cases, by the plain pipeline."""
-    model = estimator(CANDIDATES[choice.key], choice.values(), table, random_state)
-    model.fit(table.features, table.labels)
-    answer = getattr(model, "predict_proba", None) or model.decision_function
-    scores: measures.Floats = answer(further.features)
-    return scores if scores.ndim == 2 else np.column_stack([-scores, scores])
-
-
-def called(found: Evaluation, name: str) -> tuple[int, float] | None:
-    """The class that is called and the cut-off it goes to work with, where one was asked for."""
-    at = found.at_cut_off(name)
-    return (found.table.classes.index(at.rule.of_class), at.on_all) if at else None
-
-
-def true_values(
-    scenario: str,
-    further: Cases,
-    scores: measures.Floats,
-    *,
-    counted_by: CountedBy,
-    called: tuple[int, float] | None = None,
-) -> dict[str, measures.Floats]:
-    """Accuracy, balanced accuracy, sensitivity of each class and AUC, on further cases or units.
-
-    Answered by the highest score, or from a cut-off of one of two classes.
-    """
-    labels = further.labels
-    if counted_by == "unit":
-        rows = MECHANISMS[scenario].rows
-        labels, scores = labels[::rows], scores.reshape(-1, rows, scores.shape[1]).mean(axis=1)
-    named = measures.predicted_class(scores)
-    if called:
-        of_class, cut_off = called
-        named = np.where(calls(scores[:, of_class], cut_off), of_class, 1 - of_class)
-    counts = measures.confusion(labels, named, n_classes=scores.shape[1])
-    values = {
-        "accuracy": measures.accuracy(counts)[0],
-        "balanced_accuracy": measures.balanced_accuracy(counts)[0],
-        "sensitivity": measures.recalls(counts)[0],
-        "auc": measures.hand_till(labels, scores)[0],
-    }
-    if scenario == "noise":  # known without measuring
-        values |= dict.fromkeys(("accuracy", "balanced_accuracy", "auc"), np.float64(0.5))
-    return values
-
-
-def _true_columns(truth: Mapping[str, measures.Floats], of_class: int) -> Row:
-    return {
-        f"true/{measure}": float(np.atleast_1d(value)[of_class if value.ndim else 0])
-        for measure, value in truth.items()
-    }
 
 
 def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
@@ -192,7 +136,10 @@ def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
     row: Row = {}
     for scheme, by, measure in FIGURES:
         scheme_name = found.scheme if scheme == "default" else scheme
-        if scheme_name not in found.rounds or (by == AT_CUT_OFF) != (found.in_use == AT_CUT_OFF):
+        at_cut_off = by == AT_CUT_OFF
+        if scheme_name not in found.rounds or at_cut_off != (found.in_use == AT_CUT_OFF):
+            continue
+        if measure in IN_USE:
             continue
         estimate = found.estimate(
             measure,
@@ -206,6 +153,18 @@ def judged_values(found: Evaluation, name: str, of_class: str) -> Row:
             part = replace(found.part(name, scheme_name), second_looks=())
             interval = auc_interval(found.plan.level, part, estimate.value)
         row |= _parts(f"{scheme}/{by}/{measure}", estimate.value, interval)
+    return row
+
+
+def _in_use(found: Evaluation, name: str, truth: Mapping[str, measures.Floats]) -> Row:
+    """What a cut-off is worth at the table's share, and truly."""
+    at, row = found.at_cut_off(name), Row()
+    for measure in IN_USE if at else ():
+        rate = getattr(at.at_shares[0], measure)
+        row[f"true/{measure}"] = getattr(true_in_use(found, name, truth), measure).value
+        method = SUM if measure == "cost" else RATIO
+        bounds = Interval(rate.low, rate.high, found.plan.level, method) if rate.bounded else None
+        row |= _parts(f"default/{AT_CUT_OFF}/{measure}", rate.value, bounds)
     return row
 
 
@@ -268,7 +227,7 @@ def _best(
         return
     row: Row = {key: like[key] for key in (*KEYS, "smallest_class")}
     row |= {"candidate": f"{BEST} {len(cell.candidates)}"}
-    row |= _true_columns(truth[best.candidate], of_class)
+    row |= columns(truth[best.candidate], of_class)
     for measure in SHARES:
         name = found.table.classes[of_class] if measure == "sensitivity" else ""
         corrected = found.corrected(measure, name)

@@ -1,0 +1,207 @@
+"""Doubts about a cut-off: how it was set, what it was learned from, whether it was judged."""
+
+import math
+from collections.abc import Iterator
+
+import numpy as np
+
+from evalcore.at_cut_off import AtCutOff
+from evalcore.beside_answer import place
+from evalcore.cut_off import least_units
+from evalcore.estimated import n_behind
+from evalcore.evaluation import Evaluation
+from evalcore.figures import Finding
+from evalcore.judged import share_interval
+from evalcore.plan import Plan
+from evalcore.table import Table
+from evalcore.wording import (
+    Noun,
+    capitalised,
+    class_name,
+    count,
+    level,
+    n_equals,
+    percent,
+    reading,
+    tenths,
+    with_interval,
+)
+
+HALF = 0.5
+
+
+def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """A fixed cut-off that was not set before these cases were seen."""
+    if evaluation is None or plan.cut_off is None or not plan.cut_off.chosen_on_these_cases:
+        return
+    yield Finding(
+        "cut_off_chosen_here",
+        "grave" if plan.limits else "moderate",
+        plan.cut_off.of_class,
+        f"The cut-off {reading(plan.cut_off.at)} was chosen on these cases",
+        "It was fixed without a date on which it was set, so it counts as picked by eye on the "
+        "cases it is judged on (dates stated: 0; threshold: 1). Its figures flatter it, and no "
+        "limit is called shown with it.",
+        "Let each round learn it (by costs or by a floor), or state when it was set if that was "
+        "before these cases were seen.",
+        0,
+        1,
+        "common_practice",
+    )
+
+
+def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """A cut-off that calls every case its class, so that nothing is told apart."""
+    if evaluation is None or plan.cut_off is None:
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or not len(found.part.held.labels):
+        return
+    rule, k = plan.cut_off, table.classes.index(plan.cut_off.of_class)
+    called = found.part.held.confusion[:, :, k].sum(axis=1)
+    every = called == found.part.held.rounds.test_sizes
+    share = float(every.mean()) if len(every) else 0.0
+    if share <= HALF:
+        return
+    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
+    yield Finding(
+        "cut_off_calls_all",
+        "grave",
+        rule.of_class,
+        f"In {percent(share, len(every))} of rounds every {noun.singular} is called {name}",
+        f"So held-out figures are those of a constant answer there ({count(int(every.sum()))} of "
+        f"{count(len(every))} rounds; threshold: {level(HALF)}).",
+        f"Take other costs or a lower floor, or add {name} {noun.plural}: a cut-off that is "
+        "learned needs scores that tell the classes apart, and a floor enough of its class in "
+        "every bag.",
+        share,
+        HALF,
+        "common_practice",
+    )
+
+
+def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Too few independent units of a class to learn a floor."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
+        return
+    rule, needed = plan.cut_off, least_units(plan.cut_off.floor)
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or found.learned_from >= needed:
+        return
+    name, noun = class_name(rule.of_class), table.noun_for(evaluation.counted_by)
+    what = noun.plural if found.part.units is None else f"independent {table.noun.plural}"
+    yield Finding(
+        "floor_from_few",
+        "grave",
+        rule.of_class,
+        f"{capitalised(count(found.learned_from))} {name} {what} cannot teach a floor of "
+        f"{level(rule.floor)}",
+        f"A cut-off that finds {level(rule.floor)} of further {what} of a class takes at least "
+        f"{needed} of them; there are {found.learned_from} (threshold: {needed}).",
+        f"Take a lower floor, or add {name} {table.noun.plural}.",
+        found.learned_from,
+        needed,
+        "wilks1941",
+    )
+
+
+def floor_not_delivered(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """The floor that was asked for is not reached on held-out cases."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by != "floor":
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None:
+        return
+    k = table.classes.index(plan.cut_off.of_class)
+    value, floor = found.part.pooled_value("sensitivity", k), plan.cut_off.floor
+    if math.isnan(value) or value >= floor:
+        return
+    bounds, n = share_interval(plan.level, found.part, k), n_behind(found.part, k)
+    named = f"{class_name(plan.cut_off.of_class)} {table.noun_for(evaluation.counted_by).plural}"
+    where = "lies above" if bounds.high < floor else "is within"
+    yield Finding(
+        "floor_not_delivered",
+        "grave" if bounds.high < floor else "moderate",
+        plan.cut_off.of_class,
+        # in points, for a share just short of the floor would be rounded up to it
+        f"The cut-off for at least {level(floor)} of {named} finds {tenths(floor - value)} less "
+        "while they are held out",
+        f"Learned inside each bag, it finds {with_interval(value, bounds, n)}, {n_equals(n)}; the "
+        f"threshold is the floor, {level(floor)}"
+        f"{f', which {where} the interval' if bounds.defined else ''}.",
+        "Ask for a higher floor than the one needed, or add cases of the class: scores of inner "
+        "models, fitted to four fifths of a bag, are not quite those of the model itself.",
+        value,
+        floor,
+        "vovk2005",
+    )
+
+
+def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The cut-off that goes to work lies outside those that were judged."""
+    if evaluation is None or plan.cut_off is None or plan.cut_off.by == "fixed":
+        return
+    found = evaluation.at_cut_off(evaluation.about)
+    if found is None or found.unlike or not found.spread.defined:
+        return
+    low, high = found.spread.low, found.spread.high
+    if low <= found.on_all <= high:
+        return
+    yield Finding(
+        "cut_off_apart",
+        "moderate",
+        plan.cut_off.of_class,
+        f"The cut-off that goes to work, {place(found.on_all)}, lies apart from those that were "
+        "judged",
+        f"Learned from all cases it is {place(found.on_all)}; in {level(found.spread.level)} of "
+        f"rounds it fell between {place(low)} and {place(high)} (threshold: these ends). Held-out "
+        "figures are those of the rounds’ cut-offs.",
+        "Expect other rates than those reported: more cases of the class make cut-offs steadier.",
+        found.on_all,
+        high if found.on_all > high else low,
+        "common_practice",
+    )
+
+
+def cut_off_not_judged(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """Held-out figures are not about the cut-off that goes to work."""
+    found = evaluation.at_cut_off(evaluation.about) if evaluation else None
+    if evaluation is None or found is None or not found.unlike:
+        return
+    noun = table.noun_for(evaluation.counted_by)
+    why, seen, value, threshold = _why_not_judged(found, noun)
+    yield Finding(
+        "cut_off_not_judged",
+        "grave",
+        found.rule.of_class,
+        f"No interval is offered at the cut-off: {why}",
+        f"{seen}. Held-out figures are those of the rounds’ own cut-offs and say little about the "
+        "one that goes to work: they have no interval and show no limit.",
+        f"Take other costs or a lower floor, add {class_name(found.rule.of_class)} {noun.plural}, "
+        "or take a candidate whose scores tell the classes apart.",
+        value,
+        threshold,
+        "own_simulation",
+    )
+
+
+def _why_not_judged(found: AtCutOff, noun: Noun) -> tuple[str, str, float, float]:
+    """Why not, what was seen, and the number with its threshold."""
+    name, rounds = class_name(found.rule.of_class), len(found.cut_offs)
+    if found.unlike == "not learned":
+        why = f"none could be learned from all {noun.plural}"
+        return why, "Cut-offs learned from all: 0; threshold: 1", 0, 1
+    if found.unlike == "bags":
+        infinite = int(np.isinf(found.cut_offs).sum())
+        seen = (
+            f"In {count(infinite)} of {count(rounds)} rounds it calls all or none, and learned "
+            f"from all {noun.plural} it is {place(found.on_all)} (threshold: {level(HALF)})"
+        )
+        return "bags are too small to learn one like it", seen, infinite / rounds, HALF
+    each, share = ("every", 1) if found.unlike == "all" else ("no", 0)
+    seen = f"Share of all {noun.plural} that is called: {share}; threshold: {share}"
+    return f"it calls {each} {noun.singular} {name}", seen, share, share
