@@ -12,12 +12,13 @@ from tests.studies import coverage
 from tests.studies.coverage_table import COLUMNS, summary, write
 
 ACCURACY = "default/held_out_by_case/accuracy"
+AT_CUT_OFF = "default/at_cut_off/accuracy"
 AUC = "default/mean_of_rounds/auc"
 
 
 def raw(table: int, candidate: str = "lda", **values: object) -> dict[str, object]:
     """A row of the raw file; columns are written with two underscores for a stroke."""
-    cell = {"scenario": "gauss", "n": 60, "counted_by": "case", "smallest_class": 30}
+    cell = {"scenario": "gauss", "n": 60, "counted_by": "case", "smallest_class": 30, "cut_off": ""}
     named = {name.replace("__", "/"): value for name, value in values.items()}
     return cell | {"candidate": candidate, "table": table} | named
 
@@ -192,6 +193,62 @@ def test_cells_stand_in_the_order_of_the_study_whatever_came_first():
     rows = [made("noise", 40), made("gauss", 120), made("p50", 60), made("gauss", 60)]
     found = [(line["scenario"], line["n"]) for line in summary(rows)]
     assert found == [("gauss", 60), ("gauss", 120), ("p50", 60), ("noise", 40)]
+
+
+class TestRules:
+    """The same table judged by the highest score and at cut-offs of two rules."""
+
+    RULES = ("floor=0.9", "", "miss=5,alarm=1")
+    HELD = (1, 2, 3)  # of four tables
+    SHOWN = (3, 0, 1)  # wrongly, of four
+
+    @pytest.fixture
+    def rows(self) -> list[dict]:
+        made = []
+        for table in range(4):
+            for rule, held, shown in zip(self.RULES, self.HELD, self.SHOWN, strict=True):
+                low = 0.7 if table < held else 0.85
+                name = AT_CUT_OFF if rule else ACCURACY
+                row = raw(table, cut_off=rule, true__accuracy=0.8, smallest_class=20 + len(rule))
+                row["at_least/accuracy"] = 0.9 if table < shown else 0.5
+                made.append(row | figure(name, 0.8, low, 0.9))
+        return made
+
+    def test_are_cells_of_their_own(self, rows):
+        lines = list(summary(rows))
+        assert len(lines) == 6
+        for rule, held, shown in zip(self.RULES, self.HELD, self.SHOWN, strict=True):
+            by = "at_cut_off" if rule else "held_out_by_case"
+            interval = only(lines, cut_off=rule, estimator=by)
+            assert (interval["coverage"], interval["tables"]) == (held / 4, 4)
+            assert (interval["scheme"], interval["smallest_class"]) == ("default", 20 + len(rule))
+            verdict = only(lines, cut_off=rule, estimator="verdict")
+            assert (verdict["coverage"], verdict["tables"]) == (1 - shown / 4, 4)
+
+    def test_stand_together_whatever_came_first(self, rows):
+        expected = ["", "", "floor=0.9", "floor=0.9", "miss=5,alarm=1", "miss=5,alarm=1"]
+        assert [line["cut_off"] for line in summary(rows[::-1])] == expected
+
+    def test_a_table_judged_twice_counts_once_a_rule(self, rows):
+        again = rows[0] | figure(AT_CUT_OFF, 0.8, 0.85, 0.9)
+        lines = list(summary([*rows, again]))
+        first, third = (only(lines, cut_off=self.RULES[i], estimator="at_cut_off") for i in (0, 2))
+        assert (first["coverage"], first["tables"]) == (0, 4)
+        assert (third["coverage"], third["tables"]) == (3 / 4, 4)
+
+    def test_compare_their_own_line_ups(self):
+        ruled = [row | {"cut_off": "floor=0.9"} for row in line_up(0, 1, 0)]
+        lines = list(summary([*line_up(0, 0, 0), *ruled]))
+        for rule, share in (("", 1), ("floor=0.9", 0)):
+            family = only(lines, candidate="all pairs", cut_off=rule)
+            assert (family["coverage"], family["tables"]) == (share, 1)
+
+    def test_are_written_and_read_back(self, rows):
+        file = io.StringIO()
+        write(summary(rows), file)
+        read = evidence.read(file.getvalue())
+        assert [line.cut_off for line in read] == [line["cut_off"] for line in summary(rows)]
+        assert {line.cut_off for line in read} == set(self.RULES)
 
 
 def test_written_with_four_digits():

@@ -121,7 +121,8 @@ class TestSentence:
         )
 
     def test_where_nothing_is_alike(self, evaluation):
-        expected = (
+        expected = NONE_LIKE.replace(NBSP, " ")
+        assert expected == (
             "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
             "cases, smallest class, features), so whether the interval keeps its word here is not "
             "measured."
@@ -149,6 +150,100 @@ class TestSentence:
         )
         assert said(unfinished, line()) != ""
         assert said(planned(unfinished, measure="auc"), line()) == ""
+
+
+def judged_at(evaluation: Evaluation, rule: str) -> Evaluation:
+    """The same table under the recommended cross-validation, class b called from a cut-off up."""
+    cut_off = CutOffRule.read(f"b:{rule}")
+    plan = dataclasses.replace(evaluation.plan, schemes=(CV,), cut_off=cut_off)
+    return carried_out(evaluation.table, plan)[0]
+
+
+@pytest.fixture(scope="module")
+def at_floor(evaluation) -> Evaluation:
+    return judged_at(evaluation, "floor=0.9")
+
+
+class TestAtCutOff:
+    KNOWN = (
+        line_at("floor=0.9"),
+        line_at("floor=0.7"),
+        line_at("miss=5,alarm=1"),
+        line(),
+        line_at("floor=0.9", estimator="verdict"),
+    )
+
+    @pytest.mark.parametrize(
+        ("rule", "taken"),
+        [("floor=0.9", [0]), ("floor=0.93", [0]), ("floor=0.95", []), ("floor=0.75", [1]),
+         ("miss=6", [2]), ("miss=9", []), ("miss=9,share=0.4", [2])],
+    )  # fmt: skip
+    def test_takes_the_lines_with_its_rule(self, evaluation, rule, taken):
+        found = judged_at(evaluation, rule)
+        assert headline(found) == asked_at(rule)
+        assert matching(found, self.KNOWN) == tuple(self.KNOWN[i] for i in taken)
+        assert (said(found, *self.KNOWN) == NONE_LIKE.replace(NBSP, " ")) is (not taken)
+
+    def test_lines_at_cut_offs_are_not_taken_by_the_highest_score(self, evaluation):
+        assert matching(evaluation, self.KNOWN) == (line(),)
+
+    def test_sentence(self, at_floor):
+        given = line_at("floor=0.9", coverage=0.947), line(coverage=0.2), line(estimator="verdict")
+        assert said(at_floor, *given) == (
+            "In 1,000 simulated tables like this one in size (60 cases, about 30 in the smallest "
+            "class; 1 kind of data; cut-offs learned alike), the 95 % interval of this candidate’s "
+            "accuracy held the true value in 94.7 %; real tables may be otherwise."
+        )
+
+    def test_falling_short(self, at_floor):
+        short = line_at("floor=0.9", coverage=0.887)
+        assert falling_short(at_floor, [short, line_at("floor=0.9"), line(coverage=0.8)]) == (
+            short,
+        )
+
+    def test_auc_is_quoted_as_without_one(self, at_floor):
+        auc = {"measure": "auc", "estimator": "mean_of_rounds_alone"}
+        by_auc = planned(at_floor, measure="auc")
+        assert headline(by_auc) == asked_at("floor=0.9", **auc)
+        known = (line(**auc), line_at("floor=0.9", coverage=0.2, **auc))
+        assert matching(by_auc, known) == known[:1]
+        assert "cut-offs" not in said(by_auc, *known)
+
+
+class TestCalled:
+    """Twenty-two cases or units of a and 38 of b, a fixed cut-off for either."""
+
+    @pytest.mark.parametrize(("of_class", "called"), [("a", 22), ("b", 38)])
+    @pytest.mark.parametrize("rows", [1, 2])
+    def test_units_of_the_class_that_is_called(self, of_class, called, rows):
+        labels = np.repeat([0, 1], [22 * rows, 38 * rows])
+        units = np.arange(60 * rows) // rows if rows > 1 else None
+        table = table_of(labels.tolist(), units=units)
+        rule = CutOffRule(of_class, "fixed", at=0.5, set_on="2026-01-15")
+        lda = (choose(CANDIDATES, "lda"),)
+        plan = Plan(table.roles, (CV,), lda, measure="accuracy", cut_off=rule)
+        found = carried_out(table, plan)[0]
+        assert headline(found) == asked_at(
+            "at=0.5,set_on=2026-01-15",
+            cut_off=rule,
+            called=called,
+            smallest_class=22,
+            features=1,
+            cases=60 * rows,
+            counted_by="unit" if rows > 1 else "case",
+        )
+        # a fixed one is like nothing that was studied
+        assert sentence(found, [line(features=1), line_at("floor=0.9")]) == NONE_LIKE
+
+    def test_none_where_the_answer_is_by_the_highest_score(self):
+        table = table_of([0] * 30 + [1] * 30)
+        rule = CutOffRule.read("b:at=0.5,set_on=2026-01-15")
+        both = (choose(CANDIDATES, "majority"), choose(CANDIDATES, "lda"))
+        plan = Plan(table.roles, (CV,), both, measure="accuracy", cut_off=rule)
+        found = carried_out(table, plan)[0]
+        given = headline(planned(found, about="majority"))
+        assert given == asked(candidate=both[0], features=1)
+        assert headline(found) == asked_at("at=0.5", cut_off=rule, features=1)
 
 
 def test_the_summary_quotes_it_between_what_intervals_are_and_who_came_out_best(evaluation):

@@ -32,7 +32,7 @@ from evalcore.wording import NBSP
 from .checks import table_of
 from .learned_cases import a_curve, as_given, at_floor, at_literal, beside, chance, picks
 from .test_at_cut_off import scored
-from .test_evidence import line
+from .test_evidence import line, line_at
 
 CV, BOOTSTRAP = "cross_validation", "bootstrap"
 LOGISTIC, LDA = choose(CANDIDATES, "logistic"), choose(CANDIDATES, "lda")
@@ -45,6 +45,22 @@ LINES = (
     # shown though not true in 2 of 32 tables; in 1 of 32 of the larger ones
     line(features=1, estimator="verdict", coverage=30 / 32, monte_carlo_error=0.005),
     line(features=1, estimator="verdict", coverage=31 / 32, n=200, smallest_class=100),
+)
+OF_BAYES = {"candidate": "naive_bayes", "features": 1}
+AT_CUT_OFF = (
+    # as above, at cut-offs learned alike; and an interval that held the truth in 28 of 32
+    *(
+        line_at(
+            "floor=0.9",
+            **OF_BAYES,
+            estimator="verdict",
+            measure=measure,
+            coverage=30 / 32,
+            monte_carlo_error=0.005,
+        )
+        for measure in ("accuracy", "sensitivity")
+    ),
+    line_at("floor=0.9", **OF_BAYES, measure="balanced_accuracy", coverage=28 / 32),
 )
 
 
@@ -700,17 +716,6 @@ class TestAnswersInUse:
         expected = [] if at == 0.25 else [pytest.approx(high - low, rel=1e-12)]
         assert [f.value for f in raised] == expected
 
-    def test_the_study_simulated_no_verdict_at_a_cut_off(self):
-        limits, rule = (
-            (Limit("accuracy", 0.5),),
-            CutOffRule("b", "fixed", at=0.5, set_on="2026-05-04"),
-        )
-        table, plan, made = simulated(60, limits=limits, cut_off=rule)
-        assert made.in_use == "at_cut_off"
-        assert [v.word for v in verdicts_in_use(made, made.about)] == ["shown"]
-        assert found("verdict_falls_short", table, plan, made) == []
-        assert len(found("verdict_falls_short", *simulated(60, limits=limits))) == 1
-
 
 def test_few_gaps_are_a_note():
     finding = only("missing_values", with_gaps(2), a_plan())
@@ -852,3 +857,67 @@ class TestIntervalFallsShort:
             other = dataclasses.replace(plan, **changes)
             judged = dataclasses.replace(made, plan=other)
             assert found("interval_falls_short", table, other, judged) == []
+
+
+class TestVerdictFallsShort:
+    def test_a_fixed_cut_off_is_like_nothing_that_was_studied(self):
+        limits, rule = (
+            (Limit("accuracy", 0.5),),
+            CutOffRule("b", "fixed", at=0.5, set_on="2026-05-04"),
+        )
+        table, plan, made = simulated(60, limits=limits, cut_off=rule)
+        assert made.in_use == "at_cut_off"
+        assert [v.word for v in verdicts_in_use(made, made.about)] == ["shown"]
+        assert found("verdict_falls_short", table, plan, made) == []
+        assert len(found("verdict_falls_short", *simulated(60, limits=limits))) == 1
+
+
+class TestFallsShortAtCutOff:
+    """Thirty cases of each class, all right at a cut-off for b that must find nine of ten."""
+
+    LIMITS = (Limit("accuracy", 0.5), *(Limit("sensitivity", 0.5, k) for k in "ab"))
+
+    @pytest.fixture(autouse=True)
+    def studied_at_cut_offs(self, monkeypatch):
+        monkeypatch.setattr(evidence, "lines", lambda: AT_CUT_OFF)
+
+    def judged(self, *, floor: float = 0.9, below: int = 0, limits=LIMITS):
+        rule = CutOffRule("b", "floor", floor=floor)
+        made = at_floor(
+            below, of_class=30, others=30, rule=rule, limits=limits, measure="balanced_accuracy"
+        )
+        recommended = dataclasses.replace(made.plan, schemes=(choose(SCHEMES, CV),))
+        return as_given(dataclasses.replace(made, plan=recommended))
+
+    def test_of_all_and_of_the_class_that_is_called(self):
+        given = self.judged()
+        assert [v.word for v in verdicts_in_use(given[2], "naive_bayes")] == ["shown"] * 3
+        raised = found("verdict_falls_short", *given)
+        assert [(f.subject, f.value) for f in raised] == [("accuracy", 2 / 32), ("b", 2 / 32)]
+        assert all("cut-offs learned alike" in f.seen for f in raised)
+
+    def test_not_of_the_other_class(self):
+        given = self.judged(limits=(Limit("sensitivity", 0.5, "a"),))
+        assert [v.word for v in verdicts_in_use(given[2], "naive_bayes")] == ["shown"]
+        assert found("verdict_falls_short", *given) == []
+
+    def test_not_where_the_limit_is_not_shown(self):
+        # 15 of 30 of b are found
+        raised = found("verdict_falls_short", *self.judged(below=15))
+        assert [f.subject for f in raised] == ["accuracy"]
+
+    def test_not_at_another_confidence_than_was_studied(self):
+        limits = tuple(dataclasses.replace(limit, confidence=0.9) for limit in self.LIMITS)
+        assert found("verdict_falls_short", *self.judged(limits=limits)) == []
+
+    def test_the_interval(self):
+        finding = only("interval_falls_short", *self.judged())
+        assert (finding.subject, finding.value) == ("naive_bayes", 28 / 32)
+        assert "cut-offs learned alike" in finding.seen
+
+    @pytest.mark.parametrize("check", ["verdict_falls_short", "interval_falls_short"])
+    def test_of_the_same_rule_alone(self, check, monkeypatch):
+        assert found(check, *self.judged(floor=0.8)) == []
+        without = tuple(dataclasses.replace(x, cut_off="") for x in AT_CUT_OFF)
+        monkeypatch.setattr(evidence, "lines", lambda: without)
+        assert found(check, *self.judged()) == []

@@ -1,11 +1,10 @@
-"""The study's tables with known truth are what they are said to be, and a run goes on."""
+"""The study's tables with known truth are what they are said to be."""
 
 import math
 
 import numpy as np
 import pytest
 
-from tests.studies import coverage
 from tests.studies.mechanisms import FURTHER, MECHANISMS, further_cases
 
 
@@ -45,26 +44,3 @@ def test_rows_of_a_unit_share_half_of_their_variance():
     assert np.corrcoef(first, second)[0, 1] == pytest.approx(0.5, abs=3 * 0.75 / math.sqrt(50_000))
     assert off.var() == pytest.approx(1, abs=0.02)
     assert (further.units == np.repeat(np.arange(FURTHER), mechanism.rows)).all()
-
-
-def test_a_run_goes_on_where_it_stopped(tmp_path):
-    cells = (
-        coverage.Cell("gauss", 30, ("lda", "naive_bayes"), bootstrap=False),
-        coverage.Cell("three", 60, ("naive_bayes",), bootstrap=False),
-    )
-    straight, stopped = tmp_path / "straight.csv", tmp_path / "stopped.csv"
-    coverage.run(cells, straight, tables=2)
-    coverage.run(cells, stopped, tables=1)
-    # the last line, of a table of one candidate, is cut short
-    stopped.write_bytes(stopped.read_bytes()[:-40])
-    coverage.run(cells, stopped, tables=2)
-    assert sorted(stopped.read_text().splitlines()) == sorted(straight.read_text().splitlines())
-    before = stopped.read_bytes()
-    coverage.run(cells, stopped, tables=2)
-    assert stopped.read_bytes() == before
-    rows = coverage.finished(straight)
-    # two candidates and the best of them, and one alone
-    assert [row["candidate"] for row in rows if row["table"] == "0" and row["scenario"] == "gauss"] == [
-        "lda", "naive_bayes", "best of all 2",
-    ]  # fmt: skip
-    assert len(rows) == 2 * (3 + 1)

@@ -19,36 +19,37 @@ from joblib import Parallel, delayed
 from evalcore.binomial import wilson
 from tests.core.checks import table_of
 from tests.studies import coverage
+from tests.studies.cells import QUICK, Cell
 from tests.studies.mechanisms import further_cases
 
 pytestmark = pytest.mark.slow
 
 TABLES = 200
-CELLS = [pytest.param(cell, id=f"{cell.scenario}-{cell.candidates[0]}") for cell in coverage.QUICK]
-GAUSS, XOR = coverage.QUICK[0], coverage.QUICK[-1]
-SPARSE = coverage.Cell("p50", 60, ("lda",), bootstrap=False)
+CELLS = [pytest.param(cell, id=f"{cell.scenario}-{cell.candidates[0]}") for cell in QUICK]
+GAUSS, XOR = QUICK[0], QUICK[-1]
+SPARSE = Cell("p50", 60, ("lda",), bootstrap=False)
 VALUE, LOW, HIGH = (f"default/held_out_by_case/accuracy/{p}" for p in coverage.PARTS[:3])
 
 
 @cache
-def rows(cell: coverage.Cell) -> list[dict[str, object]]:
+def rows(cell: Cell) -> list[dict[str, object]]:
     """A cell's tables, judged by folds alone; by the bootstrap where a class has under five."""
     todo = (delayed(coverage.judge)(cell, number) for number in range(TABLES))
     return [row for (row,) in Parallel(n_jobs=2)(todo)]
 
 
-def column(cell: coverage.Cell, name: str) -> np.ndarray:
+def column(cell: Cell, name: str) -> np.ndarray:
     """A figure of every table."""
     return np.array([float(str(row[name])) for row in rows(cell)])
 
 
-def held(cell: coverage.Cell, low: np.ndarray, high: np.ndarray) -> float:
+def held(cell: Cell, low: np.ndarray, high: np.ndarray) -> float:
     """Share of tables whose interval holds the truth."""
     truth = column(cell, "true/accuracy")
     return float(((low <= truth) & (truth <= high)).mean())
 
 
-def default(cell: coverage.Cell) -> float:
+def default(cell: Cell) -> float:
     return held(cell, column(cell, LOW), column(cell, HIGH))
 
 
@@ -63,7 +64,7 @@ def test_the_default_interval_keeps_its_word(cell):
 
 
 def test_it_does_on_average():
-    assert np.mean([default(cell) for cell in coverage.QUICK]) >= 0.94
+    assert np.mean([default(cell) for cell in QUICK]) >= 0.94
 
 
 @pytest.mark.parametrize("cell", CELLS)
@@ -101,7 +102,7 @@ def test_an_interval_of_a_lower_level_is_seen():
 
 def test_the_comparison_calls_no_equals_apart():
     """Real candidates on labels that no feature tells: every call but one is false."""
-    cell = coverage.Cell("noise", 40, ("logistic", "naive_bayes", "tree"), bootstrap=False)
+    cell = Cell("noise", 40, ("logistic", "naive_bayes", "tree"), bootstrap=False)
     todo = (delayed(coverage.judge)(cell, number) for number in range(TABLES))
     found = [row for (_, *others, _) in Parallel(n_jobs=2)(todo) for row in others]
     assert len(found) == 2 * TABLES
