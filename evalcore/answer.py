@@ -196,10 +196,12 @@ def best_sentence(evaluation: Evaluation) -> str:
     starts = plan.limits and (best.candidate, evaluation.in_use) == (evaluation.about, HIGHEST)
     start = "; verdicts start there" if starts else ""
     tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
+    by = by_highest(evaluation)
     return (
         f"Of {tried} candidates {plan.title(best.candidate)} came out best by "
         f"{ALL_MEASURES[best.measure].trade}: {percent(selected.value, best.n)}, "
-        f"{percent(best.value, best.n)} once the luck of being best is taken off{start}."
+        f"{percent(best.value, best.n)} once the luck of being best is taken off"
+        f"{f' ({by})' if by else ''}{start}."
     )
 
 

@@ -110,6 +110,7 @@ def at_cut_off(
     apart: Unlike = ""
     if rule.by == "fixed":
         cut_offs, on_all, behind = np.full(len(given.on_all[way]), rule.at), rule.at, 0
+        like = "fixed"
     elif given.inner is None or whole.inner is None:
         return None  # carried out under another rule
     else:

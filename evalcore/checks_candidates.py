@@ -4,7 +4,10 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+import numpy as np
+
 from evalcore import intervals
+from evalcore.answer import by_highest
 from evalcore.estimates import MEMORISES, mean_of_rounds
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
@@ -16,6 +19,7 @@ from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from evalcore.wording import (
     capitalised,
+    count,
     decimal,
     n_equals,
     percent,
@@ -74,6 +78,33 @@ def not_better_than_majority(
             bounds.low,
             share,
             "common_practice",
+        )
+
+
+def always_the_same(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """The model fitted on all cases names one class only, those of the rounds name others too."""
+    if evaluation is None:
+        return
+    for name in _learned(evaluation):
+        part = evaluation.part_in_use(name)
+        if part.always_names is None:
+            continue
+        others = np.delete(part.pooled.sum(axis=0), part.always_names)
+        share, n = float(others.sum() / part.pooled.sum()), len(part.shares)
+        yield Finding(
+            "always_the_same",
+            "grave",
+            name,
+            f"{capitalised(plan.title(name))} fitted on all cases always answers "
+            f"{quoted(table.classes[part.always_names])}",
+            f"None of {count(n)} gets another answer (threshold: 1), while models of the rounds "
+            f"gave another in {percent(share, n)} of held-out answers. What share of each class is "
+            "found therefore says little about the model that goes to work: no interval is offered "
+            "for it, and no limit on it is called shown.",
+            "Take another candidate or another setting, or features that tell the classes apart.",
+            0,
+            1,
+            "own_simulation",
         )
 
 
@@ -194,8 +225,9 @@ def unstable_model(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
     if evaluation is None:
         return
     for name in _learned(evaluation):
-        part = evaluation.part(name, evaluation.scheme)
-        estimate = evaluation.estimate("accuracy", name)
+        part = evaluation.part_in_use(name)
+        by = evaluation.in_use if name == evaluation.about else HIGHEST
+        estimate = evaluation.estimate("accuracy", name, estimator=by)
         if math.isnan(part.tau2) or math.isnan(estimate.value):
             continue
         p, n = estimate.value, estimate.n
@@ -292,7 +324,7 @@ def best_of_several(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
         best.candidate,
         f"{capitalised(plan.title(best.candidate))} came out best of {tried}: "
         f"{percent(selected.value, n)}, {percent(best.value, n)} once the luck of being best is "
-        "taken off",
+        f"taken off{_in_brackets(by_highest(evaluation))}",
         f"Choosing the best of {tried} on these cases flatters it by "
         f"{points(luck, signed=False)}; thresholds: {points(LUCK, signed=False)}, or more than "
         f"{MANY} candidates on fewer than {MANY_UNITS} cases.",
@@ -325,6 +357,10 @@ def rows_agree(table: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
         1.0,
         "elementary",
     )
+
+
+def _in_brackets(words: str) -> str:
+    return f" ({words})" if words else ""
 
 
 def _learned(evaluation: Evaluation) -> list[str]:

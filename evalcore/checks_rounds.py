@@ -80,8 +80,13 @@ def too_few_rounds(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
     for scheme in evaluation.rounds:
         if not SCHEMES[plan.scheme(scheme).key].drawn:
             continue
+        first = scheme == evaluation.scheme
+        parts = (
+            evaluation.part_in_use(c) if first else evaluation.part(c, scheme)
+            for c in evaluation.candidates
+        )
         worst = max(
-            ((_redraw(evaluation.part(c, scheme)), c) for c in evaluation.candidates),
+            ((_redraw(part), part.candidate) for part in parts),
             key=lambda pair: math.inf if math.isnan(pair[0]) else pair[0],
         )
         if worst[0] <= MONTE_CARLO:

@@ -148,7 +148,7 @@ def _bootstrap_figures(
 
 def default_interval(plan: Plan, part: Judged, measure: str, of_class: int) -> Interval | None:
     """The default interval of a held-out value; None where none is offered."""
-    if not offers_interval(part):
+    if not offers_interval(part, of_class if measure == "sensitivity" else None):
         return None
     if measure == "accuracy":
         return share_interval(plan.level, part)

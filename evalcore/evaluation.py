@@ -120,6 +120,14 @@ class Evaluation:
         """By which estimator the answer is given: at a learned cut-off where there is one."""
         return AT_CUT_OFF if self.at_cut_off(self.about) else HIGHEST
 
+    def part_in_use(self, candidate: str) -> Judged:
+        """A candidate's answers under the headline's scheme: at its cut-off if it is the answer's.
+
+        Others are compared with it by the highest score.
+        """
+        at = self.at_cut_off(candidate) if candidate == self.about else None
+        return at.part if at else self.part(candidate, self.scheme)
+
     @cached_property
     def differences(self) -> tuple[Difference, ...]:
         """The candidate of the headline against all others, on the headline's rounds."""

@@ -74,6 +74,7 @@ CHECKS: dict[str, Check] = {
         Check("class_shares_reached", "classes uneven over parts", rounds.class_shares_reached),
         Check("rows_agree", "rows of a unit are answered alike", candidates.rows_agree),
         Check("few_blocks", "too few blocks for an interval", rounds.few_blocks),
+        Check("always_the_same", "a model that names one class", candidates.always_the_same),
         Check("memorises", "right on all it was trained on", candidates.memorises),
         Check("missing_values", "gaps in the table", of_table.missing_values),
         Check("share_of_classes", "the mix of classes is assumed", rounds.share_of_classes),

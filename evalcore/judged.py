@@ -17,7 +17,7 @@ from evalcore.plan import Plan
 from evalcore.schemes import ALL_SCHEMES, LEAST_BLOCKS
 from evalcore.table import Table
 
-CutOffs = Literal["none", "learned", "unlike"]
+CutOffs = Literal["none", "fixed", "learned", "unlike"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,9 +41,9 @@ class Judged:
     second_looks : tuple of Judged
         The same candidate counted the same way under the other schemes: what this scheme's rounds
         cannot tell of the model's variance is taken from them.
-    cut_offs : {"none", "learned", "unlike"}
-        Whether each round answered at a cut-off learned inside its bag; "unlike" if those say
-        little about the one that goes to work, and then no interval is offered.
+    cut_offs : {"none", "fixed", "learned", "unlike"}
+        Whether each round answered at a cut-off, and at one learned inside its bag; "unlike" if
+        those say little about the one that goes to work, and then no interval is offered.
     """
 
     scheme: str
@@ -100,6 +100,19 @@ class Judged:
     def pooled_value(self, measure: str, of_class: int = 0) -> float:
         """A measure from `pooled`; not for measures that need scores."""
         return float(_values(measure, self.pooled[None], np.array([math.nan]), of_class)[0])
+
+    @cached_property
+    def always_names(self) -> int | None:
+        """The class that the fit on all cases gives them all while rounds name others too.
+
+        None where it names several, where rounds are as constant, and at a cut-off.
+        """
+        named = np.flatnonzero(self.whole.confusion[0].sum(axis=0))
+        if self.cut_offs != "none" or len(named) != 1:
+            return None
+        of_class = int(named[0])
+        elsewhere = np.delete(self.pooled.sum(axis=0), of_class)
+        return of_class if elsewhere.any() else None
 
     @cached_property
     def tau2(self) -> float:
@@ -221,9 +234,13 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
     )
 
 
-def offers_interval(part: Judged) -> bool:
-    """Whether cut-offs are like the one in use, and blocks, if any, are enough to tell anything."""
-    if part.cut_offs == "unlike":
+def offers_interval(part: Judged, of_class: int | None = None) -> bool:
+    """Whether rounds are like the model in use, and blocks, if any, are enough to tell anything.
+
+    Shares of classes swing with the class that a model favours, so they say little about one that
+    always names the same (own simulation).
+    """
+    if part.cut_offs == "unlike" or (of_class is not None and part.always_names is not None):
         return False
     return part.units is None or part.blocks >= LEAST_BLOCKS
 

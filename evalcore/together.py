@@ -9,7 +9,7 @@ import numpy as np
 from evalcore.candidates import CANDIDATES
 from evalcore.comparison import Difference, compare
 from evalcore.figures import Estimate, Interval
-from evalcore.judged import Judged, at_rate
+from evalcore.judged import Judged, at_rate, offers_interval
 from evalcore.paired_tests import mcnemar
 from evalcore.plan import Plan, generator
 from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior
@@ -89,7 +89,7 @@ def winner_estimates(
 
 def _interval(plan: Plan, part: Judged, value: float, n: int, k: int | None) -> Interval | None:
     """With model variance at the corrected value, for independent cases."""
-    if part.units is not None or part.cut_offs == "unlike" or math.isnan(value):
+    if part.units is not None or not offers_interval(part, k) or math.isnan(value):
         return None
     tau2 = part.tau2 if k is None else part.tau2_of(k)
     return at_rate(part, value, n, tau2=tau2, level=plan.level, of_class=k)

@@ -103,7 +103,7 @@ def _verdict(table: Table, part: Judged, limit: Limit, *, corrected: float | Non
     level = 2 * limit.confidence - 1
     k = table.classes.index(limit.of_class) if limit.of_class else None
     value = part.pooled_value(limit.measure, k or 0)
-    rate, usable = _rate(value, corrected), offers_interval(part)
+    rate, usable = _rate(value, corrected), offers_interval(part, k)
     at_least = at_most = math.nan
     if limit.measure == "balanced_accuracy":
         known = part.held.labels[~np.isnan(part.shares)]
