@@ -195,7 +195,7 @@ def best_sentence(evaluation: Evaluation) -> str:
     # at a cut-off verdicts start from what its own correction says
     starts = plan.limits and (best.candidate, evaluation.in_use) == (evaluation.about, HIGHEST)
     start = "; verdicts start there" if starts else ""
-    tried = sum(not evaluation.is_baseline(name) for name in evaluation.candidates)
+    tried = len(evaluation.learners)
     by = by_highest(evaluation)
     return (
         f"Of {tried} candidates {plan.title(best.candidate)} came out best by "

@@ -1,26 +1,17 @@
-"""Doubts about candidates: no better than a constant answer, memory, instability, width."""
+"""Doubts about candidates: no better than a constant answer, width, schemes apart, luck."""
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
 
-import numpy as np
-
-from evalcore import intervals
 from evalcore.answer import by_highest
-from evalcore.estimates import MEMORISES, mean_of_rounds
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
-from evalcore.judged import plus_632
 from evalcore.per_case import agreement_within_units
 from evalcore.plan import Plan
 from evalcore.profile import majority
-from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from evalcore.wording import (
     capitalised,
-    count,
-    decimal,
     n_equals,
     percent,
     points,
@@ -29,7 +20,6 @@ from evalcore.wording import (
     with_interval,
 )
 
-OVERFITTING, GAP = 0.3, 0.15
 WIDTH = 0.20
 APART = 0.03
 LUCK, MANY, MANY_UNITS = 0.02, 10, 200
@@ -59,7 +49,7 @@ def not_better_than_majority(
         return
     largest, share = majority(table, evaluation.counted_by)
     always = quoted(table.classes[largest])
-    for name in _learned(evaluation):
+    for name in evaluation.learners:
         by = evaluation.in_use if name == evaluation.about else HIGHEST
         estimate = evaluation.estimate("accuracy", name, estimator=by)
         bounds = estimate.interval
@@ -79,119 +69,6 @@ def not_better_than_majority(
             share,
             "common_practice",
         )
-
-
-def always_the_same(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """The model fitted on all cases names one class only, those of the rounds name others too."""
-    if evaluation is None:
-        return
-    for name in _learned(evaluation):
-        part = evaluation.part_in_use(name)
-        if part.always_names is None:
-            continue
-        others = np.delete(part.pooled.sum(axis=0), part.always_names)
-        share, n = float(others.sum() / part.pooled.sum()), len(part.shares)
-        yield Finding(
-            "always_the_same",
-            "grave",
-            name,
-            f"{capitalised(plan.title(name))} fitted on all cases always answers "
-            f"{quoted(table.classes[part.always_names])}",
-            f"None of {count(n)} gets another answer (threshold: 1), while models of the rounds "
-            f"gave another in {percent(share, n)} of held-out answers. What share of each class is "
-            "found therefore says little about the model that goes to work: no interval is offered "
-            "for it, and no limit on it is called shown.",
-            "Take another candidate or another setting, or features that tell the classes apart.",
-            0,
-            1,
-            "own_simulation",
-        )
-
-
-def memorises(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Right on everything it was trained on."""
-    if evaluation is None:
-        return
-    for name in _learned(evaluation):
-        part = evaluation.part(name, evaluation.scheme)
-        seen = mean_of_rounds(part.in_bag_values("accuracy"))[0]
-        held = mean_of_rounds(part.held_values("accuracy"))[0]
-        if seen < MEMORISES:
-            continue
-        n = table.n_units
-        yield Finding(
-            "memorises",
-            "note",
-            name,
-            f"{capitalised(plan.title(name))} memorises: {percent(seen, n)} on what it was trained "
-            f"on, {percent(held, n)} held out",
-            f"Share right on its own bags {decimal(seen, 4)}, threshold "
-            f"{decimal(MEMORISES, 3)}. What such a candidate scores on cases it was trained on "
-            "says nothing.",
-            "Look at held-out figures only.",
-            seen,
-            MEMORISES,
-            "own_simulation",
-        )
-
-
-def misleading_632(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """The .632 estimate is optimistic for candidates that fit their own bag too well."""
-    if evaluation is None:
-        return
-    for scheme in _bootstraps(plan, evaluation):
-        for name in _learned(evaluation):
-            sign = why_632_misleads(evaluation, name, scheme)
-            if sign is None:
-                continue
-            yield Finding(
-                "misleading_632",
-                "moderate",
-                name,
-                f".632 misleads for {plan.title(name)}: {sign.what} {decimal(sign.value, 3)}, "
-                f"the threshold is {decimal(sign.threshold, 3)}",
-                f"Of the three signs of a candidate that fits its own cases too well ({_SIGNS}) "
-                "at least one is there. .632 then comes out too high, the per-round form more so, "
-                "and .632+ somewhat.",
-                "Use the held-out estimate of the first scheme.",
-                sign.value,
-                sign.threshold,
-                "own_simulation",
-            )
-
-
-_SIGNS = (
-    f"share right on the cases fitted to at least {decimal(MEMORISES, 3)}, relative overfitting "
-    f"above {decimal(OVERFITTING)}, or {points(GAP, signed=False)} above out-of-bag"
-)
-
-
-@dataclass(frozen=True)
-class Sign:
-    """One sign that .632 misleads: what, its value and the threshold it has crossed."""
-
-    what: str
-    value: float
-    threshold: float
-
-
-def why_632_misleads(evaluation: Evaluation, candidate: str, scheme: str) -> Sign | None:
-    """The first sign that .632 must not be trusted for a candidate, or None."""
-    out_of_bag = evaluation.estimate("accuracy", candidate, scheme=scheme).value
-    part = evaluation.part(candidate, scheme)
-    plus = plus_632(part, "accuracy", out_of_bag)
-    if plus is None:
-        return None
-    apparent = part.whole_value("accuracy")
-    signs = (
-        (apparent >= MEMORISES, Sign("share right on the cases fitted to", apparent, MEMORISES)),
-        (
-            plus.overfitting > OVERFITTING,
-            Sign("relative overfitting", plus.overfitting, OVERFITTING),
-        ),
-        (apparent - out_of_bag > GAP, Sign("gap to out-of-bag", apparent - out_of_bag, GAP)),
-    )
-    return next((sign for crossed, sign in signs if crossed), None)
 
 
 def wide_interval(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -220,71 +97,12 @@ def wide_interval(table: Table, plan: Plan, evaluation: Evaluation | None) -> It
     )
 
 
-def unstable_model(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """The model's own variance is larger than that of judging a few cases."""
-    if evaluation is None:
-        return
-    for name in _learned(evaluation):
-        part = evaluation.part_in_use(name)
-        by = evaluation.in_use if name == evaluation.about else HIGHEST
-        estimate = evaluation.estimate("accuracy", name, estimator=by)
-        if math.isnan(part.tau2) or math.isnan(estimate.value):
-            continue
-        p, n = estimate.value, estimate.n
-        sampling = max(p * (1 - p), intervals.LEAST_SPREAD) / n
-        if part.tau2 <= sampling:
-            continue
-        bare = intervals.wilson(p, n, level=plan.level)
-        with_it = intervals.with_model_variance(p, n, part.tau2, level=plan.level)
-        yield Finding(
-            "unstable_model",
-            "moderate",
-            name,
-            f"{capitalised(plan.title(name))} changes a lot from round to round: that widens its "
-            f"interval by {points(with_it.width - bare.width, signed=False)}",
-            f"Standard deviation of the share right from the model alone "
-            f"{points(math.sqrt(part.tau2), signed=False)}; the threshold is that from "
-            f"judging {n} cases, {points(math.sqrt(sampling), signed=False)}.",
-            "Prefer a steadier candidate, or more cases to learn from.",
-            part.tau2,
-            sampling,
-            "own_model_variance",
-        )
-
-
-def model_variance_unknown(
-    _: Table, plan: Plan, evaluation: Evaluation | None
-) -> Iterator[Finding]:
-    """Each case is answered once, so the interval cannot include the model's variance."""
-    if evaluation is None:
-        return
-    part = evaluation.part(evaluation.about, evaluation.scheme)
-    if not math.isnan(part.tau2):
-        return
-    yield Finding(
-        "model_variance_unknown",
-        "moderate",
-        evaluation.scheme,
-        "The interval leaves out how much the model itself varies: each case was answered at most "
-        "once, twice is needed",
-        f"Each case is held out in at most {int(part.held.rounds.times_tested.max())} round of the "
-        "first scheme, and no other scheme holds one out more often; from 2 on, the model's "
-        "variance can be told apart. Such an interval holds the truth less often than it promises, "
-        "most so for a model that varies a lot.",
-        "Repeat the cross-validation, or take random subsampling or the bootstrap, be it as a "
-        "second scheme.",
-        1,
-        2,
-        "own_simulation",
-    )
-
-
 def schemes_disagree(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
     """Cross-validation and .632+ are apart."""
     if evaluation is None or plan.scheme(evaluation.scheme).key == "bootstrap":
         return
-    for scheme in _bootstraps(plan, evaluation):
-        for name in _learned(evaluation):
+    for scheme in evaluation.bootstraps:
+        for name in evaluation.learners:
             first = evaluation.estimate("accuracy", name).value
             second = evaluation.estimate(
                 "accuracy", name, scheme=scheme, estimator="point_632_plus"
@@ -314,7 +132,7 @@ def best_of_several(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
         return
     selected = evaluation.estimate(best.measure, best.candidate)
     luck = selected.value - best.value
-    tried = len(_learned(evaluation))
+    tried = len(evaluation.learners)
     if not (luck > LUCK or (tried > MANY and table.n_units < MANY_UNITS)):
         return
     n = best.n
@@ -361,12 +179,3 @@ def rows_agree(table: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
 
 def _in_brackets(words: str) -> str:
     return f" ({words})" if words else ""
-
-
-def _learned(evaluation: Evaluation) -> list[str]:
-    """Candidates that look at features."""
-    return [name for name in evaluation.candidates if not evaluation.is_baseline(name)]
-
-
-def _bootstraps(plan: Plan, evaluation: Evaluation) -> list[str]:
-    return [s for s in evaluation.rounds if SCHEMES[plan.scheme(s).key].repeats_cases]

@@ -17,6 +17,7 @@ from evalcore.judged import Judged, clusters, with_second_looks
 from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
+from evalcore.schemes import SCHEMES
 from evalcore.table import Table
 from evalcore.together import ESTIMATOR as WINNER
 from evalcore.together import differences, winner_estimates
@@ -73,6 +74,16 @@ class Evaluation:
     def candidates(self) -> tuple[str, ...]:
         """Candidates that could be fitted, in the order of the plan."""
         return tuple(n for n in self.plan.candidate_names if n not in self.failures)
+
+    @property
+    def learners(self) -> list[str]:
+        """Those of them that look at features."""
+        return [name for name in self.candidates if not self.is_baseline(name)]
+
+    @property
+    def bootstraps(self) -> list[str]:
+        """Schemes that draw cases repeatedly."""
+        return [s for s in self.rounds if SCHEMES[self.plan.scheme(s).key].repeats_cases]
 
     def is_baseline(self, candidate: str) -> bool:
         """Whether a candidate looks at no feature."""

@@ -7,6 +7,7 @@ from evalcore import checks_candidates as candidates
 from evalcore import checks_cut_off as at_cut_off
 from evalcore import checks_evidence as of_evidence
 from evalcore import checks_learned as learned
+from evalcore import checks_models as models
 from evalcore import checks_rounds as rounds
 from evalcore import checks_table as of_table
 from evalcore.evaluation import Evaluation
@@ -59,23 +60,23 @@ CHECKS: dict[str, Check] = {
             "verdicts like this were wrong too often",
             of_evidence.verdict_falls_short,
         ),
-        Check("unstable_model", "the model varies from round to round", candidates.unstable_model),
+        Check("unstable_model", "the model varies from round to round", models.unstable_model),
         Check(
             "model_variance_unknown",
             "the model's variance cannot be told",
-            candidates.model_variance_unknown,
+            models.model_variance_unknown,
         ),
         Check("schemes_disagree", "two schemes are apart", candidates.schemes_disagree),
         Check("best_of_several", "the best is partly the luckiest", candidates.best_of_several),
-        Check("misleading_632", ".632 misleads here", candidates.misleading_632),
+        Check("misleading_632", ".632 misleads here", models.misleading_632),
         Check("never_held_out", "cases never held out", rounds.never_held_out),
         Check("too_few_rounds", "a redraw would move the estimate", rounds.too_few_rounds),
         Check("class_missing", "rounds that lack a class", rounds.class_missing),
         Check("class_shares_reached", "classes uneven over parts", rounds.class_shares_reached),
         Check("rows_agree", "rows of a unit are answered alike", candidates.rows_agree),
         Check("few_blocks", "too few blocks for an interval", rounds.few_blocks),
-        Check("always_the_same", "a model that names one class", candidates.always_the_same),
-        Check("memorises", "right on all it was trained on", candidates.memorises),
+        Check("always_the_same", "a model that names one class", models.always_the_same),
+        Check("memorises", "right on all it was trained on", models.memorises),
         Check("missing_values", "gaps in the table", of_table.missing_values),
         Check("share_of_classes", "the mix of classes is assumed", rounds.share_of_classes),
         Check(

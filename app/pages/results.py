@@ -14,7 +14,7 @@ from evalcore.answer import (
     title,
 )
 from evalcore.beside_answer import beside_in_sentences
-from evalcore.checks_candidates import why_632_misleads
+from evalcore.checks_models import why_632_misleads
 from evalcore.engine import chunk_rounds
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation

@@ -99,6 +99,7 @@ ORDER = (
     "checks_table",
     "checks_rounds",
     "checks_candidates",
+    "checks_models",
     "checks_cut_off",
     "checks_learned",
     "checks_evidence",
