@@ -4,6 +4,7 @@ import math
 from collections.abc import Iterator
 
 from evalcore.answer import by_highest
+from evalcore.checks_models import why_632_misleads
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
 from evalcore.per_case import agreement_within_units
