@@ -192,16 +192,18 @@ def cut_off_not_judged(
 def _why_not_judged(found: AtCutOff, noun: Noun) -> tuple[str, str, float, float]:
     """Why not, what was seen, and the number with its threshold."""
     name, rounds = class_name(found.rule.of_class), len(found.cut_offs)
+    cases = noun.counted(len(found.part.held.labels))
     if found.unlike == "not learned":
-        why = f"none could be learned from all {noun.plural}"
+        why = f"none could be learned from all {cases}"
         return why, "Cut-offs learned from all: 0; threshold: 1", 0, 1
     if found.unlike == "bags":
         infinite = int(np.isinf(found.cut_offs).sum())
         seen = (
-            f"In {count(infinite)} of {count(rounds)} rounds it calls all or none, and learned "
-            f"from all {noun.plural} it is {place(found.on_all)} (threshold: {level(HALF)})"
+            f"There it calls all or none (threshold: {level(HALF)} of rounds); learned from all "
+            f"{cases} it is {place(found.on_all)}"
         )
-        return "bags are too small to learn one like it", seen, infinite / rounds, HALF
-    each, share = ("every", 1) if found.unlike == "all" else ("no", 0)
-    seen = f"Share of all {noun.plural} that is called: {share}; threshold: {share}"
-    return f"it calls {each} {noun.singular} {name}", seen, share, share
+        why = f"in {count(infinite)} of {count(rounds)} rounds the bag cannot teach one like it"
+        return why, seen, infinite / rounds, HALF
+    each, share = ("all", 1) if found.unlike == "all" else ("none", 0)
+    seen = f"Share of those it was learned from that is called: {share}; threshold: {share}"
+    return f"it calls {each} of {cases} {name}", seen, share, share

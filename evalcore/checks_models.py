@@ -39,9 +39,9 @@ def always_the_same(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
             "always_the_same",
             "grave",
             name,
-            f"{capitalised(plan.title(name))} fitted on all cases always answers "
-            f"{quoted(table.classes[part.always_names])}",
-            f"None of {count(n)} gets another answer (threshold: 1), while models of the rounds "
+            f"{capitalised(plan.title(name))}, fitted on all cases, answers "
+            f"{quoted(table.classes[part.always_names])} for all {count(n)} of them",
+            f"None of them gets another answer (threshold: 1), while models of the rounds "
             f"gave another in {percent(share, n)} of held-out answers. What share of each class is "
             "found therefore says little about the model that goes to work: no interval is offered "
             "for it, and no limit on it is called shown.",

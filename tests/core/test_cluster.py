@@ -71,7 +71,8 @@ def test_a_lost_worker_is_survived(cluster, on_one_core, tmp_path):
     assert results(record) == on_one_core
 
 
-def test_nobody_at_the_address():
+def test_nobody_at_the_address(monkeypatch):
+    monkeypatch.setattr("evalcore.cluster.PATIENCE", 0.5)  # seconds; nobody comes anyway
     message = (
         "No scheduler answers at 'tcp://127.0.0.1:9'; start one and its workers, and give its "
         "address, such as tcp://10.0.0.5:8786."

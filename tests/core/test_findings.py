@@ -202,6 +202,20 @@ def steady(wrong: int, n_each: int = 50, **choices):
     return table, plan, evaluated(table, plan, {CV: halves(table.n_cases)}, chosen=chosen)
 
 
+def constant(wrong: int):
+    """The fit on all cases names a alone; rounds name so many of the 50 of b wrongly."""
+    table, plan = two_classes(), a_plan()
+    rounds, cases = halves(table.n_cases), range(50, 50 + wrong)
+    found = evaluated(
+        table,
+        plan,
+        {CV: rounds},
+        chosen={CV: wrong_in(table, cases)},
+        whole=np.zeros(table.n_cases, dtype=int),
+    )
+    return table, plan, found
+
+
 def swinging(right_rounds: int):
     """Four rounds hold out the same four of eight cases; in some all are right, else all wrong."""
     table = two_classes(4)
@@ -422,6 +436,9 @@ RAISED = {
         ("grave", "b", 1, 0.5),
     ),
     # of 8 further ones the smallest score leaves 1 in 9 below it, more than 1 in 10
+    # 8 of b: (8 + 1)(1 - 0.9) is below 1, so that all of the class are called, and all others
+    "cut_off_not_judged": (as_given(at_floor(0, of_class=8, rule=FLOOR)), ("grave", "b", 1, 1)),
+    "always_the_same": (constant(wrong=3), ("grave", "logistic", 0, 1)),
     "floor_from_few": (
         as_given(at_floor(0, of_class=8, rule=FLOOR)),
         ("grave", "b", 8, 9),
@@ -493,6 +510,8 @@ QUIET = {
     "cut_off_chosen_here": alone(cut_off=CutOffRule("b", "fixed", at=0.35, set_on="2026-05-04")),
     # 9 of them in each bag: 1 in 10
     "cut_off_calls_all": as_given(at_floor(0, of_class=18, rule=FLOOR)),
+    "cut_off_not_judged": as_given(at_floor(0, rule=FLOOR)),
+    "always_the_same": constant(wrong=50),
     "floor_from_few": as_given(at_floor(0, of_class=9, rule=FLOOR)),
     # 0.5 in every round and of all
     "cut_off_apart": as_given(at_floor(0, rule=FLOOR)),

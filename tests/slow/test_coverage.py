@@ -21,6 +21,7 @@ from tests.core.checks import table_of
 from tests.studies import coverage
 from tests.studies.cells import QUICK, Cell
 from tests.studies.mechanisms import further_cases
+from tests.studies.truth import fitted_scores, true_values
 
 pytestmark = pytest.mark.slow
 
@@ -81,8 +82,8 @@ def test_where_the_estimate_is_low_it_is_right_about_models_of_four_fifths_of_th
         (drawn,) = plan.draw(table).values()
         learned = np.flatnonzero(drawn.train[0])
         part = table_of(table.labels[learned].tolist(), features=table.features[learned])
-        scores = coverage.fitted_scores(part, plan.candidates[0], further, random_state=1)
-        truth = coverage.true_values("p50", further, scores, counted_by="case")
+        scores = fitted_scores(part, plan.candidates[0], further, random_state=1)
+        truth = true_values("p50", further, scores, counted_by="case")
         errors.append(float(str(row[VALUE])) - float(truth["accuracy"]))
     assert abs(np.mean(errors)) <= 3 * np.std(errors) / math.sqrt(TABLES)
 

@@ -12,7 +12,8 @@ class Cell:
     candidates: tuple[str, ...]  # as written in a plan; the first is compared with the others
     most: int = 10**9  # tables of it, whatever is asked for; slow candidates have fewer
     bootstrap: bool = True  # whether the second look is carried out too
-    cut_off: str = ""  # a rule for the smallest class of each table, as on the command line
+    # a rule for the smallest class of each table, as on the command line; of one candidate
+    cut_off: str = ""
 
 
 STEADY = ("logistic", "lda", "naive_bayes")

@@ -14,6 +14,12 @@ ROWS = (  # what README says, estimator, measure
     ("AUC", "mean_of_rounds", "auc"),
     ("accuracy of the best of several, corrected", "winner_corrected", "accuracy"),
     ("verdict: a limit equal to the true rate is not called *shown*", "verdict", ""),
+    ("accuracy at a learned cut-off", "at_cut_off", "accuracy"),
+    ("balanced accuracy at a learned cut-off", "at_cut_off", "balanced_accuracy"),
+    ("the called class’s share found at a learned cut-off", "at_cut_off", "sensitivity"),
+    ("how often the class is called rightly there", "at_cut_off", "right_when_called"),
+    ("how often it is rightly not called", "at_cut_off", "right_when_not_called"),
+    ("expected cost of a case there", "at_cut_off", "cost"),
     ("comparison: no false call", "comparison", "accuracy"),
 )
 NO_SHORT = "none"
@@ -47,7 +53,8 @@ def too_low(known: Iterable[Line]) -> str:
     """The cells of the default scheme that fell short, a line each, worst first."""
     found = [line for line in known if line.scheme == "default" and line.short]
     return "".join(
-        f"- {line.candidate}, {line.measure} ({line.estimator}), {line.n} "
+        f"- {line.candidate}{f' with {line.cut_off}' if line.cut_off else ''}, "
+        f"{line.measure} ({line.estimator}), {line.n} "
         f"{'units' if line.counted_by == 'unit' else 'cases'}, {TITLES[line.scenario]}: "
         f"{100 * line.coverage:.1f} % ± {100 * line.monte_carlo_error:.1f}\n"
         for line in sorted(found, key=lambda line: line.coverage)

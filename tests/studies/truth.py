@@ -1,5 +1,6 @@
 """What a candidate fitted on a table is truly worth: its answers for many further cases."""
 
+import math
 from collections.abc import Mapping
 
 import numpy as np
@@ -58,6 +59,11 @@ def true_values(
         rows = MECHANISMS[scenario].rows
         labels, scores = labels[::rows], scores.reshape(-1, rows, scores.shape[1]).mean(axis=1)
     named = measures.predicted_class(scores)
+    if called and math.isnan(called[1]):  # no cut-off, no answers
+        nothing = np.float64(np.nan)
+        return {"accuracy": nothing, "balanced_accuracy": nothing, "auc": nothing} | {
+            "sensitivity": np.full(scores.shape[1], np.nan)
+        }
     if called:
         of_class, cut_off = called
         named = np.where(calls(scores[:, of_class], cut_off), of_class, 1 - of_class)
