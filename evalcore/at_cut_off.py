@@ -50,7 +50,7 @@ class AtCutOff:
         None where nobody is left undecided, or scores are no probabilities.
     unlike : {"", "not learned", "all", "none", "bags"}
         Why no interval is offered, if none is: it could not be learned from all cases; it calls
-        all or none of them; or in most rounds every or no case is called, since bags are smaller.
+        all or none of them; or most rounds call every or no case, as bags are smaller.
     """
 
     part: Judged

@@ -197,7 +197,7 @@ def _why_not_judged(found: AtCutOff, noun: Noun) -> tuple[str, str, float, float
         why = f"none could be learned from all {cases}"
         return why, "Cut-offs learned from all: 0; threshold: 1", 0, 1
     if found.unlike == "bags":
-        infinite = int(np.isinf(found.cut_offs).sum())
+        infinite, rounds = int(np.isinf(found.cut_offs).sum()), rounds - found.undefined
         seen = (
             f"There it calls all or none (threshold: {level(HALF)} of rounds); learned from all "
             f"{cases} it is {place(found.on_all)}"

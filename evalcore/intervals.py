@@ -83,8 +83,8 @@ def exact_with_model_variance(p: float, n: float, tau2: float, *, level: float =
     Own construction, for the share of a class found at a cut-off that was learned from scores of
     that class: the estimate then hardly moves, and it is the truth that does. At a floor f it is
     Beta distributed with parameters (m + 1)f and (m + 1)(1 - f) (Wilks 1941), of which these
-    bounds hold slightly more than the level; Wilson's, drawn towards one half, lie too low
-    (own simulation: 85 % of tables for 95 %).
+    bounds hold more than the level (96.5 to 98 % for 95 with 12 to 60 cases); Wilson's, drawn
+    towards one half, lie too low (own simulation: 85 % of tables for 95 %).
 
     Parameters
     ----------
@@ -246,7 +246,7 @@ METHODS: dict[str, str] = {
     "newcombe_difference": "hybrid score for a difference (Newcombe)",
     "sum_of_shares": "square-and-add of both classes' intervals",
     "ratio_of_shares": "ratio of both classes' intervals (Donner and Zou)",
-    "square_and_add": "square-and-add of Wilson intervals",
+    "square_and_add": "square-and-add of the classes' intervals (Zou and Donner)",
     "square_and_add_model_variance": "square-and-add with the model's variance (own)",
     "rows_of_units": "rows of units, with the model's variance (own)",
     "auc_score_type": "score type for AUC (Newcombe)",

@@ -300,7 +300,7 @@ def at_rate(
 
 
 def balanced_interval(level: float, part: Judged) -> Interval:
-    """The default interval for balanced accuracy."""
+    """The default interval for balanced accuracy: the classes' own, by square-and-add."""
     parts = [share_interval(level, part, k, variance=False) for k in range(part.n_classes)]
     recalls = [part.pooled_value("sensitivity", k) for k in range(part.n_classes)]
     return intervals.square_and_add(recalls, parts, part.tau2_balanced)

@@ -116,7 +116,8 @@ def ratio_of_shares(over: Rate, under: Rate) -> tuple[float, float]:
     above, below = under.high * (2 * b - under.high), under.low * (2 * b - under.low)
     first = a * b + math.sqrt(max(0.0, (a * b) ** 2 - least * above))
     second = a * b + math.sqrt(max(0.0, (a * b) ** 2 - most * below))
-    return least / first if least else 0.0, second / below if below else math.inf
+    low = least / first if first else (math.inf if least else 0.0)
+    return low, second / below if below else math.inf
 
 
 def sum_of_shares(*rates: Rate, weights: tuple[float, ...]) -> tuple[float, float]:

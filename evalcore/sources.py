@@ -42,6 +42,11 @@ SOURCES: dict[str, Source] = {
         "Stat. Med. 27:1693-1702",
         "10.1002/sim.3095",
     ),
+    "donner_zou2012": Source(
+        "Donner & Zou 2012, Closed-form confidence intervals for functions of the normal mean and "
+        "standard deviation, Stat. Methods Med. Res. 21:347-359",
+        "10.1177/0962280210383082",
+    ),
     "hand_till2001": Source(
         "Hand & Till 2001, A simple generalisation of the area under the ROC curve for multiple "
         "class classification problems, Mach. Learn. 45:171-186",

@@ -1,6 +1,7 @@
 """The console command with grids, a cut-off, a learning curve, a chance check and flags."""
 
 import csv
+import math
 import re
 from itertools import product
 from pathlib import Path
@@ -13,6 +14,8 @@ from evalcore.choice import choose
 from evalcore.estimated import ESTIMATORS
 from evalcore.record import Record
 from evalcore.schemes import ALL_SCHEMES
+from evalcore.share_in_use import Rate
+from tests.core.test_share_in_use import by_roots
 
 from .test_command import ROOT, evaluate, rows_of
 
@@ -151,6 +154,42 @@ class TestResults:
             ):
                 assert value[key, measure, of_class] == pytest.approx(expected, abs=1e-12)
 
+    def test_worth_in_use_has_ends_that_follow_from_those_of_the_rates(self, asked):
+        found = beside(asked)
+        ends = {
+            row["class"]: Rate(*(float(row[c]) for c in ("value", "low", "high")))
+            for row in found["at_cut_off"]
+            if (row["candidate"], row["measure"]) == ("lda", "sensitivity")
+        }
+        right, passed = ends["failing"], ends["good"]
+        missed, alarms = (
+            Rate(1 - rate.value, 1 - rate.high, 1 - rate.low) for rate in (right, passed)
+        )
+        rows = {
+            (row["estimator"], row["measure"], row["class"]): row
+            for row in found["at_cut_off_share_S"]
+            if row["candidate"] == "lda"
+        }
+        for share in (0.1, 0.3):
+            key = f"at_cut_off_share_{share}"
+            for of_class, of_share, ratio in (
+                ("failing", share, by_roots(alarms, right)),
+                ("good", 1 - share, by_roots(missed, passed)),
+            ):
+                row = rows[key, "precision", of_class]
+                expected = [of_share / (of_share + (1 - of_share) * end) for end in ratio[::-1]]
+                assert (row["interval"], row["level"]) == ("ratio_of_shares", "0.95")
+                assert [float(row[c]) for c in ("low", "high")] == pytest.approx(expected, rel=1e-9)
+            row = rows[key, "cost_per_case", ""]
+            a, b = 3 * share, 1 - share
+            value = a * missed.value + b * alarms.value
+            below = math.hypot(a * (missed.value - missed.low), b * (alarms.value - alarms.low))
+            above = math.hypot(a * (missed.high - missed.value), b * (alarms.high - alarms.value))
+            assert (row["interval"], row["level"]) == ("sum_of_shares", "0.95")
+            expected = [value - below, value + above]
+            assert [float(row[c]) for c in ("low", "high")] == pytest.approx(expected, rel=1e-9)
+            assert rows[key, "share_called", "failing"]["interval"] == ""
+
     def test_undecided_both_ways(self, asked):
         found = beside(asked)
 
@@ -259,6 +298,10 @@ class TestSaying:
         first = next(at for at, line in enumerate(lines) if line.startswith(begins[0]))
         for line, begin in zip(lines[first:], begins, strict=False):
             assert line.startswith(begin)
+        for where in lines[first + 3 : first + 5]:
+            # how often right when called and when not, and what a case costs, each with ends
+            assert len(re.findall(r" % \(\d+–>?\d+ %\)", where)) == 2
+            assert re.search(r"cost is 0\.\d{3} \(0\.\d{3}–[0-3]\.\d{3}\) a case\.", where)
         last = lines[first + len(begins) : -1]
         assert all(x.partition(":")[0] in ("grave", "moderate", "note") for x in last)
 

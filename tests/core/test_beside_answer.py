@@ -16,13 +16,14 @@ from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.checks_learned import still_rising
 from evalcore.choice import choose
-from evalcore.cut_off import AtShare, WithUndecided
+from evalcore.cut_off import WithUndecided
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
 from evalcore.judged import clusters
 from evalcore.learning_curve import Gain, Prediction
 from evalcore.schemes import ALL_SCHEMES, SCHEMES
+from evalcore.share_in_use import AtShare, Rate
 from evalcore.table import Roles
 from evalcore.wording import NBSP, Noun
 
@@ -33,11 +34,18 @@ ROOT = pathlib.Path(__file__).parents[2]
 NAN, INF = math.nan, math.inf
 COST = CutOffRule("b", "cost", miss=10, share_low=0.08, share_high=0.08)
 FLOOR = CutOffRule("b", "floor", floor=0.9)
-SHARES = (AtShare(0.08, 0.6, 0.97, 0.4117, 0.25),)
-# 14 of 20 found and 60 of 60 passed; Wilson (statsmodels) 0.481 to 0.855 and 0.940 to 1
+
+
+def worth(share: float, called: float, *rates: tuple[float, ...]) -> AtShare:
+    """How often right when called, when not, and the cost: a value with its ends, if any."""
+    return AtShare(share, *(Rate(*rate) for rate in rates), called=called)
+
+
+SHARES = (worth(0.08, 0.25, (0.6,), (0.97,), (0.4117,)),)
+# 14 of 20 found and 60 of 60 passed; exact (scipy) 0.457 to 0.881 and 0.940 to 1
 RATES = (
     "Held out, each round at its own cut-off: a cases passed (specificity) 100 % (94–100 %), "
-    "n = 60; b cases found (sensitivity) 70 % (48–85 %), n = 20."
+    "n = 60; b cases found (sensitivity) 70 % (46–88 %), n = 20."
 )
 AGAINST = (
     "Against always giving the most frequent answer, by the highest score and on one answer each: "
@@ -234,8 +242,17 @@ class TestInUse:
                 ],
             ),
             (
+                COST,
+                (worth(0.08, 0.25, (0.6, 0.0, 0.85), (0.97, 0.94, 1.0), (0.4117, 0.25, 1.3)),),
+                [
+                    "Where 8 % of cases are b: 25 % are called b, rightly in 60 % (0–85 %); of "
+                    "those not called 97 % (94–100 %) are not b; the expected cost is 0.412 "
+                    "(0.250–1.300) a case."
+                ],
+            ),
+            (
                 CutOffRule("b", "cost"),
-                (AtShare(0.25, 0.6, 0.97, 0.4117, 0.125),),
+                (worth(0.25, 0.125, (0.6,), (0.97,), (0.4117,)),),
                 [
                     "Where 25 % of cases are b, the share of this table: 12 % are called b, "
                     "rightly in 60 %; of those not called 97 % are not b; the expected cost is "
@@ -244,26 +261,29 @@ class TestInUse:
             ),
             (
                 replace(FLOOR, share_low=0.004, share_high=0.125),
-                (AtShare(0.004, 0.05, 1.0, 9.0, 0.25), AtShare(0.125, 0.7, 0.996, 9.0, 0.3)),
+                (
+                    worth(0.004, 0.25, (0.05,), (1.0,), (9.0,)),
+                    worth(0.125, 0.3, (0.7, 0.5, 0.9), (0.996, 0.9, 1.0), (9.0, 8.0, 10.0)),
+                ),
                 [
                     "Where 0.4 % of cases are b: 25 % are called b, rightly in 5 %; of those not "
                     "called 100 % are not b.",
-                    "Where 12.5 % of cases are b: 30 % are called b, rightly in 70 %; of those not "
-                    "called >99 % are not b.",
+                    "Where 12.5 % of cases are b: 30 % are called b, rightly in 70 % (50–90 %); of "
+                    "those not called >99 % (90–100 %) are not b.",
                 ],
             ),
             (
                 replace(FLOOR, share_low=0.08, share_high=0.08),
-                (AtShare(0.08, NAN, 0.92, NAN, 0.0),),
+                (worth(0.08, 0.0, (NAN,), (0.92,), (NAN,)),),
                 ["Where 8 % of cases are b: 0 % are called b; of those not called 92 % are not b."],
             ),
             (
                 replace(FLOOR, share_low=0.08, share_high=0.08),
-                (AtShare(0.08, 0.08, NAN, NAN, 1.0),),
+                (worth(0.08, 1.0, (0.08,), (NAN,), (NAN,)),),
                 ["Where 8 % of cases are b: 100 % are called b, rightly in 8 %."],
             ),
         ],
-        ids=["stated", "table", "range", "none called", "all called"],
+        ids=["stated", "with ends", "table", "range", "none called", "all called"],
     )
     def test_at_each_share(self, rule, shares, says):
         assert at(rule, at_shares=shares)[2:] == says
@@ -289,10 +309,10 @@ class TestInUse:
         first = part.held.rounds.first(1)
         held = replace(part.held, rounds=first, scores=part.held.scores[: first.test.sum()])
         sentences = said(at_literal(made, part=replace(part, held=held), undecided=None))
-        # three of ten missed, none of thirty called: Wilson 0.397 to 0.892 and 0.886 to 1
+        # three of ten missed, none of thirty called: exact 0.348 to 0.933 and 0.884 to 1
         assert sentences[1] == (
             "Held out, each round at its own cut-off: a cases passed (specificity) 100 % "
-            "(89–100 %), n = 30; b cases found (sensitivity) 70 % (40–89 %), n = 10."
+            "(88–100 %), n = 30; b cases found (sensitivity) 70 % (35–93 %), n = 10."
         )
 
 
@@ -314,14 +334,18 @@ class TestUnitsAndRows:
         return replace(made, table=replace(made.table, roles=self.LOTS))
 
     def test_lots_are_answered(self):
-        # half-way between 0.2 and 0.6; ten lots of 0.6 are left to a person, thirty have 0.8
+        # half-way between 0.2 and 0.6; ten lots of 0.6 are left to a person, thirty have 0.8.
+        # Exact bounds 0.025^(1/30) = 0.884 and 0.025^(1/10) = 0.692, so at most 0.116 alarms and
+        # 0.308 missed; of the other share at least root(1 - 0.308^2) = 0.951 and 0.993 (see
+        # `ratio_of_shares`): 0.08/(0.08 + 0.92 x 0.116/0.951), 0.92/(0.92 + 0.08 x 0.308/0.993),
+        # root((0.8 x 0.308)^2 + (0.92 x 0.116)^2)
         assert said(self.given()) == [
             "A lot is called b from 0.400 up, learned from held-out scores inside the bag (a miss "
             "costs 10, a false alarm 1); in 90 % of rounds or more: 0.400.",
             "Held out, each round at its own cut-off: a lots passed (specificity) 100 % "
-            "(89–100 %), n = 30; b lots found (sensitivity) 100 % (72–100 %), n = 10.",
-            "Where 8 % of lots are b: 8 % are called b, rightly in 100 %; of those not called "
-            "100 % are not b; the expected cost is 0.000 a lot.",
+            "(88–100 %), n = 30; b lots found (sensitivity) 100 % (69–100 %), n = 10.",
+            "Where 8 % of lots are b: 8 % are called b, rightly in 100 % (42–100 %); of those not "
+            "called 100 % (97–100 %) are not b; the expected cost is 0.000 (0.000–0.269) a lot.",
             "An answer with a probability below 0.7 is left to a person: 25 % of lots. Of the others "
             "100 % are right; counting those left undecided as wrong, 75 % of all.",
         ]
@@ -527,6 +551,7 @@ class TestChance:
     "name",
     [
         "evalcore/beside_answer",
+        "evalcore/checks_cut_off",
         "evalcore/checks_learned",
         "app/pages/results",
         "app/pages/settings",

@@ -3,22 +3,18 @@
 import dataclasses
 import math
 
-import numpy as np
 import pytest
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
-from evalcore.cut_off_rule import CutOffRule
-from evalcore.limit import Limit
 from evalcore.schemes import SCHEMES
 from evalcore.wording import NBSP
 
 from .checks import table_of
-from .learned_cases import a_curve, as_given, at_floor, at_literal, beside, chance, picks
+from .learned_cases import a_curve, beside, chance, picks
 from .test_findings import (
     BOOTSTRAP,
     CV,
-    FLOOR,
     LDA,
     LOGISTIC,
     STRENGTH,
@@ -32,203 +28,7 @@ from .test_findings import (
     permuted,
     picked,
     rising,
-    wilson,
 )
-
-
-class TestCutOffs:
-    def test_one_chosen_on_these_cases_is_grave_where_a_limit_is_set(self):
-        limits = (Limit("accuracy", 0.8),)
-        given = alone(cut_off=CutOffRule("b", "fixed", at=0.35), limits=limits)
-        assert only("cut_off_chosen_here", *given).severity == "grave"
-
-    def test_learned_ones_are_not_chosen_here(self):
-        given = alone(cut_off=CutOffRule("b", "cost", miss=10))
-        assert found("cut_off_chosen_here", *given) == []
-
-    @pytest.mark.parametrize(
-        ("floor", "of_class", "needed", "every"),
-        [
-            # nine for 9 of 10 and nineteen for 19 of 20, in all
-            (0.9, 8, 9, True),
-            (0.95, 18, 19, True),
-            # and in the bags, each half of all: eight and nine of seventeen
-            (0.9, 9, None, True),
-            (0.9, 16, None, True),
-            (0.9, 17, None, False),
-            (0.9, 18, None, False),
-            (0.95, 36, None, True),
-            (0.95, 38, None, False),
-        ],
-    )
-    def test_too_few_in_all_or_in_the_bags(self, floor, of_class, needed, every):
-        rule = CutOffRule("b", "floor", floor=floor)
-        given = as_given(at_floor(0, of_class=of_class, rule=rule))
-        numbers = {
-            check: [(f.value, f.threshold) for f in found(check, *given)]
-            for check in ("floor_from_few", "cut_off_calls_all")
-        }
-        assert numbers == {
-            "floor_from_few": [(of_class, needed)] if needed else [],
-            "cut_off_calls_all": [(1, 0.5)] if every else [],
-        }
-
-    def test_too_few_in_the_bags_says_that_held_out_figures_are_of_something_else(self):
-        given = as_given(at_floor(0, of_class=9, rule=FLOOR))
-        finding = only("cut_off_calls_all", *given)
-        assert finding.severity == "grave"
-        assert finding.title.replace(NBSP, " ") == "In 100 % of rounds every case is called b"
-        assert finding.seen.replace(NBSP, " ") == (
-            "So held-out figures are those of a constant answer there (4 of 4 rounds; threshold: "
-            "50 %)."
-        )
-        # and that another cut-off goes to work
-        apart = only("cut_off_apart", *given)
-        assert (apart.value, apart.threshold) == (0.5, -math.inf)
-        assert apart.title == "The cut-off that goes to work, 0.500, lies apart from those that were judged"  # fmt: skip
-        assert "of rounds it fell between calling all and calling all (" in apart.seen
-
-    @pytest.mark.parametrize(
-        "rule", [CutOffRule("b", "fixed", at=0.25), CutOffRule("b", "cost", miss=1000)], ids=str
-    )
-    def test_whatever_the_rule_a_constant_answer_is_said(self, rule):
-        # scores are 0.25 and up; three cases of b score 0.25 inside the bags as those of a do
-        given = at_floor(0, rule=rule)
-        if rule.by == "cost":
-            (at,) = given.beside.cut_offs
-            nobody = np.zeros_like(at.part.held.scores)
-            nobody[:, 1] = 1
-            part = dataclasses.replace(
-                at.part, held=dataclasses.replace(at.part.held, scores=nobody)
-            )
-            assert found("cut_off_calls_all", *as_given(given)) == []
-            given = at_literal(given, part=part)
-        finding = only("cut_off_calls_all", *as_given(given))
-        assert (finding.severity, finding.subject) == ("grave", "b")
-        assert (finding.value, finding.threshold) == (1, 0.5)
-
-    @pytest.mark.parametrize(("rounds", "raised"), [(2, False), (3, True), (4, True)])
-    def test_it_takes_more_than_half_of_the_rounds(self, rounds, raised):
-        given = at_floor(0, rule=CutOffRule("b", "cost"))
-        (at,) = given.beside.cut_offs
-        held = at.part.held
-        scores = held.scores.copy()
-        scores[held.rounds.pairs[0] < rounds] = 0, 1
-        part = dataclasses.replace(at.part, held=dataclasses.replace(held, scores=scores))
-        values = [
-            f.value for f in found("cut_off_calls_all", *as_given(at_literal(given, part=part)))
-        ]
-        assert values == ([rounds / 4] if raised else [])
-
-    def test_all_called_the_other_class_is_not_this(self):
-        given = as_given(at_floor(0, rule=CutOffRule("b", "fixed", at=0.9)))
-        assert found("cut_off_calls_all", *given) == []
-
-    def test_without_a_round_at_a_cut_off_nothing_is_called(self):
-        given = at_floor(0, rule=FLOOR)
-        (at,) = given.beside.cut_offs
-        held = at.part.held
-        none = dataclasses.replace(held, rounds=held.rounds.first(0), scores=held.scores[:0])
-        part = dataclasses.replace(at.part, held=none)
-        nothing = at_literal(given, part=part, cut_offs=np.full(4, math.nan))
-        for check in ("cut_off_calls_all", "cut_off_apart"):
-            assert found(check, *as_given(nothing)) == []
-
-    def test_a_floor_counts_what_is_independent(self):
-        # twenty cases of b in two blocks
-        given = at_floor(0, rule=FLOOR)
-        (at,) = given.beside.cut_offs
-        part = dataclasses.replace(at.part, units=np.arange(40) % 2)
-        assert found("floor_from_few", *as_given(given)) == []
-        finding = only("floor_from_few", *as_given(at_literal(given, part=part, learned_from=2)))
-        assert (finding.severity, finding.value, finding.threshold) == ("grave", 2, 9)
-        assert finding.title.replace(NBSP, " ") == (
-            "2 b independent cases cannot teach a floor of 90 %"
-        )
-
-    @pytest.mark.parametrize(
-        ("on_all", "threshold"),
-        [
-            (0.2, 0.3), (0.3, None), (0.35, None), (0.5, None), (0.6, 0.5),
-            (-math.inf, 0.3), (math.inf, 0.5), (math.nan, None),
-        ],
-    )  # fmt: skip
-    def test_a_cut_off_beyond_either_end_was_not_judged(self, on_all, threshold):
-        cut_offs = np.array([0.3, 0.4, 0.5, math.nan])
-        given = at_literal(at_floor(0, rule=FLOOR), on_all=on_all, cut_offs=cut_offs)
-        raised = found("cut_off_apart", *as_given(given))
-        assert [f.threshold for f in raised] == ([] if threshold is None else [threshold])
-        assert all((f.severity, f.subject, f.value) == ("moderate", "b", on_all) for f in raised)
-        said = {-math.inf: "calling all", math.inf: "calling none"}
-        for finding in raised:
-            assert f"work, {said.get(on_all, f'{on_all:.3f}')}, lies" in finding.title
-            assert "fell between 0.300 and 0.500 (" in finding.seen
-
-    def test_a_fixed_cut_off_goes_to_work_as_it_was_judged(self):
-        given = at_floor(0, rule=CutOffRule("b", "fixed", at=0.3))
-        assert found("cut_off_apart", *as_given(at_literal(given, on_all=0.9))) == []
-
-    def test_constant_answers_are_asked_of_every_rule_but_not_found_in_these(self):
-        for rule in (CutOffRule("b", "cost"), CutOffRule("b", "fixed", at=0.6)):
-            given = as_given(at_floor(6, of_class=8, rule=rule))
-            assert found("cut_off_calls_all", *given) == []
-
-    @pytest.mark.parametrize("check", ["floor_from_few", "floor_not_delivered"])
-    def test_a_floor_is_asked_of_a_floor_alone(self, check):
-        for rule in (CutOffRule("b", "cost"), CutOffRule("b", "fixed", at=0.6)):
-            assert found(check, *as_given(at_floor(6, of_class=8, rule=rule))) == []
-
-    # Wilson at 14 of 20 ends at 0.855, at 15 of 20 at 0.888, at 16 of 20 at 0.919
-    @pytest.mark.parametrize(
-        ("below", "severity"), [(3, "moderate"), (4, "moderate"), (5, "grave"), (6, "grave")]
-    )
-    def test_a_floor_above_the_interval_is_grave(self, below, severity):
-        finding = only("floor_not_delivered", *as_given(at_floor(below, rule=FLOOR)))
-        assert (finding.severity == "grave") == (wilson(20 - below, 20)[1] < 0.9)
-        assert finding.severity == severity
-        where = "lies above" if severity == "grave" else "is within"
-        assert f"90{NBSP}%, which {where} the interval." in finding.seen
-
-    def test_a_share_just_short_is_not_rounded_up_to_the_floor(self):
-        # 224 of 250 are 89.6 %
-        finding = only("floor_not_delivered", *as_given(at_floor(26, of_class=250, rule=FLOOR)))
-        assert finding.value == pytest.approx(0.896, rel=1e-12)
-        assert finding.title.replace(NBSP, " ") == (
-            "The cut-off for at least 90 % of b cases finds 0.4 points less while they are held out"
-        )
-
-    def test_cases_never_held_out_are_not_behind_it(self):
-        # in two of four rounds no cut-off was learned: ten of b were never answered
-        found_ = at_floor(6, rule=FLOOR)
-        (at,) = found_.beside.cut_offs
-        held = at.part.held
-        half = held.rounds.first(1)
-        kept = dataclasses.replace(held, rounds=half, scores=held.scores[: half.test.sum()])
-        part = dataclasses.replace(at.part, held=kept)
-        finding = only("floor_not_delivered", *as_given(at_literal(found_, part=part)))
-        # three of the ten even ones
-        assert finding.value == pytest.approx(0.7, rel=1e-12)
-        assert f"n{NBSP}={NBSP}10;" in finding.seen
-
-    def test_without_an_interval_none_is_spoken_of(self):
-        found_ = at_floor(6, rule=FLOOR)
-        (at,) = found_.beside.cut_offs
-        # two blocks, as of two sites, are too few to tell their variance
-        part = dataclasses.replace(at.part, units=np.arange(40) % 2)
-        finding = only("floor_not_delivered", *as_given(at_literal(found_, part=part)))
-        assert finding.severity == "moderate"
-        assert "interval" not in finding.seen
-
-    def test_of_the_candidate_of_the_answer(self):
-        table, plan, made = as_given(at_floor(6, of_class=8, rule=FLOOR))
-        nobody = dataclasses.replace(made, beside=dataclasses.replace(made.beside, cut_offs=()))
-        for check in (
-            "cut_off_calls_all",
-            "floor_from_few",
-            "floor_not_delivered",
-            "cut_off_apart",
-        ):
-            assert found(check, table, plan, nobody) == []
 
 
 class TestPickedSettings:

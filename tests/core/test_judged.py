@@ -8,17 +8,19 @@ from fractions import Fraction
 import numpy as np
 import pytest
 import statsmodels.api as sm
+from scipy.stats import beta
 from sklearn.discriminant_analysis import LinearDiscriminantAnalysis
 from sklearn.metrics import accuracy_score, balanced_accuracy_score, recall_score
 from sklearn.neighbors import KNeighborsClassifier
 
 from evalcore.answers import HeldOut, Reduced
-from evalcore.binomial import wilson
+from evalcore.binomial import clopper_pearson, wilson
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
 from evalcore.intervals import auc_score_type, square_and_add, with_model_variance
 from evalcore.judged import (
     Judged,
+    at_rate,
     auc_interval,
     balanced_interval,
     clusters,
@@ -361,6 +363,97 @@ class TestShareInterval:
         ):  # fmt: skip
             e = found.estimate(measure, "naive_bayes", of_class=of_class)
             assert (e.interval is not None) is offered
+
+
+def exact(p, n, tau2, level):
+    """Beta quantiles at the n of equal variance; p(1 - p) is not let below a thousandth."""
+    spread = max(p * (1 - p), 0.001)
+    n_equal = spread / (spread / n + tau2)
+    right, tail = p * n_equal, (1 - level) / 2
+    low = beta.ppf(tail, right, n_equal - right + 1) if p > 0 else 0.0
+    high = beta.ppf(1 - tail, right + 1, n_equal - right) if p < 1 else 1.0
+    return pytest.approx((low, high), rel=1e-9)
+
+
+class TestAtLearnedCutOffs:
+    """`varying_in_b`, its answers taken as if each round had learned a cut-off."""
+
+    CLASSES = ((0, 1.0, 10, 0.0), (1, 0.5, 10, 0.5))  # the share right, of how many, tau2
+
+    def part(self, cut_offs, **rest) -> Judged:
+        return replace(varying_in_b(), cut_offs=cut_offs, **rest)
+
+    @pytest.mark.parametrize("level", [0.8, 0.95])
+    def test_a_class_takes_exact_bounds(self, level):
+        part = self.part("learned")
+        for k, p, n, tau2 in self.CLASSES:
+            found = share_interval(level, part, k)
+            assert (found.low, found.high) == exact(p, n, tau2, level)
+            assert (found.method, found.level) == ("exact_model_variance", level)
+            cautious = share_interval(level, part, k, cautious=True)
+            assert (cautious.low, cautious.high) == exact(p, n, part.cautious_tau2(k), level)
+
+    def test_a_fixed_cut_off_was_not_learned_from_the_class(self):
+        for k in (None, 0, 1):
+            fixed, none = (share_interval(0.9, self.part(by), k) for by in ("fixed", "none"))
+            assert fixed == none
+            assert fixed.method == "wilson_model_variance"
+
+    def test_all_cases_keep_wilson_s(self):
+        for cautious in (False, True):
+            learned, none = (
+                share_interval(0.95, self.part(cut_offs), cautious=cautious)
+                for cut_offs in ("learned", "none")
+            )
+            assert learned == none
+            assert learned.method == "wilson_model_variance"
+
+    def test_balanced_accuracy_adds_the_exact_ones(self):
+        part = self.part("learned")
+        ends = [clopper_pearson(part.pooled_value("sensitivity", k) * 10, 10) for k in (0, 1)]
+        values = [part.pooled_value("sensitivity", k) for k in (0, 1)]
+        expected = square_and_add(values, ends, part.tau2_balanced)
+        assert balanced_interval(0.95, part) == expected
+        assert expected.low < balanced_interval(0.95, self.part("none")).low
+
+    def test_rows_of_units_keep_their_own(self):
+        labels, units = np.repeat([0, 1], 20), np.repeat(np.arange(20), 2)
+        rng = np.random.default_rng(7)
+        answers = np.where(rng.random((4, 40)) < 0.8, labels, 1 - labels)
+        part = judged_of(answers, labels, units=units)
+        for k in (None, 0, 1):
+            found = share_interval(0.95, replace(part, cut_offs="learned"), k)
+            assert found == share_interval(0.95, part, k)
+            assert (found.method, found.defined) == ("rows_of_units", True)
+
+    def test_at_any_rate(self):
+        learned, none = self.part("learned"), self.part("none")
+        for rate, n, tau2 in ((0.9, 20, 0.003), (0.35, 11, 0.0), (1.0, 12, 0.01)):
+            given = {"tau2": tau2, "level": 0.9}
+            wilson_s = with_model_variance(rate, n, tau2, level=0.9)
+            found = at_rate(learned, rate, n, of_class=1, **given)
+            assert (found.low, found.high) == exact(rate, n, tau2, 0.9)
+            assert at_rate(learned, rate, n, of_class=0, **given) == found
+            assert at_rate(learned, rate, n, of_class=None, **given) == wilson_s
+            for of_class in (None, 0, 1):
+                assert at_rate(none, rate, n, of_class=of_class, **given) == wilson_s
+        unknown = {"tau2": NAN, "level": 0.9}
+        assert at_rate(learned, 0.5, 8, of_class=0, **unknown).method == "clopper_pearson"
+        assert at_rate(learned, 0.5, 8, of_class=None, **unknown) == wilson(0.5, 8, level=0.9)
+
+    def test_unlike_the_one_in_use_nothing_is_offered(self):
+        part = self.part("unlike")
+        assert offers_interval(self.part("learned"))
+        assert not offers_interval(part)
+        for k in (None, 0, 1):
+            for options in ({}, {"cautious": True}, {"variance": False}):
+                assert not share_interval(0.95, part, k, **options).defined
+        assert not balanced_interval(0.95, part).defined
+        blocks = self.part("unlike", units=np.arange(20) // 2)
+        assert not offers_interval(blocks)
+        assert not share_interval(0.95, blocks).defined
+        # values are there all the same
+        assert part.pooled_value("sensitivity", 1) == 0.5
 
 
 class TestClusters:

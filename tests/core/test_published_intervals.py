@@ -20,6 +20,7 @@ from evalcore.binomial import (
     wilson,
     wilson_corrected,
 )
+from evalcore.intervals import effective_n, exact_with_model_variance
 from evalcore.one_sided import confidence_shown, lower_bound, rule_of_three, upper_bound
 
 from .checks import cases, exactly
@@ -286,3 +287,87 @@ def test_one_side_is_an_end_of_the_two_sided_interval(xn, confidence, least):
     shown = confidence_shown(x, n, least=least)
     assume(abs(shown - confidence) > 1e-9)
     assert (shown > confidence) == (lower_bound(x, n, confidence=confidence) > least)
+
+
+class TestExactWithModelVariance:
+    @pytest.mark.parametrize("case", cases("03", "binom_ci"))
+    @pytest.mark.parametrize("tau2", [0.0, math.nan])
+    def test_without_variance_it_is_the_exact_one(self, case, tau2):
+        x, n, level = (case["inputs"][name] for name in ("x", "n", "level"))
+        found = exact_with_model_variance(x / n, n, tau2, level=level)
+        # a share so near 0 or 1 that it has the least spread counts as many cases as there are
+        assert_allclose(
+            ends(found), case["expected"]["clopper_pearson"], rtol=0, atol=case["tolerance"]
+        )
+        if "published" in case:
+            assert_allclose(
+                ends(found),
+                case["published"]["clopper_pearson"],
+                rtol=0,
+                atol=case["published_tolerance"],
+            )
+        named = "clopper_pearson" if math.isnan(tau2) else "exact_model_variance"
+        assert (found.method, found.level) == (named, level)
+
+    @pytest.mark.parametrize("level", LEVELS)
+    @pytest.mark.parametrize(
+        ("p", "n", "tau2"), [(0.9, 20, 0.003), (0.84, 60, 0.03**2), (0.3, 12, 0.02)]
+    )
+    def test_beta_quantiles_at_the_effective_n(self, p, n, tau2, level):
+        # p(1 - p)/n' = p(1 - p)/n + tau2
+        n_equal = p * (1 - p) / (p * (1 - p) / n + tau2)
+        assert n_equal < 0.95 * n
+        right, tail = p * n_equal, (1 - level) / 2
+        low = stats.beta.ppf(tail, right, n_equal - right + 1)
+        high = stats.beta.ppf(1 - tail, right + 1, n_equal - right)
+        found = exact_with_model_variance(p, n, tau2, level=level)
+        assert ends(found) == pytest.approx((low, high), rel=1e-10)
+
+    @pytest.mark.parametrize("tau2", [0.0, 0.004])
+    def test_all_or_none_right(self, tau2):
+        # the exact bound at the n of the least spread: 0.025 to the 1/n'
+        n_equal = 1 / (1 / 30 + tau2 / 0.001)
+        low = 0.025 ** (1 / n_equal)
+        assert ends(exact_with_model_variance(1, 30, tau2)) == (pytest.approx(low, rel=1e-10), 1)
+        high = 1 - low
+        assert ends(exact_with_model_variance(0, 30, tau2)) == (0, pytest.approx(high, rel=1e-10))
+
+    @pytest.mark.parametrize("level", [0.8, 0.9, 0.95, 0.99])
+    @pytest.mark.parametrize("floor", [0.8, 0.9, 0.95])
+    def test_at_a_floor_it_holds_where_the_truth_falls(self, floor, level):
+        """The share above a cut-off by floor is Beta((m + 1)f, (m + 1)(1 - f)) (Wilks 1941)."""
+        for m in range(12, 61):
+            truth = stats.beta((m + 1) * floor, (m + 1) * (1 - floor))
+            bounds = exact_with_model_variance(floor, m, 0.0, level=level)
+            low, high = truth.interval(level)
+            assert bounds.low < low < high < bounds.high
+            held = truth.cdf(bounds.high) - truth.cdf(bounds.low)
+            # more than the level, by seven tenths of what is left of it at the most
+            assert level < held < level + 0.7 * (1 - level)
+            # Wilson's is drawn towards one half: it leaves out more above
+            assert wilson(floor, m, level=level).high < high
+
+    def test_undefined(self):
+        for tau2 in (0.0, 0.01, math.nan):
+            assert np.isnan(ends(exact_with_model_variance(math.nan, 20, tau2))).all()
+        assert np.isnan(ends(exact_with_model_variance(math.nan, 0, math.nan))).all()
+
+    @given(
+        st.integers(0, 60), st.integers(1, 60), st.floats(0, 0.05),
+        st.floats(0.5, 0.99), st.floats(0.5, 0.99),
+    )  # fmt: skip
+    def test_a_higher_level_never_narrows(self, x, n, tau2, one, other):
+        assume(x <= n)
+        less, more = sorted([one, other])
+        narrow, wide = (exact_with_model_variance(x / n, n, tau2, level=at) for at in (less, more))
+        assert wide.low <= narrow.low + 1e-9
+        assert wide.high >= narrow.high - 1e-9
+        assert narrow.low - 1e-12 <= x / n <= narrow.high + 1e-12
+
+    @given(st.integers(0, 60), st.integers(1, 60), st.floats(0, 0.05))
+    def test_model_variance_never_narrows(self, x, n, tau2):
+        assume(x <= n)
+        plain, wider = clopper_pearson(x, n), exact_with_model_variance(x / n, n, tau2)
+        assert effective_n(x / n, n, tau2) <= n * (1 + 1e-12)
+        assert wider.low <= plain.low + 1e-9
+        assert wider.high >= plain.high - 1e-9

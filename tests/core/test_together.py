@@ -1,7 +1,10 @@
 """What the best of several is worth, as an evaluation reports it."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
+from scipy.stats import beta
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
@@ -72,6 +75,39 @@ def test_values_and_intervals(primary):
         assert e.interval == with_model_variance(e.value, n, tau2, level=0.95)
     assert found.winner.measure == primary
     assert found.winner.value == figures[primary, ""]
+
+
+class TestAtCutOffs:
+    """The same right answers, taken as if each round had learned a cut-off."""
+
+    LABELS = np.array([0] * 24 + [1] * 18)
+
+    def figures(self, cut_offs):
+        found = evaluation(random_right(42, seed=3), labels=self.LABELS)
+        parts = [replace(part, cut_offs=cut_offs) for part in found.parts()]
+        return parts, list(winner_estimates(found.table, found.plan, parts))
+
+    def test_of_a_class_the_interval_is_exact(self):
+        parts, given = self.figures("learned")
+        _, by_score = self.figures("none")
+        assert [e.value for e in given] == [e.value for e in by_score]
+        assert given[0].interval == by_score[0].interval
+        assert given[1].interval is None
+        part = next(p for p in parts if p.candidate == given[0].candidate)
+        for k, e in enumerate(given[2:]):
+            spread = e.value * (1 - e.value)
+            n = spread / (spread / e.n + part.tau2_of(k))
+            low = beta.ppf(0.025, e.value * n, n - e.value * n + 1)
+            high = beta.ppf(0.975, e.value * n + 1, n - e.value * n)
+            assert (e.interval.low, e.interval.high) == pytest.approx((low, high), rel=1e-9)
+            assert e.interval.method == "exact_model_variance"
+
+    def test_unlike_the_one_in_use_there_is_none(self):
+        _, by_score = self.figures("none")
+        _, given = self.figures("unlike")
+        assert [e.interval is None for e in by_score] == [False, True, False, False]
+        assert [e.interval for e in given] == [None] * 4
+        assert [e.value for e in given] == [e.value for e in by_score]
 
 
 def test_auc_counts_as_balanced_accuracy():

@@ -208,18 +208,38 @@ class TestAtCutOff:
         assert self.words(verdicts_at_cut_off(none_right, "naive_bayes")) == fall_short
 
     @pytest.mark.parametrize(("floor", "right"), [(0.9, True), (0.97, False)])
-    def test_a_floor_too_high_for_the_bags_calls_all_and_shows_nothing_of_the_others(
-        self, floor, right
-    ):
+    def test_a_floor_too_high_for_the_bags_shows_nothing(self, floor, right):
         # twenty of b in a bag, forty in all: rank 2.1 of 20 for 0.9; 0.63 of 20 for 0.97, and so
-        # every bag calls all, though of forty the rank is 1.23
+        # every bag calls all, though of forty the rank is 1.23 and another cut-off goes to work
         rule = CutOffRule("b", "floor", floor=floor)
-        limits = (Limit("sensitivity", 0.8, "b"), Limit("sensitivity", 0.8, "a"))
+        limits = (
+            Limit("sensitivity", 0.8, "b"), Limit("sensitivity", 0.8, "a"), *self.LIMITS[:2],
+        )  # fmt: skip
         found = self.found(np.ones((1, 2, 80), dtype=bool), rule, limits=limits)
         at = verdicts_at_cut_off(found, "naive_bayes")
-        assert [v.value for v in at] == [1, 1 if right else 0]
-        assert self.words(at) == ["shown", "shown" if right else "shown to fall short"]
+        assert [v.value for v in at] == ([1, 1, 1, 1] if right else [1, 0, 0.5, 0.5])
+        assert self.words(at) == ["shown" if right else "not shown yet"] * 4
+        assert np.isnan([(v.at_least, v.at_most) for v in at]).all() == (not right)
         assert found.at_cut_off("naive_bayes").on_all == 0.3
+
+    def test_a_class_has_exact_bounds_at_a_cut_off(self):
+        # of forty of b 33 are right the first time, another 33 and two fewer the second
+        right = np.ones((1, 2, 80), dtype=bool)
+        right[0, 0, 40:47] = right[0, 1, 45:54] = False
+        found = self.found(right)
+        (verdict,) = (v for v in verdicts_at_cut_off(found, "naive_bayes") if v.limit.of_class)
+        part, p = found.at_cut_off("naive_bayes").part, 64 / 80
+        assert verdict.value == pytest.approx(p, rel=1e-15)
+        tau2 = part.cautious_tau2(1)
+        n = 1 / (1 / 40 + tau2 / (p * (1 - p)))
+        low, high = beta.ppf(0.05, p * n, n - p * n + 1), beta.ppf(0.95, p * n + 1, n - p * n)
+        # never less cautious than 32 of 40
+        low, high = min(low, beta.ppf(0.05, 32, 9)), max(high, beta.ppf(0.95, 33, 8))
+        assert (verdict.at_least, verdict.at_most) == pytest.approx((low, high), rel=1e-9)
+        # all cases keep Wilson's
+        every = verdicts_at_cut_off(found, "naive_bayes")[0]
+        score = with_model_variance(72 / 80, 80, part.cautious_tau2(None), level=0.9)
+        assert every.at_least == pytest.approx(min(score.low, beta.ppf(0.05, 72, 9)), rel=1e-9)
 
     def test_none_without_a_cut_off(self):
         found = evaluation(first(40, 40), labels=[0, 1] * 20)
@@ -259,6 +279,21 @@ class TestAtCutOff:
         (one, *_) = verdicts_at_cut_off(alone, "naive_bayes")
         assert one.value == verdict.value
         assert one.at_least > verdict.at_least
+
+    def test_of_several_a_class_has_exact_bounds_at_the_corrected_rate(self):
+        rng = np.random.default_rng(5)
+        # models that differ from repeat to repeat, so that their variance decides the bound
+        right = [[rng.random(80) < 0.98, rng.random(80) < 0.7] for _ in range(2)]
+        found = self.found(right, measure="balanced_accuracy")
+        best = found.corrected("sensitivity", "b", at_cut_off=True)
+        verdict = verdicts_at_cut_off(found, best.candidate)[2]
+        assert verdict.rate == best.value < verdict.value
+        tau2 = found.at_cut_off(best.candidate).part.cautious_tau2(1)
+        n = 1 / (1 / 40 + tau2 / (best.value * (1 - best.value)))
+        low = beta.ppf(0.05, best.value * n, n - best.value * n + 1)
+        assert n < 30
+        assert low < wilson(best.value, n, level=0.9).low - 0.01
+        assert verdict.at_least == pytest.approx(low, rel=1e-9)
 
     def test_balanced_accuracy_of_a_class_never_held_out_has_nobody_behind_it(self):
         limits = (Limit("balanced_accuracy", 0.8),)
