@@ -137,6 +137,16 @@ class TestResults:
         assert at_cut_off != highest
         assert at_cut_off in answer(evaluation)
 
+    def test_what_is_by_the_highest_score_says_so_in_the_summary_too(self, asked, bare):
+        words = "Answered by the highest score, not at the cut-off."
+        shown, plain_ = (content(record) for record in (asked, bare))
+        for picture in (shown.first, shown.rounds, shown.bags):
+            assert words in picture.caption
+        for table in shown.figures:
+            assert words in table.note
+        assert words not in shown.limits.caption  # the classes are at the cut-off
+        assert "by the highest score" not in str(plain_.as_data())
+
     def test_of_a_record_without_any_no_such_header(self, bare):
         page_ = opened(bare, "results")
         assert HEADER not in [header.value for header in page_.header]
