@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from app.columns import size_parser, statistic_parser
-from evalcore.answer import answer, limit_rows, title
+from evalcore.answer import answer, title
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import Choice, choose_written
@@ -16,6 +16,7 @@ from evalcore.errors import EvalError, PlanError
 from evalcore.findings import findings
 from evalcore.intake import make_table, noun_from
 from evalcore.limit import Limit
+from evalcore.limit_rows import limit_rows
 from evalcore.measures import MEASURES
 from evalcore.plan import Plan, recommended_candidates, recommended_schemes
 from evalcore.record import Record, Status

@@ -8,8 +8,8 @@ from collections.abc import Sequence
 import streamlit as st
 
 from app.charts import Figure
-from evalcore.answer import LimitRow
 from evalcore.figures import Finding
+from evalcore.limit_rows import LimitRow
 from evalcore.results import plain
 from evalcore.sources import SOURCES
 from evalcore.verdict import Word

@@ -1,20 +1,15 @@
 """The answer in sentences: what the figures say, in the user's own nouns."""
 
 import math
-from dataclasses import dataclass
 
-from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Estimate
 from evalcore.limit import Limit
 from evalcore.measures import ALL_MEASURES, MEASURES
-from evalcore.outlook import in_words, outlook
 from evalcore.plan import Plan
 from evalcore.profile import majority
-from evalcore.sample_size import LEAST_UNITS, cases_to_show, upper_bound
-from evalcore.schemes import LEAST_BLOCKS
 from evalcore.table import Table
-from evalcore.verdict import Verdict, verdicts_in_use
+from evalcore.verdict import verdicts_in_use
 from evalcore.wording import (
     NBSP,
     capitalised,
@@ -22,10 +17,7 @@ from evalcore.wording import (
     count,
     level,
     listed,
-    n_equals,
     percent,
-    percent_down,
-    percent_up,
     quoted,
     with_interval,
 )
@@ -42,20 +34,6 @@ CAUTION = (
     "Where a wrong answer can hurt someone, these figures support local rules and licensed "
     "practice and do not replace them."
 )
-
-
-@dataclass(frozen=True)
-class LimitRow:
-    """One acceptance limit as a row: name, figure, verdict, what stands behind it and further on.
-
-    `further` says how many more units would show it; empty where none are asked for.
-    """
-
-    name: str
-    figure: str
-    verdict: Verdict
-    detail: str
-    further: str
 
 
 def class_rate(table: Table, plan: Plan, name: str, *, trade: bool = True) -> str:
@@ -142,6 +120,12 @@ def by_highest(evaluation: Evaluation) -> str:
     return "" if evaluation.in_use == HIGHEST else BY_HIGHEST
 
 
+def not_judged(evaluation: Evaluation) -> bool:
+    """Whether the answer's held-out figures are not about the cut-off that goes to work."""
+    at = evaluation.at_cut_off(evaluation.about)
+    return at is not None and bool(at.unlike)
+
+
 def answer(evaluation: Evaluation) -> str:
     """The headline sentence: the share right with its interval and n, each class, the majority.
 
@@ -162,10 +146,18 @@ def answer(evaluation: Evaluation) -> str:
         else _figure(whole, noun=noun)
     )
     k, share = majority(table, evaluation.counted_by)
+    always = (
+        f"Always answering {quoted(table.classes[k])} would be right in {percent(share, whole.n)}."
+    )
+    if not_judged(evaluation):
+        return (
+            f"Nothing can be said of further {noun}: the cut-off that goes to work was not judged. "
+            f"While held out, each round at its own, {plan.title(about)} was right in {stated}; "
+            f"{listed(_by_class(evaluation, about))}. {always}"
+        )
     return (
         f"On further {noun} obtained like these, with the same {mix}, {plan.title(about)}{at} is "
-        f"expected to be right in {stated}; {listed(_by_class(evaluation, about))}. Always "
-        f"answering {quoted(table.classes[k])} would be right in {percent(share, whole.n)}."
+        f"expected to be right in {stated}; {listed(_by_class(evaluation, about))}. {always}"
     )
 
 
@@ -237,7 +229,7 @@ def title(evaluation: Evaluation) -> str:
 def _of_ten(evaluation: Evaluation) -> str:
     noun = evaluation.table.noun_for(evaluation.counted_by).plural
     estimate = evaluation.estimate("accuracy", evaluation.about, estimator=evaluation.in_use)
-    if math.isnan(estimate.value):
+    if math.isnan(estimate.value) or not_judged(evaluation):
         return f"How often it is right on further {noun} cannot be told."
     if estimate.interval is not None and estimate.interval.low >= NEARLY_ALL:
         return f"Right on nearly all further {noun} like these."
@@ -249,79 +241,3 @@ def _short(table: Table, plan: Plan, limit: Limit, noun: str) -> str:
     if limit.of_class:
         return f"{class_name(limit.of_class)} {noun}"
     return f"{MEASURES[limit.measure].trade}"
-
-
-def limit_rows(evaluation: Evaluation, candidate: str) -> tuple[LimitRow, ...]:
-    """Each acceptance limit with its figure, verdict and what would show it.
-
-    None while rounds of the first scheme are missing: more rounds could change a verdict.
-    """
-    if so_far(evaluation):
-        return ()
-    table, plan = evaluation.table, evaluation.plan
-    rows = []
-    for verdict in verdicts_in_use(evaluation, candidate):
-        limit = verdict.limit
-        by = AT_CUT_OFF if verdict.at_cut_off else HIGHEST
-        estimate = evaluation.estimate(
-            limit.measure, candidate, estimator=by, of_class=limit.of_class
-        )
-        name = measure_name(table, plan, limit.measure, limit.of_class)
-        rows.append(
-            LimitRow(
-                capitalised(name) + (WITH_CUT_OFF if verdict.at_cut_off else ""),
-                f"{with_interval(estimate.value, estimate.interval, estimate.n)}, "
-                f"{n_equals(estimate.n)}",
-                verdict,
-                _detail(evaluation, verdict),
-                in_words(evaluation, outlook(evaluation, candidate, verdict)),
-            )
-        )
-    return tuple(rows)
-
-
-def _chosen_here(evaluation: Evaluation, verdict: Verdict) -> bool:
-    rule = evaluation.plan.cut_off
-    return verdict.at_cut_off and rule is not None and rule.chosen_on_these_cases
-
-
-def _detail(evaluation: Evaluation, verdict: Verdict) -> str:
-    table, limit, n = evaluation.table, verdict.limit, verdict.n
-    noun = table.noun_for(evaluation.counted_by)
-    least = level(limit.least)
-    set_on = f", set {limit.set_on}" if limit.set_on else ""
-    given = f"Limit {least}{set_on}"
-    if math.isnan(verdict.at_least):
-        if verdict.n == 0:
-            return f"{given}; none of these {noun.plural} has been held out yet."
-        return (
-            f"{given}; no bound can be given: fewer than {LEAST_BLOCKS} blocks, or the luck of "
-            "being best cannot be told."
-        )
-    if verdict.word == "shown to fall short":
-        return f"{given}; these {noun.plural} show at most {percent_up(verdict.at_most, n)}."
-    shows = f"{given}; these {noun.plural} show at least {percent_down(verdict.at_least, n)}."
-    if verdict.word == "shown":
-        return shows
-    units = f"{class_name(limit.of_class)} {noun.plural}" if limit.of_class else noun.plural
-    if n < LEAST_UNITS:
-        wrong = 1 - upper_bound(0, n, confidence=limit.confidence)
-        return (
-            f"{given}; {n} {units} are too few for a verdict (at least {LEAST_UNITS} are "
-            f"needed): even {n} of {n} right could mean {percent(wrong, n)}."
-        )
-    if _chosen_here(evaluation, verdict):
-        return (
-            f"{shows} The cut-off was chosen on these {noun.plural}, so nothing is shown with it."
-        )
-    if limit.measure == "balanced_accuracy":
-        return f"{shows} It may be true; these are too few to show it."
-    misses = math.ceil((1 - verdict.rate) * n - 1e-9)
-    needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
-    with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)
-    misses_made = f"{misses} miss{'' if misses == 1 else 'es'}"
-    if needed <= n:
-        # the count alone would do: it is the model's own variance that stands against it
-        return f"{shows} The model varies too much from round to round to show more."
-    more = f" To show {least} with {misses_made} takes {count(needed)} {units}"
-    return shows + more + (f", with one miss {count(with_one)}." if misses > 1 else ".")

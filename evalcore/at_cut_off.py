@@ -1,7 +1,7 @@
 """What a candidate is worth at the cut-off that each round learned inside its own bag."""
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -50,7 +50,8 @@ class AtCutOff:
         None where nobody is left undecided, or scores are no probabilities.
     unlike : {"", "not learned", "all", "none", "bags"}
         Why no interval is offered, if none is: it could not be learned from all cases; it calls
-        all or none of them; or most rounds call every or no case, as bags are smaller.
+        all or none of them; or most rounds call every or no case, or learn none, as bags are
+        smaller.
     """
 
     part: Judged
@@ -83,7 +84,13 @@ class AtCutOff:
 
 
 def at_cut_off(
-    table: Table, plan: Plan, judged: Judged, *, given: Answers, whole: Answers
+    table: Table,
+    plan: Plan,
+    judged: Judged,
+    *,
+    given: Answers,
+    whole: Answers,
+    elsewhere: Sequence[tuple[Judged, Answers]] = (),
 ) -> AtCutOff | None:
     """A candidate's held-out answers at the cut-offs of their rounds; None if it has none.
 
@@ -99,30 +106,33 @@ def at_cut_off(
         The candidate under the headline's scheme.
     given, whole : Answers
         Its answers there, and those of the fit on all cases.
+    elsewhere : sequence of (Judged, Answers)
+        The same under other schemes: second looks, each at its own cut-offs.
     """
-    rule, way = plan.cut_off, judged.counted_by
+    rule = plan.cut_off
     if rule is None or not plan.has_cut_off(plan.candidate(judged.candidate)):
         return None
-    k = table.classes.index(rule.of_class)
-    positive = table.labels_by(way) == k
-    share = rule.share_used(float(positive.mean()))
-    like: CutOffs = "none"
-    apart: Unlike = ""
-    if rule.by == "fixed":
-        cut_offs, on_all, behind = np.full(len(given.on_all[way]), rule.at), rule.at, 0
-        like = "fixed"
-    elif given.inner is None or whole.inner is None:
+    cut_offs = _by_round(table, rule, judged, given)
+    if cut_offs is None or (rule.by != "fixed" and whole.inner is None):
         return None  # carried out under another rule
-    else:
-        inner = _counted(table, given.inner, way)
-        cut_offs = learned_by_round(positive, inner, rule=rule, share=share)
-        of_all = _counted(table, whole.inner, way)[0]
-        on_all = learned(positive, of_all, rule=rule, share=share)
-        behind = _independent(judged, positive)
-        apart = why_unlike(cut_offs, on_all, of_all)
-        like = "unlike" if apart else "learned"
-    part = replace(judged, held=_answered(judged.held, cut_offs, k), cut_offs=like)
+    on_all, behind, apart = _of_all(table, rule, judged, whole=whole, cut_offs=cut_offs)
+    k = table.classes.index(rule.of_class)
+    looks = (
+        (other, _by_round(table, rule, other, answers_there)) for other, answers_there in elsewhere
+    )
+    like: CutOffs = "fixed" if rule.by == "fixed" else "learned"
+    part = replace(
+        judged,
+        held=_answered(judged.held, cut_offs, k),
+        cut_offs="unlike" if apart else like,
+        second_looks=tuple(
+            replace(other, held=_answered(other.held, of_rounds, k), cut_offs=like)
+            for other, of_rounds in looks
+            if of_rounds is not None
+        ),
+    )
     rates = [_rate(plan, part, at) for at in (k, 1 - k)]
+    share = rule.share_used(_share(table, rule, judged.counted_by))
     shares = dict.fromkeys((rule.share_low or share, rule.share_high or share))
     return AtCutOff(
         part,
@@ -134,6 +144,37 @@ def at_cut_off(
         _undecided(plan, judged, part, rule=rule, cut_offs=cut_offs),
         apart,
     )
+
+
+def _share(table: Table, rule: CutOffRule, way: CountedBy) -> float:
+    """The class's share of the table."""
+    return float((table.labels_by(way) == table.classes.index(rule.of_class)).mean())
+
+
+def _by_round(table: Table, rule: CutOffRule, judged: Judged, given: Answers) -> Floats | None:
+    """The cut-off of each round; None where no inner scores were kept."""
+    way = judged.counted_by
+    if rule.by == "fixed":
+        return np.full(judged.held.rounds.n_rounds, rule.at)
+    if given.inner is None:
+        return None
+    positive = table.labels_by(way) == table.classes.index(rule.of_class)
+    share = rule.share_used(_share(table, rule, way))
+    return learned_by_round(positive, _counted(table, given.inner, way), rule=rule, share=share)
+
+
+def _of_all(
+    table: Table, rule: CutOffRule, judged: Judged, *, whole: Answers, cut_offs: Floats
+) -> tuple[float, int, Unlike]:
+    """The cut-off of all cases, how many of the class it was learned from, why it is unlike."""
+    if rule.by == "fixed" or whole.inner is None:
+        return rule.at, 0, ""
+    way = judged.counted_by
+    positive = table.labels_by(way) == table.classes.index(rule.of_class)
+    scores = _counted(table, whole.inner, way)[0]
+    share = rule.share_used(_share(table, rule, way))
+    on_all = learned(positive, scores, rule=rule, share=share)
+    return on_all, _independent(judged, positive), why_unlike(cut_offs, on_all, scores)
 
 
 def why_unlike(cut_offs: Floats, on_all: float, of_all: Floats) -> Unlike:
@@ -151,8 +192,7 @@ def why_unlike(cut_offs: Floats, on_all: float, of_all: Floats) -> Unlike:
     called = calls(of_all[~np.isnan(of_all)], on_all)
     if called.all() or not called.any():
         return "all" if called.all() else "none"
-    known = cut_offs[~np.isnan(cut_offs)]
-    return "bags" if np.isinf(known).sum() > HALF * len(known) else ""
+    return "bags" if (~np.isfinite(cut_offs)).sum() > HALF * len(cut_offs) else ""
 
 
 def _rate(plan: Plan, part: Judged, k: int) -> Rate:

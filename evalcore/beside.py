@@ -100,7 +100,16 @@ def beside(
     cut_offs = []
     for part in headline:
         given = answers[part.scheme, part.candidate]
-        at = at_cut_off(table, plan, part, given=given, whole=whole[part.candidate])
+        elsewhere = [
+            (other, answers[other.scheme, other.candidate])
+            for other in counted
+            if other.candidate == part.candidate
+            and other.scheme != part.scheme
+            and not plan.is_curve(other.scheme)
+        ]
+        at = at_cut_off(
+            table, plan, part, given=given, whole=whole[part.candidate], elsewhere=elsewhere
+        )
         if at:
             cut_offs.append(at)
             figures += cut_off_estimates(table, plan, at)

@@ -11,7 +11,7 @@ from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
 from evalcore.groups import noun_of
-from evalcore.judged import share_interval
+from evalcore.judged_intervals import share_interval
 from evalcore.measures import ALL_MEASURES
 from evalcore.permuted import dealt_among, kept_together
 from evalcore.picked import Picked
@@ -87,7 +87,12 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     if found.undecided:
         kept, sent = found.undecided.right_of_decided, found.undecided.sent
         noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)
-        others = "" if math.isnan(kept) else f" Of the others {percent(kept, n)} are right;"
+        decided = max(1, round((1 - sent) * n))
+        others = (
+            ""
+            if math.isnan(kept)
+            else f" Of the others ({n_equals(decided)}) {percent(kept, decided)} are right;"
+        )
         wrong = percent(found.undecided.right_counting_undecided_wrong, n)
         counting = "counting those left undecided as wrong, "
         yield (
@@ -109,7 +114,7 @@ def _where(evaluation: Evaluation, found: AtCutOff) -> str:
         if rule.by == "cost"
         else f"at least {level(rule.floor)} of {name} {noun.plural} are to be found"
     )
-    learned = "" if math.isnan(found.on_all) else ", learned from held-out scores inside the bag"
+    learned = ", learned from held-out scores inside the bag" if math.isfinite(found.on_all) else ""
     return f"{called}{learned} ({by}); {_in_rounds(found)}."
 
 
@@ -160,7 +165,8 @@ def _rates(evaluation: Evaluation, found: AtCutOff) -> str:
         value, n = found.part.pooled_value("sensitivity", k), n_behind(found.part, k)
         what = measure_name(evaluation.table, evaluation.plan, "sensitivity", name)
         parts.append(f"{what} {with_interval(value, bounds, n)}, {n_equals(n)}")
-    return f"Held out, each round at its own cut-off: {'; '.join(parts)}."
+    own = "" if found.rule.by == "fixed" else ", each round at its own cut-off"
+    return f"Held out{own}: {'; '.join(parts)}."
 
 
 def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
@@ -171,6 +177,12 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
     def rate(of: Rate) -> str:
         return with_interval(of.value, Interval(of.low, of.high, evaluation.plan.level, RATIO), n)
 
+    sizes = [count(n_behind(found.part, k)) for k, _ in enumerate(evaluation.table.classes)]
+    behind = (
+        f" ({level(evaluation.plan.level)} intervals in brackets, n{NBSP}={NBSP}{listed(sizes)})"
+        if any(at.right_when_called.bounded or at.cost.bounded for at in found.at_shares)
+        else ""
+    )
     for at in found.at_shares:
         # a share that was stated is repeated as it was, not rounded by the size of the table
         share = level(at.share) if stated else percent(at.share, n)
@@ -186,7 +198,7 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
             said.append(f"; the expected cost is {cost} a {noun.singular}")
         yield (
             f"Where {share} of {noun.plural} are {name}"
-            f"{'' if stated else ', the share of this table'}: {''.join(said)}."
+            f"{'' if stated else ', the share of this table'}{behind}: {''.join(said)}."
         )
 
 

@@ -59,7 +59,8 @@ def not_better_than_majority(
         n = estimate.n
         yield Finding(
             "not_better_than_majority",
-            "grave" if estimate.value <= share else "moderate",
+            # a cut-off gives shares right away for the class whose misses matter
+            "grave" if estimate.value <= share and by == HIGHEST else "moderate",
             name,
             f"{capitalised(plan.title(name))} is not shown to be better than always answering "
             f"{always}: {percent(estimate.value, n)} against {percent(share, n)}",

@@ -5,20 +5,23 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from evalcore.at_cut_off import AtCutOff
+from evalcore.at_cut_off import HALF, AtCutOff
 from evalcore.beside_answer import place
+from evalcore.clusters import independent_noun
 from evalcore.cut_off import least_units
 from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
-from evalcore.judged import share_interval
+from evalcore.judged_intervals import share_interval
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
+    DASH,
     Noun,
     capitalised,
     class_name,
     count,
+    decimal,
     level,
     n_equals,
     percent,
@@ -26,8 +29,6 @@ from evalcore.wording import (
     tenths,
     with_interval,
 )
-
-HALF = 0.5
 
 
 def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -51,33 +52,66 @@ def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> 
 
 
 def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """A cut-off that calls every case its class, so that nothing is told apart."""
-    if evaluation is None or plan.cut_off is None:
+    """A cut-off below every held-out score, or above: nothing is told apart."""
+    found = evaluation.at_cut_off(evaluation.about) if evaluation else None
+    if evaluation is None or found is None or not len(found.cut_offs):
         return
-    found = evaluation.at_cut_off(evaluation.about)
-    if found is None or not len(found.part.held.labels):
-        return
-    rule, k = plan.cut_off, table.classes.index(plan.cut_off.of_class)
-    called = found.part.held.confusion[:, :, k].sum(axis=1)
-    every = called == found.part.held.rounds.test_sizes
-    share = float(every.mean()) if len(every) else 0.0
+    k = table.classes.index(found.rule.of_class)
+    scores = evaluation.part(evaluation.about, evaluation.scheme).held.scores[:, k]
+    known = found.cut_offs[~np.isnan(found.cut_offs)]
+    every, none = (known <= scores.min()).sum(), (known > scores.max()).sum()
+    share = float(max(every, none) / len(found.cut_offs))
     if share <= HALF:
         return
-    noun, name = table.noun_for(evaluation.counted_by), class_name(rule.of_class)
+    noun, name = table.noun_for(evaluation.counted_by), class_name(found.rule.of_class)
+    rounds, each = len(found.cut_offs), "every" if every > none else "no"
     yield Finding(
         "cut_off_calls_all",
         "grave",
-        rule.of_class,
-        f"In {percent(share, len(every))} of rounds every {noun.singular} is called {name}",
-        f"So held-out figures are those of a constant answer there ({count(int(every.sum()))} of "
-        f"{count(len(every))} rounds; threshold: {level(HALF)}).",
-        f"Take other costs or a lower floor, or add {name} {noun.plural}: a cut-off that is "
+        found.rule.of_class,
+        f"In {percent(share, rounds)} of rounds the cut-off calls {each} {noun.singular} {name}",
+        f"So held-out figures are those of a constant answer there ({count(int(max(every, none)))} "
+        f"of {count(rounds)} rounds; threshold: {level(HALF)}).",
+        f"Take other costs or another floor, or add {name} {noun.plural}: a cut-off that is "
         "learned needs scores that tell the classes apart, and a floor enough of its class in "
         "every bag.",
         share,
         HALF,
         "common_practice",
     )
+
+
+def cut_off_costs_more(
+    table: Table, plan: Plan, evaluation: Evaluation | None
+) -> Iterator[Finding]:
+    """Calling every case, or none, is expected to cost no more."""
+    found = evaluation.at_cut_off(evaluation.about) if evaluation else None
+    if evaluation is None or found is None or found.rule.by != "cost":
+        return
+    rule, noun = found.rule, table.noun_for(evaluation.counted_by)
+    name = class_name(rule.of_class)
+    for at in found.at_shares:
+        none, every = at.share * rule.miss, (1 - at.share) * rule.alarm
+        least = min(none, every)
+        # without an interval the figures are not about the cut-off in use
+        if not at.cost.bounded or not at.cost.high >= least:
+            continue
+        yield Finding(
+            "cut_off_costs_more",
+            "grave" if at.cost.value >= least else "moderate",
+            rule.of_class,
+            f"Where {level(at.share)} of {noun.plural} are {name}, calling "
+            f"{'none' if none <= every else 'every one'} costs {decimal(least, 3)} a "
+            f"{noun.singular}; the cut-off is not shown to cost less: {decimal(at.cost.value, 3)}",
+            f"Its expected cost is {decimal(at.cost.value, 3)} ({decimal(at.cost.low, 3)}{DASH}"
+            f"{decimal(at.cost.high, 3)}); the threshold is the cheaper of calling none and "
+            f"calling every one, {decimal(least, 3)}.",
+            "Look for features that tell the classes apart, or for more cases; check the costs and "
+            "the share in use.",
+            at.cost.value,
+            least,
+            "elementary",
+        )
 
 
 def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -88,8 +122,8 @@ def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> I
     found = evaluation.at_cut_off(evaluation.about)
     if found is None or found.learned_from >= needed:
         return
-    name, noun = class_name(rule.of_class), table.noun_for(evaluation.counted_by)
-    what = noun.plural if found.part.units is None else f"independent {table.noun.plural}"
+    name = class_name(rule.of_class)
+    what = independent_noun(table, plan, evaluation.scheme, counted_by=evaluation.counted_by).plural
     yield Finding(
         "floor_from_few",
         "grave",
@@ -123,7 +157,7 @@ def floor_not_delivered(
     where = "lies above" if bounds.high < floor else "is within"
     yield Finding(
         "floor_not_delivered",
-        "grave" if bounds.high < floor else "moderate",
+        "grave" if bounds.high < floor else "note" if bounds.defined else "moderate",
         plan.cut_off.of_class,
         # in points, for a share just short of the floor would be rounded up to it
         f"The cut-off for at least {level(floor)} of {named} finds {tenths(floor - value)} less "
@@ -197,9 +231,10 @@ def _why_not_judged(found: AtCutOff, noun: Noun) -> tuple[str, str, float, float
         why = f"none could be learned from all {cases}"
         return why, "Cut-offs learned from all: 0; threshold: 1", 0, 1
     if found.unlike == "bags":
-        infinite, rounds = int(np.isinf(found.cut_offs).sum()), rounds - found.undefined
+        infinite = int((~np.isfinite(found.cut_offs)).sum())
         seen = (
-            f"There it calls all or none (threshold: {level(HALF)} of rounds); learned from all "
+            f"There it calls all or none, or is not learned (threshold: {level(HALF)} of rounds); "
+            f"learned from all "
             f"{cases} it is {place(found.on_all)}"
         )
         why = f"in {count(infinite)} of {count(rounds)} rounds the bag cannot teach one like it"

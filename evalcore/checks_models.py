@@ -11,10 +11,12 @@ from evalcore.estimates import MEMORISES, mean_of_rounds
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import plus_632
+from evalcore.judged_intervals import offers_interval
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
     capitalised,
+    class_name,
     count,
     decimal,
     percent,
@@ -44,7 +46,8 @@ def always_the_same(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
             f"None of them gets another answer (threshold: 1), while models of the rounds "
             f"gave another in {percent(share, n)} of held-out answers. What share of each class is "
             "found therefore says little about the model that goes to work: no interval is offered "
-            "for it, and no limit on it is called shown.",
+            "for it, and no limit on it is called shown. The share right of all and its mean over "
+            "classes kept their word on simulated tables of that kind, and stand.",
             "Take another candidate or another setting, or features that tell the classes apart.",
             0,
             1,
@@ -171,26 +174,47 @@ def unstable_model(_: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
 
 
 def model_variance_unknown(
-    _: Table, plan: Plan, evaluation: Evaluation | None
+    table: Table, plan: Plan, evaluation: Evaluation | None
 ) -> Iterator[Finding]:
-    """Each case is answered once, so the interval cannot include the model's variance."""
+    """The rounds of no scheme tell how much the model varies, of all cases or of a class."""
     if evaluation is None:
         return
-    part = evaluation.part(evaluation.about, evaluation.scheme)
-    if not math.isnan(part.tau2):
+    part = evaluation.part_in_use(evaluation.about)
+    if part.units is not None and not offers_interval(part):
         return
-    yield Finding(
+    twice = int(part.held.rounds.times_tested.max(initial=0))
+    if math.isnan(part.tau2):
+        yield _unknown(
+            evaluation.scheme,
+            "The interval leaves out how much the model itself varies: each case was answered at "
+            "most once, twice is needed",
+            f"Each case is held out in at most {twice} round of the first scheme, and no other "
+            "scheme holds one out more often; from 2 on, the model's variance can be told apart",
+            "Repeat the cross-validation, or take random subsampling or the bootstrap, be it as a "
+            "second scheme.",
+        )
+        return
+    for k, name in enumerate(table.classes):
+        if math.isnan(part.tau2_of(k)) and offers_interval(part, k):
+            yield _unknown(
+                name,
+                f"The interval of {class_name(name)} cases leaves out how much the model itself "
+                "varies: rounds hold out 1 of them at a time, 2 together are needed",
+                "No round of any scheme holds out 2 of the class together more than once, so how "
+                "much the share right of the class varies with the model cannot be told apart",
+                "Take the bootstrap or random subsampling as a second scheme, or fewer folds.",
+            )
+
+
+def _unknown(subject: str, title: str, seen: str, advice: str) -> Finding:
+    return Finding(
         "model_variance_unknown",
         "moderate",
-        evaluation.scheme,
-        "The interval leaves out how much the model itself varies: each case was answered at most "
-        "once, twice is needed",
-        f"Each case is held out in at most {int(part.held.rounds.times_tested.max())} round of the "
-        "first scheme, and no other scheme holds one out more often; from 2 on, the model's "
-        "variance can be told apart. Such an interval holds the truth less often than it promises, "
-        "most so for a model that varies a lot.",
-        "Repeat the cross-validation, or take random subsampling or the bootstrap, be it as a "
-        "second scheme.",
+        subject,
+        title,
+        f"{seen}. Such an interval holds the truth less often than it promises, most so for a "
+        "model that varies a lot.",
+        advice,
         1,
         2,
         "own_simulation",

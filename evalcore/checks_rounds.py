@@ -8,7 +8,8 @@ import numpy as np
 from evalcore import bag_facts
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
-from evalcore.judged import Judged, offers_interval
+from evalcore.judged import Judged
+from evalcore.judged_intervals import offers_interval
 from evalcore.plan import Plan
 from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table

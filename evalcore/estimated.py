@@ -8,12 +8,11 @@ import numpy as np
 from evalcore import estimates, intervals
 from evalcore.candidates import CANDIDATES
 from evalcore.figures import Estimate, Interval
-from evalcore.judged import (
-    Judged,
+from evalcore.judged import Judged, plus_632
+from evalcore.judged_intervals import (
     auc_interval,
     balanced_interval,
     offers_interval,
-    plus_632,
     share_interval,
 )
 from evalcore.measures import ALL_MEASURES
@@ -150,8 +149,11 @@ def default_interval(plan: Plan, part: Judged, measure: str, of_class: int) -> I
     """The default interval of a held-out value; None where none is offered."""
     if not offers_interval(part, of_class if measure == "sensitivity" else None):
         return None
-    if measure == "accuracy":
-        return share_interval(plan.level, part)
-    if measure == "sensitivity":
-        return share_interval(plan.level, part, of_class)
-    return balanced_interval(plan.level, part) if measure == "balanced_accuracy" else None
+    if measure == "balanced_accuracy":
+        bounds = balanced_interval(plan.level, part)
+    elif measure in ("accuracy", "sensitivity"):
+        k = of_class if measure == "sensitivity" else None
+        bounds = share_interval(plan.level, part, k)
+    else:
+        return None
+    return bounds if bounds.defined else None

@@ -10,10 +10,11 @@ from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
 from evalcore.at_cut_off import AtCutOff
 from evalcore.beside import CORRECTED, Beside, beside
 from evalcore.candidates import CANDIDATES
+from evalcore.clusters import clusters
 from evalcore.comparison import Difference
 from evalcore.estimated import estimates_of, losses_of
 from evalcore.figures import CountedBy, Estimate
-from evalcore.judged import Judged, clusters, with_second_looks
+from evalcore.judged import Judged, with_second_looks
 from evalcore.measures import Floats
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds

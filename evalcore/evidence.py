@@ -18,6 +18,7 @@ from evalcore.cut_off_rule import CutOffRule
 
 LEVEL = 0.95  # of the intervals that were simulated
 LEAST, MOST_WRONG = 0.93, 0.05  # an interval's coverage; the share of tables with a false word
+LEAST_TABLES = 100  # with an interval, for a share of them to be quoted
 ALIKE = 1.5  # numbers of cases this many times apart are still alike
 MANY_FEATURES = 0.5  # features a case from which a table is of a kind of its own
 WORDS = ("verdict", "comparison")  # lines about what was said, not about an interval
@@ -77,8 +78,16 @@ class Line:
     without_interval: int
 
     @property
+    def tells(self) -> bool:
+        """Whether enough tables had what it is about: an interval, or a word."""
+        asked = self.tables if self.estimator in WORDS else self.tables - self.without_interval
+        return asked >= LEAST_TABLES
+
+    @property
     def short(self) -> bool:
-        """Whether it fell short by more than two Monte-Carlo errors; not where undefined."""
+        """Whether it fell short by more than two Monte-Carlo errors; not where too few tell."""
+        if not self.tells:
+            return False
         most = self.coverage + 2 * self.monte_carlo_error
         return most < (1 - MOST_WRONG if self.estimator in WORDS else LEAST)
 

@@ -35,8 +35,10 @@ def headline(evaluation: Evaluation) -> Headline | None:
     estimator = estimate.estimator
     if estimate.measure == "auc" and len(plan.schemes) == 1:
         estimator = "mean_of_rounds_alone"
-    elif estimate.measure == "auc" and set(plan.schemes) != set(studied):
-        return None  # the other schemes bear on its interval too
+    elif _rests_on_others(evaluation) and (
+        set(plan.schemes) != set(studied) or estimator == AT_CUT_OFF
+    ):
+        return None  # cut-offs were studied under one scheme
     rule = plan.cut_off if evaluation.in_use == AT_CUT_OFF else None
     called = table.units_holding[table.classes.index(rule.of_class)] if rule else 0
     return Headline(
@@ -56,9 +58,9 @@ def headline(evaluation: Evaluation) -> Headline | None:
 
 
 def matching(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
-    """Lines like the headline's; none while rounds that it rests on are missing."""
+    """Lines like the headline's that tell enough; none while rounds it rests on are missing."""
     given = headline(evaluation) if _complete(evaluation) else None
-    return like(given, among) if given else ()
+    return tuple(line for line in like(given, among) if line.tells) if given else ()
 
 
 def falling_short(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
@@ -114,10 +116,18 @@ def _estimate(evaluation: Evaluation) -> Estimate:
     return evaluation.estimate(measure, evaluation.about, estimator=estimator)
 
 
+def _rests_on_others(evaluation: Evaluation) -> bool:
+    """Whether what other schemes show of the model's variance bears on the headline's interval."""
+    measure, part = _estimate(evaluation).measure, evaluation.part_in_use(evaluation.about)
+    if measure == "accuracy":
+        return math.isnan(part.own_tau2(None))
+    return measure == "auc" or any(math.isnan(part.own_tau2(k)) for k in range(part.n_classes))
+
+
 def _complete(evaluation: Evaluation) -> bool:
     """Whether all rounds that the headline's interval rests on have finished."""
-    first = evaluation.plan.measure != "auc"
-    names = (evaluation.scheme,) if first else evaluation.plan.scheme_names
+    others = _rests_on_others(evaluation)
+    names = evaluation.plan.scheme_names if others else (evaluation.scheme,)
     return all(
         name in evaluation.rounds
         and evaluation.rounds[name].n_rounds == evaluation.planned.get(name)

@@ -83,6 +83,7 @@ CHECKS: dict[str, Check] = {
             "cut_off_chosen_here", "a cut-off chosen on these cases", at_cut_off.cut_off_chosen_here
         ),
         Check("cut_off_calls_all", "a cut-off calls everything", at_cut_off.cut_off_calls_all),
+        Check("cut_off_costs_more", "a cut-off may cost more", at_cut_off.cut_off_costs_more),
         Check("floor_from_few", "too few units for a floor", at_cut_off.floor_from_few),
         Check("cut_off_apart", "the cut-off in use lies apart", at_cut_off.cut_off_apart),
         Check("cut_off_not_judged", "a cut-off that was not judged", at_cut_off.cut_off_not_judged),

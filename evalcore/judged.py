@@ -9,13 +9,10 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from evalcore import estimates, intervals, model_variance
+from evalcore import estimates, model_variance
 from evalcore.answers import HeldOut, Reduced
-from evalcore.figures import CountedBy, Interval
+from evalcore.figures import CountedBy
 from evalcore.measures import ALL_MEASURES, Floats
-from evalcore.plan import Plan
-from evalcore.schemes import ALL_SCHEMES, LEAST_BLOCKS
-from evalcore.table import Table
 
 CutOffs = Literal["none", "fixed", "learned", "unlike"]
 
@@ -196,21 +193,6 @@ def with_second_looks(judged: Sequence[Judged]) -> tuple[Judged, ...]:
     )
 
 
-def clusters(
-    table: Table, plan: Plan, scheme: str, *, counted_by: CountedBy
-) -> NDArray[np.intp] | None:
-    """What counted cases or units resemble each other by, beyond what is counted; None if nothing.
-
-    Rows of a unit where rows are counted; blocks or groups that a scheme keeps together.
-    """
-    choice = plan.scheme(scheme)
-    registered = ALL_SCHEMES[choice.key]
-    groups = registered.groups(table, choice.values())
-    first_case = np.unique(table.units, return_index=True)[1]
-    of_counted = groups.of_case[first_case] if counted_by == "unit" else groups.of_case
-    return of_counted if groups.number < len(of_counted) else None
-
-
 def _values(measure: str, confusion: Floats, auc: Floats, of_class: int) -> Floats:
     function = ALL_MEASURES[measure].from_confusion
     if function is None:
@@ -231,86 +213,4 @@ def plus_632(part: Judged, measure: str, out_of_bag: float) -> estimates.Plus632
     guess = {"accuracy": estimates.no_information(counts), "auc": 0.5}
     return estimates.point_632_plus(
         part.whole_value(measure), out_of_bag, no_information=guess.get(measure, 1 / len(counts))
-    )
-
-
-def offers_interval(part: Judged, of_class: int | None = None) -> bool:
-    """Whether rounds are like the model in use, and blocks, if any, are enough to tell anything.
-
-    Shares of classes swing with the class that a model favours, so they say little about one that
-    always names the same (own simulation).
-    """
-    if part.cut_offs == "unlike" or (of_class is not None and part.always_names is not None):
-        return False
-    return part.units is None or part.blocks >= LEAST_BLOCKS
-
-
-def share_interval(
-    level: float,
-    part: Judged,
-    of_class: int | None = None,
-    *,
-    variance: bool = True,
-    cautious: bool = False,
-) -> Interval:
-    """The default interval for a share right, of all cases or of one class.
-
-    Parameters
-    ----------
-    level : float
-        Two-sided.
-    part : Judged
-    of_class : int or None
-    variance : bool
-        Whether the model's variance is included.
-    cautious : bool
-        Whether its standard error is added to it, as verdicts ask.
-    """
-    chosen = ~np.isnan(part.shares)
-    if of_class is not None:
-        chosen &= part.held.labels == of_class
-    if not chosen.any() or part.cut_offs == "unlike":
-        return Interval(math.nan, math.nan, level, "wilson")
-    tau2 = math.nan
-    if variance:
-        tau2 = part.tau2 if of_class is None else part.tau2_of(of_class)
-        tau2 = part.cautious_tau2(of_class) if cautious else tau2
-    shares = part.shares[chosen]
-    if part.units is not None:
-        if len(np.unique(part.units[chosen])) < LEAST_BLOCKS:
-            return Interval(math.nan, math.nan, level, "rows_of_units")
-        within = model_variance.cluster_variance_by_repeat(
-            part.held.correct, part.held.rounds, part.units, chosen=chosen
-        )
-        return intervals.rows_of_units(
-            shares, part.units[chosen], tau2, level=level, cluster=within
-        )
-    return at_rate(
-        part, float(shares.mean()), len(shares), tau2=tau2, level=level, of_class=of_class
-    )
-
-
-def at_rate(
-    part: Judged, rate: float, n: int, *, tau2: float, level: float, of_class: int | None
-) -> Interval:
-    """The interval of independent cases at a rate: exact for a class at learned cut-offs."""
-    if part.cut_offs == "learned" and of_class is not None:
-        return intervals.exact_with_model_variance(rate, n, tau2, level=level)
-    return intervals.with_model_variance(rate, n, tau2, level=level)
-
-
-def balanced_interval(level: float, part: Judged) -> Interval:
-    """The default interval for balanced accuracy: the classes' own, by square-and-add."""
-    parts = [share_interval(level, part, k, variance=False) for k in range(part.n_classes)]
-    recalls = [part.pooled_value("sensitivity", k) for k in range(part.n_classes)]
-    return intervals.square_and_add(recalls, parts, part.tau2_balanced)
-
-
-def auc_interval(level: float, part: Judged, value: float) -> Interval | None:
-    """Interval for an AUC; None for more classes or dependent cases, since none keeps its word."""
-    if part.n_classes != 2 or part.units is not None or math.isnan(value):
-        return None
-    known = part.held.labels[~np.isnan(part.shares)]
-    return intervals.auc_score_type(
-        value, int((known == 1).sum()), int((known == 0).sum()), part.tau2_auc, level=level
     )

@@ -3,9 +3,10 @@
 import math
 from dataclasses import dataclass
 
+from evalcore.clusters import independent_noun
 from evalcore.evaluation import Evaluation
 from evalcore.further_cases import MoreCases, Needed, more_cases
-from evalcore.verdict import Verdict
+from evalcore.verdict import Verdict, part_behind
 from evalcore.wording import NBSP, class_name, count, level, percent
 
 CHANCE = 0.8
@@ -26,6 +27,12 @@ class Outlook:
 
     verdict: Verdict
     needed: tuple[MoreCases, ...]
+
+    @property
+    def too_variable(self) -> bool:
+        """Whether no number would do even at rates above the limit, the model varying so much."""
+        above = [more for more in self.needed if more.rate > self.verdict.limit.least]
+        return bool(above) and all(more.alone.outcome == "never" for more in above)
 
 
 def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook:
@@ -51,8 +58,7 @@ def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook
         or math.isnan(verdict.at_least)
     ):
         return Outlook(verdict, ())
-    at = evaluation.at_cut_off(candidate) if verdict.at_cut_off else None
-    part = at.part if at else evaluation.part(candidate, evaluation.scheme)
+    part = part_behind(evaluation, candidate, verdict)
     k = evaluation.table.classes.index(limit.of_class) if limit.of_class else None
     rate = verdict.rate
     rates = {
@@ -77,7 +83,10 @@ def in_words(evaluation: Evaluation, given: Outlook) -> str:
     """One sentence on further units; empty where none are asked for."""
     if not given.needed:
         return ""
-    limit, noun = given.verdict.limit, evaluation.table.noun_for(evaluation.counted_by).plural
+    limit = given.verdict.limit
+    noun = independent_noun(
+        evaluation.table, evaluation.plan, evaluation.scheme, counted_by=evaluation.counted_by
+    ).plural
     units = f"{class_name(limit.of_class)} {noun}" if limit.of_class else noun
     n = given.verdict.n
     parts = [

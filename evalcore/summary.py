@@ -5,15 +5,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from evalcore import evidence_quoted
-from evalcore.answer import (
-    CAUTION,
-    answer,
-    best_sentence,
-    limit_rows,
-    measure_name,
-    scheme_in_words,
-    title,
-)
+from evalcore.answer import CAUTION, answer, best_sentence, measure_name, scheme_in_words, title
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.estimated import ESTIMATORS
@@ -21,6 +13,7 @@ from evalcore.evaluation import Evaluation
 from evalcore.figures import Estimate
 from evalcore.findings import findings
 from evalcore.intervals import METHODS
+from evalcore.limit_rows import limit_rows
 from evalcore.record import Record
 from evalcore.sources import SOURCES
 from evalcore.wording import capitalised, count, decimal, level, listed, percent, quoted

@@ -9,7 +9,8 @@ import numpy as np
 from evalcore.candidates import CANDIDATES
 from evalcore.comparison import Difference, compare
 from evalcore.figures import Estimate, Interval
-from evalcore.judged import Judged, at_rate, offers_interval
+from evalcore.judged import Judged
+from evalcore.judged_intervals import at_rate, offers_interval
 from evalcore.paired_tests import mcnemar
 from evalcore.plan import Plan, generator
 from evalcore.resampled_t import corrected_resampled_t, correlated_t_posterior

@@ -8,7 +8,8 @@ import numpy as np
 
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
-from evalcore.judged import Judged, at_rate, balanced_interval, offers_interval, share_interval
+from evalcore.judged import Judged
+from evalcore.judged_intervals import at_rate, balanced_interval, offers_interval, share_interval
 from evalcore.limit import Limit
 from evalcore.sample_size import LEAST_UNITS, lower_bound, upper_bound
 from evalcore.table import Table
@@ -78,6 +79,12 @@ def verdicts_at_cut_off(evaluation: Evaluation, candidate: str) -> tuple[Verdict
 def verdicts_in_use(evaluation: Evaluation, candidate: str) -> tuple[Verdict, ...]:
     """Of the answers that go to work: at the cut-off where one is learned, else as they are."""
     return verdicts_at_cut_off(evaluation, candidate) or verdicts(evaluation, candidate)
+
+
+def part_behind(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Judged:
+    """The answers that a verdict is about."""
+    at = evaluation.at_cut_off(candidate) if verdict.at_cut_off else None
+    return at.part if at else evaluation.part(candidate, evaluation.scheme)
 
 
 def overall(given: tuple[Verdict, ...]) -> Word | None:

@@ -4,21 +4,14 @@ import streamlit as st
 
 from app import charts, look, state
 from evalcore import evidence_quoted
-from evalcore.answer import (
-    CAUTION,
-    answer,
-    best_sentence,
-    class_rate,
-    limit_rows,
-    scheme_in_words,
-    title,
-)
+from evalcore.answer import CAUTION, answer, best_sentence, class_rate, scheme_in_words, title
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.checks_models import why_632_misleads
 from evalcore.engine import chunk_rounds
 from evalcore.errors import EvalError
 from evalcore.evaluation import Evaluation
 from evalcore.findings import findings
+from evalcore.limit_rows import limit_rows
 from evalcore.record import Record, Status
 from evalcore.schemes import SCHEMES
 from evalcore.summary import ESTIMATE_HEADER, estimate_rows

@@ -11,13 +11,14 @@ from streamlit.testing.v1 import AppTest
 from app import state
 from app.look import BADGE
 from app.look import safe as look_safe
-from evalcore.answer import answer, limit_rows, title
+from evalcore.answer import answer, title
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
 from evalcore.engine import run
 from evalcore.findings import findings
 from evalcore.intake import make_table
 from evalcore.limit import Limit
+from evalcore.limit_rows import limit_rows
 from evalcore.plan import Plan, recommended_candidates, recommended_schemes
 from evalcore.record import Record, Status, new_folder
 from evalcore.schemes import SCHEMES

@@ -11,12 +11,13 @@ from app import choices
 from app.print.content import Content, content
 from app.print.page import page
 from app.print.pdf import pdf
-from evalcore.answer import answer, limit_rows, title
+from evalcore.answer import answer, title
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.limit import Limit
+from evalcore.limit_rows import limit_rows
 from evalcore.plan import Plan
 from evalcore.record import Record, new_folder
 from evalcore.schemes import ALL_SCHEMES, SCHEMES

@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from evalcore.estimated import default_interval
-from evalcore.judged import Judged, offers_interval
+from evalcore.judged import Judged
+from evalcore.judged_intervals import offers_interval
 from evalcore.limit import Limit
 from evalcore.verdict import verdicts
 

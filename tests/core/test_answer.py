@@ -6,13 +6,14 @@ import re
 import numpy as np
 import pytest
 
-from evalcore.answer import answer, class_rate, limit_rows, measure_name, scheme_in_words, title
+from evalcore.answer import answer, class_rate, measure_name, scheme_in_words, title
 from evalcore.answers import answers_of
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation, evaluate
 from evalcore.limit import Limit
+from evalcore.limit_rows import limit_rows
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds
 from evalcore.schemes import SCHEMES

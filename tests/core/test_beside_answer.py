@@ -16,11 +16,11 @@ from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
 from evalcore.checks_learned import still_rising
 from evalcore.choice import choose
+from evalcore.clusters import clusters
 from evalcore.cut_off import WithUndecided
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Interval
-from evalcore.judged import clusters
 from evalcore.learning_curve import Gain, Prediction
 from evalcore.schemes import ALL_SCHEMES, SCHEMES
 from evalcore.share_in_use import AtShare, Rate

@@ -17,17 +17,15 @@ from evalcore.answers import HeldOut, Reduced
 from evalcore.binomial import clopper_pearson, wilson
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
+from evalcore.clusters import clusters
 from evalcore.intervals import auc_score_type, square_and_add, with_model_variance
-from evalcore.judged import (
-    Judged,
+from evalcore.judged import Judged, plus_632, with_second_looks
+from evalcore.judged_intervals import (
     at_rate,
     auc_interval,
     balanced_interval,
-    clusters,
     offers_interval,
-    plus_632,
     share_interval,
-    with_second_looks,
 )
 from evalcore.model_variance import (
     auc_model_variance,

@@ -11,7 +11,7 @@ from evalcore.choice import choose
 from evalcore.cut_off import CutOffRule
 from evalcore.evaluation import evaluate
 from evalcore.intervals import with_model_variance
-from evalcore.judged import share_interval
+from evalcore.judged_intervals import share_interval
 from evalcore.limit import Limit
 from evalcore.plan import Plan
 from evalcore.rounds import Rounds

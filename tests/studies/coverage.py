@@ -27,7 +27,7 @@ from evalcore.comparison import PRACTICAL
 from evalcore.cut_off_rule import CutOffRule
 from evalcore.evaluation import Evaluation
 from evalcore.figures import CountedBy, Interval
-from evalcore.judged import auc_interval
+from evalcore.judged_intervals import auc_interval
 from evalcore.limit import Limit
 from evalcore.plan import Plan, generator, recommended_schemes
 from evalcore.profile import smallest_class

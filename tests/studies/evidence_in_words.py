@@ -4,7 +4,7 @@ from collections.abc import Iterable, Iterator, Sequence
 
 import numpy as np
 
-from evalcore.evidence import Line, lines
+from evalcore.evidence import WORDS, Line, lines
 from tests.studies.mechanisms import TITLES
 
 ROWS = (  # what README says, estimator, measure
@@ -26,26 +26,32 @@ NO_SHORT = "none"
 
 
 def table(known: Sequence[Line]) -> str:
-    """A Markdown table: least, mean and most over all cells of the default scheme."""
-    head = "| of the default scheme, in % of tables | least | mean | most | cells | too low in |\n"
-    return head + "|---|---|---|---|---|---|\n" + "".join(_rows(known))
+    """A Markdown table: least, mean and most over the cells of the default scheme that tell."""
+    head = (
+        "| of the default scheme, in % of tables | least | mean | most | cells | too low in | no "
+        "interval in |\n|---|---|---|---|---|---|---|\n"
+    )
+    return head + "".join(_rows(known))
 
 
 def _rows(known: Sequence[Line]) -> Iterator[str]:
     for title, estimator, measure in ROWS:
-        found = [
+        every = [
             line
             for line in known
             if line.scheme == "default"
             and line.estimator == estimator
             and measure in ("", line.measure)
-            and not np.isnan(line.coverage)
         ]
+        found = [line for line in every if line.tells]
+        if not found:
+            continue
         shares = 100 * np.array([line.coverage for line in found])
-        short = [line for line in found if line.short]
+        lacking = 100 * np.mean([line.without_interval / line.tables for line in every])
+        none = "" if estimator in WORDS else f"{lacking:.1f} %"
         yield (
             f"| {title} | {shares.min():.1f} | {shares.mean():.1f} | {shares.max():.1f} | "
-            f"{len(found)} | {len(short) or NO_SHORT} |\n"
+            f"{len(found)} | {sum(line.short for line in found) or NO_SHORT} | {none} |\n"
         )
 
 
