@@ -87,7 +87,7 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     if found.undecided:
         kept, sent = found.undecided.right_of_decided, found.undecided.sent
         noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)
-        decided = max(1, round((1 - sent) * n))
+        decided = max(1, int((1 - sent) * n + 0.5))
         others = (
             ""
             if math.isnan(kept)
