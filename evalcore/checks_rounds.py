@@ -9,7 +9,6 @@ from evalcore import bag_facts
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import Judged
-from evalcore.judged_intervals import offers_interval
 from evalcore.plan import Plan
 from evalcore.schemes import LEAST_BLOCKS, SCHEMES
 from evalcore.table import Table
@@ -221,28 +220,37 @@ def share_of_classes(table: Table, plan: Plan, evaluation: Evaluation | None) ->
     )
 
 
-def few_blocks(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
-    """Too few blocks to say how much one block differs from the next."""
+def few_blocks(table: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
+    """Too few blocks, of all or of one class, to say how much one differs from the next."""
     if evaluation is None:
         return
     for scheme in evaluation.rounds:
         part = evaluation.part(evaluation.about, scheme)
-        if offers_interval(part) or part.units is None:
+        if part.units is None:
             continue
-        blocks = len(np.unique(part.units))
-        yield Finding(
-            "few_blocks",
-            "moderate",
-            scheme,
-            f"Only {count(blocks)} blocks in {title(plan, scheme)}, where an interval needs "
-            f"{LEAST_BLOCKS}",
-            f"Cases of one block share what is particular to it, so {count(blocks)} blocks are "
-            f"{count(blocks)} observations of how it carries over (threshold: {LEAST_BLOCKS}).",
-            "Read the figure as an example, not as an estimate; judge more blocks.",
-            blocks,
-            LEAST_BLOCKS,
-            "own_simulation",
-        )
+        if part.blocks < LEAST_BLOCKS:
+            yield _few_blocks(scheme, "", part.blocks, of=title(plan, scheme))
+            continue
+        for k, name in enumerate(table.classes):
+            blocks = len(np.unique(part.units[part.held.labels == k]))
+            if blocks < LEAST_BLOCKS:
+                with_class = f" with {class_name(name)} cases"
+                yield _few_blocks(name, with_class, blocks, of=title(plan, scheme))
+
+
+def _few_blocks(subject: str, with_class: str, blocks: int, *, of: str) -> Finding:
+    return Finding(
+        "few_blocks",
+        "moderate",
+        subject,
+        f"Only {count(blocks)} blocks{with_class} in {of}, where an interval needs {LEAST_BLOCKS}",
+        f"Cases of one block share what is particular to it, so {count(blocks)} blocks are "
+        f"{count(blocks)} observations of how it carries over (threshold: {LEAST_BLOCKS}).",
+        "Read the figure as an example, not as an estimate; judge more blocks.",
+        blocks,
+        LEAST_BLOCKS,
+        "own_simulation",
+    )
 
 
 def class_shares_reached(
