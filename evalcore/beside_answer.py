@@ -83,7 +83,8 @@ def cut_off_sentences(evaluation: Evaluation) -> Iterator[str]:
     if found.undefined == len(found.cut_offs):
         return  # there are no answers to speak of
     yield _rates(evaluation, found)
-    yield from _in_use(evaluation, found)
+    if not found.unlike:
+        yield from _in_use(evaluation, found)
     if found.undecided:
         kept, sent = found.undecided.right_of_decided, found.undecided.sent
         noun, n = evaluation.table.noun_for(evaluation.counted_by), n_behind(found.part, None)

@@ -48,10 +48,12 @@ def per_class(
         evaluation.estimate("sensitivity", candidate, estimator=by, of_class=k) for k in classes
     ]
     at = "" if by == HIGHEST else WITH_CUT_OFF
-    least, cautious = _limits(evaluation), dict(bounds or {})
+    least = _limits(evaluation)
+    cautious = {k: end for k, end in (bounds or {}).items() if not math.isnan(end)}
     title = _title(evaluation, found, least, cautious)
     said = [_spoken(evaluation, e, least, cautious) for e in found]
-    block = f"block: {level(plan.level)} interval"
+    offered = any(e.interval for e in found)
+    block = f"block: {level(plan.level)} interval" if offered else "no interval is offered"
     at_least = "‘at least’: the cautious bound that must reach the limit" if cautious else ""
     ends = [end for e in found if e.interval for end in (e.interval.low, e.interval.high)]
     needed = [*(e.value for e in found), *ends, *least.values(), *cautious.values()]
