@@ -47,6 +47,10 @@ RATES = (
     "Held out, each round at its own cut-off: a cases passed (specificity) 100 % (94–100 %), "
     "n = 60; b cases found (sensitivity) 70 % (46–88 %), n = 20."
 )
+FIXED_RATES = (
+    "Held out: a cases passed (specificity) 100 % (94–100 %), n = 60; b cases found (sensitivity) "
+    "70 % (46–88 %), n = 20."
+)
 AGAINST = (
     "Against always giving the most frequent answer, by the highest score and on one answer each: "
 )
@@ -155,17 +159,25 @@ class TestWhere:
         ],
     )
     def test_fixed_says_when(self, rule, says):
-        assert at(rule, on_all=rule.at) == [says, RATES]
+        assert at(rule, on_all=rule.at) == [says, FIXED_RATES]
 
     @pytest.mark.parametrize(
         ("on_all", "says"),
         [
-            (-INF, "Every case is called b, whatever its score, learned from"),
-            (INF, "No case is called b, whatever its score, learned from"),
+            (-INF, "Every case is called b, whatever its score"),
+            (INF, "No case is called b, whatever its score"),
+            # one that is a number was learned
+            (
+                0.35,
+                "A case is called b from 0.350 up, learned from held-out scores inside the bag",
+            ),
         ],
     )
     def test_that_calls_all_or_none_in_words(self, on_all, says):
-        assert at(FLOOR, on_all=on_all)[0].startswith(says)
+        assert at(FLOOR, on_all=on_all)[0] == (
+            f"{says} (at least 90 % of b cases are to be found); in 90 % of rounds it fell between "
+            "0.300 and 0.425."
+        )
 
     @pytest.mark.parametrize(
         ("cut_offs", "says"),
@@ -245,9 +257,18 @@ class TestInUse:
                 COST,
                 (worth(0.08, 0.25, (0.6, 0.0, 0.85), (0.97, 0.94, 1.0), (0.4117, 0.25, 1.3)),),
                 [
-                    "Where 8 % of cases are b: 25 % are called b, rightly in 60 % (0–85 %); of "
-                    "those not called 97 % (94–100 %) are not b; the expected cost is 0.412 "
-                    "(0.250–1.300) a case."
+                    "Where 8 % of cases are b (95 % intervals in brackets, n = 60 and 20): 25 % "
+                    "are called b, rightly in 60 % (0–85 %); of those not called 97 % (94–100 %) "
+                    "are not b; the expected cost is 0.412 (0.250–1.300) a case."
+                ],
+            ),
+            (
+                CutOffRule("b", "cost"),
+                (worth(0.25, 0.0, (NAN,), (0.75,), (0.25, 0.125, 0.5)),),
+                [
+                    "Where 25 % of cases are b, the share of this table (95 % intervals in "
+                    "brackets, n = 60 and 20): 0 % are called b; of those not called 75 % are not "
+                    "b; the expected cost is 0.250 (0.125–0.500) a case."
                 ],
             ),
             (
@@ -262,14 +283,16 @@ class TestInUse:
             (
                 replace(FLOOR, share_low=0.004, share_high=0.125),
                 (
-                    worth(0.004, 0.25, (0.05,), (1.0,), (9.0,)),
+                    worth(0.004, 0.25, (0.05, 0.0, 0.1), (1.0, 0.9, 1.0), (9.0, 8.0, 10.0)),
                     worth(0.125, 0.3, (0.7, 0.5, 0.9), (0.996, 0.9, 1.0), (9.0, 8.0, 10.0)),
                 ),
                 [
-                    "Where 0.4 % of cases are b: 25 % are called b, rightly in 5 %; of those not "
-                    "called 100 % are not b.",
-                    "Where 12.5 % of cases are b: 30 % are called b, rightly in 70 % (50–90 %); of "
-                    "those not called >99 % (90–100 %) are not b.",
+                    "Where 0.4 % of cases are b (95 % intervals in brackets, n = 60 and 20): 25 % "
+                    "are called b, rightly in 5 % (0–10 %); of those not called 100 % (90–100 %) "
+                    "are not b.",
+                    "Where 12.5 % of cases are b (95 % intervals in brackets, n = 60 and 20): 30 % "
+                    "are called b, rightly in 70 % (50–90 %); of those not called >99 % (90–100 %) "
+                    "are not b.",
                 ],
             ),
             (
@@ -283,7 +306,15 @@ class TestInUse:
                 ["Where 8 % of cases are b: 100 % are called b, rightly in 8 %."],
             ),
         ],
-        ids=["stated", "with ends", "table", "range", "none called", "all called"],
+        ids=[
+            "stated",
+            "with ends",
+            "ends of a cost",
+            "table",
+            "range",
+            "none called",
+            "all called",
+        ],
     )
     def test_at_each_share(self, rule, shares, says):
         assert at(rule, at_shares=shares)[2:] == says
@@ -293,8 +324,35 @@ class TestInUse:
         given = WithUndecided(0.25, 0.9, 0.68, 0.93)
         assert at(rule, undecided=given)[2:] == [
             "An answer with a probability below 0.7 is left to a person: 25 % of cases. Of the others "
-            "90 % are right; counting those left undecided as wrong, 68 % of all."
+            "(n = 60) 90 % are right; counting those left undecided as wrong, 68 % of all."
         ]
+
+    @pytest.mark.parametrize(
+        ("sent", "n"),
+        [
+            # of eighty; two repeats may leave half a case, which is rounded up
+            (0.5, 40), (0.49375, 41), (0.50625, 40), (0.9875, 1),
+            # one that was answered at all is behind it
+            (0.9999, 1),
+        ],
+    )  # fmt: skip
+    def test_how_many_are_decided(self, sent, n):
+        rule = replace(COST, undecided_below=0.7)
+        (_, _, sentence) = at(rule, undecided=WithUndecided(sent, 1.0, 1 - sent, 1.0))
+        assert f"Of the others (n = {n}) 100 % are right; " in sentence
+
+    def test_nothing_of_a_share_in_use_where_the_cut_off_was_not_judged(self):
+        assert len(at(FLOOR, at_shares=SHARES)) == 3
+        assert at(FLOOR, at_shares=SHARES, unlike="bags")[1:] == [RATES]
+
+    def test_the_level_is_the_plan_s(self):
+        made = at_floor(6, others=60, rule=FLOOR)
+        made = replace(made, plan=replace(made.plan, level=0.9))
+        (_, _, sentence) = said(at_literal(made, undecided=None))
+        # of its own share: twenty of eighty
+        begins = "Where 25 % of cases are b, the share of this table (90 % intervals in brackets, "
+        assert sentence.startswith(f"{begins}n = 60 and 20): ")
+        assert sentence.count("intervals") == sentence.count("n = ") == 1
 
     def test_all_undecided(self):
         rule = replace(COST, undecided_below=0.999)
@@ -344,10 +402,11 @@ class TestUnitsAndRows:
             "costs 10, a false alarm 1); in 90 % of rounds or more: 0.400.",
             "Held out, each round at its own cut-off: a lots passed (specificity) 100 % "
             "(88–100 %), n = 30; b lots found (sensitivity) 100 % (69–100 %), n = 10.",
-            "Where 8 % of lots are b: 8 % are called b, rightly in 100 % (42–100 %); of those not "
-            "called 100 % (97–100 %) are not b; the expected cost is 0.000 (0.000–0.269) a lot.",
+            "Where 8 % of lots are b (95 % intervals in brackets, n = 30 and 10): 8 % are called b, "
+            "rightly in 100 % (42–100 %); of those not called 100 % (97–100 %) are not b; the "
+            "expected cost is 0.000 (0.000–0.269) a lot.",
             "An answer with a probability below 0.7 is left to a person: 25 % of lots. Of the others "
-            "100 % are right; counting those left undecided as wrong, 75 % of all.",
+            "(n = 30) 100 % are right; counting those left undecided as wrong, 75 % of all.",
         ]
 
     def test_rows_are_answered(self):
@@ -355,9 +414,10 @@ class TestUnitsAndRows:
         assert sentences[0].startswith("A row is called b from 0.400 up,")
         assert "a rows passed (specificity) 100 % (" in sentences[1]
         assert sentences[1].endswith(", n = 20.")
-        assert sentences[2].startswith("Where 8 % of rows are b: ")
+        begins = "Where 8 % of rows are b (95 % intervals in brackets, n = 60 and 20): "
+        assert sentences[2].startswith(begins)
         assert sentences[2].endswith(" a row.")
-        assert ": 25 % of rows. Of the others" in sentences[3]
+        assert ": 25 % of rows. Of the others (n = 60) 100 %" in sentences[3]
 
     @pytest.mark.parametrize("answered_from", ["all", "one"])
     def test_a_curve_counts_lots(self, answered_from):

@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 from scipy.stats import beta
 
+from evalcore.answer import answer, not_judged, title
 from evalcore.at_cut_off import why_unlike
 from evalcore.beside_answer import beside_in_sentences
 from evalcore.candidates import CANDIDATES
@@ -58,10 +59,13 @@ class TestWhy:
             ((-INF, INF, 0.3), "bags"),
             ((INF, INF, 0.3), "bags"),
             ((-INF,), "bags"),
-            # rounds without a cut-off are not counted, on either side
+            # rounds without a cut-off are as unlike, and count among all
             ((-INF, -INF, 0.3, NAN, NAN, NAN), "bags"),
-            ((-INF, 0.3, NAN), ""),
-            ((NAN, NAN), ""),
+            ((-INF, 0.3, NAN), "bags"),
+            ((-INF, 0.3, 0.3, NAN), ""),
+            ((NAN, 0.3), ""),
+            ((NAN, NAN, 0.3), "bags"),
+            ((NAN, NAN), "bags"),
             ((), ""),
         ],
     )
@@ -173,10 +177,41 @@ class TestEvaluations:
     def test_no_ends_in_sentences(self, case):
         found, _ = case
         sentences = [s.replace(NBSP, " ") for s in beside_in_sentences(found)]
-        chosen = [s for s in sentences if s.startswith(("Held out", "Where"))]
-        assert len(chosen) >= 2
-        for sentence in chosen:
-            assert not re.search(r"\d–>?\d", sentence)
+        # what a share in use would make of them is not said at all
+        (sentence,) = (s for s in sentences if s.startswith(("Held out", "Where")))
+        assert sentence.startswith("Held out, each round at its own cut-off: ")
+        assert not re.search(r"\d–>?\d", sentence)
+
+    def test_nothing_is_said_of_further_cases(self, case):
+        found, _ = case
+        k, n = (found.table.labels == 0).sum(), found.table.n_cases
+        plain = answer(found).replace(NBSP, " ")
+        assert plain.startswith(
+            "Nothing can be said of further cases: the cut-off that goes to work was not judged. "
+            "While held out, each round at its own, naive Bayes was right in "
+        )
+        assert "is expected to be" not in plain
+        assert not re.search(r"\d–>?\d", plain)
+        assert plain.endswith(f" Always answering ‘a’ would be right in {100 * k / n:.0f} %.")
+        assert not_judged(found)
+        # without limits the title would say of how many in ten
+        bare = replace(found, plan=replace(found.plan, limits=()))
+        assert title(bare) == "How often it is right on further cases cannot be told."
+
+    def test_the_answer_by_hand(self):
+        # ten of forty are b: of each bag all are called, so that these are right and no others
+        found, _ = case_of("bags")
+        assert answer(found).replace(NBSP, " ") == (
+            "Nothing can be said of further cases: the cut-off that goes to work was not judged. "
+            "While held out, each round at its own, naive Bayes was right in 25 % (n = 40 cases); "
+            "b cases found 100 % (n = 10) and a cases passed 0 % (n = 30). Always answering ‘a’ "
+            "would be right in 75 %."
+        )
+
+    def test_costs_are_not_held_against_it(self, case):
+        found, _ = case
+        raised = {f.check for f in findings(found.table, found.plan, found)}
+        assert "cut_off_costs_more" not in raised
 
     def test_it_is_found(self, case):
         found, why = case
@@ -197,8 +232,8 @@ class TestEvaluations:
             "No interval is offered at the cut-off: in 5 of 5 rounds the bag cannot teach one like it"
         )
         assert finding.seen.replace(NBSP, " ") == (
-            "There it calls all or none (threshold: 50 % of rounds); learned from all 40 cases it is "
-            f"{on_all:.3f}. {SEEN}"
+            "There it calls all or none, or is not learned (threshold: 50 % of rounds); learned from "
+            f"all 40 cases it is {on_all:.3f}. {SEEN}"
         )
         assert finding.advice == (
             "Take other costs or a lower floor, add b cases, or take a candidate whose scores tell "
@@ -295,6 +330,8 @@ class TestLikeTheOneInUse:
     def test_nothing_is_found_and_ends_are_said(self, found):
         raised = {f.check for f in findings(found.table, found.plan, found)}
         assert "cut_off_not_judged" not in raised
+        assert not not_judged(found)
+        assert " at the cut-off is expected to be right in " in answer(found)
         sentences = [s.replace(NBSP, " ") for s in beside_in_sentences(found)]
         for sentence in (s for s in sentences if s.startswith("Where")):
             ends = len(re.findall(r" % \(\d+(?:\.\d)?–\d+(?:\.\d)? %\)", sentence))

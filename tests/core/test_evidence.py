@@ -280,6 +280,27 @@ class TestShort:
         assert given.short is short
 
 
+class TestTells:
+    @pytest.mark.parametrize(
+        ("estimator", "tables", "without", "tells"),
+        [
+            ("held_out_by_case", 100, 0, True),
+            ("held_out_by_case", 99, 0, False),
+            ("held_out_by_case", 1000, 900, True),
+            ("held_out_by_case", 1000, 901, False),
+            # a word is said of each table, with an interval or not
+            ("verdict", 1000, 1000, True),
+            ("comparison", 100, 100, True),
+            ("verdict", 99, 0, False),
+        ],
+    )
+    def test_a_hundred_tables_with_what_it_is_about(self, estimator, tables, without, tells):
+        given = line(estimator=estimator, coverage=0.5, tables=tables, without_interval=without)
+        assert given.tells is tells
+        # what does not tell is not called short, however low
+        assert given.short is tells
+
+
 class TestRead:
     HEADER = ",".join(field.name for field in dataclasses.fields(Line))
     ROW = "units,20,unit,5,2,6,9.5,lda,,default,verdict,,accuracy,0.9810,0.0043,nan,nan,nan,1000,3"

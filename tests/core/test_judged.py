@@ -17,7 +17,6 @@ from evalcore.answers import HeldOut, Reduced
 from evalcore.binomial import clopper_pearson, wilson
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
-from evalcore.clusters import clusters
 from evalcore.intervals import auc_score_type, square_and_add, with_model_variance
 from evalcore.judged import Judged, plus_632, with_second_looks
 from evalcore.judged_intervals import (
@@ -452,41 +451,6 @@ class TestAtLearnedCutOffs:
         assert not share_interval(0.95, blocks).defined
         # values are there all the same
         assert part.pooled_value("sensitivity", 1) == 0.5
-
-
-class TestClusters:
-    labels = np.repeat([0, 1, 0, 1, 0, 1], 2)
-    units = np.repeat(np.arange(6), 2)
-    site = ("x", "x", "y", "y", "x", "x", "z", "z", "y", "y", "z", "z")
-
-    def found(self, scheme, *, units=None, counted_by="case"):
-        table = table_of(self.labels, units=units, entries={"site": self.site})
-        plan = Plan(table.roles, (scheme,), (choose(CANDIDATES, "lda"),), answered_from="one")
-        return clusters(table, plan, plan.scheme_names[0], counted_by=counted_by)
-
-    def test_rows_of_units(self):
-        cv = choose(SCHEMES, "cross_validation", folds=2)
-        assert self.found(cv, units=self.units).tolist() == self.units.tolist()
-        assert self.found(cv, units=self.units, counted_by="unit") is None
-        assert self.found(cv) is None
-
-    @pytest.mark.parametrize(
-        "scheme",
-        [
-            choose(SCHEMES, "cross_validation", folds=2, keep="site"),
-            choose(SCHEMES, "leave_block_out", column="site"),
-        ],
-        ids=["keep", "blocks"],
-    )
-    def test_what_a_scheme_keeps_together(self, scheme):
-        def alike(given):
-            return [[a == b for b in given] for a in given]
-
-        by_row = alike(self.site)
-        assert alike(self.found(scheme).tolist()) == by_row
-        assert alike(self.found(scheme, units=self.units).tolist()) == by_row
-        by_unit = self.found(scheme, units=self.units, counted_by="unit")
-        assert alike(by_unit.tolist()) == alike(self.site[::2])
 
 
 class TestPlus632:
