@@ -149,6 +149,8 @@ def answer(evaluation: Evaluation) -> str:
     always = (
         f"Always answering {quoted(table.classes[k])} would be right in {percent(share, whole.n)}."
     )
+    if math.isnan(whole.value) and evaluation.in_use != HIGHEST:
+        return f"Nothing can be said of further {noun}: no round learned a cut-off. {always}"
     if not_judged(evaluation):
         return (
             f"Nothing can be said of further {noun}: the cut-off that goes to work was not judged. "

@@ -107,7 +107,8 @@ def at_cut_off(
     given, whole : Answers
         Its answers there, and those of the fit on all cases.
     elsewhere : sequence of (Judged, Answers)
-        The same under other schemes: second looks, each at its own cut-offs.
+        The same under other schemes: second looks, each at its own cut-offs; learned ones are
+        learned under the headline's scheme alone, so these are of a fixed one.
     """
     rule = plan.cut_off
     if rule is None or not plan.has_cut_off(plan.candidate(judged.candidate)):

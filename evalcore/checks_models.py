@@ -7,11 +7,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from evalcore import intervals
+from evalcore.estimated import default_interval
 from evalcore.estimates import MEMORISES, mean_of_rounds
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
 from evalcore.judged import plus_632
-from evalcore.judged_intervals import offers_interval
 from evalcore.plan import Plan
 from evalcore.table import Table
 from evalcore.wording import (
@@ -180,29 +180,33 @@ def model_variance_unknown(
     if evaluation is None:
         return
     part = evaluation.part_in_use(evaluation.about)
-    if part.units is not None and not offers_interval(part):
+    if default_interval(plan, part, "accuracy", 0) is None:
         return
-    twice = int(part.held.rounds.times_tested.max(initial=0))
+    learned = part.cut_offs == "learned"
+    where = "make random subsampling or the bootstrap the first scheme, which alone learns cut-offs"
+    second = "take random subsampling or the bootstrap, be it as a second scheme"
+    advice = where if learned else second
     if math.isnan(part.tau2):
+        twice = int(part.held.rounds.times_tested.max())
         yield _unknown(
             evaluation.scheme,
             "The interval leaves out how much the model itself varies: each case was answered at "
             "most once, twice is needed",
-            f"Each case is held out in at most {twice} round of the first scheme, and no other "
-            "scheme holds one out more often; from 2 on, the model's variance can be told apart",
-            "Repeat the cross-validation, or take random subsampling or the bootstrap, be it as a "
-            "second scheme.",
+            f"Each case is held out in at most {twice} round of the first scheme"
+            f"{'' if learned else ', and no other scheme holds one out more often'}; from 2 on, "
+            "the model's variance can be told apart",
+            f"Repeat the cross-validation, or {advice}.",
         )
         return
     for k, name in enumerate(table.classes):
-        if math.isnan(part.tau2_of(k)) and offers_interval(part, k):
+        if math.isnan(part.tau2_of(k)) and default_interval(plan, part, "sensitivity", k):
             yield _unknown(
                 name,
                 f"The interval of {class_name(name)} cases leaves out how much the model itself "
-                "varies: rounds hold out 1 of them at a time, 2 together are needed",
-                "No round of any scheme holds out 2 of the class together more than once, so how "
-                "much the share right of the class varies with the model cannot be told apart",
-                "Take the bootstrap or random subsampling as a second scheme, or fewer folds.",
+                "varies: rounds hold out 1 of them at a time that is independent, 2 are needed",
+                "No round holds out 2 independent ones of the class together more than once, so "
+                "how much the share right of the class varies with the model cannot be told apart",
+                f"Take fewer folds, or {advice}.",
             )
 
 

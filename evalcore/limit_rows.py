@@ -85,8 +85,11 @@ def _why_no_bound(evaluation: Evaluation, part: Judged, verdict: Verdict) -> str
         always = quoted(classes[part.always_names])
         return f"the model fitted on all cases always answers {always}"
     if part.units is not None:
-        chosen = part.held.labels == classes.index(of_class) if of_class else slice(None)
-        if len(np.unique(part.units[chosen])) < LEAST_BLOCKS:
+        asked = [of_class] if of_class else classes
+        every = [part.units[part.held.labels == classes.index(name)] for name in asked]
+        if verdict.limit.measure == "accuracy":
+            every = [part.units]
+        if min(len(np.unique(units)) for units in every) < LEAST_BLOCKS:
             return f"fewer than {LEAST_BLOCKS} blocks"
     return "the luck of being best cannot be told"
 
@@ -131,5 +134,5 @@ def _detail(evaluation: Evaluation, candidate: str, given: Outlook) -> str:
     if given.too_variable or needed <= n:
         # the count alone would do: it is the model's own variance that stands against it
         return f"{shows} The model varies too much from round to round to show more."
-    more = f" To show {least} with {misses_made} takes {count(needed)} {units}"
+    more = f" By the count alone, {least} with {misses_made} takes {count(needed)} {units}"
     return shows + more + (f", with one miss {count(with_one)}." if misses > 1 else ".")

@@ -223,7 +223,7 @@ class TestLimits:
         assert spaced(row.name) == "Failing lots found (sensitivity)"
         assert spaced(row.figure) == "90 % (70–97 %), n = 20"
         assert spaced(row.detail) == (
-            "Limit 90 %; these lots show at least 71 %. To show 90 % with 2 misses takes 61 "
+            "Limit 90 %; these lots show at least 71 %. By the count alone, 90 % with 2 misses takes 61 "
             "failing lots, with one miss 46."
         )
 

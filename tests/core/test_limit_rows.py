@@ -201,7 +201,7 @@ class TestTooVariable:
     def test_a_steady_one_gets_its_count(self):
         (row,) = limit_rows(evaluation(first(60, 51, 51), labels=[0, 1] * 30), "lda")
         assert spaced(row.detail).endswith(
-            " To show 80 % with 9 misses takes 76 cases, with one miss 22."
+            " By the count alone, 80 % with 9 misses takes 76 cases, with one miss 22."
         )
 
 

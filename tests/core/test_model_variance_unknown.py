@@ -51,7 +51,7 @@ class TestOfAClass:
         finding = only(UNKNOWN, *given)
         assert finding.title.replace(NBSP, " ") == (
             "The interval of b cases leaves out how much the model itself varies: rounds hold out "
-            "1 of them at a time, 2 together are needed"
+            "1 of them at a time that is independent, 2 are needed"
         )
         assert finding.advice == (
             "Take the bootstrap or random subsampling as a second scheme, or fewer folds."
