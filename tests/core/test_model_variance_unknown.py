@@ -54,7 +54,7 @@ class TestOfAClass:
             "1 of them at a time that is independent, 2 are needed"
         )
         assert finding.advice == (
-            "Take the bootstrap or random subsampling as a second scheme, or fewer folds."
+            "Take fewer folds, or take random subsampling or the bootstrap, be it as a second scheme."
         )
 
     def test_not_where_two_are_held_out_together_twice(self):
