@@ -144,7 +144,7 @@ def _in_rounds(found: AtCutOff) -> str:
         if found.undefined
         else ""
     )
-    if spread.low == spread.high:
+    if place(spread.low) == place(spread.high):
         return f"in {level(spread.level)} of rounds or more: {place(spread.low)}{lacking}"
     return (
         f"in {level(spread.level)} of rounds it fell between {place(spread.low)} and "
@@ -178,7 +178,10 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
     def rate(of: Rate) -> str:
         return with_interval(of.value, Interval(of.low, of.high, evaluation.plan.level, RATIO), n)
 
-    sizes = [count(n_behind(found.part, k)) for k, _ in enumerate(evaluation.table.classes)]
+    sizes = [
+        f"{count(n_behind(found.part, k))} {class_name(each)}"
+        for k, each in enumerate(evaluation.table.classes)
+    ]
     behind = (
         f" ({level(evaluation.plan.level)} intervals in brackets, n{NBSP}={NBSP}{listed(sizes)})"
         if any(at.right_when_called.bounded or at.cost.bounded for at in found.at_shares)
@@ -229,7 +232,7 @@ def _ahead(evaluation: Evaluation, curve: Curve) -> str:
     if found.without_law:
         said.append(
             f" {count(found.without_law)} of {count(found.resamples)} resamples that no curve fits "
-            "are left out."
+            "are left out, so the band leans towards a rise."
         )
     return "".join(said)
 

@@ -7,6 +7,7 @@ from evalcore.answer import by_highest
 from evalcore.checks_models import why_632_misleads
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.figures import Finding
+from evalcore.measures import ALL_MEASURES
 from evalcore.per_case import agreement_within_units
 from evalcore.plan import Plan
 from evalcore.profile import majority
@@ -88,8 +89,8 @@ def wide_interval(table: Table, plan: Plan, evaluation: Evaluation | None) -> It
         "wide_interval",
         "moderate",
         name,
-        f"The interval is wide: {points(bounds.width, signed=False)}, asked about from "
-        f"{points(WIDTH, signed=False)}",
+        f"The interval of {ALL_MEASURES[measure].trade} is wide: "
+        f"{points(bounds.width, signed=False)}, asked about from {points(WIDTH, signed=False)}",
         f"{with_interval(estimate.value, bounds, estimate.n)}, {n_equals(estimate.n)}. The width "
         "comes from the number of cases; more rounds do not narrow it.",
         f"Judge more {table.noun.plural} before deciding on a difference this small.",

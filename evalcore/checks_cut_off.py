@@ -7,7 +7,7 @@ import numpy as np
 
 from evalcore.at_cut_off import HALF, AtCutOff
 from evalcore.beside_answer import place
-from evalcore.clusters import independent_noun
+from evalcore.clusters import independent_noun, named_in
 from evalcore.cut_off import least_units
 from evalcore.estimated import n_behind
 from evalcore.evaluation import Evaluation
@@ -29,6 +29,8 @@ from evalcore.wording import (
     tenths,
     with_interval,
 )
+
+LEAST_ROUNDS = 20  # for the ends of nine rounds in ten to be told
 
 
 def cut_off_chosen_here(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterator[Finding]:
@@ -72,7 +74,9 @@ def cut_off_calls_all(table: Table, plan: Plan, evaluation: Evaluation | None) -
         f"In {percent(share, rounds)} of rounds the cut-off calls {each} {noun.singular} {name}",
         f"So held-out figures are those of a constant answer there ({count(int(max(every, none)))} "
         f"of {count(rounds)} rounds; threshold: {level(HALF)}).",
-        f"Take other costs or another floor, or add {name} {noun.plural}: a cut-off that is "
+        "State another cut-off."
+        if found.rule.by == "fixed"
+        else f"Take other costs or another floor, or add {name} {noun.plural}: a cut-off that is "
         "learned needs scores that tell the classes apart, and a floor enough of its class in "
         "every bag.",
         share,
@@ -122,17 +126,17 @@ def floor_from_few(table: Table, plan: Plan, evaluation: Evaluation | None) -> I
     found = evaluation.at_cut_off(evaluation.about)
     if found is None or found.learned_from >= needed:
         return
-    name = class_name(rule.of_class)
-    what = independent_noun(table, plan, evaluation.scheme, counted_by=evaluation.counted_by).plural
+    noun = independent_noun(table, plan, evaluation.scheme, counted_by=evaluation.counted_by)
+    what = named_in(rule.of_class, noun, table.noun_for(evaluation.counted_by))
     yield Finding(
         "floor_from_few",
         "grave",
         rule.of_class,
-        f"{capitalised(count(found.learned_from))} {name} {what} cannot teach a floor of "
+        f"{capitalised(count(found.learned_from))} {what} cannot teach a floor of "
         f"{level(rule.floor)}",
-        f"A cut-off that finds {level(rule.floor)} of further {what} of a class takes at least "
-        f"{needed} of them; there are {found.learned_from} (threshold: {needed}).",
-        f"Take a lower floor, or add {name} {table.noun.plural}.",
+        f"A cut-off that finds {level(rule.floor)} of further {what} takes at least {needed} of "
+        f"them; there are {found.learned_from} (threshold: {needed}).",
+        f"Take a lower floor, or add {what}.",
         found.learned_from,
         needed,
         "wilks1941",
@@ -178,7 +182,7 @@ def cut_off_apart(_: Table, plan: Plan, evaluation: Evaluation | None) -> Iterat
     if evaluation is None or plan.cut_off is None or plan.cut_off.by == "fixed":
         return
     found = evaluation.at_cut_off(evaluation.about)
-    if found is None or found.unlike or not found.spread.defined:
+    if found is None or found.unlike or len(found.cut_offs) - found.undefined < LEAST_ROUNDS:
         return
     low, high = found.spread.low, found.spread.high
     if low <= found.on_all <= high:
@@ -215,8 +219,9 @@ def cut_off_not_judged(
         f"No interval is offered at the cut-off: {why}",
         f"{seen}. Held-out figures are those of the rounds’ own cut-offs and say little about the "
         "one that goes to work: they have no interval and show no limit.",
-        f"Take other costs or a lower floor, add {class_name(found.rule.of_class)} {noun.plural}, "
-        "or take a candidate whose scores tell the classes apart.",
+        f"Take {'other costs' if found.rule.by == 'cost' else 'a lower floor'}, add "
+        f"{class_name(found.rule.of_class)} {noun.plural}, or take a candidate whose scores tell "
+        "the classes apart.",
         value,
         threshold,
         "own_simulation",

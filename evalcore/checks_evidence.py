@@ -21,18 +21,20 @@ def interval_falls_short(_: Table, plan: Plan, evaluation: Evaluation | None) ->
         return
     worst = min(short, key=lambda line: line.coverage)
     name, tables = evaluation.about, worst.tables - worst.without_interval
-    fell, kinds = (len({x.scenario for x in given}) for given in (short, matching(evaluation)))
+    trade = ALL_MEASURES[worst.measure].trade
+    every = matching(evaluation, measure=worst.measure)
+    fell, kinds = (len({x.scenario for x in every if x.short}), len({x.scenario for x in every}))
     share, least = percent(worst.coverage, tables), percent(LEAST, 1)
     yield Finding(
         "interval_falls_short",
         "moderate",
         name,
         f"On {count(fell)} of {count(kinds)} kinds of simulated tables like this one in size the "
-        f"{level(LEVEL)} interval held the true value in {share} at worst, {least} is asked "
-        "for",
+        f"{level(LEVEL)} interval of {trade} held the true value in {share} at worst, {least} is "
+        "asked for",
         f"{count(tables)} simulated tables ({size_in_words([worst])}) judged by "
-        f"{plan.title(name)} with the same scheme: the interval of "
-        f"{ALL_MEASURES[worst.measure].trade} held the true value in {share}; its estimate was "
+        f"{plan.title(name)} with the same scheme: the interval held the true "
+        f"value in {share}; its estimate was "
         f"{tenths(abs(worst.bias))} too {'low' if worst.bias < 0 else 'high'} on average. The "
         f"threshold is {least}, and the simulation’s own error is allowed for. Real "
         "tables may be otherwise.",

@@ -11,6 +11,7 @@ from evalcore.candidates import CANDIDATES
 from evalcore.evaluation import Evaluation
 from evalcore.figures import Finding
 from evalcore.groups import noun_of
+from evalcore.measures import ALL_MEASURES
 from evalcore.permuted import arrangements, dealt_among, kept_together
 from evalcore.plan import Plan
 from evalcore.table import Table
@@ -223,7 +224,8 @@ def still_rising(table: Table, plan: Plan, evaluation: Evaluation | None) -> Ite
             "note",
             curve.of_class or curve.part.candidate,
             f"{capitalised(plan.title(curve.part.candidate))} still learns from more "
-            f"{noun.plural}: {tenths(found.gain.value)} over the last doubling",
+            f"{noun.plural}: {tenths(found.gain.value)} of {ALL_MEASURES[found.measure].trade} "
+            "over the last doubling",
             f"{capitalised(measure_name(table, plan, found.measure, curve.of_class))}: "
             f"{found.reason} The threshold for the lower end is 0.",
             f"Add {noun.plural}, and judge the model again.",

@@ -31,7 +31,7 @@ def always_the_same(table: Table, plan: Plan, evaluation: Evaluation | None) -> 
     """The model fitted on all cases names one class only, those of the rounds name others too."""
     if evaluation is None:
         return
-    for name in evaluation.learners:
+    for name in evaluation.candidates:
         part = evaluation.part_in_use(name)
         if part.always_names is None:
             continue
@@ -182,27 +182,33 @@ def model_variance_unknown(
     part = evaluation.part_in_use(evaluation.about)
     if default_interval(plan, part, "accuracy", 0) is None:
         return
-    learned = part.cut_offs == "learned"
+    learned, noun = part.cut_offs == "learned", table.noun_for(evaluation.counted_by).plural
     where = "make random subsampling or the bootstrap the first scheme, which alone learns cut-offs"
     second = "take random subsampling or the bootstrap, be it as a second scheme"
     advice = where if learned else second
     if math.isnan(part.tau2):
-        twice = int(part.held.rounds.times_tested.max())
+        if part.held.rounds.times_tested.max() > 1:
+            why = "rounds hold out 1 block at a time, 2 are needed"
+            seen = "Only answers to independent cases of one round tell how models differ"
+            advice = f"Take fewer folds, or {advice}."
+        else:
+            why = "each case was answered at most once, twice is needed"
+            seen = "Each case is held out in at most 1 round of the first scheme" + (
+                "" if learned else ", and no other scheme holds one out more often"
+            )
+            advice = f"Repeat the cross-validation, or {advice}."
         yield _unknown(
             evaluation.scheme,
-            "The interval leaves out how much the model itself varies: each case was answered at "
-            "most once, twice is needed",
-            f"Each case is held out in at most {twice} round of the first scheme"
-            f"{'' if learned else ', and no other scheme holds one out more often'}; from 2 on, "
-            "the model's variance can be told apart",
-            f"Repeat the cross-validation, or {advice}.",
+            f"The interval leaves out how much the model itself varies: {why}",
+            f"{seen}; from 2 on, the model's variance can be told apart",
+            advice,
         )
         return
     for k, name in enumerate(table.classes):
         if math.isnan(part.tau2_of(k)) and default_interval(plan, part, "sensitivity", k):
             yield _unknown(
                 name,
-                f"The interval of {class_name(name)} cases leaves out how much the model itself "
+                f"The interval of {class_name(name)} {noun} leaves out how much the model itself "
                 "varies: rounds hold out 1 of them at a time that is independent, 2 are needed",
                 "No round holds out 2 independent ones of the class together more than once, so "
                 "how much the share right of the class varies with the model cannot be told apart",

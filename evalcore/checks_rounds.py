@@ -63,7 +63,7 @@ def never_held_out(table: Table, plan: Plan, evaluation: Evaluation | None) -> I
             "moderate" if SCHEMES[plan.scheme(scheme).key].drawn else "note",
             scheme,
             f"{count(never)} of {table.noun.counted(table.n_units)} were never held out in "
-            f"{title(plan, scheme)}, where none should be",
+            f"{title(plan, scheme)}; to know about every one takes 0",
             f"{count(never)} {table.noun.plural} were in every bag, so nothing is known about "
             f"them (threshold: 0).{expected}",
             "Add rounds, or choose a scheme that holds every one out.",
@@ -232,9 +232,10 @@ def few_blocks(table: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
             yield _few_blocks(scheme, "", part.blocks, of=title(plan, scheme))
             continue
         for k, name in enumerate(table.classes):
-            blocks = len(np.unique(part.units[part.held.labels == k]))
+            blocks = part.blocks_with(k)
             if blocks < LEAST_BLOCKS:
-                with_class = f" with {class_name(name)} cases"
+                noun = table.noun_for(evaluation.counted_by)
+                with_class = f" with {class_name(name)} {noun.plural}"
                 yield _few_blocks(name, with_class, blocks, of=title(plan, scheme))
 
 
@@ -270,6 +271,8 @@ def class_shares_reached(
         reached = by_unit.test[:, table.unit_labels == k].sum(axis=1) / sizes
         wanted = float(table.class_counts("unit")[k] / table.n_units)
         widest = float(np.abs(reached - wanted).max())
+        if widest == 0:
+            continue
         n = table.n_units
         yield Finding(
             "class_shares_reached",

@@ -8,7 +8,7 @@ from evalcore.groups import noun_of
 from evalcore.plan import Plan
 from evalcore.schemes import ALL_SCHEMES
 from evalcore.table import Table
-from evalcore.wording import Noun
+from evalcore.wording import Noun, class_name
 
 
 def clusters(
@@ -32,3 +32,15 @@ def independent_noun(table: Table, plan: Plan, scheme: str, *, counted_by: Count
         return table.noun_for(counted_by)
     values = plan.scheme(scheme).values()
     return noun_of(table, str(values.get("keep") or values.get("column") or ""))
+
+
+def named_in(of_class: str, independent: Noun, counted: Noun) -> str:
+    """What is independent and holds a class, in the plural.
+
+    >>> named_in("failing", Noun("site", "sites"), Noun("lot", "lots"))
+    'sites with failing lots'
+    """
+    if not of_class:
+        return independent.plural
+    named = f"{class_name(of_class)} {counted.plural}"
+    return named if independent == counted else f"{independent.plural} with {named}"

@@ -13,6 +13,7 @@ from evalcore.profile import smallest_class
 from evalcore.schemes import SCHEMES
 from evalcore.wording import Noun, count, level, listed, percent
 
+ANSWERED = ("accuracy", "sensitivity")  # every answer gives these, whatever its measure
 STUDIED = {"cross_validation": "default", "bootstrap": "bootstrap"}
 NONE_LIKE = (
     "No simulated table resembles this one (candidate, scheme, level, cut-off, number of "
@@ -20,8 +21,8 @@ NONE_LIKE = (
 )
 
 
-def headline(evaluation: Evaluation) -> Headline | None:
-    """What the headline rests on; None where the study holds nothing of its kind.
+def headline(evaluation: Evaluation, measure: str = "") -> Headline | None:
+    """What the headline rests on, or another measure; None where nothing of its kind was studied.
 
     That is: at another level, or under another scheme than the recommended cross-validation or
     bootstrap.
@@ -31,11 +32,11 @@ def headline(evaluation: Evaluation) -> Headline | None:
     studied = [choose(SCHEMES, key) for key in STUDIED]
     if plan.level != LEVEL or used not in studied:
         return None
-    estimate = _estimate(evaluation)
+    estimate = _estimate(evaluation, measure)
     estimator = estimate.estimator
     if estimate.measure == "auc" and len(plan.schemes) == 1:
         estimator = "mean_of_rounds_alone"
-    elif _rests_on_others(evaluation) and (
+    elif _rests_on_others(evaluation, estimate.measure) and (
         set(plan.schemes) != set(studied) or estimator == AT_CUT_OFF
     ):
         return None  # cut-offs were studied under one scheme
@@ -57,15 +58,23 @@ def headline(evaluation: Evaluation) -> Headline | None:
     )
 
 
-def matching(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
+def matching(
+    evaluation: Evaluation, among: Sequence[Line] | None = None, *, measure: str = ""
+) -> tuple[Line, ...]:
     """Lines like the headline's that tell enough; none while rounds it rests on are missing."""
-    given = headline(evaluation) if _complete(evaluation) else None
+    given = headline(evaluation, measure) if _complete(evaluation, measure) else None
     return tuple(line for line in like(given, among) if line.tells) if given else ()
 
 
 def falling_short(evaluation: Evaluation, among: Sequence[Line] | None = None) -> tuple[Line, ...]:
-    """Those of them in which the interval did not keep its word."""
-    return tuple(line for line in matching(evaluation, among) if line.short)
+    """Lines like any figure of the answer in which the interval did not keep its word."""
+    measures = dict.fromkeys((_estimate(evaluation).measure, *ANSWERED))
+    return tuple(
+        line
+        for measure in measures
+        for line in matching(evaluation, among, measure=measure)
+        if line.short
+    )
 
 
 def sentence(evaluation: Evaluation, among: Sequence[Line] | None = None) -> str:
@@ -107,26 +116,28 @@ def _span(numbers: Sequence[int]) -> str:
     return " to ".join(dict.fromkeys([count(min(numbers)), count(max(numbers))]))
 
 
-def _estimate(evaluation: Evaluation) -> Estimate:
-    """The headline's figure; of sensitivity, which has several classes, the balanced one."""
-    measure = evaluation.plan.measure
-    measure = "balanced_accuracy" if measure == "sensitivity" else measure
+def _estimate(evaluation: Evaluation, measure: str = "") -> Estimate:
+    """The headline's figure or another; of sensitivity the balanced one, unless asked for."""
+    table = evaluation.table
+    of_class = table.classes[smallest_class(table)[0]] if measure == "sensitivity" else ""
+    headline_s = evaluation.plan.measure
+    measure = measure or ("balanced_accuracy" if headline_s == "sensitivity" else headline_s)
     # at a learned cut-off where there is one
     estimator = "mean_of_rounds" if measure == "auc" else evaluation.in_use
-    return evaluation.estimate(measure, evaluation.about, estimator=estimator)
+    return evaluation.estimate(measure, evaluation.about, estimator=estimator, of_class=of_class)
 
 
-def _rests_on_others(evaluation: Evaluation) -> bool:
+def _rests_on_others(evaluation: Evaluation, measure: str) -> bool:
     """Whether what other schemes show of the model's variance bears on the headline's interval."""
-    measure, part = _estimate(evaluation).measure, evaluation.part_in_use(evaluation.about)
+    part = evaluation.part_in_use(evaluation.about)
     if measure == "accuracy":
         return math.isnan(part.own_tau2(None))
     return measure == "auc" or any(math.isnan(part.own_tau2(k)) for k in range(part.n_classes))
 
 
-def _complete(evaluation: Evaluation) -> bool:
+def _complete(evaluation: Evaluation, measure: str = "") -> bool:
     """Whether all rounds that the headline's interval rests on have finished."""
-    others = _rests_on_others(evaluation)
+    others = _rests_on_others(evaluation, _estimate(evaluation, measure).measure)
     names = evaluation.plan.scheme_names if others else (evaluation.scheme,)
     return all(
         name in evaluation.rounds

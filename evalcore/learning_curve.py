@@ -278,7 +278,9 @@ def _gain(sizes: Floats, values: Floats, drawn: Floats, level: float) -> Gain:
 def _call(law: PowerLaw | NoPowerLaw, gain: Gain) -> Slope:
     if isinstance(law, PowerLaw) and gain.interval.low > 0:
         return "rising"
-    return "flat" if gain.interval.high < WORTHWHILE else "cannot tell"
+    # resamples that all agree tell how few errors there were, not how sure that is
+    agree = gain.interval.low == gain.interval.high
+    return "flat" if gain.interval.high < WORTHWHILE and not agree else "cannot tell"
 
 
 def _reason(

@@ -3,11 +3,9 @@
 import math
 from dataclasses import dataclass
 
-import numpy as np
-
 from evalcore.answer import WITH_CUT_OFF, measure_name, so_far
 from evalcore.at_cut_off import ESTIMATOR as AT_CUT_OFF
-from evalcore.clusters import independent_noun
+from evalcore.clusters import independent_noun, named_in
 from evalcore.evaluation import HIGHEST, Evaluation
 from evalcore.judged import Judged
 from evalcore.outlook import Outlook, in_words, outlook
@@ -16,7 +14,6 @@ from evalcore.schemes import LEAST_BLOCKS
 from evalcore.verdict import Verdict, part_behind, verdicts_in_use
 from evalcore.wording import (
     capitalised,
-    class_name,
     count,
     level,
     n_equals,
@@ -86,11 +83,9 @@ def _why_no_bound(evaluation: Evaluation, part: Judged, verdict: Verdict) -> str
         return f"the model fitted on all cases always answers {always}"
     if part.units is not None:
         asked = [of_class] if of_class else classes
-        every = [part.units[part.held.labels == classes.index(name)] for name in asked]
-        if verdict.limit.measure == "accuracy":
-            every = [part.units]
-        if min(len(np.unique(units)) for units in every) < LEAST_BLOCKS:
-            return f"fewer than {LEAST_BLOCKS} blocks"
+        blocks = [part.blocks_with(classes.index(name)) for name in asked]
+        if min(*blocks, part.blocks) < LEAST_BLOCKS:
+            return f"fewer than {LEAST_BLOCKS} blocks were held out"
     return "the luck of being best cannot be told"
 
 
@@ -114,7 +109,7 @@ def _detail(evaluation: Evaluation, candidate: str, given: Outlook) -> str:
     shows = f"{stated}; these {noun.plural} show at least {percent_down(verdict.at_least, n)}."
     if verdict.word == "shown":
         return shows
-    units = f"{class_name(limit.of_class)} {noun.plural}" if limit.of_class else noun.plural
+    units = named_in(limit.of_class, noun, table.noun_for(evaluation.counted_by))
     if n < LEAST_UNITS:
         wrong = 1 - upper_bound(0, n, confidence=limit.confidence)
         return (
@@ -127,6 +122,8 @@ def _detail(evaluation: Evaluation, candidate: str, given: Outlook) -> str:
         )
     if limit.measure == "balanced_accuracy":
         return f"{shows} It may be true; these are too few to show it."
+    if part.units is not None:
+        return f"{shows} More {noun.plural} would narrow that."
     misses = math.ceil((1 - verdict.rate) * n - 1e-9)
     needed = cases_to_show(limit.least, misses=misses, confidence=limit.confidence)
     with_one = cases_to_show(limit.least, misses=1, confidence=limit.confidence)

@@ -3,7 +3,6 @@
 import math
 from dataclasses import dataclass
 
-from evalcore.clusters import independent_noun
 from evalcore.evaluation import Evaluation
 from evalcore.further_cases import MoreCases, Needed, more_cases
 from evalcore.verdict import Verdict, part_behind
@@ -30,9 +29,13 @@ class Outlook:
 
     @property
     def too_variable(self) -> bool:
-        """Whether no number would do even at rates above the limit, the model varying so much."""
-        above = [more for more in self.needed if more.rate > self.verdict.limit.least]
-        return bool(above) and all(more.alone.outcome == "never" for more in above)
+        """Whether no number would do at the present rate though it lies above the limit."""
+        return any(
+            more.name == "present"
+            and more.rate > self.verdict.limit.least
+            and more.alone.outcome == "never"
+            for more in self.needed
+        )
 
 
 def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook:
@@ -59,6 +62,8 @@ def outlook(evaluation: Evaluation, candidate: str, verdict: Verdict) -> Outlook
     ):
         return Outlook(verdict, ())
     part = part_behind(evaluation, candidate, verdict)
+    if part.units is not None:
+        return Outlook(verdict, ())  # groups are no trials that are right or wrong
     k = evaluation.table.classes.index(limit.of_class) if limit.of_class else None
     rate = verdict.rate
     rates = {
@@ -84,9 +89,7 @@ def in_words(evaluation: Evaluation, given: Outlook) -> str:
     if not given.needed:
         return ""
     limit = given.verdict.limit
-    noun = independent_noun(
-        evaluation.table, evaluation.plan, evaluation.scheme, counted_by=evaluation.counted_by
-    ).plural
+    noun = evaluation.table.noun_for(evaluation.counted_by).plural
     units = f"{class_name(limit.of_class)} {noun}" if limit.of_class else noun
     n = given.verdict.n
     parts = [

@@ -110,11 +110,16 @@ def interval(bounds: Interval, n: int) -> str:
 
     >>> interval(Interval(0.72, 0.95, 0.95, "wilson"), 38).replace(NBSP, " ")
     '72–95 %'
+    >>> interval(Interval(0.996, 1.0, 0.95, "wilson"), 38).replace(NBSP, " ")
+    '>99–100 %'
     """
     if not bounds.defined:
         return "undefined"
-    decimals = _decimals(n)
-    return f"{100 * bounds.low:.{decimals}f}{DASH}{100 * bounds.high:.{decimals}f}{NBSP}%"
+    # an end is not rounded to certainty: no lower one to 100 %, no upper one to 0 %
+    low, high = (f"{100 * end:.{_decimals(n)}f}" for end in (bounds.low, bounds.high))
+    low = _percent_number(bounds.low, n) if bounds.low > 0.5 else low
+    high = _percent_number(bounds.high, n) if bounds.high < 0.5 else high
+    return f"{low}{DASH}{high}{NBSP}%"
 
 
 def with_interval(value: float, bounds: Interval | None, n: int) -> str:

@@ -19,7 +19,7 @@ ROWS = (  # what README says, estimator, measure
     ("the called class’s share found at a learned cut-off", "at_cut_off", "sensitivity"),
     ("how often the class is called rightly there", "at_cut_off", "right_when_called"),
     ("how often it is rightly not called", "at_cut_off", "right_when_not_called"),
-    ("expected cost of a case there", "at_cut_off", "cost"),
+    ("expected cost of a case there, by costs", "at_cut_off", "cost"),
     ("comparison: no false call", "comparison", "accuracy"),
 )
 NO_SHORT = "none"
@@ -42,6 +42,8 @@ def _rows(known: Sequence[Line]) -> Iterator[str]:
             if line.scheme == "default"
             and line.estimator == estimator
             and measure in ("", line.measure)
+            # a floor has no costs
+            and (measure != "cost" or "miss=" in line.cut_off)
         ]
         found = [line for line in every if line.tells]
         if not found:
