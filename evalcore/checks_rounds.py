@@ -228,8 +228,9 @@ def few_blocks(table: Table, plan: Plan, evaluation: Evaluation | None) -> Itera
         part = evaluation.part(evaluation.about, scheme)
         if part.units is None:
             continue
-        if part.blocks < LEAST_BLOCKS:
-            yield _few_blocks(scheme, "", part.blocks, of=title(plan, scheme))
+        held_out = part.blocks_with(None)
+        if held_out < LEAST_BLOCKS:
+            yield _few_blocks(scheme, "", held_out, of=title(plan, scheme))
             continue
         for k, name in enumerate(table.classes):
             blocks = part.blocks_with(k)

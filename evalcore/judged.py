@@ -79,13 +79,14 @@ class Judged:
 
     @property
     def blocks(self) -> int:
-        """How many groups the cases held out come in, where they do; else how many there are."""
-        known = ~np.isnan(self.shares)
-        return len(np.unique(self.units[known])) if self.units is not None else int(known.sum())
+        """How many groups the counted cases come in, where they do; else how many there are."""
+        return len(np.unique(self.units)) if self.units is not None else len(self.held.labels)
 
-    def blocks_with(self, of_class: int) -> int:
-        """How many of them hold a case of a class."""
-        known = ~np.isnan(self.shares) & (self.held.labels == of_class)
+    def blocks_with(self, of_class: int | None) -> int:
+        """How many of them hold a case, of a class or of any, that was ever held out."""
+        known = ~np.isnan(self.shares)
+        if of_class is not None:
+            known &= self.held.labels == of_class
         return len(np.unique(self.units[known])) if self.units is not None else int(known.sum())
 
     @property

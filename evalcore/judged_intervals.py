@@ -18,7 +18,7 @@ def offers_interval(part: Judged, of_class: int | None = None) -> bool:
     """
     if part.cut_offs == "unlike" or (of_class is not None and part.always_names is not None):
         return False
-    return part.units is None or part.blocks >= LEAST_BLOCKS
+    return part.units is None or part.blocks_with(None) >= LEAST_BLOCKS
 
 
 def share_interval(

@@ -4,12 +4,14 @@ Rounds as `draws.nested_bags` makes them; source of the construction: own_learni
 """
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
+from evalcore.binomial import exact_high
 from evalcore.bootstrap_intervals import percentile
 from evalcore.errors import EvalError
 from evalcore.figures import Interval
@@ -114,7 +116,8 @@ def learning_curve(
 
     The call is our own construction (own_learning_curve): *rising* if there is a law and the
     interval of the gain over the last doubling lies above 0; else *flat* if it lies below 0.02, a
-    loss included; else *cannot tell*.
+    loss included; else *cannot tell*. Where all resamples agree, the interval reaches as far as
+    the exact bound for a difference that none of the units judged shows.
 
     Parameters
     ----------
@@ -159,7 +162,11 @@ def learning_curve(
     bands = [percentile(column, level=level) for column in drawn.T]
     law = _law(sizes, values)
     ahead, without = _ahead(law, sizes, drawn, n=part.blocks, level=level)
-    gain = _gain(sizes, values, drawn, level)
+    asked: Sequence[int | None] = range(part.n_classes)
+    if measure != "balanced_accuracy":
+        asked = [of_class if measure == "sensitivity" else None]
+    n = min(part.blocks_with(k) for k in asked)
+    gain = _gain(sizes, values, drawn, level=level, n=n)
     call = _call(law, gain)
     return LearningCurve(
         measure=measure,
@@ -267,20 +274,24 @@ def _ahead(
     return tuple(ahead), int((~known).sum())
 
 
-def _gain(sizes: Floats, values: Floats, drawn: Floats, level: float) -> Gain:
+def _gain(sizes: Floats, values: Floats, drawn: Floats, *, level: float, n: int) -> Gain:
+    """Over the last doubling; n independent units or blocks were judged, of the rarest class."""
     if len(sizes) == 1:
         return Gain(math.nan, percentile([], level=level), 0)
     start = int(np.abs(sizes[:-1] - sizes[-1] / 2).argmin())
     interval = percentile(drawn[:, -1] - drawn[:, start], level=level)
+    if interval.low == interval.high:
+        # units that all gain alike give no width: as many may differ as none of n tells
+        beyond = exact_high(0, n, (1 - level) / 2)
+        ends = (interval.low - beyond, interval.high + beyond)
+        interval = Interval(max(-1.0, ends[0]), min(1.0, ends[1]), level, "unseen_share")
     return Gain(float(values[-1] - values[start]), interval, start)
 
 
 def _call(law: PowerLaw | NoPowerLaw, gain: Gain) -> Slope:
     if isinstance(law, PowerLaw) and gain.interval.low > 0:
         return "rising"
-    # resamples that all agree tell how few errors there were, not how sure that is
-    agree = gain.interval.low == gain.interval.high
-    return "flat" if gain.interval.high < WORTHWHILE and not agree else "cannot tell"
+    return "flat" if gain.interval.high < WORTHWHILE else "cannot tell"
 
 
 def _reason(

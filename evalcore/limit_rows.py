@@ -84,7 +84,7 @@ def _why_no_bound(evaluation: Evaluation, part: Judged, verdict: Verdict) -> str
     if part.units is not None:
         asked = [of_class] if of_class else classes
         blocks = [part.blocks_with(classes.index(name)) for name in asked]
-        if min(*blocks, part.blocks) < LEAST_BLOCKS:
+        if min(*blocks, part.blocks_with(None)) < LEAST_BLOCKS:
             return f"fewer than {LEAST_BLOCKS} blocks were held out"
     return "the luck of being best cannot be told"
 

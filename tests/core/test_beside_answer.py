@@ -257,7 +257,7 @@ class TestInUse:
                 COST,
                 (worth(0.08, 0.25, (0.6, 0.0, 0.85), (0.97, 0.94, 1.0), (0.4117, 0.25, 1.3)),),
                 [
-                    "Where 8 % of cases are b (95 % intervals in brackets, n = 60 and 20): 25 % "
+                    "Where 8 % of cases are b (95 % intervals in brackets, n = 60 a and 20 b): 25 % "
                     "are called b, rightly in 60 % (0–85 %); of those not called 97 % (94–100 %) "
                     "are not b; the expected cost is 0.412 (0.250–1.300) a case."
                 ],
@@ -267,7 +267,7 @@ class TestInUse:
                 (worth(0.25, 0.0, (NAN,), (0.75,), (0.25, 0.125, 0.5)),),
                 [
                     "Where 25 % of cases are b, the share of this table (95 % intervals in "
-                    "brackets, n = 60 and 20): 0 % are called b; of those not called 75 % are not "
+                    "brackets, n = 60 a and 20 b): 0 % are called b; of those not called 75 % are not "
                     "b; the expected cost is 0.250 (0.125–0.500) a case."
                 ],
             ),
@@ -287,10 +287,10 @@ class TestInUse:
                     worth(0.125, 0.3, (0.7, 0.5, 0.9), (0.996, 0.9, 1.0), (9.0, 8.0, 10.0)),
                 ),
                 [
-                    "Where 0.4 % of cases are b (95 % intervals in brackets, n = 60 and 20): 25 % "
+                    "Where 0.4 % of cases are b (95 % intervals in brackets, n = 60 a and 20 b): 25 % "
                     "are called b, rightly in 5 % (0–10 %); of those not called 100 % (90–100 %) "
                     "are not b.",
-                    "Where 12.5 % of cases are b (95 % intervals in brackets, n = 60 and 20): 30 % "
+                    "Where 12.5 % of cases are b (95 % intervals in brackets, n = 60 a and 20 b): 30 % "
                     "are called b, rightly in 70 % (50–90 %); of those not called >99 % (90–100 %) "
                     "are not b.",
                 ],
@@ -351,7 +351,7 @@ class TestInUse:
         (_, _, sentence) = said(at_literal(made, undecided=None))
         # of its own share: twenty of eighty
         begins = "Where 25 % of cases are b, the share of this table (90 % intervals in brackets, "
-        assert sentence.startswith(f"{begins}n = 60 and 20): ")
+        assert sentence.startswith(f"{begins}n = 60 a and 20 b): ")
         assert sentence.count("intervals") == sentence.count("n = ") == 1
 
     def test_all_undecided(self):
@@ -402,7 +402,7 @@ class TestUnitsAndRows:
             "costs 10, a false alarm 1); in 90 % of rounds or more: 0.400.",
             "Held out, each round at its own cut-off: a lots passed (specificity) 100 % "
             "(88–100 %), n = 30; b lots found (sensitivity) 100 % (69–100 %), n = 10.",
-            "Where 8 % of lots are b (95 % intervals in brackets, n = 30 and 10): 8 % are called b, "
+            "Where 8 % of lots are b (95 % intervals in brackets, n = 30 a and 10 b): 8 % are called b, "
             "rightly in 100 % (42–100 %); of those not called 100 % (97–100 %) are not b; the "
             "expected cost is 0.000 (0.000–0.269) a lot.",
             "An answer with a probability below 0.7 is left to a person: 25 % of lots. Of the others "
@@ -414,7 +414,7 @@ class TestUnitsAndRows:
         assert sentences[0].startswith("A row is called b from 0.400 up,")
         assert "a rows passed (specificity) 100 % (" in sentences[1]
         assert sentences[1].endswith(", n = 20.")
-        begins = "Where 8 % of rows are b (95 % intervals in brackets, n = 60 and 20): "
+        begins = "Where 8 % of rows are b (95 % intervals in brackets, n = 60 a and 20 b): "
         assert sentences[2].startswith(begins)
         assert sentences[2].endswith(" a row.")
         assert ": 25 % of rows. Of the others (n = 60) 100 %" in sentences[3]
@@ -460,7 +460,7 @@ class TestCurve:
             f"score): rising. Learning from 40 cases instead of 20 brought 10.0 points. {ahead}",
             "Learning curve, b cases found (sensitivity) (by the highest score): rising. Learning "
             f"from 40 cases instead of 20 brought 10.0 points. {ahead} 12 of 500 resamples that no "
-            "curve fits are left out.",
+            "curve fits are left out, so the band leans towards a rise.",
         ]
         # without a cut-off there is no other way to answer
         plan = replace(made.plan, cut_off=None)

@@ -203,7 +203,8 @@ class TestLearningCurve:
         assert first.seen.startswith("Mean of the classes’ shares right (balanced accuracy): ")
         assert second.seen.startswith("B cases passed (specificity): ")
         assert first.title.replace(NBSP, " ") == (
-            "Logistic regression still learns from more cases: 10.0 points over the last doubling"
+            "Logistic regression still learns from more cases: 10.0 points of balanced accuracy "
+            "over the last doubling"
         )
         assert first.seen.endswith(" The threshold for the lower end is 0.")
 

@@ -236,7 +236,7 @@ class TestEvaluations:
             f"all 40 cases it is {on_all:.3f}. {SEEN}"
         )
         assert finding.advice == (
-            "Take other costs or a lower floor, add b cases, or take a candidate whose scores tell "
+            "Take a lower floor, add b cases, or take a candidate whose scores tell "
             "the classes apart."
         )
         assert (finding.value, finding.threshold) == (1, 0.5)

@@ -302,10 +302,13 @@ class TestByHand:
         curve = curve_of(by_hand(), asked[0], of_class=asked[1], level=level, resamples=40_000)
         of_gain = sorted(late - early for early, late in every)
         columns = [sorted(column) for column in zip(*every, strict=True)]
-        found = [
-            *zip(curve.low, curve.high, strict=True),
-            (curve.gain.interval.low, curve.gain.interval.high),
-        ]
+        gained = [curve.gain.interval.low, curve.gain.interval.high]
+        if of_gain[0] == of_gain[-1]:
+            # both of b gain alike: as many may differ as none of two tells
+            beyond = 1 - ((1 - level) / 2) ** (1 / 2)
+            assert gained == pytest.approx([of_gain[0] - beyond, min(1, of_gain[0] + beyond)])
+            gained = [of_gain[0]] * 2
+        found = [*zip(curve.low, curve.high, strict=True), gained]
         for ordered, ends in zip([*columns, of_gain], found, strict=True):
             for end, p in zip(ends, ((1 - level) / 2, (1 + level) / 2), strict=True):
                 near = {ordered[math.floor(1024 * q)] for q in (p - 0.009, p, p + 0.009)}
@@ -434,12 +437,21 @@ class TestCalls:
         assert isinstance(curve.law, NoPowerLaw)
         assert "15 of 15 pairs" in curve.law.reason
         assert (curve.call, curve.ahead) == ("flat", ())
-        assert (curve.gain.interval.low, curve.gain.interval.high) == (0.0, 0.0)
+        # none of 200 differs: the exact bound is 1 - 0.025^(1/200)
+        beyond = 1 - 0.025 ** (1 / 200)
+        ends = curve.gain.interval.low, curve.gain.interval.high
+        assert ends == (pytest.approx(-beyond, rel=1e-12), pytest.approx(beyond, rel=1e-12))
         assert curve.reason == (
-            f"Learning from 160{NBSP}units instead of 74 brought nothing (upper end of "
-            f"the 95{NBSP}% interval), less than the 2{NBSP}points that would matter. "
+            f"Learning from 160{NBSP}units instead of 74 brought 1.8{NBSP}points at most (upper "
+            f"end of the 95{NBSP}% interval), less than the 2{NBSP}points that would matter. "
             f"{curve.law.reason}"
         )
+
+    @pytest.mark.parametrize(("n", "call"), [(91, "cannot tell"), (92, "flat")])
+    def test_as_many_as_none_of_them_tells_may_differ(self, n, call):
+        # 1 - 0.025^(1/units) falls below 0.02 from 183 units on
+        curve = curve_of(planted([0.2] * 6, n=n, steady=True))
+        assert (curve.call, 1 - 0.025 ** (1 / (2 * n)) < 0.02) == (call, call == "flat")
 
     def test_equal_errors_are_ties_in_whatever_order_they_are_added(self):
         """The same shares, fifths, at every size, each time on other units."""
