@@ -139,6 +139,8 @@ def answer(evaluation: Evaluation) -> str:
     mix = f"share of {class_name(concern)} {noun}" if two else "shares of classes"
     whole = evaluation.estimate("accuracy", about, estimator=evaluation.in_use)
     at = "" if evaluation.in_use == HIGHEST else WITH_CUT_OFF
+    if not at and plan.has_cut_off(plan.candidate(about)):
+        at = " by the highest score"  # the scheme that learns cut-offs has no round yet
     bounds = whole.interval
     stated = (
         _figure(whole, noun=noun).replace("(", f"({level(bounds.level)} interval ", 1)

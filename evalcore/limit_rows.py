@@ -81,11 +81,12 @@ def _why_no_bound(evaluation: Evaluation, part: Judged, verdict: Verdict) -> str
     if of_class and part.always_names is not None:
         always = quoted(classes[part.always_names])
         return f"the model fitted on all cases always answers {always}"
-    if part.units is not None:
-        asked = [of_class] if of_class else classes
-        blocks = [part.blocks_with(classes.index(name)) for name in asked]
-        if min(*blocks, part.blocks_with(None)) < LEAST_BLOCKS:
-            return f"fewer than {LEAST_BLOCKS} blocks were held out"
+    asked = {"accuracy": [], "sensitivity": [of_class]}.get(verdict.limit.measure, classes)
+    of_each = [part.blocks_with(classes.index(name)) for name in asked]
+    if part.units is not None and part.blocks_with(None) < LEAST_BLOCKS:
+        return f"fewer than {LEAST_BLOCKS} blocks were held out"
+    if part.units is not None and min(of_each, default=LEAST_BLOCKS) < LEAST_BLOCKS:
+        return f"fewer than {LEAST_BLOCKS} blocks of a class were held out"
     return "the luck of being best cannot be told"
 
 

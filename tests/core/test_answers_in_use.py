@@ -1,10 +1,19 @@
 """Doubts about the answers that go to work: at a cut-off where there is one."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
+from evalcore.answer import answer
+from evalcore.beside import Beside
+from evalcore.candidates import CANDIDATES
+from evalcore.choice import choose
 from evalcore.cut_off_rule import CutOffRule
+from evalcore.plan import Plan
+from evalcore.schemes import SCHEMES
 
+from .checks import carried_out, table_of
 from .learned_cases import as_given
 from .test_at_cut_off import scored
 from .test_findings import found, only, wilson
@@ -62,3 +71,23 @@ class TestAnswersInUse:
         raised = found("wide_interval", *self.given(at))
         expected = [] if at == 0.25 else [pytest.approx(high - low, rel=1e-12)]
         assert [f.value for f in raised] == expected
+
+
+def test_before_the_scheme_that_learns_cut_offs_has_a_round_the_answer_says_by_what_it_is():
+    labels = np.arange(40) % 2
+    table = table_of(labels, features=np.random.default_rng(4).normal(2 * labels)[:, None])
+    schemes = (
+        choose(SCHEMES, "cross_validation", folds=2, repeats=2),
+        choose(SCHEMES, "bootstrap", rounds=20),
+    )
+    rule = CutOffRule.read("b:miss=3")
+    plan = Plan(table.roles, schemes, (choose(CANDIDATES, "lda"),), cut_off=rule)
+    found = carried_out(table, plan)[0]
+    assert "linear discriminant at the cut-off is expected" in answer(found)
+    later = replace(
+        found,
+        rounds={"bootstrap": found.rounds["bootstrap"]},
+        judged=tuple(part for part in found.judged if part.scheme == "bootstrap"),
+        beside=Beside(),
+    )
+    assert "linear discriminant by the highest score is expected" in answer(later)

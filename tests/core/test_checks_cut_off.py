@@ -20,6 +20,7 @@ from .test_at_cut_off import scored
 from .test_findings import FLOOR, alone, found, only
 
 LOW = CutOffRule("b", "floor", floor=0.95)
+COST, FIXED = CutOffRule("b", "cost"), CutOffRule("b", "fixed", at=0.3)
 
 
 class TestCutOffs:
@@ -70,9 +71,27 @@ class TestCutOffs:
             "So held-out figures are those of a constant answer there (4 of 4 rounds; threshold: "
             "50 %)."
         )
-        # and that another cut-off goes to work, once
-        assert found("cut_off_apart", *given) == []
         assert only("cut_off_not_judged", *given).value == 1
+
+    @pytest.mark.parametrize(
+        ("rule", "advice"),
+        [
+            (FIXED, "State another cut-off."),
+            *(
+                (
+                    rule,
+                    "Take other costs or another floor, or add b cases: a cut-off that is learned "
+                    "needs scores that tell the classes apart, and a floor enough of its class in "
+                    "every bag.",
+                )
+                for rule in (COST, FLOOR)
+            ),
+        ],
+        ids=["fixed", "cost", "floor"],
+    )
+    def test_one_that_calls_all_is_stated_or_taught_anew(self, rule, advice):
+        given = at_literal(at_floor(0, rule=rule), cut_offs=np.full(4, 0.125))
+        assert only("cut_off_calls_all", *as_given(given)).advice == advice
 
     def test_without_a_round_at_a_cut_off_nothing_is_called(self):
         given = at_floor(0, rule=FLOOR)
@@ -80,7 +99,7 @@ class TestCutOffs:
         held = at.part.held
         none = dataclasses.replace(held, rounds=held.rounds.first(0), scores=held.scores[:0])
         part = dataclasses.replace(at.part, held=none)
-        nothing = at_literal(given, part=part, cut_offs=np.full(4, math.nan))
+        nothing = at_literal(given, part=part, cut_offs=np.full(20, math.nan))
         for check in ("cut_off_calls_all", "cut_off_apart"):
             assert found(check, *as_given(nothing)) == []
 
@@ -101,8 +120,13 @@ class TestCutOffs:
         finding = only("floor_from_few", *as_given(blocked))
         assert (finding.severity, finding.value, finding.threshold) == ("grave", 2, 9)
         assert finding.title.replace(NBSP, " ") == (
-            "2 b entries of ‘site’ cannot teach a floor of 90 %"
+            "2 entries of ‘site’ with b cases cannot teach a floor of 90 %"
         )
+        assert finding.seen.replace(NBSP, " ") == (
+            "A cut-off that finds 90 % of further entries of ‘site’ with b cases takes at least 9 "
+            "of them; there are 2 (threshold: 9)."
+        )
+        assert finding.advice == "Take a lower floor, or add entries of ‘site’ with b cases."
 
     def test_rows_of_lots_are_counted_in_lots(self):
         labels, units = np.repeat([0, 1], 20), np.repeat(np.arange(20), 2)
@@ -115,7 +139,17 @@ class TestCutOffs:
         # ten lots of two rows each: nineteen lots are needed for 19 of 20
         finding = only("floor_from_few", *as_given(made))
         assert (finding.value, finding.threshold) == (10, 19)
-        assert finding.title.replace(NBSP, " ") == "10 b lots cannot teach a floor of 95 %"
+        title = "10 lots with b rows cannot teach a floor of 95 %"
+        assert finding.title.replace(NBSP, " ") == title
+        assert finding.advice == "Take a lower floor, or add lots with b rows."
+
+    def test_lots_counted_as_such_are_lots_of_a_class(self):
+        given = at_floor(0, of_class=8, rule=FLOOR)
+        roles = dataclasses.replace(given.table.roles, noun=Noun("lot", "lots"))
+        given = dataclasses.replace(given, table=dataclasses.replace(given.table, roles=roles))
+        finding = only("floor_from_few", *as_given(given))
+        assert finding.title.replace(NBSP, " ") == "8 b lots cannot teach a floor of 90 %"
+        assert finding.advice == "Take a lower floor, or add b lots."
 
     @pytest.mark.parametrize(
         ("on_all", "threshold"),
@@ -124,7 +158,7 @@ class TestCutOffs:
         ],
     )  # fmt: skip
     def test_a_cut_off_beyond_either_end_was_not_judged(self, on_all, threshold):
-        cut_offs = np.array([0.3, 0.4, 0.5, math.nan])
+        cut_offs = np.repeat([0.3, 0.4, 0.5, math.nan], [5, 10, 5, 1])
         given = at_literal(at_floor(0, rule=FLOOR), on_all=on_all, cut_offs=cut_offs)
         raised = found("cut_off_apart", *as_given(given))
         assert [f.threshold for f in raised] == ([] if threshold is None else [threshold])
@@ -134,14 +168,23 @@ class TestCutOffs:
             assert "fell between 0.300 and 0.500 (" in finding.seen
 
     def test_ends_that_call_all_or_none_in_words(self):
-        cut_offs = np.array([-math.inf, -math.inf, 0.4, 0.4])
+        cut_offs = np.repeat([-math.inf, 0.4], 10)
         given = at_literal(at_floor(0, rule=FLOOR), on_all=0.6, cut_offs=cut_offs)
         finding = only("cut_off_apart", *as_given(given))
         assert "it fell between calling all and 0.400 (" in finding.seen
 
-    def test_a_fixed_cut_off_goes_to_work_as_it_was_judged(self):
-        given = at_floor(0, rule=CutOffRule("b", "fixed", at=0.3))
-        assert found("cut_off_apart", *as_given(at_literal(given, on_all=0.9))) == []
+    @pytest.mark.parametrize(
+        ("learned", "without", "raised"), [(19, 0, 0), (19, 1, 0), (20, 0, 1), (20, 5, 1)]
+    )
+    def test_ends_of_nine_rounds_in_ten_take_twenty_that_learned(self, learned, without, raised):
+        cut_offs = np.repeat([0.5, math.nan], [learned, without])
+        given = at_literal(at_floor(0, rule=FLOOR), cut_offs=cut_offs, on_all=0.625)
+        assert len(found("cut_off_apart", *as_given(given))) == raised
+
+    @pytest.mark.parametrize(("rule", "raised"), [(FIXED, 0), (COST, 1), (FLOOR, 1)])
+    def test_a_fixed_cut_off_goes_to_work_as_it_was_judged(self, rule, raised):
+        given = at_literal(at_floor(0, rule=rule), on_all=0.9, cut_offs=np.full(20, 0.3))
+        assert len(found("cut_off_apart", *as_given(given))) == raised
 
     @pytest.mark.parametrize("check", ["floor_from_few", "floor_not_delivered"])
     def test_a_floor_is_asked_of_a_floor_alone(self, check):
@@ -207,13 +250,14 @@ SEEN = (
     "Held-out figures are those of the rounds’ own cut-offs and say little about the one that goes "
     "to work: they have no interval and show no limit."
 )
-ADVICE = (
-    "Take other costs or a lower floor, add b cases, or take a candidate whose scores tell the "
-    "classes apart."
-)
+ADVICE = {
+    FLOOR: "Take a lower floor, add b cases, or take a candidate whose scores tell the classes apart.",
+    COST: "Take other costs, add b cases, or take a candidate whose scores tell the classes apart.",
+}
 
 
 class TestNotJudged:
+    @pytest.mark.parametrize("rule", [FLOOR, COST], ids=["floor", "cost"])
     @pytest.mark.parametrize(
         ("unlike", "on_all", "why", "seen", "value", "threshold"),
         [
@@ -230,25 +274,36 @@ class TestNotJudged:
                 "Share of those it was learned from that is called: 0; threshold: 0.", 0, 0,
             ),
             (
-                "bags", 0.3, "in 3 of 4 rounds the bag cannot teach one like it",
+                "bags", 0.3, "in 15 of 20 rounds the bag cannot teach one like it",
                 "There it calls all or none, or is not learned (threshold: 50 % of rounds); learned "
                 "from all 40 cases it is 0.300.", 0.75, 0.5,
             ),
         ],
     )  # fmt: skip
-    def test_each_reason_whole(self, unlike, on_all, why, seen, value, threshold):
-        cut_offs = np.array([-math.inf, math.inf, -math.inf, 0.3])
-        made = at_literal(at_floor(0, rule=FLOOR), unlike=unlike, on_all=on_all, cut_offs=cut_offs)
+    def test_each_reason_whole(self, unlike, on_all, why, seen, value, threshold, rule):
+        cut_offs = np.repeat([-math.inf, math.inf, -math.inf, 0.3], 5)
+        made = at_literal(at_floor(0, rule=rule), unlike=unlike, on_all=on_all, cut_offs=cut_offs)
         finding = only("cut_off_not_judged", *as_given(made))
         assert (finding.severity, finding.subject) == ("grave", "b")
         assert (finding.value, finding.threshold) == (value, threshold)
         title = f"No interval is offered at the cut-off: {why}"
         assert finding.title.replace(NBSP, " ") == title
         assert finding.seen.replace(NBSP, " ") == f"{seen} {SEEN}"
-        assert finding.advice == ADVICE
+        assert finding.advice == ADVICE[rule]
         assert finding.source == "own_simulation"
-        # that it lies apart from those that were judged goes without saying
-        assert found("cut_off_apart", *as_given(made)) == []
+
+    @pytest.mark.parametrize(
+        ("unlike", "on_all"), [("not learned", math.nan), ("all", -math.inf), ("none", math.inf)]
+    )
+    def test_that_it_lies_apart_from_those_judged_goes_without_saying(self, unlike, on_all):
+        apart = at_literal(at_floor(0, rule=FLOOR), on_all=on_all, cut_offs=np.full(20, 0.5))
+        assert len(found("cut_off_apart", *as_given(apart))) == 1
+        assert found("cut_off_apart", *as_given(at_literal(apart, unlike=unlike))) == []
+
+    def test_a_fixed_one_was_judged_though_it_calls_none(self):
+        given = as_given(at_floor(0, rule=CutOffRule("b", "fixed", at=0.9)))
+        assert only("cut_off_calls_all", *given).title.endswith("the cut-off calls no case b")
+        assert found("cut_off_not_judged", *given) == []
 
     def test_not_of_one_that_was_judged(self):
         for on_all in (0.5, 0.9):

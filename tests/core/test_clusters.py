@@ -7,7 +7,7 @@ import pytest
 
 from evalcore.candidates import CANDIDATES
 from evalcore.choice import choose
-from evalcore.clusters import clusters, independent_noun
+from evalcore.clusters import clusters, independent_noun, named_in
 from evalcore.plan import Plan
 from evalcore.schemes import SCHEMES
 from evalcore.wording import Noun
@@ -84,3 +84,22 @@ class TestIndependentNoun:
     def test_groups_of_one_are_no_groups(self):
         alone = [f"s{unit}" for unit in TestClusters.units]
         assert self.noun(self.KEPT, counted_by="unit", site=alone) == Noun("lot", "lots")
+
+
+@pytest.mark.parametrize(
+    ("of_class", "independent", "expected"),
+    [
+        (
+            "failing",
+            Noun("entry of ‘site’", "entries of ‘site’"),
+            "entries of ‘site’ with failing lots",
+        ),
+        ("failing", Noun("lot", "lots"), "failing lots"),
+        ("", Noun("entry of ‘site’", "entries of ‘site’"), "entries of ‘site’"),
+        ("", Noun("lot", "lots"), "lots"),
+        # a class named by a number is quoted, as elsewhere
+        ("1", Noun("lot", "lots"), "‘1’ lots"),
+    ],
+)
+def test_what_is_independent_and_holds_a_class(of_class, independent, expected):
+    assert named_in(of_class, independent, Noun("lot", "lots")) == expected

@@ -262,6 +262,18 @@ class TestFallingShort:
         given = [line(), short, dataclasses.replace(short, n=200), line(coverage=0.92)]
         assert falling_short(evaluation, given) == (short,)
 
+    def test_of_every_figure_that_the_answer_gives(self, evaluation):
+        """Whatever its measure: the share right of all and of the smallest class stand in it."""
+        by_class = line(measure="sensitivity", coverage=0.8)
+        of_all, balanced = line(coverage=0.8), line(measure="balanced_accuracy", coverage=0.8)
+        given = [by_class, of_all, balanced, line(measure="auc", coverage=0.8)]
+        assert evaluation.plan.measure == "accuracy"
+        assert falling_short(evaluation, given) == (of_all, by_class)
+        by_balanced = planned(evaluation, measure="balanced_accuracy")
+        assert falling_short(by_balanced, given) == (balanced, of_all, by_class)
+        assert headline(by_balanced, "accuracy") == headline(evaluation)
+        assert headline(evaluation, "sensitivity").measure == "sensitivity"
+
     def test_not_while_rounds_are_missing(self, evaluation):
         more = evaluation.planned | {"cross_validation": 101}
         unfinished = dataclasses.replace(evaluation, planned=more)

@@ -457,7 +457,7 @@ RAISED = {
     ),
     # 0.5 in every round
     "cut_off_apart": (
-        as_given(at_literal(at_floor(0, rule=FLOOR), on_all=0.625)),
+        as_given(at_literal(at_floor(0, rule=FLOOR), cut_offs=np.full(20, 0.5), on_all=0.625)),
         ("moderate", "b", 0.625, 0.5),
     ),
     # 17 of 20 found: Clopper and Pearson's 0.621 to 0.968 reaches 0.9
@@ -527,7 +527,7 @@ QUIET = {
     "always_the_same": constant(wrong=50),
     "floor_from_few": as_given(at_floor(0, of_class=9, rule=FLOOR)),
     # 0.5 in every round and of all
-    "cut_off_apart": as_given(at_floor(0, rule=FLOOR)),
+    "cut_off_apart": as_given(at_literal(at_floor(0, rule=FLOOR), cut_offs=np.full(20, 0.5))),
     # 18 of 20 found
     "floor_not_delivered": as_given(at_floor(2, rule=FLOOR)),
     # (0 + 1)/(19 + 1)

@@ -21,7 +21,7 @@ from evalcore.wording import Noun
 from . import test_verdict
 from .checks import table_of
 from .test_answer import spaced
-from .test_findings import CV, a_plan, evaluated, halves, two_classes, wrong_in
+from .test_findings import CV, a_plan, evaluated, halves, rounds_of, two_classes, wrong_in
 from .test_verdict import LIMIT, evaluation, first
 
 OF_B, OF_A = Limit("sensitivity", 0.8, "b"), Limit("sensitivity", 0.8, "a")
@@ -36,6 +36,10 @@ def details(made: Evaluation, candidate: str = "lda") -> list[str]:
 
 def why(reason: str) -> str:
     return f"Limit 80 %; no bound can be given: {reason}."
+
+
+IN_ALL = "fewer than 5 blocks were held out"
+OF_A_CLASS = "fewer than 5 blocks of a class were held out"
 
 
 class TestNoBound:
@@ -78,13 +82,40 @@ class TestNoBound:
     @pytest.mark.parametrize(("with_b", "given"), [(4, False), (5, True)])
     def test_too_few_blocks_of_the_class(self, with_b, given):
         of_class, of_all = details(self.blocks(with_b), "logistic")
-        assert (of_class == why("fewer than 5 blocks")) == (not given)
-        assert of_class.startswith("Limit 80 %; 5 b entries of ‘site’ are too few") == given
+        assert (of_class == why("fewer than 5 blocks of a class were held out")) == (not given)
+        assert (
+            of_class.startswith("Limit 80 %; 5 entries of ‘site’ with b cases are too few") == given
+        )
         assert of_all.startswith("Limit 80 %; 9 entries of ‘site’ are too few for a verdict")
 
     def test_too_few_blocks_in_all(self):
         for detail in details(self.blocks(2, sites=4), "logistic"):
-            assert detail == why("fewer than 5 blocks")
+            assert detail == why("fewer than 5 blocks were held out")
+
+    @pytest.mark.parametrize(
+        ("of_a", "of_b", "few"),
+        [
+            # of ten sites, five of each class
+            (range(5), range(5, 9), ("", OF_A_CLASS, "")),
+            (range(5), range(5, 10), ("", "", "")),
+            (range(4), range(5, 10), (OF_A_CLASS, "", "")),
+            (range(2), range(5, 7), (IN_ALL, IN_ALL, IN_ALL)),
+        ],
+    )
+    def test_blocks_are_those_held_out(self, of_a, of_b, few):
+        of_site = np.arange(100) % 10
+        table = table_of((of_site >= 5).astype(int), entries={"site": [f"s{at}" for at in of_site]})
+        scheme = choose(SCHEMES, CV, folds=2, repeats=1, keep="site")
+        plan = dataclasses.replace(a_plan(limits=(OF_A, OF_B, LIMIT)), schemes=(scheme,))
+        held = np.isin(of_site, [*of_a, *of_b])
+        out = [held & (of_site % 2 == half) for half in (0, 1)]
+        made = evaluated(table, plan, {CV: rounds_of(out, np.zeros(2, dtype=int))})
+        part = made.part("logistic", CV)
+        assert part.blocks == 10
+        behind = [len(of_a) + len(of_b), len(of_a), len(of_b)]
+        assert [part.blocks_with(k) for k in (None, 0, 1)] == behind
+        for detail, reason in zip(details(made, "logistic"), few, strict=True):
+            assert detail == why(reason) if reason else "no bound" not in detail
 
     def test_luck(self):
         # class b is judged on one unit, so no resample has it on both sides
@@ -137,11 +168,27 @@ class TestNoun:
         assert f"; these {noun} show at " in spaced(of_all.detail)
         for row, of_class in ((of_a, "a "), (of_all, "")):
             assert row.verdict.word == "not shown yet"
-            assert spaced(row.further).startswith(f"Further {of_class}{noun} judged alone that ")
-        # exact, with a fifth of them missed
-        k = n // 5
-        needed = cases_to_show(0.8, misses=k, confidence=0.95)
-        assert f" with {k} misses takes {needed} a {noun}, with " in spaced(of_a.detail)
+            if keep or answered_from == "one":
+                # groups are no trials that are right or wrong: none are counted ahead
+                assert row.further == ""
+                assert spaced(row.detail).endswith(f" %. More {noun} would narrow that.")
+            else:
+                assert spaced(row.further).startswith(f"Further {of_class}lots judged alone that ")
+                assert "would narrow that" not in row.detail
+        if not keep and answered_from == "all":
+            # exact, with a fifth of them missed
+            needed = cases_to_show(0.8, misses=4, confidence=0.95)
+            assert f" with 4 misses takes {needed} a lots, with " in spaced(of_a.detail)
+
+    @pytest.mark.parametrize(("keep", "answered_from"), [("", "one"), ("site", "all")])
+    def test_no_further_groups_are_counted_of_a_limit_fallen_short_of(self, keep, answered_from):
+        for row in self.rows(keep=keep, answered_from=answered_from, wrong=range(60)):
+            assert row.verdict.word == "shown to fall short"
+            assert row.further == ""
+        # all sixty rows are thirty lots; lots themselves have an outlook
+        for row in self.rows(wrong=range(60)):
+            assert row.verdict.word == "shown to fall short"
+            assert spaced(row.further).startswith("Further ")
 
     def test_of_too_few(self):
         labels = np.repeat([0, 1], [18, 60])
@@ -151,21 +198,23 @@ class TestNoun:
         (row,) = limit_rows(evaluated(table, plan, plan.draw(table)), "logistic")
         # six of six: 0.05 to the 1/6 = 0.607
         assert spaced(row.detail) == (
-            "Limit 80 %; 6 a entries of ‘site’ are too few for a verdict (at least 10 are needed): "
-            "even 6 of 6 right could mean 61 %."
+            "Limit 80 %; 6 entries of ‘site’ with a cases are too few for a verdict (at least 10 "
+            "are needed): even 6 of 6 right could mean 61 %."
         )
 
 
 def ahead_of(*outcomes: tuple[float, str]) -> Outlook:
-    """Further cases at rates, each with what they come to; the limit is 0.8."""
+    """Further cases at a cautious, the present and a hopeful rate, each with what they come to.
+
+    The limit is 0.8.
+    """
     made = evaluation(first(40, 34, 34), labels=[0, 1] * 20)
     (verdict,) = verdicts(made, "lda")
-    (example, *_) = outlook(made, "lda", verdict).needed
+    examples = outlook(made, "lda", verdict).needed
+    assert [more.name for more in examples] == ["cautious", "present", "hopeful"]
     needed = tuple(
-        dataclasses.replace(
-            example, rate=rate, alone=dataclasses.replace(example.alone, outcome=outcome)
-        )
-        for rate, outcome in outcomes
+        dataclasses.replace(more, rate=rate, alone=dataclasses.replace(more.alone, outcome=outcome))
+        for more, (rate, outcome) in zip(examples, outcomes, strict=bool(outcomes))
     )
     return Outlook(verdict, needed)
 
@@ -175,15 +224,17 @@ class TestTooVariable:
         ("outcomes", "too"),
         [
             ([(0.7, "never"), (0.85, "never"), (0.9, "never")], True),
-            # below the limit no number would do anyhow
-            ([(0.7, "never"), (0.8, "never"), (0.9, "never")], True),
+            # a better rate than the present one is only hoped for
+            ([(0.7, "never"), (0.85, "never"), (0.9, "reached")], True),
+            # at or below the limit no number would do anyhow
+            ([(0.7, "never"), (0.8, "never"), (0.9, "never")], False),
             ([(0.5, "never"), (0.6, "never"), (0.8, "never")], False),
-            ([(0.7, "never"), (0.85, "never"), (0.9, "reached")], False),
             ([(0.7, "never"), (0.85, "too many"), (0.9, "never")], False),
+            ([(0.81, "never"), (0.85, "reached"), (0.9, "never")], False),
             ([], False),
         ],
     )
-    def test_where_no_number_would_do_at_rates_above_the_limit(self, outcomes, too):
+    def test_where_no_number_would_do_at_the_present_rate_above_the_limit(self, outcomes, too):
         assert ahead_of(*outcomes).too_variable is too
 
     def test_is_said_in_place_of_a_count(self):

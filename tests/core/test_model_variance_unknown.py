@@ -23,9 +23,11 @@ from .test_findings import (
     only,
     rounds_of,
     two_classes,
+    wrong_in,
 )
 
 UNKNOWN = "model_variance_unknown"
+SECOND = "take random subsampling or the bootstrap, be it as a second scheme"
 FIVE = table_of([0] * 40 + [1] * 5)
 
 
@@ -95,6 +97,61 @@ class TestOfAll:
             ("moderate", CV, 1, 2)
         ]
         assert numbers(of_rounds({CV: once, BOOTSTRAP: halves(100)}, table=table)) == []
+
+    def test_where_each_was_answered_at_most_once(self):
+        finding = only(UNKNOWN, *of_rounds({CV: halves(100, repeats=1)}, table=two_classes()))
+        assert finding.title == (
+            "The interval leaves out how much the model itself varies: each case was answered at "
+            "most once, twice is needed"
+        )
+        assert finding.seen.startswith(
+            "Each case is held out in at most 1 round of the first scheme, and no other scheme "
+            "holds one out more often; from 2 on, the model's variance can be told apart. "
+        )
+        assert finding.advice == f"Repeat the cross-validation, or {SECOND}."
+
+    def by_site(self, at_a_time: int, repeats: int = 2):
+        """Ten sites of both classes, so many held out together, each once a repeat."""
+        site = np.arange(40) % 10
+        entries = {"site": [f"s{at}" for at in site]}
+        table = two_classes(20, entries=entries)
+        scheme = choose(SCHEMES, CV, folds=10 // at_a_time, repeats=repeats, keep="site")
+        plan = dataclasses.replace(a_plan(), schemes=(scheme,))
+        folds = range(0, 10, at_a_time)
+        out = [(site >= f) & (site < f + at_a_time) for f in folds] * repeats
+        rounds = rounds_of(out, np.repeat(range(repeats), len(folds)))
+        chosen = np.array([wrong_in(table, range(r % 5)) for r in range(len(out))])
+        return of_rounds({CV: rounds}, table=table, plan=plan, chosen={CV: chosen})
+
+    def test_where_blocks_are_held_out_repeatedly_but_one_at_a_time(self):
+        given = self.by_site(1)
+        part = given[2].part("logistic", CV)
+        assert part.held.rounds.times_tested.tolist() == [2] * 40
+        # each round holds one site's four cases: no pair of independent ones was answered together
+        per_round = [set(np.arange(40)[out > 0] % 10) for out in part.held.rounds.test]
+        assert [len(sites) for sites in per_round] == [1] * 20
+        assert math.isnan(part.tau2)
+        assert numbers(given) == [("moderate", CV, 1, 2)]
+        finding = only(UNKNOWN, *given)
+        assert finding.title == (
+            "The interval leaves out how much the model itself varies: rounds hold out 1 block at "
+            "a time, 2 are needed"
+        )
+        assert finding.seen.startswith(
+            "Only answers to independent cases of one round tell how models differ; from 2 on, "
+            "the model's variance can be told apart. "
+        )
+        assert finding.advice == f"Take fewer folds, or {SECOND}."
+
+    def test_not_where_two_blocks_are_held_out_together_repeatedly(self):
+        given = self.by_site(2)
+        assert not math.isnan(given[2].part("logistic", CV).tau2)
+        assert numbers(given) == []
+
+    def test_blocks_held_out_once_are_answered_once(self):
+        for at_a_time in (1, 2):
+            finding = only(UNKNOWN, *self.by_site(at_a_time, repeats=1))
+            assert finding.title.endswith(": each case was answered at most once, twice is needed")
 
     @pytest.mark.parametrize(("sites", "raised"), [(4, 0), (5, 1)])
     def test_not_of_too_few_blocks_as_they_have_no_interval(self, sites, raised):
