@@ -136,10 +136,15 @@ def short_title(plan: Plan, name: str, length: int = 22) -> str:
         return shorten(kind, length)
     same_kind = [n for n in plan.candidate_names if plan.title(n).startswith(f"{kind} (")]
     told_by_all = [plan.title(n).partition(" (")[2] for n in same_kind]
-    settings = [set(told.removesuffix(")").split(", ")) for told in told_by_all]
-    apart = [s for s in told_all.removesuffix(")").split(", ") if any(s not in o for o in settings)]
-    told = f" ({', '.join(apart)})"
+    settings = [_settings(told) for told in told_by_all]
+    apart = [s for s in _settings(told_all) if any(s not in others for others in settings)]
+    told = f" ({', '.join(apart)})" if apart else ""
     return shorten(kind, max(6, length - len(told))) + told
+
+
+def _settings(told: str) -> list[str]:
+    """What stands in a title's brackets: what is tuned, then what sets it apart."""
+    return told.removesuffix(")").replace("; ", ", ").split(", ")
 
 
 def class_colour(name: str, concern: str) -> str:

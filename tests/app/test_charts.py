@@ -411,3 +411,17 @@ def test_short_titles_keep_what_sets_candidates_apart(lots):
     assert [text.partition(" (")[2] for text in said] == ["scaling standard)", "scaling none)"]
     assert len(set(said)) == 2
     assert short_title(lots.plan, "logistic") == "logistic regression"
+
+
+@pytest.mark.parametrize(
+    ("ks", "short"),
+    [
+        (((1, 5),), ["nearest neighbours"]),  # alone of its kind: nothing to set it apart by
+        (((1, 5), (3, 9)), ["nearest neigh… (k 1/5)", "nearest neigh… (k 3/9)"]),
+    ],
+)
+def test_short_titles_of_tuned_candidates(lots, ks, short):
+    grids = tuple(choose(CANDIDATES, "nearest_neighbours", k=k) for k in ks)
+    plan = dataclasses.replace(lots.plan, candidates=grids)
+    said = [short_title(plan, name) for name in plan.candidate_names]
+    assert said == short
