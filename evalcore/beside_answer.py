@@ -15,7 +15,7 @@ from evalcore.judged_intervals import share_interval
 from evalcore.measures import ALL_MEASURES
 from evalcore.permuted import dealt_among, kept_together
 from evalcore.picked import Picked
-from evalcore.share_in_use import Rate
+from evalcore.share_in_use import AtShare, Rate
 from evalcore.wording import (
     DASH,
     NBSP,
@@ -188,8 +188,7 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
         else ""
     )
     for at in found.at_shares:
-        # a share that was stated is repeated as it was, not rounded by the size of the table
-        share = level(at.share) if stated else percent(at.share, n)
+        share = share_in_words(found, at)
         said = [f"{percent(at.called, n)} are called {name}"]
         if not math.isnan(at.right_when_called.value):
             said.append(f", rightly in {rate(at.right_when_called)}")
@@ -204,6 +203,13 @@ def _in_use(evaluation: Evaluation, found: AtCutOff) -> Iterator[str]:
             f"Where {share} of {noun.plural} are {name}"
             f"{'' if stated else ', the share of this table'}{behind}: {''.join(said)}."
         )
+
+
+def share_in_words(found: AtCutOff, at: AtShare) -> str:
+    """A share in use as it was stated, else that of the table, as exact as its size allows."""
+    if found.rule.share_low:
+        return level(at.share)
+    return percent(at.share, n_behind(found.part, None))
 
 
 def curve_sentences(evaluation: Evaluation) -> Iterator[str]:

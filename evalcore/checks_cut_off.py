@@ -6,7 +6,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from evalcore.at_cut_off import HALF, AtCutOff
-from evalcore.beside_answer import place
+from evalcore.beside_answer import place, share_in_words
 from evalcore.clusters import independent_noun, named_in
 from evalcore.cut_off import least_units
 from evalcore.estimated import n_behind
@@ -104,7 +104,7 @@ def cut_off_costs_more(
             "cut_off_costs_more",
             "grave" if at.cost.value >= least else "moderate",
             rule.of_class,
-            f"Where {level(at.share)} of {noun.plural} are {name}, calling "
+            f"Where {share_in_words(found, at)} of {noun.plural} are {name}, calling "
             f"{'none' if none <= every else 'every one'} costs {decimal(least, 3)} a "
             f"{noun.singular}; the cut-off is not shown to cost less: {decimal(at.cost.value, 3)}",
             f"Its expected cost is {decimal(at.cost.value, 3)} ({decimal(at.cost.low, 3)}{DASH}"
@@ -239,8 +239,7 @@ def _why_not_judged(found: AtCutOff, noun: Noun) -> tuple[str, str, float, float
         infinite = int((~np.isfinite(found.cut_offs)).sum())
         seen = (
             f"There it calls all or none, or is not learned (threshold: {level(HALF)} of rounds); "
-            f"learned from all "
-            f"{cases} it is {place(found.on_all)}"
+            f"learned from all {cases} it is {place(found.on_all)}"
         )
         why = f"in {count(infinite)} of {count(rounds)} rounds the bag cannot teach one like it"
         return why, seen, infinite / rounds, HALF

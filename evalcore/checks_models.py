@@ -188,7 +188,8 @@ def model_variance_unknown(
     advice = where if learned else second
     if math.isnan(part.tau2):
         if part.held.rounds.times_tested.max() > 1:
-            why = "rounds hold out 1 block at a time, 2 are needed"
+            one = table.noun_for(evaluation.counted_by).singular if part.units is None else "block"
+            why = f"rounds hold out 1 {one} at a time, 2 are needed"
             seen = "Only answers to independent cases of one round tell how models differ"
             advice = f"Take fewer folds, or {advice}."
         else:

@@ -80,12 +80,12 @@ def with_model_variance(p: float, n: float, tau2: float, *, level: float = 0.95)
 def exact_with_model_variance(p: float, n: float, tau2: float, *, level: float = 0.95) -> Interval:
     """Clopper and Pearson's interval at the effective n that includes the model's variance.
 
-    Own construction, for the share of a class right at a cut-off that was learned on these cases.
-    Argued for the class of a floor, tried for both classes and for costs too: the estimate then
-    hardly moves, and it is the truth that does. At a floor f it is Beta distributed with parameters
-    (m + 1)f and (m + 1)(1 - f) (Wilks 1941), of which these bounds hold more than the level (96.5
-    to 98 % for 95 with 12 to 60 cases); Wilson's, drawn towards one half, lie too low (own
-    simulation: 85 % of tables for 95 %).
+    Own construction, for the share of a class right at a cut-off that was learned on these cases:
+    the estimate then hardly moves, and it is the truth that does. At a floor f it is Beta
+    distributed with parameters (m + 1)f and (m + 1)(1 - f) (Wilks 1941), of which these bounds hold
+    more than the level (96.5 to 98 % for 95 with 12 to 60 cases); Wilson's, drawn towards one half,
+    lie too low (own simulation: 85 % of tables for 95 %). For costs, and for the other class, there
+    is no such argument; there it was tried (own simulation: the other class in 99 % of tables).
 
     Parameters
     ----------

@@ -125,6 +125,20 @@ class TestCostsMore:
         given = [(f.severity, f.subject, f.value, f.threshold) for f in raised]
         assert given == ([(severity, "b", cost.value, 0.8)] if severity else [])
 
+    def test_a_share_is_as_exact_as_it_is_known(self):
+        """Stated, as it stands; that of the table, as exact as 40 cases allow."""
+        cost = Rate(0.81, 0.25, 0.9)
+        for rule, share, words in (
+            (COST, 0.075, "Where 7.5 % of cases are b, calling none costs 0.750 a case"),
+            (
+                CutOffRule("b", "cost"),
+                8 / 38,
+                "Where 21 % of cases are b, calling none costs 0.211",
+            ),
+        ):
+            (raised,) = found("cut_off_costs_more", *costing((share, cost), rule=rule))
+            assert raised.title.replace(NBSP, " ").startswith(words)
+
     def test_as_much_is_not_less(self):
         # 1/2 x 1 on either side, in binary fractions
         rule = CutOffRule("b", "cost", share_low=0.5, share_high=0.5)

@@ -160,3 +160,9 @@ class TestOfAll:
         plan = dataclasses.replace(a_plan(), schemes=(scheme,))
         made = evaluated(table, plan, plan.draw(table))
         assert len(found(UNKNOWN, table, plan, made)) == raised
+
+    def test_without_blocks_it_is_cases_that_are_held_out_one_at_a_time(self):
+        table = two_classes(5)
+        rounds = rounds_of(np.tile(np.eye(10, dtype=bool), (2, 1)), np.repeat([0, 1], 10))
+        finding = only(UNKNOWN, *of_rounds({CV: rounds}, table=table))
+        assert finding.title.endswith("varies: rounds hold out 1 case at a time, 2 are needed")
